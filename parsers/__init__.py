@@ -1,0 +1,1 @@
+"""Bytes of an instrument's export become tables of readings."""

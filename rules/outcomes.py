@@ -1,0 +1,155 @@
+"""What an evaluation says: results with unit, uncertainty and verdict, and every check with its sentence."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from spikeward.rules.records import BatchKey, Reading, SeriesKey
+
+PASS, WARN, WAITING, FAIL = "pass", "warn", "waiting", "fail"
+NOT_EVALUATED = "not evaluated"
+SEVERITY = {NOT_EVALUATED: 0, PASS: 0, WARN: 1, WAITING: 2, FAIL: 3}
+
+CALCULATION_VERSION = "1"
+"""Raised by every change that can alter a digit of a result; the changelog says which."""
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """One check of one series or batch.
+
+    ``observed`` is a number in ``unit`` or None; ``limit`` is text such as ``at least 3``; ``source`` says where the
+    limit comes from; ``remedy`` is what to do, empty for a pass.
+    """
+
+    name: str
+    verdict: str  # pass, warn, fail, not evaluated
+    sentence: str
+    observed: float | None = None
+    unit: str = ""
+    limit: str = ""
+    source: str = ""
+    remedy: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Estimate:
+    """A content with its uncertainty. Without uncertainty ``reason`` says why; the interval is at ``coverage``."""
+
+    content: float
+    unit: str
+    standard_uncertainty: float | None = None
+    expanded_uncertainty: float | None = None
+    coverage_factor: float | None = None
+    interval: tuple[float, float] | None = None
+    coverage: float = 0.95
+    reason: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Point:
+    """One vessel on the line: x and y after the transform, in the units of content and of signal."""
+
+    level: str
+    vessel: str
+    x: float
+    y: float
+    fitted: float | None
+    signal: float  # mean of the vessel's readings, background subtracted, before the volume correction
+    readings: int
+    sd: float | None  # of single readings
+    matrix_share: float  # aliquot over final volume
+    excluded: str = ""  # who, when, why; an excluded point is shown but not fitted
+
+
+@dataclass(frozen=True, slots=True)
+class Result:
+    """One analyte (on one line) of one series.
+
+    ``content`` is in the test solution as it was pipetted; ``in_sample`` after the preparation factor, or None where
+    the rule file declares no way back to the sample. Without a number, ``no_number`` says why.
+    """
+
+    analyte: str
+    line: str
+    verdict: str
+    content: Estimate | None
+    in_sample: Estimate | None
+    no_number: str
+    signal_unit: str
+    content_unit: str
+    basis: str  # such as "dry matter", or empty
+    slope: float | None = None
+    slope_uncertainty: float | None = None
+    intercept: float | None = None
+    intercept_uncertainty: float | None = None
+    residual_sd: float | None = None
+    correlation: float | None = None
+    degrees_of_freedom: int = 0
+    points: tuple[Point, ...] = ()
+    checks: tuple[Check, ...] = ()
+    background: float | None = None  # signal subtracted from every reading
+    blank: float | None = None  # subtracted process blank, in the unit of the sample's result
+    preparation: str = ""  # the way back to the sample in words
+    sentence: str = ""
+
+    @property
+    def reported(self) -> Estimate | None:
+        """What a reader wants: the content in the sample where it is known, else in the test solution."""
+        return self.in_sample or self.content
+
+
+@dataclass(frozen=True, slots=True)
+class VesselReport:
+    """One vessel as it was understood: volumes in mL, with every reading in force."""
+
+    level: str
+    vessel: str
+    aliquot_ml: float | None
+    addition_ml: float | None  # total standard in the vessel
+    final_ml: float | None
+    standard: str
+    readings: tuple[Reading, ...]
+    excluded: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """All that is known about one series.
+
+    ``verdict`` is what the flag says: waiting, pass, warn or fail. ``so_far`` is the verdict of the checks as they
+    stand, equal to ``verdict`` once nothing that is expected can change it. ``waiting_for`` says what is missing.
+    """
+
+    key: SeriesKey
+    verdict: str
+    so_far: str
+    final: bool
+    waiting_for: tuple[str, ...]
+    design: str
+    sentence: str
+    results: tuple[Result, ...]
+    checks: tuple[Check, ...]
+    vessels: tuple[VesselReport, ...]
+    context: tuple[Reading, ...]  # backgrounds, brackets and other readings of the batch that the result depends on
+    notes: tuple[str, ...]
+    inputs_digest: str
+    rules_digest: str
+    calculation_version: str = CALCULATION_VERSION
+
+
+@dataclass(frozen=True, slots=True)
+class BatchOutcome:
+    """The outcomes of a batch in the order of their keys, and what holds for the batch as a whole."""
+
+    key: BatchKey
+    closed: bool
+    waiting_for: tuple[str, ...]
+    outcomes: tuple[Outcome, ...]
+    checks: tuple[Check, ...]
+
+
+def worst(verdicts: list[str]) -> str:
+    """The most severe of several verdicts; a list without any that count is ``pass``."""
+    ranked = sorted((v for v in verdicts if v != NOT_EVALUATED), key=SEVERITY.__getitem__)
+    return ranked[-1] if ranked else PASS

@@ -1,0 +1,1 @@
+"""From vessels to contents: batched arithmetic that does not depend on company."""

@@ -1,0 +1,1 @@
+"""How well a content is known."""
