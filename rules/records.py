@@ -18,7 +18,7 @@ FAULTY = "faulty"  # what a program writes instead of a number: '#####', '#N/A'
 
 # Roles with levels are solved as addition series; the others are plain solutions of the batch.
 SERIES_ROLES = ("sample", "duplicate", "spiked_sample", "check", "reference", "process_blank")
-PLAIN_ROLES = ("background", "bracket")
+PLAIN_ROLES = ("background", "bracket", "calibration", "reagent_blank")
 ROLES = SERIES_ROLES + PLAIN_ROLES
 
 

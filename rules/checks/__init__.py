@@ -1,1 +1,1 @@
-"""One function per check; the registry that the rule file names stands in registry.py."""
+"""Checks: each answers pass, warn, fail or not evaluated, with one sentence that an analyst understands."""

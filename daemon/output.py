@@ -1,0 +1,154 @@
+"""Outcomes become files beside the data; a change of content is a revision, in the ledger before it is on the disk."""
+
+from __future__ import annotations
+
+import json
+import os
+from collections import defaultdict
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+from spikeward.daemon.changes import quoted, what_changed
+from spikeward.daemon.disk import Disk
+from spikeward.daemon.ledger import Ledger
+from spikeward.daemon.names import RESULT, SUMMARY, series_stem, shown, stems
+from spikeward.daemon.pages.facts import Notice, Revision
+from spikeward.daemon.pages.flag import render_flag
+from spikeward.daemon.pages.result_json import render_result
+from spikeward.daemon.pages.summary import render_summary
+from spikeward.daemon.publish import digests
+from spikeward.daemon.records import Records
+from spikeward.rules.outcomes import FAIL, WAITING, BatchOutcome, Check, Outcome
+from spikeward.rules.records import SeriesKey
+
+Present = Callable[[SeriesKey, str, str], bool]
+
+
+@dataclass(slots=True)
+class Output:
+    """Remembers what was published, so that only changed content is rendered and written.
+
+    ``folder_of`` gives the absolute output folder of a (root, folder); ``present`` tells whether a quoted reading
+    (series, path, digest) is still at hand.
+    """
+
+    disk: Disk
+    ledger: Ledger
+    folder_of: Callable[[str, str], str]
+    station: str
+    clock: Callable[[], str]
+    present: Present
+    records: Records
+    history: dict[SeriesKey, list[Revision]] = field(default_factory=lambda: defaultdict(list))
+    recorded: dict[SeriesKey, str] = field(default_factory=dict)  # digest of the last result in the ledger
+    held: dict[SeriesKey, Notice] = field(default_factory=dict)
+    _outcomes: dict[SeriesKey, Outcome] = field(default_factory=dict)
+
+    def take(self, event: Mapping[str, Any]) -> None:
+        """Enter a revision from the ledger; events of other kinds change nothing."""
+        if event["event"] == "revision":
+            key = SeriesKey(*event["series"])
+            self.history[key].append(
+                Revision(
+                    event["number"], event["at"], event["verdict"], event["inputs_digest"], event["why"],
+                    tuple(event["changed"]),
+                )  # fmt: skip
+            )
+            self.recorded[key] = event["result"]
+
+    def publish(self, batch: BatchOutcome, check_all: bool = False) -> list[SeriesKey]:
+        """Publish what changed in a batch; with ``check_all`` also restore what a person deleted or edited.
+
+        Returns
+        -------
+        the series whose files were written
+
+        Raises
+        ------
+        OSError : the disk does not take it now; a later call with the same batch finishes what was begun
+        """
+        named, clashing = stems(outcome.key for outcome in batch.outcomes)
+        written = []
+        for outcome in batch.outcomes:
+            key = outcome.key
+            if key in clashing:
+                outcome = _clash(outcome, [other for other in clashing if other != key])
+            if (check_all or self._outcomes.get(key) != outcome) and self._one(outcome, named[key], key in clashing):
+                written.append(key)
+            self._outcomes[key] = outcome
+        return written
+
+    def _one(self, outcome: Outcome, stem: str, clashes: bool) -> bool:
+        key = outcome.key
+        folder = self.folder_of(key.root, key.folder)
+        stem = f"{stem}_{outcome.inputs_digest[:12]}" if clashes else stem
+        result = render_result(outcome)
+        digest = next(iter(digests({RESULT: result}).values()))
+        if self.recorded.get(key) != digest:
+            before = self._standing(os.path.join(folder, stem + RESULT))
+            if not self._sources_there(key, before):
+                return False
+            if outcome.verdict != WAITING or key in self.history:
+                self._revise(outcome, digest, before, json.loads(result))
+        self.held.pop(key, None)
+        files = {RESULT: result, SUMMARY: render_summary(outcome, tuple(self.history.get(key, ())), self.station)}
+        flag = render_flag(outcome, digest)
+        return self.records.publish(folder, stem, files, flag, outcome.verdict)
+
+    def _standing(self, path: str) -> dict[str, Any] | None:
+        """The result that stands beside the data, None where there is none that can be read."""
+        if not self.disk.exists(path):
+            return None
+        try:
+            found = json.loads(self.disk.read(path))
+        except ValueError:
+            return None
+        return found if isinstance(found, dict) else None
+
+    def _sources_there(self, key: SeriesKey, before: Mapping[str, Any] | None) -> bool:
+        """Deleting raw data never retracts a result: while a quoted source is missing nothing is published."""
+        if before is None:
+            return True
+        try:
+            missing = sorted({path for path, _, digest in quoted(before) if not self.present(key, path, digest)})
+        except (KeyError, TypeError):
+            return True  # a person's edit, not a result of ours
+        if missing:
+            names = ", ".join(shown(path) for path in missing)
+            self.held[key] = Notice(
+                "source missing", series_stem(key),
+                f"the published result quotes {names}, which is no longer there; "
+                "restore the file, or delete the result's files to have the series solved from what is there", "",
+            )  # fmt: skip
+        return not missing
+
+    def _revise(
+        self, outcome: Outcome, digest: str, before: Mapping[str, Any] | None, after: Mapping[str, Any]
+    ) -> None:
+        key = outcome.key
+        why, changed = what_changed(before, after)
+        event = {
+            "event": "revision",
+            "series": [key.root, key.folder, key.batch, key.role, key.sample],
+            "number": len(self.history[key]) + 1,
+            "at": self.clock(),
+            "verdict": outcome.verdict,
+            "inputs_digest": outcome.inputs_digest,
+            "result": digest,
+            "why": why,
+            "changed": list(changed),
+        }
+        self.ledger.append(event)
+        self.take(event)
+
+
+
+def _clash(outcome: Outcome, others: Iterable[SeriesKey]) -> Outcome:
+    names = ", ".join(f"batch {shown(key.batch)} sample {shown(key.sample)}" for key in sorted(others))
+    sentence = f"its files cannot be told apart from those of {names}; rename one of the two"
+    check = Check("identity", FAIL, sentence, remedy="rename one of the two and export again")
+    return replace(
+        outcome, verdict=FAIL, so_far=FAIL, sentence=f"DO NOT REPORT. {sentence[0].upper()}{sentence[1:]}.",
+        checks=(check, *outcome.checks),
+    )  # fmt: skip

@@ -1,0 +1,1 @@
+"""What people and programs see: pure renderers from outcomes to bytes. No clock, no disk, no system text."""

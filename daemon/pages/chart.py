@@ -1,0 +1,195 @@
+"""The addition plot as inline SVG: vessels, line, the way down to the content on the axis, and its interval.
+
+Colours and weights come from the classes of the page's style sheet; positions are printed with one decimal, so that
+equal results give equal text.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+
+from markupsafe import Markup
+
+from spikeward.daemon.pages.axis import Axis, axis_over
+from spikeward.daemon.pages.numbers import interval_shown, shown, unit_shown, value_shown
+from spikeward.daemon.pages.text import visible
+from spikeward.rules.outcomes import Point, Result
+
+_WIDTH, _HEIGHT = 440, 330
+_LEFT, _RIGHT, _TOP, _BOTTOM = 58, 428, 16, 272
+_SHAPES = ("round", "square", "diamond", "triangle")
+_REACH = 1.5  # an interval is drawn this far beyond the rest, in widths of the rest; an arrow says that it goes on
+
+
+@dataclass(frozen=True, slots=True)
+class _Frame:
+    """Both axes, and where a value lies on the drawing."""
+
+    x: Axis
+    y: Axis
+
+    def across(self, value: float) -> float:
+        return _LEFT + (_RIGHT - _LEFT) * self.x.share(value)
+
+    def up(self, value: float) -> float:
+        return _BOTTOM - (_BOTTOM - _TOP) * self.y.share(value)
+
+
+def addition_plot(result: Result, identity: str) -> Markup:
+    """The plot of one result, or an empty text where no vessel can be drawn.
+
+    Parameters
+    ----------
+    identity : a word that no other chart of the page uses, for the ids of title and description
+    """
+    points = [point for point in result.points if math.isfinite(point.x) and math.isfinite(point.y)]
+    if not points:
+        return Markup("")
+    frame = _frame(result, points)
+    parts = [
+        Markup('<title id="{0}-title">{1}</title><desc id="{0}-desc">{2}</desc>').format(
+            identity, _title(result), _description(result, points)
+        ),
+        *_axes(frame, result),
+        *_line(frame, result, points),
+        *_content(frame, result),
+        *(_mark(frame, point, shape) for point, shape in zip(points, _shapes(points), strict=True)),
+    ]
+    return Markup(
+        '<svg class="chart" viewBox="0 0 {1} {2}" role="img" aria-labelledby="{0}-title {0}-desc">\n{3}\n</svg>'
+    ).format(identity, _WIDTH, _HEIGHT, Markup("\n").join(parts))
+
+
+def _crossing(result: Result) -> float | None:
+    """Where the line reaches zero signal, -C0, if the result stands on it."""
+    if result.content is None or result.no_number or not math.isfinite(result.content.content):
+        return None
+    return -result.content.content
+
+
+def _interval(result: Result) -> tuple[float, float] | None:
+    crossing = _crossing(result)
+    if crossing is None or result.content is None or result.content.interval is None:
+        return None
+    low, high = result.content.interval
+    return (-high, -low) if math.isfinite(low) and math.isfinite(high) else None
+
+
+def _frame(result: Result, points: Sequence[Point]) -> _Frame:
+    across = [0.0, *(point.x for point in points)]
+    crossing = _crossing(result)
+    if crossing is not None:
+        across.append(crossing)
+    interval = _interval(result)
+    if interval is not None:
+        reach = (max(across) / 2 - min(across) / 2) * 2 * _REACH
+        reach = reach if math.isfinite(reach) else 0.0
+        across += [max(interval[0], min(across) - reach), min(interval[1], max(across) + reach)]
+    upward = [0.0, *(point.y for point in points)]
+    upward += [point.fitted for point in points if point.fitted is not None and math.isfinite(point.fitted)]
+    if result.intercept is not None and math.isfinite(result.intercept):
+        upward.append(result.intercept)
+    return _Frame(axis_over(min(across), max(across), 6), axis_over(min(upward), max(upward), 5))
+
+
+def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
+    for share, label in frame.x.ticks:
+        yield Markup('<path class="grid" d="M{0:.1f} {1}V{2}"/><text class="tick" x="{0:.1f}" y="{3}">{4}</text>').format(
+            _LEFT + (_RIGHT - _LEFT) * share, _TOP, _BOTTOM, _BOTTOM + 18, label
+        )
+    for share, label in frame.y.ticks:
+        at = _BOTTOM - (_BOTTOM - _TOP) * share
+        yield Markup('<path class="grid" d="M{0} {1:.1f}H{2}"/><text class="tick up" x="{3}" y="{4:.1f}">{5}</text>').format(
+            _LEFT, at, _RIGHT, _LEFT - 6, at + 4.5, label
+        )
+    yield Markup('<path class="axis" d="M{0} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>').format(
+        _LEFT, frame.up(0.0), _RIGHT, frame.across(0.0), _TOP, _BOTTOM
+    )
+    added = frame.x.titled(f"{_analyte(result)} added", unit_shown(result.content_unit))
+    yield Markup('<text class="name" x="{0:.1f}" y="{1}">{2}</text>').format((_LEFT + _RIGHT) / 2, _HEIGHT - 12, added)
+    signal = frame.y.titled("Signal corrected for volume", visible(result.signal_unit))
+    yield Markup('<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>').format(
+        -(_TOP + _BOTTOM) / 2, signal
+    )
+
+
+def _line(frame: _Frame, result: Result, points: Sequence[Point]) -> Iterator[Markup]:
+    """The fitted line over the vessels, and dashed down to the axis where it carries a content."""
+    fitted = sorted((point.x, point.fitted) for point in points if point.fitted is not None)
+    if len(fitted) < 2 or fitted[0][0] == fitted[-1][0]:
+        return
+    (x0, y0), (x1, y1) = fitted[0], fitted[-1]
+    yield Markup('<path class="fit" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>').format(
+        frame.across(x0), frame.up(y0), frame.across(x1), frame.up(y1)
+    )
+    crossing = _crossing(result)
+    if crossing is not None:
+        yield Markup('<path class="beyond" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>').format(
+            frame.across(x0), frame.up(y0), frame.across(crossing), frame.up(0.0)
+        )
+
+
+def _content(frame: _Frame, result: Result) -> Iterator[Markup]:
+    """-C0 on the axis with its interval; an end outside the drawing becomes an arrow."""
+    crossing, interval, floor = _crossing(result), _interval(result), frame.up(0.0)
+    if crossing is None:
+        return
+    if interval is not None:
+        left, right = (min(max(frame.across(end), _LEFT), _RIGHT) for end in interval)
+        ends = _end(left, floor, -1, frame.x.share(interval[0])) + _end(right, floor, 1, frame.x.share(interval[1]))
+        yield Markup('<path class="interval" d="M{0:.1f} {1:.1f}H{2:.1f}{3}"/>').format(left, floor, right, ends)
+    at = frame.across(crossing)
+    yield Markup('<path class="crossing" d="M{0:.1f} {1:.1f}l5 5l-5 5l-5 -5z"/>').format(at, floor - 5)
+    yield Markup('<text class="crossing-name" x="{0:.1f}" y="{1:.1f}">−C₀</text>').format(
+        max(at, _LEFT + 16.0), floor - 12
+    )
+
+
+def _end(at: float, floor: float, side: int, share: float) -> str:
+    if 0 <= share <= 1:
+        return f"M{at:.1f} {floor - 6:.1f}v12"
+    return f"M{at - 6 * side:.1f} {floor - 6:.1f}l{6 * side} 6l{-6 * side} 6"
+
+
+def _shapes(points: Sequence[Point]) -> list[str]:
+    """One shape for each preparation of a level; an excluded vessel is a cross."""
+    preparations = list(dict.fromkeys(point.vessel for point in points))
+    return [
+        "excluded" if point.excluded else _SHAPES[preparations.index(point.vessel) % len(_SHAPES)] for point in points
+    ]
+
+
+def _mark(frame: _Frame, point: Point, shape: str) -> Markup:
+    outline = {
+        "round": "m-5 0a5 5 0 1 0 10 0a5 5 0 1 0 -10 0z",
+        "square": "m-4.5 -4.5h9v9h-9z",
+        "diamond": "m0 -6l6 6l-6 6l-6 -6z",
+        "triangle": "m0 -6l6 10h-12z",
+        "excluded": "m-5 -5l10 10m0 -10l-10 10",
+    }[shape]
+    left_out = f"; excluded: {visible(point.excluded)}" if point.excluded else ""
+    return Markup('<path class="vessel {0}" d="M{1:.1f} {2:.1f}{3}"><title>{4}</title></path>').format(
+        shape, frame.across(point.x), frame.up(point.y), outline,
+        f"level {visible(point.level)}{visible(point.vessel)}: {shown(point.x)} added, {shown(point.y)}{left_out}",
+    )  # fmt: skip
+
+
+def _analyte(result: Result) -> str:
+    return visible(result.analyte)
+
+
+def _title(result: Result) -> str:
+    return f"Addition plot of {_analyte(result)}"
+
+
+def _description(result: Result, points: Sequence[Point]) -> str:
+    excluded = sum(bool(point.excluded) for point in points)
+    drawn = f"{len(points)} {'vessel' if len(points) == 1 else 'vessels'}"
+    drawn += f", {excluded} of them excluded from the line" if excluded else ""
+    if _crossing(result) is None or result.content is None:
+        return f"{drawn}. No content is read from the line: {visible(result.no_number) or 'there is none yet'}."
+    words = f"{drawn}. The line meets the axis at minus the content, {value_shown(result.content)} in the test solution"
+    interval = interval_shown(result.content)
+    return f"{words}, interval {interval}." if interval else f"{words}."

@@ -1,0 +1,238 @@
+"""The way of a file, from its folder to a flag.
+
+    seen → settled → read → named → in force → solved → checked → published
+    `intake`         `workers` `holdings`     `solving`          `output`
+
+Nothing flows back: a later file of the same series starts the same way again and makes the next revision. Everything
+here may be lost and found again by a new look at the folders; what may not is in the ledger before it has an effect.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, field
+
+from spikeward.daemon.board_output import BoardOutput
+from spikeward.daemon.claims import DECISIONS
+from spikeward.daemon.closings import Closings, closing_event, lapse_event
+from spikeward.daemon.decisions import DecisionBook
+from spikeward.daemon.disk import Disk
+from spikeward.daemon.holdings import Content, Holdings, Place
+from spikeward.daemon.intake import Intake
+from spikeward.daemon.ledger import Ledger, RuleTexts
+from spikeward.daemon.names import unread_name
+from spikeward.daemon.output import Output
+from spikeward.daemon.pages.flag import render_unread
+from spikeward.daemon.records import Records
+from spikeward.daemon.solving import Solved, Solving
+from spikeward.daemon.station import Clock, Places, rules_from
+from spikeward.daemon.survey import Listing
+from spikeward.daemon.workers import ReadJob, ReadReply
+from spikeward.rules.outcomes import CALCULATION_VERSION, BatchOutcome
+from spikeward.rules.records import BatchKey, SeriesKey
+from spikeward.rules.rulebook import Rulebook
+from spikeward.rules.series import closing_roles
+
+
+@dataclass(slots=True)
+class Pipeline:
+    """All state of a running station, built anew from the ledger and the folders at every start."""
+
+    places: Places
+    rules: Rulebook
+    disk: Disk
+    ledger: Ledger
+    texts: RuleTexts
+    records: Records
+    clock: Clock
+    closings: Closings = field(default_factory=Closings)
+    touched: set[BatchKey] = field(default_factory=set)
+    solved: dict[BatchKey, Solved] = field(default_factory=dict)
+    intake: Intake = field(init=False)
+    solving: Solving = field(init=False)
+    decisions: DecisionBook = field(init=False)
+    output: Output = field(init=False)
+    boards: BoardOutput = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.decisions = DecisionBook(self.disk, self.ledger, self.clock)
+        present = Holdings(self.rules)
+        self.solving = Solving(present, self.closings, self.decisions.of)
+        self.output = Output(
+            self.disk, self.ledger, self._folder_of, self.rules.station, self.clock, self._is_present, self.records
+        )
+        self.boards = BoardOutput(self.records, self._folder_of, self.rules.station)
+        for event in self.ledger.read():
+            self.closings.take(event)
+            self.output.take(event)
+            self.decisions.take(event)
+        self._recall_rules()
+        self.intake = Intake(self.rules, self.places, self._holdings())
+
+    # ---- the way of a file -------------------------------------------------------------------------------------------
+
+    def see(self, folder: str, listing: Listing, now: float) -> list[ReadJob]:
+        """A watched folder was listed: what is gone is dropped, what has settled is to be read."""
+        jobs, gone = self.intake.see(folder, listing, now)
+        for place in gone:
+            self.touched |= self.intake.gone(place)
+            self._withdraw_unread(place)
+        self.touched |= self._adopt_decisions(folder, listing)
+        return jobs
+
+    def take(self, replies: Iterable[ReadReply]) -> None:
+        """Files were read: their readings take their places, and what could not be read is said beside the file."""
+        for reply in replies:
+            self.touched |= self.intake.take(reply)
+            self.say_unread((reply.key[0], reply.key[1]))
+
+    def solve(self, keys: Iterable[BatchKey]) -> list[Solved]:
+        """Evaluate some batches, and record the closings that now follow from what is in force."""
+        solved = self.solving.solve(keys)
+        due = [one for one in solved if not one.outcome.closed and self._closes(one)]
+        if due:
+            self.close(due)
+            again = {one.batch.key for one in due}
+            solved = [one for one in solved if one.batch.key not in again] + self.solving.solve(again)
+        return sorted(solved, key=lambda one: one.batch.key)
+
+    def publish(self, solved: Iterable[Solved], check_all: bool = False) -> list[SeriesKey]:
+        """Write what changed: results, summaries and flags, then the batch's board and table.
+
+        Raises
+        ------
+        OSError : the disk does not take it now; the batches stay touched and a later call finishes
+        """
+        written: list[SeriesKey] = []
+        for one in solved:
+            self.touched.add(one.batch.key)
+            written += self.output.publish(one.outcome, check_all)
+            self.solved[one.batch.key] = one
+            self.touched.discard(one.batch.key)
+        return written
+
+    def publish_boards(self, keys: Iterable[BatchKey]) -> None:
+        """Write boards and tables of batches; slower than flags, so a running daemon does it when there is time."""
+        notices = self.notices()
+        for key in sorted(set(keys)):
+            if key in self.solved:
+                self.boards.publish(self.solved[key].outcome, notices)
+        self.boards.publish_folders(notices, {key.root for key in self.solving.every()} | set(self.intake.roots), self.solved)
+
+    # ---- what time decides, entered as data --------------------------------------------------------------------------
+
+    def _closes(self, one: Solved) -> bool:
+        """With closing members a batch closes by itself once nothing is missing; without, time decides."""
+        return bool(closing_roles(one.rules)) and not one.outcome.waiting_for
+
+    def close(self, solved: Iterable[Solved]) -> None:
+        """Record closings under the rules that apply to each batch."""
+        for one in solved:
+            event = closing_event(one.batch, one.rules.digest, CALCULATION_VERSION, self.clock())
+            self.ledger.append(event)
+            self.closings.take(event)
+
+    def lapse(self, one: Solved, keys: Iterable[SeriesKey]) -> None:
+        """Record that series of a batch have waited long enough."""
+        for key in keys:
+            event = lapse_event(one.batch.members[key], self.clock())
+            self.ledger.append(event)
+            self.closings.take(event)
+            self.touched.add(one.batch.key)
+
+    def reopen(self, batch: str | None) -> list[Solved]:
+        """Solve closed batches (all, or those of one name) again under the present rules: ``sweep --again``."""
+        known = {key for key in self.solving.every() if key in self.closings.closed and batch in (None, key.batch)}
+        before = {one.batch.key: one for one in self.solving.solve(known)}
+        closed = [one for one in before.values() if one.outcome.closed]
+        for one in closed:
+            closing = self.closings.closed.pop(one.batch.key)
+            event = {
+                "event": "again",
+                "batch": [one.batch.key.root, one.batch.key.folder, one.batch.key.batch],
+                "before": closing.rules_digest,
+                "after": self.rules.digest,
+                "results_before": _digest_of(one.outcome),
+                "at": self.clock(),
+            }
+            self.ledger.append(event)
+        renewed = self.solving.solve({one.batch.key for one in closed})
+        self.close(renewed)
+        return self.solving.solve({one.batch.key for one in closed})
+
+    # ---- rules -------------------------------------------------------------------------------------------------------
+
+    def adopt(self, rules: Rulebook, text: str) -> None:
+        """A good edit of the rule file: it applies to every batch that is not closed."""
+        self.texts.keep(rules.digest, text)
+        self.rules = rules
+        earlier = dict(self.solving.earlier)
+        old = self.solving.present
+        if any(closing.rules_digest == old.rules.digest for closing in self.closings.closed.values()):
+            earlier[old.rules.digest] = old
+        earlier.pop(rules.digest, None)
+        self.solving.present = Holdings(rules)
+        self.solving.earlier = earlier
+        self.output.station = self.boards.station = rules.station
+        self.intake.rule(rules, self._holdings())
+        self.touched |= self.solving.every()
+
+    def _recall_rules(self) -> None:
+        """The rules under which batches closed earlier, from their kept texts."""
+        wanted = {closing.rules_digest for closing in self.closings.closed.values()} - {self.rules.digest}
+        for digest in sorted(wanted):
+            rules = rules_from(self.texts.get(digest))
+            if rules is not None:
+                self.solving.earlier[digest] = Holdings(rules)
+
+    def _holdings(self) -> list[Holdings]:
+        return [self.solving.present, *self.solving.earlier.values()]
+
+    # ---- small answers -----------------------------------------------------------------------------------------------
+
+    def _folder_of(self, root: str, folder: str) -> str:
+        watch = next((watch for watch in self.rules.watches if watch.folder == root), None)
+        base = self.places.outputs(watch) if watch else f"{self.places.base}/{root}"
+        return f"{base}/{folder}" if folder else base
+
+    def _is_present(self, key: SeriesKey, path: str, digest: str) -> bool:
+        if (key.root, path) in self.intake.files:
+            return True
+        readings = (reading for holdings in self._holdings() for reading in holdings.readings([key.batch_key]))
+        return any(reading.digest == digest for reading in readings)
+
+    def _adopt_decisions(self, folder: str, listing: Listing) -> set[BatchKey]:
+        changed: set[BatchKey] = set()
+        watch = self.intake.roots[folder].watch
+        for path, stamp in listing.files.items():
+            if DECISIONS in self.intake.claims((folder, path)):
+                where = self.decisions.see((folder, path), stamp, f"{self.places.inputs(watch)}/{path}")
+                if where is not None:
+                    changed |= {key for key in self.solving.every() if key.root == folder and _below(key.folder, where)}
+        return changed
+
+    def say_unread(self, place: Place) -> None:
+        """Leave or take away the flag that says why a file cannot be read."""
+        root, path = place
+        content = self.solving.present.contents.get(place)
+        folder = self._folder_of(root, self.solving.present.output_folder(place))
+        name = path.rsplit("/", 1)[-1]
+        if content is not None and content.sentence:
+            self.records.publish_files(folder, {unread_name(name): render_unread(path, content.sentence)})
+        else:
+            self.records.withdraw_unread(folder, name)
+
+    def _withdraw_unread(self, place: Place) -> None:
+        root, path = place
+        folder = self._folder_of(root, self.solving.present.output_folder(place))
+        self.records.withdraw_unread(folder, path.rsplit("/", 1)[-1])
+
+
+def _below(folder: str, where: str) -> bool:
+    return where in ("", folder) or folder.startswith(where + "/")
+
+
+def _digest_of(outcome: BatchOutcome) -> list[str]:
+    return [one.inputs_digest for one in outcome.outcomes]
+
+

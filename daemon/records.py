@@ -1,0 +1,65 @@
+"""Publishing with a memory: what we wrote is known, so that a person's edit is kept aside and never taken for ours."""
+
+from __future__ import annotations
+
+import os
+from collections import defaultdict
+from collections.abc import Mapping
+
+from spikeward.daemon.disk import Disk
+from spikeward.daemon.journal import Journal
+from spikeward.daemon.names import VERDICTS, flag_name, unread_name
+from spikeward.daemon.publish import Published, digests, publish, publish_files, withdraw_unread
+
+
+class Records:
+    """Digests of everything that was published, in memory and (where there is one) in the journal.
+
+    ``kept`` collects the edits that were kept aside, as absolute paths.
+    """
+
+    def __init__(self, disk: Disk, journal: Journal | None) -> None:
+        self._disk = disk
+        self._journal = journal
+        self._known: dict[tuple[str, str], set[str]] = defaultdict(set)
+        self.kept: list[str] = []
+        if journal is not None:
+            for place, found in journal.load_outputs().items():
+                self._known[place] |= found
+
+    def publish(self, folder: str, stem: str, files: Mapping[str, bytes], flag: bytes, verdict: str) -> bool:
+        """Publish a series; whether anything was written. Raises ``OSError`` as the disk does."""
+        flags = [flag_name(stem, each) for each in VERDICTS]
+        outputs = {stem + suffix: data for suffix, data in files.items()}
+        known = self._intend(folder, {**outputs, flag_name(stem, verdict): flag}, [*outputs, *flags])
+        self._disk.mkdirs(folder)
+        return self._done(folder, publish(self._disk, folder, stem, files, flag, verdict, known))
+
+    def publish_files(self, folder: str, outputs: Mapping[str, bytes]) -> bool:
+        """Publish files that have no flag of their own; whether anything was written."""
+        known = self._intend(folder, outputs, list(outputs))
+        self._disk.mkdirs(folder)
+        return self._done(folder, publish_files(self._disk, folder, outputs, known))
+
+    def withdraw_unread(self, folder: str, file_name: str) -> bool:
+        """Take away the flag of a file that can be read after all."""
+        name = unread_name(file_name)
+        return withdraw_unread(self._disk, folder, file_name, self._known.get((folder, name)) or None)
+
+    def _intend(self, folder: str, outputs: Mapping[str, bytes], names: list[str]) -> set[str] | None:
+        """Enter the new digests before anything is written; what was known before tells edits from our own bytes."""
+        before = set().union(*(self._known.get((folder, name), set()) for name in names))
+        new = digests(outputs)
+        for name, digest in new.items():
+            self._known[folder, name].add(digest)
+        if self._journal is not None and not before.issuperset(new.values()):
+            self._journal.intend_outputs(folder, new)
+        return before | set(new.values()) if before else None
+
+    def _done(self, folder: str, published: Published) -> bool:
+        for name, digest in published.files.items():
+            self._known[folder, name] = {digest}
+        if self._journal is not None and published.written:
+            self._journal.record_outputs(folder, published.files)
+        self.kept += [os.path.join(folder, new) for _, new in published.kept]
+        return bool(published.written)

@@ -1,0 +1,89 @@
+"""A station: one rule file, one state folder, one lock; what every command that publishes opens first."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from pathlib import Path
+
+from spikeward.daemon.config import load_file, load_rules
+from spikeward.daemon.problems import Problem
+from spikeward.daemon.trouble import Trouble
+from spikeward.rules.rulebook import Rulebook, Watch
+
+
+@dataclass(frozen=True, slots=True)
+class RuleFile:
+    """A rule file as it was last read: its text, what it means, and what is wrong with it."""
+
+    path: Path
+    text: str
+    rules: Rulebook | None
+    problems: tuple[Problem, ...]
+
+    @property
+    def errors(self) -> tuple[Problem, ...]:
+        """The problems that keep the file from being used."""
+        return tuple(problem for problem in self.problems if problem.severity == "error")
+
+
+def read_rule_file(path: str | Path) -> RuleFile:
+    """Read a rule file.
+
+    Raises
+    ------
+    Trouble : the file cannot be opened or is not text
+    """
+    place = Path(path)
+    if not place.is_file():
+        raise Trouble(f"{path}: there is no such rule file; give the path of a YAML file")
+    try:
+        text = place.read_bytes().decode("utf-8")
+    except UnicodeDecodeError as error:
+        raise Trouble(f"{path}: byte {error.start + 1} is not UTF-8; save the rule file as UTF-8") from None
+    except OSError as error:
+        raise Trouble(f"{path}: {error.strerror}; make the rule file readable") from None
+    rules, problems = load_rules(text, place.name)
+    return RuleFile(place, text, rules, problems)
+
+
+def usable(rule_file: RuleFile) -> Rulebook:
+    """The rules, or the trouble that they are not usable.
+
+    Raises
+    ------
+    Trouble : with every problem on a line of its own
+    """
+    if rule_file.rules is None or rule_file.errors:
+        lines = "\n".join(problem.line_text() for problem in rule_file.errors)
+        raise Trouble(f"{rule_file.path} cannot be used:\n{lines}")
+    return rule_file.rules
+
+
+@dataclass(frozen=True, slots=True)
+class Places:
+    """Where things lie: relative folders of the rule file are beside it."""
+
+    base: Path
+
+    def inputs(self, watch: Watch) -> str:
+        """The watched folder."""
+        return os.path.join(self.base, watch.folder)
+
+    def outputs(self, watch: Watch) -> str:
+        """Where results of a watched folder go: beside the data, or into the folder that mirrors it."""
+        return os.path.join(self.base, watch.output or watch.folder)
+
+    def state(self, rules: Rulebook) -> Path:
+        """The state folder."""
+        return self.base / rules.state
+
+
+def wall_clock() -> str:
+    """The time of day for logs and history, never for results."""
+    return datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
+
+
+Clock = Callable[[], str]

@@ -1,0 +1,143 @@
+"""Brackets: whether the sensitivity before and after a series was still that of the batch's first bracket."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+
+from spikeward.rules.checks.subject import Bracket, LineKey, Subject, as_percent, graded, not_evaluated, number, plain
+from spikeward.rules.outcomes import FAIL, PASS, WARN, Check
+from spikeward.rules.records import Reading
+from spikeward.rules.rounding import percent
+from spikeward.rules.rulebook import Limits
+from spikeward.rules.solve.solved import Background
+from spikeward.rules.solve.transform import mean_of, unusable
+
+_NEEDS_TIMES = "Declare the column measured_at or order"
+
+
+def visits(
+    readings: Sequence[Reading], backgrounds: Mapping[LineKey, Background]
+) -> tuple[dict[LineKey, tuple[Bracket, ...]], frozenset[LineKey]]:
+    """The visits to the bracketing solution, line by line, in acquisition order.
+
+    Readings of one line that follow each other without another solution between them are one visit.
+
+    Parameters
+    ----------
+    readings : of every role of one batch, in force
+
+    Returns
+    -------
+    the visits by (analyte, line), and the lines on which not every reading has an acquisition time or order
+    """
+    by_line: dict[LineKey, list[Reading]] = {}
+    for reading in readings:
+        by_line.setdefault((reading.analyte, reading.line), []).append(reading)
+    found: dict[LineKey, tuple[Bracket, ...]] = {}
+    untimed: set[LineKey] = set()
+    for line, of_line in by_line.items():
+        if not all(reading.measured_at or reading.order is not None for reading in of_line):
+            untimed.add(line)
+            continue
+        ordered = sorted(of_line, key=lambda r: (r.when, r.series, r.solution, r.reading, r.path, r.row))
+        runs: list[list[Reading]] = []
+        fresh = True
+        for reading in ordered:
+            if reading.series.role != "bracket":
+                fresh = True
+            elif fresh:
+                runs.append([reading])
+                fresh = False
+            else:
+                runs[-1].append(reading)
+        found[line] = tuple(_bracket(run, backgrounds.get(line)) for run in runs)
+    return found, frozenset(untimed)
+
+
+def _bracket(run: Sequence[Reading], background: Background | None) -> Bracket:
+    signals = [reading.signal for reading in run if reading.signal is not None]
+    sensitivity = None
+    if unusable(run) is None and len(signals) == len(run):
+        sensitivity = mean_of(signals, [max(reading.readings, 1) for reading in run])
+        if background is not None and not background.problem and not any("blank" in r.already for r in run):
+            sensitivity -= background.mean
+    return Bracket(run[0].when, run[-1].when, run[0].solution, sensitivity, tuple(run))
+
+
+def around(subject: Subject) -> tuple[Bracket, ...]:
+    """The brackets that a line depends on: the nearest before it, those within, the nearest after, and the first."""
+    every = subject.context.brackets.get(subject.line_key, ())
+    times = [reading.when for reading in subject.readings]
+    if not every or not times:
+        return ()
+    before = [one for one in every if one.last <= min(times)][-1:]
+    after = [one for one in every if one.first >= max(times)][:1]
+    within = [one for one in every if one not in before + after and min(times) < one.last and one.first < max(times)]
+    near = [*before, *within, *after]
+    return tuple(one for one in every if one in near or one is every[0])
+
+
+def brackets(subject: Subject, limits: Limits) -> Check:
+    """The sensitivity of the nearest bracket on either side, relative to the first bracket of the batch."""
+    rules, line = subject.context.rules, subject.line_key
+    if not rules.brackets and "bracket" not in rules.series.closes_with:
+        return not_evaluated("brackets", "the rules ask for no brackets", "Declare brackets, and measure them")
+    if line in subject.context.untimed:
+        return not_evaluated("brackets", "no acquisition time or order", _NEEDS_TIMES)
+    if any("drift" in reading.already for reading in subject.readings):
+        return not_evaluated("brackets", "the export had its drift corrected already", "Export uncorrected signals")
+    every, near = subject.context.brackets.get(line, ()), around(subject)
+    times = [reading.when for reading in subject.readings]
+    if not times:
+        return not_evaluated("brackets", "the series has no readings")
+    sides = [any(one.last <= min(times) for one in near), any(one.first >= max(times) for one in near)]
+    drifted = drift(near, every, limits)
+    if drifted is not None and drifted.verdict == FAIL:
+        return drifted
+    if sum(sides) < 2 and not subject.context.batch.closed:
+        return not_evaluated("brackets", f"the bracket {_side_lacking(sides)} this series is still expected")
+    return _one_sided(sides, limits) or drifted or not_evaluated("brackets", "no bracket was measured")
+
+
+def drift(near: Sequence[Bracket], every: Sequence[Bracket], limits: Limits) -> Check | None:
+    """The largest deviation of some visits from the first bracket of the batch; None where there are none."""
+    if not near:
+        return None
+    for one in near:
+        if one.sensitivity is None or (one is every[0] and one.sensitivity <= 0):
+            sentence = f"The bracket {one.solution} has no signal that can be used."
+            return plain("brackets", FAIL, sentence, "Measure the series again between good brackets", "theory")
+    first = every[0].sensitivity or math.nan
+    drifts = [((one.sensitivity or 0.0) / first - 1, one.solution) for one in near]
+    worst, solution = max(drifts, key=lambda drift: (abs(drift[0]), drift[1]))
+    signed = f"{'+' if worst >= 0 else ''}{percent(worst)}"
+    told = f"The sensitivity of bracket {solution} is {signed} from the first bracket"
+    if worst == 0:
+        told = f"The brackets around this series read like the first, {every[0].solution}"
+    return graded(
+        "brackets", abs(worst), limits, told,
+        f"Measure again what lies between bracket {solution} and its good neighbours", show=as_percent,
+    )  # fmt: skip
+
+
+def _one_sided(sides: Sequence[bool], limits: Limits) -> Check | None:
+    """A closed batch in which a side has no bracket: by ``warn_sides_below`` and ``fail_sides_below``."""
+    if sum(sides) == 2:
+        return None
+    verdict, named = PASS, ""
+    for limit, severity in (("warn_sides_below", WARN), ("fail_sides_below", FAIL)):
+        needed = number(limits, limit)
+        if needed is not None and sum(sides) < needed:
+            verdict, named = severity, limit
+    if verdict == PASS:
+        return None
+    return Check(
+        "brackets", verdict, f"No bracket was measured {_side_lacking(sides)} this series.", float(sum(sides)), "sides",
+        "a bracket on both sides", limits.sources.get(named, ""),
+        "Measure the series again between two brackets",
+    )  # fmt: skip
+
+
+def _side_lacking(sides: Sequence[bool]) -> str:
+    return "before or after" if not any(sides) else "after" if sides[0] else "before"

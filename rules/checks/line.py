@@ -1,0 +1,193 @@
+"""Checks of the points and the straight line through them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+
+from scipy import special
+from spikeward.rules.checks.subject import Subject, as_percent, graded, not_evaluated, number, plain
+from spikeward.rules.outcomes import FAIL, PASS, WARN, Check, Estimate, Point
+from spikeward.rules.rounding import figure, percent
+from spikeward.rules.rulebook import Limits
+from spikeward.rules.solve.transform import vessel_name
+
+
+def fitted_points(subject: Subject) -> tuple[Point, ...]:
+    """The vessels that the line was fitted to."""
+    return tuple(point for point in subject.solved.points if not point.excluded)
+
+
+def covers_zero(estimate: Estimate) -> bool:
+    """Whether a content cannot be told from zero by its own interval."""
+    return estimate.interval is not None and estimate.interval[0] <= 0
+
+
+def near_zero(subject: Subject) -> str:
+    """Why a ratio to the content would mean nothing, or an empty text."""
+    content = subject.solved.content
+    if subject.role == "process_blank":
+        return "a process blank is expected near zero"
+    if content is None:
+        return "there is no content"
+    if content.content <= 0 or covers_zero(content):
+        return "the content cannot be told from zero"
+    return ""
+
+
+def solved(subject: Subject, limits: Limits) -> Check:
+    """Whether the line gives a number at all."""
+    if subject.solved.no_number:
+        remedy = "Look at the vessels of this series; repeat it if nothing explains them"
+        return plain("solved", FAIL, f"{subject.name} gives no number: {subject.solved.no_number}.", remedy)
+    return plain("solved", PASS, f"The line of {subject.name} gives a content.")
+
+
+def levels(subject: Subject, limits: Limits) -> Check:
+    """Vessels that carry the line; a series with one addition is judged by its design."""
+    points = fitted_points(subject)
+    additions = len({point.x for point in points})
+    told = f"{len(points)} vessels with {additions} different additions carry the line"
+    if subject.solved.prepared.design == "single":
+        return plain("levels", PASS, f"One addition, as the design says: {told}.", source="the rule file's design")
+    return graded(
+        "levels", float(len(points)), limits, told, "Measure the missing levels, or declare the design single",
+        unit="vessels",
+    )  # fmt: skip
+
+
+def response(subject: Subject, limits: Limits) -> Check:
+    """Whether the signal answers to the additions: g = t² u(b)² / b², the slope's relative half-width squared."""
+    g, slope = subject.solved.g, subject.solved.slope
+    remedy = "Add more standard, or measure more vessels; look for a lost addition or a dead signal"
+    if slope is not None and slope <= 0:
+        return plain("response", FAIL, "The signal does not rise with the additions.", remedy, "theory")
+    if g is None or slope is None:
+        reason = "the scatter about the line is not known" if slope is not None else "there is no line"
+        return not_evaluated("response", reason, "Four or more vessels show the scatter")
+    unbounded = number(limits, "fail_above")
+    sentence = f"The slope is known to ± {percent(math.sqrt(g))} (g {figure(g, 2)})"
+    if unbounded is not None and g >= unbounded:
+        told = f"fails from g {figure(unbounded)}"
+        return Check(
+            "response", FAIL, f"{sentence}: it does not differ from zero ({told}).", g, "1", told,
+            limits.sources.get("fail_above", ""), remedy,
+        )  # fmt: skip
+    return graded("response", g, limits, sentence, remedy)
+
+
+def correlation(subject: Subject, limits: Limits) -> Check:
+    """The correlation coefficient, where a method demands one; it is no proof of a straight line."""
+    r = subject.solved.correlation
+    if r is None or subject.solved.degrees_of_freedom < 1:
+        return not_evaluated("correlation", "two points always lie on a line", "Measure more levels")
+    show = f"r is {r:.5f} over {len(fitted_points(subject))} vessels"
+    remedy = "Find the vessel that lies off the line, or the curvature; repeat the series"
+    return graded("correlation", r, limits, show, remedy)
+
+
+def residual(subject: Subject, limits: Limits) -> Check:
+    """The largest residual over the fitted signal.
+
+    Small signals are held against ``floor`` times the largest fitted signal, so that the noise at a content near zero
+    is not taken for a slip.
+    """
+    points = [point for point in fitted_points(subject) if point.fitted is not None]
+    if subject.solved.degrees_of_freedom < 1 or not points:
+        return not_evaluated("residual", "no degree of freedom is left for residuals", "Measure more levels")
+    floor = (number(limits, "floor") or 0.0) * max(abs(_fitted(point)) for point in points)
+    scale = [max(abs(_fitted(point)), floor) for point in points]
+    if min(scale) == 0:
+        return not_evaluated("residual", "the fitted signal of a vessel is zero")
+    sizes = [abs(point.y - _fitted(point)) / size for point, size in zip(points, scale, strict=True)]
+    largest = max(sizes)
+    where = vessel_name(points[sizes.index(largest)].level, points[sizes.index(largest)].vessel)
+    against = "its fitted signal"
+    if floor > abs(_fitted(points[sizes.index(largest)])):
+        against = f"{percent(number(limits, 'floor') or 0.0)} of the largest fitted signal"
+    sentence = f"The largest residual, of {where}, is {percent(largest)} of {against}"
+    return graded(
+        "residual", largest, limits, sentence, f"Look for a pipetting slip, first in {where}; prepare and measure it again",
+        show=as_percent,
+    )  # fmt: skip
+
+
+def studentised(subject: Subject, limits: Limits) -> Check:
+    """The largest internally studentised residual against its critical value at two levels of significance.
+
+    With n vessels it cannot exceed sqrt(n - 2). Critical value by Bonferroni's bound (Cook and Weisberg, Residuals and
+    Influence in Regression, 1982, 2.2.2): t sqrt((n-2)/(n-3+t²)) with t at p/(2n) and n-3 degrees of freedom.
+    """
+    points = [point for point in fitted_points(subject) if point.fitted is not None]
+    s, x_mean, sxx = subject.solved.residual_sd, subject.solved.x_mean, subject.solved.sxx
+    n, needed = len(points), int(number(limits, "needs_vessels") or 5)
+    if n < needed or not s or x_mean is None or not sxx:
+        bound = f"; with {n} it cannot exceed {math.sqrt(n - 2):.2f}" if n > 2 else ""
+        return not_evaluated(
+            "studentised", f"no power below {needed} vessels{bound}" if n < needed else "there is no scatter",
+            f"{needed} or more vessels",
+        )  # fmt: skip
+    ratios = [
+        abs(point.y - _fitted(point)) / (s * math.sqrt(max(1 - 1 / n - (point.x - x_mean) ** 2 / sxx, 1e-12)))
+        for point in points
+    ]
+    largest = max(ratios)
+    where = vessel_name(points[ratios.index(largest)].level, points[ratios.index(largest)].vessel)
+    sentence = f"The largest studentised residual is {largest:.3f}, of {where}"
+    return _significance(
+        "studentised", largest, limits, sentence, f"Look for a slip in {where}; prepare and measure it again",
+        lambda p: _studentised_critical(p, n),
+    )  # fmt: skip
+
+
+def _studentised_critical(p: float, n: int) -> float:
+    t = -float(special.stdtrit(n - 3, p / (2 * n)))
+    return t * math.sqrt((n - 2) / (n - 3 + t * t))
+
+
+def _significance(
+    name: str, observed: float, limits: Limits, sentence: str, remedy: str, critical: Callable[[float], float]
+) -> Check:
+    """Warn and fail at the critical values of ``warn_p`` and ``fail_p``."""
+    at = {limit: p for limit in ("fail_p", "warn_p") if (p := number(limits, limit)) is not None}
+    values = {limit: critical(p) for limit, p in at.items()}
+    broken = [limit for limit in at if observed > values[limit]]
+    told = "; ".join(f"{limit[:4]}s above {values[limit]:.3f}" for limit in sorted(at, reverse=True))
+    verdict = PASS if not broken else FAIL if broken[0] == "fail_p" else WARN
+    source = limits.sources.get(broken[0] if broken else "warn_p", "")
+    return Check(
+        name, verdict, f"{sentence} ({told}).", observed, "1", told, source, "" if verdict == PASS else remedy
+    )
+
+
+def span(subject: Subject, limits: Limits) -> Check:
+    """The top addition over the content: too little extrapolates far, too much crowds the content into a corner."""
+    content, points = subject.solved.content, fitted_points(subject)
+    if why := near_zero(subject):
+        return not_evaluated("span", why)
+    if content is None or not points:
+        return not_evaluated("span", "there is no content")
+    ratio = max(point.x for point in points) / content.content
+    low, high = "Repeat with larger additions", "Repeat with smaller additions, or with more test solution"
+    sentence = f"The top addition is {figure(ratio)} times the content"
+    return graded("span", ratio, limits, sentence, low if ratio < 1 else high)
+
+
+def matrix_spread(subject: Subject, limits: Limits) -> Check:
+    """How much the share of test solution differs between vessels: volumes are corrected for, the matrix is not."""
+    shares = [point.matrix_share for point in fitted_points(subject)]
+    if len(shares) < 2:
+        return not_evaluated("matrix_spread", "fewer than two vessels are known")
+    spread = max(shares) / min(shares) - 1
+    sentence = f"The share of test solution differs by {percent(spread)} between vessels"
+    if spread == 0:
+        sentence = "Every vessel holds the same share of test solution"
+    return graded(
+        "matrix_spread", spread, limits, sentence,
+        "Take equal aliquots and make every vessel up to one volume, so that all hold the same matrix",
+        show=as_percent,
+    )  # fmt: skip
+
+
+def _fitted(point: Point) -> float:
+    return point.fitted if point.fitted is not None else 0.0

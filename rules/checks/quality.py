@@ -1,0 +1,137 @@
+"""Checks of the result: how well it is known, what was subtracted, and whether the standard was in date."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from spikeward.rules.checks.line import fitted_points, near_zero
+from spikeward.rules.checks.subject import Subject, as_percent, graded, not_evaluated, number, plain
+from spikeward.rules.outcomes import FAIL, PASS, WARN, Check, Estimate
+from spikeward.rules.rounding import percent, rounded
+from spikeward.rules.rulebook import Limits
+
+
+def reported(subject: Subject) -> Estimate | None:
+    """The content in the sample where it is known, else in the test solution."""
+    return subject.solved.in_sample or subject.solved.content
+
+
+def expanded_uncertainty(subject: Subject, limits: Limits) -> Check:
+    """The expanded uncertainty over the content; a precision from few vessels only warns."""
+    estimate, count = reported(subject), len(fitted_points(subject))
+    name = "expanded_uncertainty"
+    if subject.role == "process_blank":
+        return not_evaluated(name, near_zero(subject))
+    if estimate is None or estimate.expanded_uncertainty is None:
+        why = estimate.reason if estimate is not None and estimate.reason else "there is no uncertainty"
+        return not_evaluated(name, why.rstrip("."), "Four or more vessels show the scatter")
+    wide = estimate.expanded_uncertainty
+    remedy = "Measure more vessels, or find what scatters"
+    if estimate.content <= 0 or wide >= estimate.content:
+        value, spread = rounded(estimate.content, wide)
+        sentence = f"The content, {value} ± {spread} {estimate.unit}, cannot be told from zero."
+        return plain(name, WARN, sentence, "Take it for not detected, or concentrate the test solution", "theory")
+    check = graded(
+        name, wide / estimate.content, limits,
+        f"The expanded uncertainty is {percent(wide / estimate.content)} of the content", remedy, show=as_percent,
+    )  # fmt: skip
+    needed = number(limits, "fails_from_vessels")
+    if check.verdict == FAIL and needed is not None and count < needed:
+        few = f"with the precision of {count} vessels alone it only warns"
+        return replace(check, verdict=WARN, sentence=f"{check.sentence[:-1]}; {few}.")
+    return check
+
+
+def blank(subject: Subject, limits: Limits) -> Check:
+    """The blanks that the rules subtract: that they came, and the process blank's share of the result."""
+    asked = subject.context.rules.blanks
+    if not asked.background and not asked.process:
+        return not_evaluated("blank", "the rules subtract no blank", "Declare it under blanks")
+    if lacking := blank_lacking(subject):
+        if subject.context.batch.closed:
+            sentence = f"{lacking[:1].upper()}{lacking[1:]}, though the rules subtract it."
+            return plain("blank", FAIL, sentence, "Measure it, or take it out of the rules", "the rule file")
+        return not_evaluated("blank", f"{lacking}; it is still expected")
+    solved = subject.solved
+    if solved.background is not None and solved.background.problem:
+        sentence = f"The background is not known: {solved.background.problem}."
+        return plain("blank", FAIL, sentence, "Measure the background again", "the rule file")
+    if subject.role == "process_blank":
+        return plain("blank", PASS, "This series is a blank itself.")
+    if not asked.process or solved.blank is None:
+        return _without_process_blank(subject)
+    return _share(subject, limits, solved.blank)
+
+
+def _share(subject: Subject, limits: Limits, amount: float) -> Check:
+    estimate = reported(subject)
+    if failed := [
+        key.sample
+        for key, line in subject.context.failed
+        if key.role == "process_blank" and line == subject.line_key
+    ]:
+        told = ", ".join(sorted(failed))
+        sentence = f"The process blank that was subtracted failed its own checks (process blank {told})."
+        return plain("blank", FAIL, sentence, "Look at the blank's own summary; repeat it", "theory")
+    if estimate is None or estimate.content <= 0 or near_zero(subject):
+        sentence = "Blank and sample cannot be told apart: the content does not differ from zero."
+        return plain("blank", WARN, sentence, "Take it for not detected, or look where the blank comes from", "theory")
+    share = abs(amount) / estimate.content
+    return graded(
+        "blank", share, limits, f"The process blank is {percent(share)} of the result",
+        "Find what brings the analyte in: reagents, vessels, air; prepare the sample again", show=as_percent,
+    )  # fmt: skip
+
+
+def blank_lacking(subject: Subject) -> str:
+    """Which blank that the rules subtract has not been measured for this line, or an empty text."""
+    asked, batch = subject.context.rules.blanks, subject.context.batch
+    prepared = subject.solved.prepared
+    if any("blank" in reading.already for reading in subject.readings):
+        return ""
+    if asked.background and subject.line_key not in subject.context.backgrounds:
+        return f"no background of {subject.name} was measured in this batch"
+    if not asked.process or subject.role == "process_blank":
+        return ""
+    if not any(key.role == "process_blank" for key in batch.members):
+        return "no process blank was measured in this batch"
+    if prepared.way_back is not None and subject.solved.in_sample is not None and subject.solved.blank is None:
+        return f"no process blank of {subject.name} gives a number"
+    return ""
+
+
+def _without_process_blank(subject: Subject) -> Check:
+    """Nothing is subtracted in the sample: right where the rules or the export say so, else worth a look."""
+    solved, already = subject.solved, any("blank" in reading.already for reading in subject.readings)
+    if already:
+        return plain("blank", PASS, "The export had the blank taken off already; none was subtracted again.")
+    if subject.context.rules.blanks.process and solved.no_number:
+        return not_evaluated("blank", "there is no content")
+    if subject.context.rules.blanks.process:
+        told = solved.blank_note or "no process blank was subtracted"
+        return plain(
+            "blank", WARN, f"{told[:1].upper()}{told[1:]}.", "Declare the way back to the sample under preparations"
+        )
+    return plain("blank", PASS, f"The background of {subject.name} was taken off every reading.")
+
+
+def standard(subject: Subject, limits: Limits) -> Check:
+    """Whether the spiking standard was in date when the vessels were measured."""
+    prepared = subject.solved.prepared
+    if not prepared.expires:
+        return not_evaluated("standard", "the rule file gives no date of expiry", "Declare it under standards: expires")
+    times = sorted(reading.measured_at for reading in subject.readings if reading.measured_at)
+    if not times:
+        return not_evaluated("standard", "the export gives no acquisition time", "Declare the column measured_at")
+    latest = times[-1][:10]
+    told = f"in date until {prepared.expires}"
+    if latest > prepared.expires:
+        sentence = f"The standard {prepared.standard} was {told} and measured on {latest}."
+        return Check(
+            "standard", FAIL, sentence, limit=told, source="the standard's date of expiry",
+            remedy="Repeat with a standard in date, or correct the date of expiry in the rule file",
+        )  # fmt: skip
+    return Check(
+        "standard", PASS, f"The standard {prepared.standard} was {told}.", limit=told,
+        source="the standard's date of expiry",
+    )  # fmt: skip

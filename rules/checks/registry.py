@@ -1,0 +1,77 @@
+"""The checks by the names that rule files, results and pages use."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from spikeward.rules.checks import brackets, curvature, line, quality, reference, signal
+from spikeward.rules.checks.subject import NO_LIMITS, CheckOfLine, Subject
+from spikeward.rules.outcomes import Check
+
+RESULT, SERIES, BATCH = "result", "series", "batch"
+
+
+@dataclass(frozen=True, slots=True)
+class Registered:
+    """A check, what it looks at, and one line that says what it asks.
+
+    ``certain_early``: what it finds on some levels cannot be undone by those still missing. ``not_shown``: what a
+    reader should know is not shown where the check is not evaluated. ``always``: made whether the rules name it or not.
+    """
+
+    name: str
+    function: CheckOfLine
+    looks_at: str
+    describes: str
+    certain_early: bool = False
+    not_shown: str = ""
+    always: bool = False
+
+
+REGISTRY: dict[str, Registered] = {
+    one.name: one
+    for one in (
+        Registered("solved", line.solved, RESULT, "the line gives a number", always=True),
+        Registered("units", signal.units, RESULT, "all signals come in one unit", certain_early=True),
+        Registered("linear_top", signal.linear_top, RESULT, "no signal is above the straight part", certain_early=True),
+        Registered("standard", quality.standard, RESULT, "the standard was in date", certain_early=True),
+        Registered("levels", line.levels, RESULT, "enough vessels carry the line"),
+        Registered("response", line.response, RESULT, "the signal answers to the additions"),
+        Registered("correlation", line.correlation, RESULT, "r reaches what the method demands"),
+        Registered("curvature", curvature.curvature, RESULT, "the response is straight", not_shown="linearity"),
+        Registered("residual", line.residual, RESULT, "no vessel lies far off the line"),
+        Registered("studentised", line.studentised, RESULT, "no vessel lies off the line by more than chance"),
+        Registered("precision", signal.precision, RESULT, "readings of one vessel repeat"),
+        Registered("span", line.span, RESULT, "the additions suit the content"),
+        Registered("matrix_spread", line.matrix_spread, RESULT, "every vessel holds the same matrix"),
+        Registered("expanded_uncertainty", quality.expanded_uncertainty, RESULT, "the result is known well enough"),
+        Registered("blank", quality.blank, RESULT, "blanks came and are small beside the result", always=True),
+        Registered("brackets", brackets.brackets, BATCH, "the sensitivity held on both sides", not_shown="drift"),
+        Registered("reference", reference.reference, BATCH, "the reference is recovered", not_shown="trueness"),
+        Registered("check_sample", reference.check_sample, BATCH, "the check sample is recovered"),
+    )
+}
+"""Checks of one analyte on one line, in the order of a report; those that look at the batch do so for that line."""
+
+SERIES_CHECKS: dict[str, str] = {
+    "completeness": "every level, reading, analyte and bench value is there",
+    "conflict": "sources do not contradict each other",
+    "preparation": "volumes, standard and way back are known",
+    "identity": "nothing about the origin of the readings is doubtful",
+}
+"""Checks of a whole series, always made; they have no limits."""
+
+
+def check_line(subject: Subject, only_certain: bool = False) -> tuple[Check, ...]:
+    """Every check that the rules name, and those that are always made, of one line.
+
+    Parameters
+    ----------
+    only_certain : the series is not complete; make only checks whose finding more levels cannot undo
+    """
+    asked = subject.context.rules.checks
+    return tuple(
+        one.function(subject, asked.get(name, NO_LIMITS))
+        for name, one in REGISTRY.items()
+        if (one.always or name in asked) and (one.certain_early or not only_certain)
+    )

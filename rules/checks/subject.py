@@ -1,0 +1,173 @@
+"""What a check looks at, and how a number is held against the limits of the rule file."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+
+from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WARN, Check
+from spikeward.rules.records import Batch, Reading, SeriesKey
+from spikeward.rules.rounding import figure, percent
+from spikeward.rules.rulebook import Limits, Rulebook
+from spikeward.rules.solve.solved import Background, Solved
+
+LineKey = tuple[str, str]  # analyte, line
+
+
+@dataclass(frozen=True, slots=True)
+class Bracket:
+    """One visit to the bracketing solution: its readings on one line, read without another solution between them.
+
+    ``sensitivity`` is the mean signal, background off, in the instrument's unit; None where a reading has no number.
+    ``first`` and ``last`` are acquisition sort keys as ``Reading.when``.
+    """
+
+    first: tuple[str, int]
+    last: tuple[str, int]
+    solution: str
+    sensitivity: float | None
+    readings: tuple[Reading, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Context:
+    """What the rest of the batch tells about a line.
+
+    ``solved`` holds every line of the batch by role and line, process blanks subtracted; ``waiting`` the series that
+    are neither complete nor lapsed; ``failed`` the lines of blanks and references that failed their own checks;
+    ``untimed`` the lines on which acquisition times or order are not all known.
+    """
+
+    batch: Batch
+    rules: Rulebook
+    solved: Mapping[tuple[str, LineKey], tuple[Solved, ...]] = field(default_factory=dict)
+    waiting: frozenset[SeriesKey] = frozenset()
+    failed: frozenset[tuple[SeriesKey, LineKey]] = frozenset()
+    backgrounds: Mapping[LineKey, Background] = field(default_factory=dict)
+    brackets: Mapping[LineKey, tuple[Bracket, ...]] = field(default_factory=dict)
+    untimed: frozenset[LineKey] = frozenset()
+
+
+@dataclass(frozen=True, slots=True)
+class Subject:
+    """One solved line of one series, within its batch."""
+
+    solved: Solved
+    context: Context
+
+    @property
+    def role(self) -> str:
+        """The role of the series."""
+        return self.solved.prepared.key.role
+
+    @property
+    def name(self) -> str:
+        """The line as sentences name it: the line where there is one, else the analyte."""
+        return self.solved.prepared.line or self.solved.prepared.analyte
+
+    @property
+    def line_key(self) -> LineKey:
+        """Analyte and line."""
+        return self.solved.prepared.analyte, self.solved.prepared.line
+
+    @property
+    def readings(self) -> tuple[Reading, ...]:
+        """The readings of all vessels that are not excluded."""
+        return tuple(r for vessel in self.solved.prepared.vessels if not vessel.excluded for r in vessel.readings)
+
+
+CheckOfLine = Callable[[Subject, Limits], Check]
+
+NO_LIMITS = Limits({}, {})
+
+
+def number(limits: Limits, name: str) -> float | None:
+    """A limit that is a single number, or None where the rule file does not ask for it."""
+    value = limits.values.get(name)
+    return value if isinstance(value, (int, float)) else None
+
+
+def span_of(limits: Limits, name: str) -> tuple[float, float] | None:
+    """A limit that is a range, or None where the rule file does not ask for it."""
+    value = limits.values.get(name)
+    return value if isinstance(value, tuple) else None
+
+
+def not_evaluated(
+    name: str, reason: str, remedy: str = "", observed: float | None = None, unit: str = ""
+) -> Check:
+    """A check that says why it could not speak, and in ``remedy`` what would let it.
+
+    Parameters
+    ----------
+    reason : completes ``Not evaluated: …``
+    """
+    return Check(name, NOT_EVALUATED, f"Not evaluated: {reason}.", observed, unit, remedy=remedy)
+
+
+def plain(name: str, verdict: str, sentence: str, remedy: str = "", source: str = "") -> Check:
+    """A check that does not compare a number with a limit."""
+    return Check(name, verdict, sentence, source=source, remedy="" if verdict == PASS else remedy)
+
+
+def as_percent(value: float) -> str:
+    """A fraction as limits show it."""
+    return percent(value, 3)
+
+
+def graded(
+    name: str,
+    observed: float,
+    limits: Limits,
+    sentence: str,
+    remedy: str,
+    *,
+    show: Callable[[float], str] = figure,
+    unit: str = "1",
+) -> Check:
+    """Hold a number against the limits ``fail_…`` and ``warn_…``, each with the ending above, below or outside.
+
+    Parameters
+    ----------
+    sentence : what was observed, without a full stop; the limits are appended
+    show : how a limit is written
+    """
+    broken = [
+        limit for limit in ("fail_above", "fail_below", "fail_outside", "warn_above", "warn_below", "warn_outside")
+        if _beyond(observed, limits, limit)
+    ]  # fmt: skip
+    asked = [limit for limit in limits.values if limit in _WORDS and limits.values[limit] is not None]
+    if not asked:
+        return not_evaluated(name, f"the rules ask for no limit; {_lower_first(sentence)}", "", observed, unit)
+    verdict = PASS if not broken else FAIL if broken[0].startswith("fail") else WARN
+    source = limits.sources.get(broken[0] if broken else asked[0], "")
+    told = "; ".join(f"{_WORDS[limit]} {_shown(limits, limit, show)}" for limit in sorted(asked, reverse=True))
+    return Check(
+        name, verdict, f"{sentence} ({told}).", observed, unit, told, source, "" if verdict == PASS else remedy
+    )
+
+
+_WORDS = {
+    "warn_above": "warns above", "warn_below": "warns below", "warn_outside": "warns outside",
+    "fail_above": "fails above", "fail_below": "fails below", "fail_outside": "fails outside",
+}  # fmt: skip
+
+
+def _beyond(observed: float, limits: Limits, name: str) -> bool:
+    value = limits.values.get(name)
+    if value is None:
+        return False
+    if isinstance(value, tuple):
+        return not value[0] <= observed <= value[1]
+    return not observed <= value if name.endswith("above") else not observed >= value
+
+
+def _shown(limits: Limits, name: str, show: Callable[[float], str]) -> str:
+    value = limits.values[name]
+    if isinstance(value, tuple):
+        return f"{show(value[0])} to {show(value[1])}"
+    return show(value) if value is not None else ""
+
+
+def _lower_first(text: str) -> str:
+    return text[:1].lower() + text[1:]

@@ -1,0 +1,209 @@
+"""Which readings count: duplicates are counted once, contradictions fail their series and name both sources.
+
+The identity of a reading is its natural key, never its path, file time or time of arrival.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field, replace
+
+from spikeward.rules.naming import level_order
+from spikeward.rules.records import (
+    SERIES_ROLES,
+    Batch,
+    BatchKey,
+    BenchEntry,
+    Decision,
+    Members,
+    Reading,
+    SeriesKey,
+)
+from spikeward.rules.rulebook import Rulebook
+
+Identity = tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """What is known of a batch besides its readings: entered as data, never decided here."""
+
+    closed: bool = False
+    lapsed: frozenset[SeriesKey] = frozenset()
+    bench: tuple[BenchEntry, ...] = ()
+    decisions: tuple[Decision, ...] = ()
+
+
+@dataclass(slots=True)
+class _Found:
+    kept: list[Reading] = field(default_factory=list)
+    conflicts: list[str] = field(default_factory=list)
+    notes: list[str] = field(default_factory=list)
+    warnings: list[str] = field(default_factory=list)
+
+
+def in_force(
+    readings: Iterable[Reading], rules: Rulebook, states: Mapping[BatchKey, State] | None = None
+) -> tuple[Batch, ...]:
+    """Group readings into batches and decide which of them count.
+
+    Parameters
+    ----------
+    readings : of any number of files, in any order; the answer does not depend on it
+    states : closings, lapses, bench entries and decisions by batch
+
+    Returns
+    -------
+    batches in the order of their keys, each member's readings in canonical order
+    """
+    by_series: dict[SeriesKey, list[Reading]] = defaultdict(list)
+    for reading in readings:
+        by_series[reading.series].append(reading)
+    twins = _equal_files(by_series)
+    batches: dict[BatchKey, dict[SeriesKey, Members]] = defaultdict(dict)
+    for key in sorted(by_series):
+        state = (states or {}).get(key.batch_key, State())
+        members = _members(key, by_series[key], rules, state)
+        if key in twins:
+            members = replace(members, warnings=members.warnings + tuple(sorted(twins[key])))
+        batches[key.batch_key][key] = members
+    result = []
+    for batch_key in sorted(batches):
+        state = (states or {}).get(batch_key, State())
+        result.append(
+            Batch(batch_key, batches[batch_key], state.bench, state.decisions, state.closed, state.lapsed)
+        )
+    return tuple(result)
+
+
+def canonical(reading: Reading) -> tuple[object, ...]:
+    """The sort key of readings inside a series: by level, vessel, repetition, analyte, time, and place at last."""
+    return (
+        level_order(reading.level),
+        level_order(reading.vessel),
+        level_order(reading.injection),
+        level_order(reading.reading),
+        reading.analyte,
+        reading.line,
+        reading.when,
+        reading.path,
+        reading.row,
+    )
+
+
+def _vessel_identity(reading: Reading) -> Identity:
+    return (
+        reading.level, reading.vessel, reading.injection, reading.reading, reading.analyte, reading.line,
+    )  # fmt: skip
+
+
+def _members(key: SeriesKey, readings: list[Reading], rules: Rulebook, state: State) -> Members:
+    repeats = key.role not in SERIES_ROLES or rules.series.same_name == "reading"
+    groups: dict[Identity, list[Reading]] = defaultdict(list)
+    occurrence: dict[tuple[str, Identity], int] = defaultdict(int)
+    for reading in sorted(readings, key=lambda r: (r.path, r.row)):
+        identity = (*_vessel_identity(reading), reading.measured_at, str(reading.order))
+        if repeats and not reading.measured_at and reading.order is None:
+            # Without a time, rows of one name in one file are told apart by their turn in that file.
+            turn = occurrence[reading.path, identity]
+            occurrence[reading.path, identity] += 1
+            identity = (*identity, str(turn))
+        groups[identity].append(reading)
+    found = _Found()
+    preferred = {decision.target: decision for decision in state.decisions if decision.kind == "prefer"}
+    for identity in sorted(groups):
+        _one(groups[identity], preferred, found)
+    if not repeats:
+        _refuse_met_again(found)
+    found.kept.sort(key=canonical)
+    return Members(
+        key,
+        tuple(found.kept),
+        tuple(dict.fromkeys(sorted(found.conflicts))),
+        tuple(dict.fromkeys(found.notes)),
+        tuple(dict.fromkeys(sorted(found.warnings))),
+    )
+
+
+def _value(reading: Reading) -> tuple[object, ...]:
+    return (
+        reading.signal, reading.qualifier, reading.unit, reading.sd, reading.readings, reading.values, reading.already,
+        reading.text if reading.signal is None else "",
+    )  # fmt: skip
+
+
+def _place(reading: Reading) -> str:
+    return f"{reading.path} row {reading.row}"
+
+
+def _one(candidates: list[Reading], preferred: Mapping[str, Decision], found: _Found) -> None:
+    """Decide between the readings of one natural key; candidates come in the order of path and row."""
+    distinct: dict[tuple[object, ...], Reading] = {}
+    for reading in candidates:
+        first = distinct.setdefault(_value(reading), reading)
+        if first is not reading:
+            found.notes.append(f"{_place(reading)} repeats {_place(first)} with equal values; one counts")
+    rivals = list(distinct.values())
+    if len(rivals) == 1:
+        found.kept.append(rivals[0])
+        return
+    chosen = _chosen(rivals, candidates, preferred)
+    if chosen is None:
+        places = " and ".join(f"{_place(r)} ({r.text} {r.unit})".replace(" )", ")") for r in rivals)
+        found.conflicts.append(
+            f"{rivals[0].solution}, {rivals[0].line or rivals[0].analyte}: {places} disagree about one reading; "
+            "remove the wrong file, declare the column of the processing time, or decide with prefer in the decisions file"
+        )
+        found.kept.append(rivals[0])
+        return
+    found.kept.append(chosen)
+    found.notes += [f"{_place(r)} ({r.text}) is superseded by {_place(chosen)} ({chosen.text})" for r in rivals if r is not chosen]
+
+
+def _chosen(
+    rivals: list[Reading], candidates: list[Reading], preferred: Mapping[str, Decision]
+) -> Reading | None:
+    in_preferred = [reading for reading in candidates if reading.path in preferred]
+    if in_preferred and len({_value(reading) for reading in in_preferred}) == 1:
+        return in_preferred[0]
+    latest = max(reading.processed_at for reading in candidates)
+    last = [reading for reading in candidates if reading.processed_at == latest]
+    if all(reading.processed_at for reading in candidates) and len({_value(reading) for reading in last}) == 1:
+        return last[0]
+    return None
+
+
+def _refuse_met_again(found: _Found) -> None:
+    met: dict[Identity, Reading] = {}
+    for reading in sorted(found.kept, key=canonical):
+        first = met.setdefault(_vessel_identity(reading), reading)
+        if first is not reading:
+            found.conflicts.append(
+                f"{reading.solution}, {reading.line or reading.analyte}: the same vessel is met again "
+                f"({_place(first)} and {_place(reading)}); exclude one in the decisions file, "
+                "or say same_name: reading under series if these are repeated readings"
+            )
+
+
+def _equal_files(by_series: Mapping[SeriesKey, list[Reading]]) -> dict[SeriesKey, set[str]]:
+    """Equal bytes under names that mean different vessels: all count, with a warning."""
+    seen: dict[tuple[object, ...], dict[tuple[object, ...], Reading]] = defaultdict(dict)
+    for key, readings in by_series.items():
+        for reading in readings:
+            if reading.file_digest:
+                place = (key.batch_key, reading.file_digest, reading.row, reading.analyte, reading.line)
+                identity = (key, *_vessel_identity(reading))
+                known = seen[place].get(identity)
+                if known is None or reading.path < known.path:
+                    seen[place][identity] = reading
+    warnings: dict[SeriesKey, set[str]] = defaultdict(set)
+    for identities in seen.values():
+        if len(identities) > 1:
+            paths = " and ".join(sorted({reading.path for reading in identities.values()}))
+            for reading in identities.values():
+                warnings[reading.series].add(
+                    f"{paths} have equal content under names that mean different vessels; all count. "
+                    "Check whether one was exported twice"
+                )
+    return warnings

@@ -1,0 +1,178 @@
+"""One series as it is told: results with their checks, vessels, context, verdict and first words."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+from spikeward.rules.checks.brackets import around
+from spikeward.rules.checks.quality import blank_lacking
+from spikeward.rules.checks.registry import BATCH, REGISTRY, check_line
+from spikeward.rules.checks.series import completeness, troubles
+from spikeward.rules.checks.subject import Context, Subject
+from spikeward.rules.digests import inputs_digest
+from spikeward.rules.naming import level_order
+from spikeward.rules.outcomes import Check, Outcome, Result, VesselReport, worst
+from spikeward.rules.prepared import PreparedLine, PreparedVessel
+from spikeward.rules.records import Members, Reading
+from spikeward.rules.sentences import headline, result_sentence
+from spikeward.rules.solve.solved import Solved
+from spikeward.rules.verdicts import published
+
+
+@dataclass(frozen=True, slots=True)
+class Standing:
+    """How far a series is. ``over``: nothing more is expected of it; ``settled``: its verdict stands."""
+
+    members: Members
+    missing: tuple[str, ...]
+    over: bool
+    settled: bool
+    waiting_for: tuple[str, ...]
+
+    @property
+    def incomplete(self) -> bool:
+        """Whether members are missing that may still come."""
+        return bool(self.missing) and not self.over
+
+
+def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Outcome:
+    """Check one series and say all that is known about it.
+
+    Parameters
+    ----------
+    solved : its lines, process blanks subtracted
+    context : of its batch
+    """
+    rules, members = context.rules, standing.members
+    lines = [line.prepared for line in solved]
+    checks = (
+        completeness(standing.missing, lines, standing.over, rules),
+        *troubles(members, lines),
+    )
+    subjects = [Subject(line, context) for line in solved]
+    results = tuple(_result(subject, checks, standing) for subject in subjects)
+    so_far = worst([check.verdict for check in (*checks, *(c for result in results for c in result.checks))])
+    verdict = published(so_far, standing.settled)
+    entered = _entered(subjects)
+    told = [check for result in results for check in result.checks if _from_batch(check)]
+    return Outcome(
+        key=members.key,
+        verdict=verdict,
+        so_far=so_far,
+        final=standing.settled,
+        waiting_for=standing.waiting_for,
+        design=", ".join(dict.fromkeys(line.design for line in lines if line.design)),
+        sentence=headline(members.key, verdict, so_far, standing.settled, checks, results, standing.waiting_for),
+        results=results,
+        checks=checks,
+        vessels=_vessels(members, lines),
+        context=entered,
+        notes=_notes(members, solved),
+        inputs_digest=inputs_digest(
+            members, context.batch, entered, told, standing.waiting_for, standing.settled, rules
+        ),
+        rules_digest=rules.digest,
+    )
+
+
+def _from_batch(check: Check) -> bool:
+    return check.name == "blank" or (check.name in REGISTRY and REGISTRY[check.name].looks_at == BATCH)
+
+
+def _result(subject: Subject, common: Sequence[Check], standing: Standing) -> Result:
+    """One line; its verdict counts the checks of the whole series too, for a table shows it beside the number."""
+    solved = subject.solved
+    checks = check_line(subject, only_certain=standing.incomplete)
+    so_far = worst([check.verdict for check in (*common, *checks)])
+    withheld = _withheld(subject, standing)
+    back = solved.prepared.way_back
+    result = Result(
+        analyte=solved.prepared.analyte,
+        line=solved.prepared.line,
+        verdict=published(so_far, standing.settled),
+        content=None if withheld else solved.content,
+        in_sample=None if withheld else solved.in_sample,
+        no_number=withheld,
+        signal_unit=solved.prepared.signal_unit,
+        content_unit=solved.prepared.unit,
+        basis=back.basis if back is not None else "",
+        slope=solved.slope,
+        slope_uncertainty=solved.slope_uncertainty,
+        intercept=solved.intercept,
+        intercept_uncertainty=solved.intercept_uncertainty,
+        residual_sd=solved.residual_sd,
+        correlation=solved.correlation,
+        degrees_of_freedom=solved.degrees_of_freedom,
+        points=solved.points,
+        checks=checks,
+        background=_subtracted_background(solved),
+        blank=None if withheld else solved.blank,
+        preparation=solved.preparation,
+    )
+    return replace(result, sentence=result_sentence(result, solved))
+
+
+def _withheld(subject: Subject, standing: Standing) -> str:
+    """Why no number is shown: the line gives none, members are missing, or a blank that must come off is not there."""
+    if subject.solved.no_number:
+        return subject.solved.no_number
+    if standing.incomplete:
+        return f"the series is not complete; it lacks {', '.join(standing.missing)}"
+    return blank_lacking(subject)
+
+
+def _subtracted_background(solved: Solved) -> float | None:
+    background = solved.background
+    return background.mean if background is not None and not background.problem else None
+
+
+def _entered(subjects: Sequence[Subject]) -> tuple[Reading, ...]:
+    """The readings of the batch that enter the numbers or the drift of a series: each once, in a fixed order."""
+    found: dict[Reading, None] = {}
+    for subject in subjects:
+        if subject.solved.background is not None:
+            found.update(dict.fromkeys(subject.solved.background.readings))
+        if subject.solved.blank is not None:
+            for blank in subject.context.solved.get(("process_blank", subject.line_key), ()):
+                found.update(dict.fromkeys(Subject(blank, subject.context).readings))
+        if "brackets" in subject.context.rules.checks:
+            found.update(dict.fromkeys(reading for bracket in around(subject) for reading in bracket.readings))
+    return tuple(found)
+
+
+def _vessels(members: Members, lines: Sequence[PreparedLine]) -> tuple[VesselReport, ...]:
+    grouped: dict[tuple[str, str], list[Reading]] = {}
+    for reading in members.readings:
+        grouped.setdefault((reading.level, reading.vessel), []).append(reading)
+    prepared: dict[tuple[str, str], tuple[PreparedVessel, str]] = {}
+    for line in lines:
+        for vessel in line.vessels:
+            prepared.setdefault((vessel.level, vessel.vessel), (vessel, line.standard))
+    places = sorted(grouped, key=lambda place: (level_order(place[0]), level_order(place[1])))
+    return tuple(_vessel(place, grouped[place], prepared.get(place)) for place in places)
+
+
+def _vessel(
+    place: tuple[str, str], readings: Sequence[Reading], found: tuple[PreparedVessel, str] | None
+) -> VesselReport:
+    level, name = place
+    if found is None:
+        return VesselReport(level, name, None, None, None, "", tuple(readings))
+    vessel, standard = found
+    return VesselReport(
+        level, name, vessel.aliquot_ml, vessel.addition_ml, vessel.final_ml, standard, tuple(readings), vessel.excluded
+    )
+
+
+def _notes(members: Members, solved: Sequence[Solved]) -> tuple[str, ...]:
+    notes = dict.fromkeys(members.notes)
+    for line in solved:
+        name = f"{line.prepared.line or line.prepared.analyte}: " if len(solved) > 1 else ""
+        notes.update(dict.fromkeys(f"{name}{note}" for note in line.notes))
+        if line.blank_note:
+            notes[f"{name}{line.blank_note}"] = None
+        for vessel in line.prepared.vessels:
+            if vessel.excluded:
+                notes[f"level {vessel.level}{vessel.vessel} is excluded by decision ({vessel.excluded})"] = None
+    return tuple(notes)

@@ -1,0 +1,159 @@
+"""The words that a person reads first: verdict, result with uncertainty, what to do, and what is not shown."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from spikeward.rules.checks.registry import REGISTRY
+from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, WAITING, WARN, Check, Estimate, Result
+from spikeward.rules.records import SeriesKey
+from spikeward.rules.rounding import figure, percent, rounded
+from spikeward.rules.solve.solved import Solved
+
+_SHOWN_AT_MOST = 3  # a headline names so many troubles and counts the rest
+
+
+def series_name(key: SeriesKey) -> str:
+    """A series as people call it: batch and sample, with the role where it is no sample."""
+    name = f"{key.batch}-{key.sample}" if key.batch and key.sample else key.sample or key.batch
+    return name if key.role == "sample" else f"{key.role.replace('_', ' ')} {name}"
+
+
+def line_name(result: Result) -> str:
+    """The line where there is one, else the analyte."""
+    return result.line or result.analyte
+
+
+def estimate_words(estimate: Estimate, basis: str = "") -> str:
+    """A content with expanded uncertainty and unit, rounded for a report."""
+    unit = f"{estimate.unit} {basis}".strip()
+    if estimate.expanded_uncertainty is None:
+        return f"{figure(estimate.content)} {unit}, uncertainty not known"
+    value, spread = rounded(estimate.content, estimate.expanded_uncertainty)
+    return f"{value} ± {spread} {unit}"
+
+
+def short_result(result: Result) -> str:
+    """One result without its details."""
+    if result.reported is None:
+        return f"{line_name(result)} no number"
+    return f"{line_name(result)} {estimate_words(result.reported, result.basis if result.in_sample else '')}"
+
+
+def result_sentence(result: Result, solved: Solved) -> str:
+    """One result with coverage, vessels, what was subtracted, what the interval holds and what is not shown."""
+    if result.reported is None:
+        return f"{line_name(result)}: no number, because {_uncapital(result.no_number.rstrip('.'))}."
+    text = f"{short_result(result)} ({'; '.join(_details(result))})."
+    holds = interval_holds(result, solved)
+    missing = not_shown([result])
+    return " ".join(part for part in (text, holds, missing) if part)
+
+
+def _details(result: Result) -> list[str]:
+    estimate, parts = result.reported, []
+    if estimate is not None and estimate.expanded_uncertainty is not None:
+        k = f", k {figure(estimate.coverage_factor, 2)}" if estimate.coverage_factor else ""
+        parts.append(f"{percent(estimate.coverage, 3)}{k}")
+    elif estimate is not None and estimate.reason:
+        parts.append(estimate.reason.rstrip("."))
+    vessels = sum(not point.excluded for point in result.points)
+    freedom = result.degrees_of_freedom
+    parts.append(f"{vessels} vessels, {freedom} {'degree' if freedom == 1 else 'degrees'} of freedom")
+    if excluded := sum(bool(point.excluded) for point in result.points):
+        parts.append(f"{excluded} excluded by decision")
+    if result.blank is not None and result.reported is not None:
+        parts.append(f"process blank {figure(result.blank, 2)} {result.reported.unit} subtracted")
+    if result.background is not None:
+        parts.append(f"background {figure(result.background, 2)} {result.signal_unit}".rstrip() + " subtracted")
+    return parts
+
+
+def interval_holds(result: Result, solved: Solved) -> str:
+    """What the interval contains and what it leaves out."""
+    if result.reported is None or result.reported.expanded_uncertainty is None:
+        return ""
+    parts = ["the scatter about the line"]
+    if solved.background is not None and solved.background.standard_uncertainty is not None:
+        parts.append("the background")
+    if result.blank is not None and "not known" not in solved.blank_note:
+        parts.append("the process blank")
+    told = parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}"
+    return f"The interval holds {told}; standard, volumes and mass are not in it."
+
+
+def not_shown(results: Sequence[Result]) -> str:
+    """What checks could not speak about, as a sentence, or an empty text."""
+    told: dict[str, None] = {}
+    for result in results:
+        for check in result.checks:
+            word = REGISTRY[check.name].not_shown if check.name in REGISTRY else ""
+            if word and check.verdict == NOT_EVALUATED:
+                told[f"{word} ({check.sentence.removeprefix('Not evaluated: ').rstrip('.')})"] = None
+    return f"Not shown: {', '.join(told)}." if told else ""
+
+
+def headline(
+    key: SeriesKey,
+    verdict: str,
+    so_far: str,
+    final: bool,
+    checks: Sequence[Check],
+    results: Sequence[Result],
+    waiting_for: Sequence[str],
+) -> str:
+    """The first words about a series.
+
+    Parameters
+    ----------
+    checks : of the series as a whole; those of results stand in ``results``
+    """
+    name = series_name(key)
+    if verdict == FAIL:
+        word = "DO NOT REPORT" if key.role in ("sample", "duplicate", "spiked_sample") else "FAIL"
+        return f"{word}{'' if final else ' (so far)'}. {name}{_failures(checks, results)}"
+    if verdict == WAITING:
+        worries = f" {_troubles(checks, results, WARN)}" if so_far == WARN else ""
+        return f"WAITING. {name}: so far {so_far}; missing {', '.join(waiting_for)}.{worries}"
+    worries = f" {_troubles(checks, results, WARN)}" if verdict == WARN else ""
+    return f"{verdict.upper()}. {name} {_results(results)}{worries}"
+
+
+def _results(results: Sequence[Result]) -> str:
+    if len(results) == 1:
+        return results[0].sentence
+    missing = not_shown(results)
+    short = "; ".join(short_result(result) for result in results)
+    return f"{short}." + (f" {missing}" if missing else "")
+
+
+def _failures(checks: Sequence[Check], results: Sequence[Result]) -> str:
+    common = [check for check in checks if check.verdict == FAIL]
+    own = [(result, [check for check in result.checks if check.verdict == FAIL]) for result in results]
+    good = [line_name(result) for result, failing in own if not failing]
+    told = [_told(check) for check in common[:_SHOWN_AT_MOST]]
+    told += [f"{line_name(result)}: {_told(failing[0])}" for result, failing in own if failing and not common]
+    count = len(common) + sum(len(failing) for _, failing in own)
+    shown = told[:_SHOWN_AT_MOST]
+    rest = count - len(shown)
+    more = f" {rest} more {'check fails' if rest == 1 else 'checks fail'}." if rest else ""
+    stands = f" Not touched by this: {', '.join(good)}." if good and not common else ""
+    lead = ": " if common else " "
+    return f"{lead}{' '.join(shown)}{more}{stands}"
+
+
+def _troubles(checks: Sequence[Check], results: Sequence[Result], verdict: str) -> str:
+    told = [check.sentence for check in checks if check.verdict == verdict]
+    for result in results:
+        name = f"{line_name(result)}: " if len(results) > 1 else ""
+        told += [f"{name}{check.sentence}" for check in result.checks if check.verdict == verdict]
+    rest = len(told) - _SHOWN_AT_MOST
+    return " ".join(told[:_SHOWN_AT_MOST]) + (f" {rest} more to look at." if rest > 0 else "")
+
+
+def _told(check: Check) -> str:
+    return f"{check.sentence} {check.remedy}." if check.remedy else check.sentence
+
+
+def _uncapital(text: str) -> str:
+    return text[:1].lower() + text[1:] if text[1:2].islower() else text

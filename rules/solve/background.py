@@ -1,0 +1,78 @@
+"""The background: a constant signal of the detector, measured on solutions of the batch."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+from spikeward.rules.records import NOT_DETECTED, OVER_RANGE, Reading
+from spikeward.rules.solve.solved import Background
+from spikeward.rules.solve.transform import mean_of, place_of, unusable, vessel_signal
+
+
+def background_of(readings: Sequence[Reading]) -> Background | None:
+    """The mean background of a batch for one analyte on one line: the mean over vessels of their mean readings.
+
+    A vessel is known by its vessel name or, where names give none, by its solution. A reading below detection or over
+    range makes the background unknown (leaving it out would shift the mean); one that is missing or faulty is left out.
+
+    Parameters
+    ----------
+    readings : of one analyte on one line, in force
+
+    Returns
+    -------
+    None where there are no readings; with ``problem`` set it must not be used
+    """
+    if not readings:
+        return None
+    unit = readings[0].unit
+    for reading in readings:
+        if reading.unit != unit:
+            return _unknown(
+                readings,
+                f"the background is in {unit or 'no unit'} in one place and in {reading.unit or 'no unit'} in another "
+                f"({place_of(reading)}): export it in one unit",
+            )
+        if reading.qualifier in (NOT_DETECTED, OVER_RANGE):
+            return _unknown(readings, f"the background {reading.solution} ({place_of(reading)}) {_censored(reading)}")
+    kept = [reading for reading in readings if unusable([reading]) is None]
+    left_out = [reading for reading in readings if unusable([reading]) is not None]
+    if not kept:
+        place = f"{left_out[0].solution} ({place_of(left_out[0])})"
+        return _unknown(readings, f"no background reading holds a number, such as {place}: export them again")
+    return _mean(readings, kept, left_out)
+
+
+def _censored(reading: Reading) -> str:
+    if reading.qualifier == NOT_DETECTED:
+        return "was not detected: that is a bound, not zero; let the instrument export the signal itself"
+    return "is over range: look for carry-over, and measure the background again"
+
+
+def _unknown(readings: Sequence[Reading], problem: str) -> Background:
+    return Background(0.0, None, 0, 0, tuple(readings), readings[0].unit, problem=problem)
+
+
+def _mean(readings: Sequence[Reading], kept: Sequence[Reading], left_out: Sequence[Reading]) -> Background:
+    vessels: dict[tuple[str, str], list[Reading]] = {}
+    for reading in kept:
+        vessels.setdefault((reading.series.sample, reading.vessel or reading.solution), []).append(reading)
+    means = [vessel_signal(vessel).mean for vessel in vessels.values()]
+    n = len(means)
+    notes = [f"the background {r.solution} ({place_of(r)}) holds no number and was left out" for r in left_out]
+    u: float | None
+    if n > 1:
+        mean = mean_of(means, [1] * n)
+        u = math.hypot(*(value - mean for value in means)) / math.sqrt((n - 1) * n)
+        dof = n - 1
+    else:
+        single = vessel_signal(kept)
+        mean, dof = single.mean, single.readings - 1
+        u = single.sd / math.sqrt(single.readings) if single.sd is not None else None
+        notes.append(
+            "the background was read once: how well it is known is not in the uncertainty"
+            if u is None
+            else "the background comes from one vessel: its uncertainty is that of repeated readings"
+        )
+    return Background(mean, u, dof if u is not None else 0, n, tuple(readings), kept[0].unit, note="; ".join(notes))

@@ -1,0 +1,63 @@
+"""Why a line gives no number: one sentence for every way in which points cannot carry a content."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+ONE_ADDITION = (
+    "one addition leaves no degree of freedom: the scatter is not known, so no uncertainty follows from these readings"
+)
+EXACT_FIT = (
+    "every point lies exactly on the line: the readings show no scatter, and an uncertainty of zero is not a real one"
+)
+NEGATIVE = "the content is below zero: look for a blank or background that was subtracted too high"
+OUT_OF_RANGE = "the result is too large or too small to be calculated with: look for a wrong unit"
+
+Row = tuple[float, float, float, float]
+
+
+def unsolvable(rows: Sequence[Row], fitted: tuple[float, float, float], flat: bool, one_x: bool) -> str:
+    """Why no straight line can be extrapolated through the points, or an empty text.
+
+    Parameters
+    ----------
+    rows : (x, y, shift, signal) of every vessel that is fitted
+    fitted : slope, intercept and content, finite or not
+    flat, one_x : as ``Fits`` says them
+    """
+    if len(rows) < 2:
+        usable = "only one vessel" if rows else "no vessel"
+        return f"{usable} can be used: a standard addition needs at least two levels"
+    if any(math.isnan(value) for row in rows for value in row):
+        return "a volume, an addition or a signal is not a number: look at the preparation of this series"
+    if any(math.isinf(value) for row in rows for value in row):
+        return "a volume, an addition or a signal is too large to be calculated with: look for a wrong unit"
+    if all(row[0] == 0.0 for row in rows):
+        return "no vessel received an addition: without one the response is not known"
+    if one_x:
+        return "all vessels received the same addition: a standard addition needs at least two levels"
+    if all(row[3] == rows[0][3] for row in rows):
+        return "all vessels give the same signal: the instrument did not respond to the additions"
+    if flat:
+        return "the signal does not change with the additions: the slope is zero"
+    slope = fitted[0]
+    return OUT_OF_RANGE if slope == 0.0 or not all(map(math.isfinite, fitted)) else ""
+
+
+def insignificant(slope: float, g: float | None) -> str:
+    """Why a slope does not carry a content, or an empty text.
+
+    Parameters
+    ----------
+    slope : signal per content
+    g : t² u(slope)² / slope², or None where the scatter is not known
+    """
+    if g is not None and not g < 1.0:
+        return (
+            "the slope does not differ from zero: the scatter of the points is as large as the response to the "
+            "additions, and the interval of the content has no end"
+        )
+    if slope < 0.0:
+        return "the signal falls with the additions: a standard addition needs a signal that rises with the content"
+    return ""

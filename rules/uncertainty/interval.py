@@ -1,0 +1,106 @@
+"""The one interval that is printed: Fieller's on the fit, widened by everything that the scatter does not show."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from spikeward.rules.outcomes import Estimate
+from spikeward.rules.uncertainty.fieller import t_quantile
+
+
+@dataclass(frozen=True, slots=True)
+class Component:
+    """One standard uncertainty, in the unit of the content that it belongs to, with its degrees of freedom."""
+
+    standard_uncertainty: float
+    degrees_of_freedom: int
+
+
+@dataclass(frozen=True, slots=True)
+class FitPart:
+    """What the fit alone says: content, standard uncertainty, the halves of Fieller's interval, all in one unit."""
+
+    content: float
+    standard_uncertainty: float
+    halves: tuple[float, float]
+    degrees_of_freedom: int
+
+    def times(self, factor: float) -> FitPart:
+        """The same after a preparation factor, which is positive."""
+        lower, upper = self.halves
+        return FitPart(
+            self.content * factor,
+            self.standard_uncertainty * factor,
+            (lower * factor, upper * factor),
+            self.degrees_of_freedom,
+        )
+
+
+def effective_degrees_of_freedom(components: Sequence[Component]) -> int:
+    """Welch and Satterthwaite, cut to a whole number (JCGM 100:2008, G.4.1).
+
+    Returns
+    -------
+    at least 1, and 1 where an uncertainty is not finite; components without uncertainty do not count, and if none has
+    any the smallest number stands
+    """
+    if not all(math.isfinite(c.standard_uncertainty) for c in components):
+        return 1
+    largest = max(c.standard_uncertainty for c in components)
+    if largest == 0.0:
+        return max(1, min(c.degrees_of_freedom for c in components))
+    # relative to the largest, so that fourth powers stay within range
+    ratios = [c.standard_uncertainty / largest for c in components]
+    squares = [q * q for q in ratios]
+    total = math.fsum(squares)
+    below = math.fsum(q * q / c.degrees_of_freedom for q, c in zip(squares, components, strict=True) if q > 0.0)
+    # a sum that is whole but for rounding must not lose one
+    return max(1, math.floor(total * total / below * (1.0 + 2.0**-40)))
+
+
+def printed(fit: FitPart, rest: Sequence[Component], unit: str, coverage: float, reason: str) -> tuple[Estimate, int]:
+    """Combine the fit with what is common to all vessels.
+
+    Each half of the fit's interval is combined in quadrature with t(ν_eff) times the standard uncertainty of the rest;
+    U is half of the whole length and k = U/u.
+
+    Parameters
+    ----------
+    fit : of the line, after the preparation factor where ``unit`` asks for it
+    rest : further components in ``unit``, such as background and process blank
+    coverage : such as 0.95
+    reason : what the uncertainty does not hold, or empty
+
+    Returns
+    -------
+    the estimate and its effective degrees of freedom
+    """
+    nu = effective_degrees_of_freedom([Component(fit.standard_uncertainty, fit.degrees_of_freedom), *rest])
+    t = t_quantile(nu, coverage)
+    u_rest = math.hypot(*(c.standard_uncertainty for c in rest))
+    u = math.hypot(fit.standard_uncertainty, u_rest)
+    lower, upper = (math.hypot(half, t * u_rest) for half in fit.halves)
+    expanded = 0.5 * (lower + upper)
+    return (
+        Estimate(
+            content=fit.content,
+            unit=unit,
+            standard_uncertainty=u,
+            expanded_uncertainty=expanded,
+            coverage_factor=expanded / u if u > 0.0 else t,
+            interval=(fit.content - lower, fit.content + upper),
+            coverage=coverage,
+            reason=reason,
+        ),
+        nu,
+    )
+
+
+def is_finite(estimate: Estimate | None) -> bool:
+    """Whether every number of an estimate is within the range of numbers; so is an estimate that is not there."""
+    if estimate is None:
+        return True
+    known = (estimate.standard_uncertainty, estimate.expanded_uncertainty, *(estimate.interval or ()))
+    return all(math.isfinite(value) for value in (estimate.content, *known) if value is not None)

@@ -1,0 +1,425 @@
+"""From batches to outcomes: the life of a verdict, what waits for what, and what an outcome depends on."""
+
+from __future__ import annotations
+
+import random
+from dataclasses import replace
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from spikeward.rules.evaluate import evaluate
+from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WAITING, WARN
+from spikeward.rules.records import OVER_RANGE, Batch, BenchEntry, Decision
+from spikeward.rules.rulebook import BlankRule, Known, SampleRule, SeriesRule
+
+
+def solve(bench, night, sample="07", **state):
+    return bench.outcome_of(evaluate([night.batch(**state)], night.rules), sample)
+
+
+def test_a_complete_series_passes_at_once(bench):
+    outcome = solve(bench, bench.Night().series())
+    assert (outcome.verdict, outcome.so_far, outcome.final, outcome.waiting_for) == (PASS, PASS, True, ())
+    (result,) = outcome.results
+    assert result.verdict == PASS
+    assert result.content.content == pytest.approx(0.3, rel=0.01)
+    # 0.3 mg/L in 50 mL of digest from 0.5 g
+    assert result.in_sample.content == pytest.approx(30, rel=0.01)
+    assert result.in_sample.unit == "mg/kg"
+    assert len(outcome.vessels) == 4
+    assert outcome.vessels[1].addition_ml == 0.25
+    assert outcome.design == "flasks"
+
+
+def test_the_first_words(bench):
+    outcome = solve(bench, bench.Night().series())
+    assert outcome.sentence.startswith("PASS. MD12-07 Cd 30.0")
+    for told in ("±", "mg/kg", "95 %", "k 4.3", "4 vessels, 2 degrees of freedom", "Not shown: linearity"):
+        assert told in outcome.sentence, told
+    assert "standard, volumes and mass are not in it" in outcome.sentence
+    assert outcome.sentence.endswith(outcome.results[0].sentence)
+
+
+def test_a_series_that_lacks_a_level_waits_and_says_for_what(bench):
+    outcome = solve(bench, bench.Night().series(levels=(0, 1, 2)))
+    assert (outcome.verdict, outcome.so_far, outcome.final) == (WAITING, PASS, False)
+    assert outcome.waiting_for == ("level 3",)
+    assert outcome.sentence.startswith("WAITING. MD12-07: so far pass; missing level 3.")
+    (result,) = outcome.results
+    assert result.verdict == WAITING
+    assert result.reported is None
+    assert "level 3" in result.no_number
+
+
+def test_an_analyte_absent_from_one_vessel_is_waited_for(bench):
+    night = bench.Night().series().series(levels=(0, 1, 2), analyte="Pb")
+    outcome = solve(bench, night)
+    assert outcome.verdict == WAITING
+    assert any("Pb" in told for told in outcome.waiting_for)
+
+
+def test_a_fail_that_more_levels_cannot_undo_is_published_at_once(bench):
+    night = bench.Night().series(levels=(0, 1))
+    night.read("sample", "07", "2", None, qualifier=OVER_RANGE, text="OVER")
+    outcome = solve(bench, night)
+    assert (outcome.verdict, outcome.final) == (FAIL, False)
+    assert outcome.sentence.startswith("DO NOT REPORT (so far). MD12-07 Cd: Level 2 is over range")
+
+
+def test_a_doubtful_fit_of_some_levels_is_no_fail_yet(bench):
+    night = bench.Night().series(levels=(0, 1, 2), shifts={1: 0.1})
+    assert solve(bench, night).verdict == WAITING
+    assert solve(bench, bench.Night().series(shifts={1: 0.1})).verdict == FAIL
+
+
+def test_contradictions_fail_and_doubts_warn(bench):
+    night = bench.Night().series(levels=(0, 1))
+    told = {"07": {"conflicts": ("a.csv row 2 and b.csv row 2 disagree about level 0; decide in the decisions file",)}}
+    outcome = solve(bench, night, telling=told)
+    assert (outcome.verdict, outcome.final) == (FAIL, False)
+    assert "a.csv row 2 and b.csv row 2 disagree" in outcome.sentence
+    doubt = solve(bench, bench.Night().series(), telling={"07": {"warnings": ("a.csv and b.csv are equal",)}})
+    assert (doubt.verdict, doubt.final) == (WARN, True)
+    assert bench.named(doubt.checks, "identity").verdict == WARN
+    assert doubt.results[0].verdict == WARN
+
+
+def test_a_lapsed_series_warns_or_fails_as_the_rules_say(bench):
+    night = bench.Night().series(levels=(0, 1, 2))
+    outcome = solve(bench, night, lapsed=["07"])
+    assert (outcome.verdict, outcome.final) == (WARN, True)
+    assert outcome.results[0].reported is not None
+    assert bench.named(outcome.checks, "completeness").verdict == WARN
+    strict = replace(night, rules=replace(night.rules, series=SeriesRule(lapsed="fail")))
+    assert solve(bench, strict, lapsed=["07"]).verdict == FAIL
+    assert solve(bench, night, closed=True).verdict == WARN
+
+
+@pytest.mark.parametrize("levels", [(0, 1), (0,), (3,)])
+def test_a_lapsed_series_without_enough_levels_fails(bench, levels):
+    outcome = solve(bench, bench.Night().series(levels=levels), closed=True)
+    assert (outcome.verdict, outcome.final) == (FAIL, True)
+    assert "without 3 vessels of Cd there is no result" in bench.named(outcome.checks, "completeness").sentence
+
+
+def test_a_missing_mass_is_waited_for_and_then_fails(bench):
+    rules = bench.rulebook()
+    back = SampleRule(mass="bench", digest=bench.quantity("50", "mL"))
+    rules = replace(rules, preparations=(replace(rules.preparations[0], sample=back),))
+    night = bench.Night(rules).series()
+    waiting = solve(bench, night)
+    assert waiting.verdict == WAITING
+    assert any("mass" in told for told in waiting.waiting_for)
+    assert solve(bench, night, closed=True).verdict == FAIL
+    entry = BenchEntry("", "MD12", "07", "", (("mass", "0.25 g"),), "bench.csv", 2, "d")
+    batch = replace(night.batch(), bench=(entry,))
+    outcome = bench.outcome_of(evaluate([batch], rules))
+    assert outcome.verdict == PASS
+    assert outcome.results[0].in_sample.content == pytest.approx(60, rel=0.01)
+
+
+def night_with_blanks(bench, **changes):
+    rules = bench.rulebook(blanks=BlankRule(background=True, process=True))
+    night = bench.Night(replace(rules, **changes))
+    night.read("background", "1", "", 0.0100)
+    night.read("background", "2", "", 0.0102)
+    night.series("1", role="process_blank", content=0.006, background=0.0101)
+    return night.series(background=0.0101)
+
+
+def test_pass_waits_until_the_batch_closes_where_blanks_are_subtracted(bench):
+    night = night_with_blanks(bench)
+    open_ = solve(bench, night)
+    assert (open_.verdict, open_.so_far, open_.final) == (WAITING, PASS, False)
+    assert open_.waiting_for
+    closed = solve(bench, night, closed=True)
+    assert (closed.verdict, closed.final) == (PASS, True)
+    (result,) = closed.results
+    assert result.background == pytest.approx(0.0101)
+    assert result.in_sample.content == pytest.approx(30 - 0.6, rel=0.01)
+    assert result.blank == pytest.approx(0.6, rel=0.05)
+    assert "process blank 0.6" in closed.sentence
+    assert "the background and the process blank" in closed.sentence
+    assert {reading.series.role for reading in closed.context} == {"background", "process_blank"}
+
+
+def test_a_blank_that_never_came_fails_a_closed_batch(bench):
+    for kept, told in (("process_blank", "background"), ("background", "process blank")):
+        night = night_with_blanks(bench)
+        night.readings = [r for r in night.readings if r.series.role in ("sample", kept)]
+        assert solve(bench, night).verdict == WAITING
+        outcome = solve(bench, night, closed=True)
+        assert outcome.verdict == FAIL
+        assert f"No {told}" in outcome.sentence
+        assert outcome.results[0].reported is None
+        assert outcome.results[0].no_number
+
+
+def test_a_blank_that_failed_fails_what_it_was_subtracted_from(bench):
+    night = night_with_blanks(bench)
+    night.readings = [
+        replace(r, signal=r.signal + 0.1) if r.series.role == "process_blank" and r.level == "1" else r
+        for r in night.readings
+    ]
+    outcome = solve(bench, night, closed=True)
+    assert solve(bench, night, sample="1", closed=True).verdict == FAIL
+    assert bench.named(outcome.results[0].checks, "blank").verdict == FAIL
+
+
+@pytest.mark.parametrize(("amount", "verdict"), [(0.006, PASS), (0.02, WARN), (0.05, FAIL)])
+def test_share_of_the_process_blank(bench, amount, verdict):
+    night = bench.Night(bench.rulebook(blanks=BlankRule(process=True)))
+    night.series("1", role="process_blank", content=amount).series()
+    outcome = solve(bench, night, closed=True)
+    assert bench.named(outcome.results[0].checks, "blank").verdict == verdict
+
+
+def test_a_fail_of_an_open_batch_says_so_far(bench):
+    night = night_with_blanks(bench)
+    night.series("09", background=0.0101, shifts={1: 0.1})
+    outcome = solve(bench, night, sample="09")
+    assert (outcome.verdict, outcome.final) == (FAIL, False)
+    assert outcome.sentence.startswith("DO NOT REPORT (so far). ")
+    assert solve(bench, night, sample="09", closed=True).sentence.startswith("DO NOT REPORT. ")
+
+
+def bracketed(bench, drift=(1.0, 1.0, 1.0), timed=True):
+    """Bracket, sample 07, bracket, sample 09, bracket; ``drift`` is the sensitivity at each bracket."""
+    rules = bench.rulebook(
+        brackets={"Cd": Known(bench.quantity("20", "ug/L"))}, series=SeriesRule(closes_with=("bracket",))
+    )
+    night = bench.Night(rules, timed=timed)
+    for n, sensitivity in enumerate(drift):
+        if n:
+            night.series({1: "07", 2: "09"}[n])
+        if sensitivity is not None:
+            night.read("bracket", str(n), "", 0.2 * sensitivity)
+            night.read("bracket", str(n), "", 0.2 * sensitivity)
+    return night
+
+
+@pytest.mark.parametrize(
+    ("drift", "first", "second"),
+    [
+        ((1, 1.01, 0.98), PASS, PASS),
+        ((1, 0.99, 0.93), PASS, WARN),
+        ((1, 1.02, 0.85), PASS, FAIL),  # only what lies next to the bad bracket
+        ((1, 0.85, 1.02), FAIL, FAIL),
+        ((1, 1.0, None), PASS, WARN),  # one side
+        ((None, None, None), FAIL, FAIL),
+    ],
+)
+def test_brackets_on_both_sides(bench, drift, first, second):
+    night = bracketed(bench, drift)
+    for sample, verdict in (("07", first), ("09", second)):
+        outcome = solve(bench, night, sample=sample, closed=True)
+        assert bench.named(outcome.results[0].checks, "brackets").verdict == verdict
+        assert outcome.verdict == verdict
+
+
+def test_an_open_batch_waits_for_its_closing_bracket(bench):
+    night = bracketed(bench, (1, 1, None))
+    outcome = solve(bench, night, sample="09")
+    assert outcome.verdict == WAITING
+    assert any("bracket" in told for told in outcome.waiting_for)
+    assert bench.named(outcome.results[0].checks, "brackets").verdict == NOT_EVALUATED
+
+
+def test_without_times_or_order_brackets_are_not_evaluated(bench):
+    outcome = solve(bench, bracketed(bench, (1, 1, 0.5), timed=False), closed=True)
+    check = bench.named(outcome.results[0].checks, "brackets")
+    assert check.verdict == NOT_EVALUATED
+    assert "no acquisition time or order" in check.sentence
+    assert "drift (no acquisition time or order)" in outcome.sentence
+
+
+def test_brackets_are_corrected_for_the_background_first(bench):
+    night = bracketed(bench, (1, 1, 1))
+    night.rules = replace(night.rules, blanks=BlankRule(background=True))
+    night.readings = [replace(r, signal=r.signal + 1.0) for r in night.readings]
+    night.read("background", "1", "", 1.0)
+    # 15 % of the sensitivity is only 2.5 % of the signal with its background
+    night.readings = [
+        replace(r, signal=1.0 + 0.17) if r.series.role == "bracket" and r.series.sample == "1" else r
+        for r in night.readings
+    ]
+    outcome = solve(bench, night, closed=True)
+    check = bench.named(outcome.results[0].checks, "brackets")
+    assert check.observed == pytest.approx(0.15, rel=1e-6)
+    assert check.verdict == FAIL
+
+
+def with_reference(bench, found, role="reference", known="30", uncertainty=0.3, content=None):
+    name = "MUD"
+    rules = bench.rulebook(references={name: {"Cd": Known(bench.quantity(known, "mg/kg"), uncertainty)}})
+    return bench.Night(rules).series(name, role=role, content=found).series()
+
+
+@pytest.mark.parametrize(
+    ("found", "verdict"), [(0.3, PASS), (0.2, FAIL), (0.4, FAIL), (0.318, WARN)]
+)
+def test_a_reference_judges_itself_and_the_samples_of_its_batch(bench, found, verdict):
+    night = with_reference(bench, found)
+    own = solve(bench, night, sample="MUD", closed=True)
+    assert bench.named(own.results[0].checks, "reference").verdict == verdict
+    sample = solve(bench, night, closed=True)
+    assert bench.named(sample.results[0].checks, "reference").verdict == verdict
+    (batch,) = evaluate([night.batch(closed=True)], night.rules)
+    assert bench.named(batch.checks, "reference").verdict == verdict
+
+
+def test_samples_can_be_kept_apart_from_their_reference(bench):
+    night = with_reference(bench, 0.2)
+    limits = night.rules.checks["reference"]
+    apart = replace(limits, values={**limits.values, "samples_follow": 0})
+    night.rules = replace(night.rules, checks={**night.rules.checks, "reference": apart})
+    assert solve(bench, night, closed=True).verdict == PASS
+    assert solve(bench, night, sample="MUD", closed=True).verdict == FAIL
+
+
+def test_a_reference_is_compared_in_its_own_unit(bench):
+    night = with_reference(bench, 0.3)
+    in_ug = {"MUD": {"Cd": Known(bench.quantity("30000", "ug/kg"), 300.0)}}
+    night.rules = replace(night.rules, references=in_ug)
+    assert bench.named(solve(bench, night, closed=True).results[0].checks, "reference").verdict == PASS
+    night.rules = replace(night.rules, references={"MUD": {"Cd": Known(bench.quantity("30", "mg/L"))}})
+    assert bench.named(solve(bench, night, closed=True).results[0].checks, "reference").verdict == FAIL
+
+
+def test_a_check_sample_by_its_recovery(bench):
+    for found, verdict in ((0.3, PASS), (0.26, WARN), (0.2, FAIL)):
+        outcome = solve(bench, with_reference(bench, found, role="check"), closed=True)
+        assert bench.named(outcome.results[0].checks, "check_sample").verdict == verdict
+
+
+def test_a_reference_that_the_rules_wait_for_and_that_never_came_warns(bench):
+    rules = bench.rulebook(series=SeriesRule(closes_with=("reference",)))
+    night = bench.Night(rules).series()
+    assert solve(bench, night).waiting_for == ("a reference",)
+    outcome = solve(bench, night, closed=True)
+    assert outcome.verdict == WARN
+    (batch,) = evaluate([night.batch(closed=True)], rules)
+    assert bench.named(batch.checks, "closing").verdict == WARN
+
+
+def test_one_bad_analyte_does_not_hide_the_good_one(bench):
+    night = bench.Night().series().series(analyte="Pb", shifts={1: 0.1})
+    outcome = solve(bench, night)
+    assert outcome.verdict == FAIL
+    assert {result.analyte: result.verdict for result in outcome.results} == {"Cd": PASS, "Pb": FAIL}
+    assert "Pb: " in outcome.sentence
+    assert "Not touched by this: Cd." in outcome.sentence
+
+
+def test_a_vessel_excluded_by_decision_is_named(bench):
+    night = bench.Night().series(shifts={2: 0.2})
+    decision = Decision("exclude", "MD12_sample_07_2", "A. Person", "2030-05-02", "spilt", 3)
+    outcome = solve(bench, night, decisions=[decision])
+    assert outcome.verdict == WARN  # three vessels are left
+    assert "1 excluded by decision" in outcome.sentence
+    assert outcome.vessels[2].excluded == "A. Person, 2030-05-02: spilt"
+    assert any("spilt" in note for note in outcome.notes)
+
+
+def test_an_excluded_background_reading_is_not_subtracted(bench):
+    night = night_with_blanks(bench)
+    wild = night.read("background", "3", "", 0.5)
+    decision = Decision("exclude", wild.solution, "A. Person", "2030-05-02", "carry-over", 3)
+    outcome = solve(bench, night, closed=True, decisions=[decision])
+    assert outcome.results[0].background == pytest.approx(0.0101)
+
+
+def full_night(bench, n=0):
+    night = night_with_blanks(
+        bench,
+        series=SeriesRule(closes_with=("bracket", "process_blank", "reference")),
+        brackets={"Cd": Known(bench.quantity("20", "ug/L"))},
+        references={"MUD": {"Cd": Known(bench.quantity("30", "mg/kg"), 0.3)}},
+    )
+    night.key = replace(night.key, batch=f"MD{12 + n}")
+    first = night.read("bracket", "1", "", 0.21)
+    night.readings = [first, *night.readings[:-1]]
+    night.series("MUD", role="reference", content=0.306, background=0.0101)
+    night.series("08", analyte="Pb", background=0.0101).series("09", content=0.41, background=0.0101)
+    night.read("bracket", "2", "", 0.207)
+    night.readings = [replace(r, series=replace(r.series, batch=night.key.batch)) for r in night.readings]
+    return night
+
+
+def test_a_whole_night(bench):
+    night = full_night(bench)
+    night.readings[0] = replace(night.readings[0], measured_at="2030-04-30T23:59:00Z")
+    (batch,) = evaluate([night.batch(closed=True)], night.rules)
+    assert [outcome.key.sample for outcome in batch.outcomes] == ["1", "MUD", "07", "08", "09"]
+    assert {outcome.key.sample: outcome.verdict for outcome in batch.outcomes} == {
+        "1": PASS, "MUD": PASS, "07": PASS, "08": FAIL, "09": PASS,
+    }  # fmt: skip
+    assert "No background of Pb" in bench.outcome_of([batch], "08").sentence
+    assert {check.name: check.verdict for check in batch.checks} == {
+        "closing": PASS, "reference": PASS, "brackets": PASS,
+    }  # fmt: skip
+
+
+@settings(max_examples=20, deadline=None)
+@given(seed=st.integers(0, 10_000))
+def test_the_order_of_batches_and_members_changes_nothing(seed):
+    import sys
+
+    bench = sys.modules[__name__].BENCH
+    nights = [full_night(bench, n) for n in range(3)]
+    batches = [night.batch(closed=n != 1) for n, night in enumerate(nights)]
+    expected = evaluate(batches, nights[0].rules)
+    shuffled = random.Random(seed)
+    mixed = []
+    for batch in batches:
+        keys = list(batch.members)
+        shuffled.shuffle(keys)
+        mixed.append(replace(batch, members={key: batch.members[key] for key in keys}))
+    shuffled.shuffle(mixed)
+    assert evaluate(mixed, nights[0].rules) == expected
+    assert evaluate(batches[:1], nights[0].rules) == expected[:1]
+
+
+def digest(bench, night, sample="07", **state):
+    return solve(bench, night, sample, **state).inputs_digest
+
+
+def test_equal_inputs_have_equal_digests_and_every_change_another(bench):
+    def built(**state):
+        return full_night(bench).batch(closed=True, **state)
+
+    def found(batch: Batch, rules=None):
+        return bench.outcome_of(evaluate([batch], rules or full_night(bench).rules)).inputs_digest
+
+    plain = found(built())
+    assert plain == found(built())
+    assert len(plain) == 64
+    night = full_night(bench)
+    seen = {plain, found(replace(built(), closed=False)), found(built(), replace(night.rules, digest="other"))}
+    for role in ("sample", "background", "process_blank", "bracket", "reference"):
+        changed = full_night(bench)
+        at = next(n for n, r in enumerate(changed.readings) if r.series.role == role)
+        signal = changed.readings[at].signal * 1.5
+        changed.readings[at] = replace(changed.readings[at], signal=signal, text=f"{signal:.4f}")
+        seen.add(found(changed.batch(closed=True)))
+    seen.add(found(built(telling={"07": {"notes": ("counted once",)}})))
+    seen.add(found(built(decisions=[Decision("exclude", "MD12_sample_07_3", "A. Person", "2030-05-02", "spilt", 3)])))
+    assert len(seen) == 10
+
+
+def test_what_concerns_another_sample_does_not_change_the_digest(bench):
+    rules = full_night(bench).rules
+    plain = bench.outcome_of(evaluate([full_night(bench).batch(closed=True)], rules))
+    changed = full_night(bench)
+    changed.readings = [
+        replace(r, signal=r.signal * 1.001) if r.series.sample == "09" else r for r in changed.readings
+    ]
+    decision = Decision("exclude", "MD12_sample_09_3", "A. Person", "2030-05-02", "spilt", 3)
+    assert bench.outcome_of(evaluate([changed.batch(closed=True, decisions=[decision])], rules)) == plain
+
+
+@pytest.fixture(autouse=True)
+def _known_to_property_tests(bench):
+    globals()["BENCH"] = bench

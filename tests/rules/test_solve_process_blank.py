@@ -1,0 +1,149 @@
+"""The process blank is subtracted as an amount, and what it adds to the uncertainty."""
+
+from __future__ import annotations
+
+import math
+import statistics
+from dataclasses import replace
+
+import pytest
+from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
+from spikeward.rules.records import Reading, SeriesKey
+from spikeward.rules.solve.lines import solve_lines
+from spikeward.rules.solve.process_blank import blank_amount, subtract_process_blank
+from spikeward.rules.solve.solved import Background, Solved
+
+KEY = SeriesKey("", "", "B1", "sample", "S1")
+NOISE = (0.001, -0.002, 0.0015, -0.0005)
+BACK = WayBack(50.0, "mg/kg", "", 25.0, 0.5, "0.5 g made up to 25 mL")
+BLANK_BACK = WayBack(1.0, "mg/L", "", 20.0, None, "made up to 20 mL")
+
+
+def line(truth, sensitivity, key, back, already=(), noise=NOISE, unit="mg/L", levels=4) -> PreparedLine:
+    vessels = []
+    for i in range(levels):
+        signal = sensitivity * (truth + i) + noise[i] * sensitivity
+        reading = Reading(
+            key, str(i), "", "", "", f"{key.sample}-{i}", "Cd", "", "", signal, str(signal), "", 1, None, "", "", None,
+            (), already, "run.csv", i + 2, "",
+        )  # fmt: skip
+        vessels.append(PreparedVessel(str(i), "", 1.0, 0.0, 1.0, float(i), (reading,)))
+    return PreparedLine(key, "Cd", "", "flasks", unit, "", tuple(vessels), back, "", "")
+
+
+def sample(truth=2.0, **more) -> Solved:
+    return solve_lines([line(truth, 0.12, KEY, more.pop("back", BACK), **more)], {}, 0.95)[0]
+
+
+def blank(truth, name="PB1", back=BLANK_BACK, **more) -> Solved:
+    key = replace(KEY, role="process_blank", sample=name)
+    return solve_lines([line(truth, 0.20, key, back, **more)], {}, 0.95)[0]
+
+
+def test_amounts_not_signals():
+    """(C0 V_dig - C_b V_dig,b) / m, with the sample's response suppressed by 40 % against the blank's."""
+    before, one = sample(), blank(0.1)
+    after = subtract_process_blank(before, [one], 0.95)
+    by_hand = (before.content.content * 25.0 - one.content.content * 20.0) / 0.5
+    assert after.in_sample.content == pytest.approx(by_hand, rel=1e-12)
+    assert after.blank == pytest.approx(one.content.content * 20.0 / 0.5, rel=1e-12)
+    assert after.blank == blank_amount(one, before.prepared)
+    assert after.content == before.content
+
+
+def test_several_blanks_share_their_mean_and_lend_their_scatter():
+    before, blanks = sample(), [blank(0.10), blank(0.14, "PB2"), blank(0.12, "PB3")]
+    after = subtract_process_blank(before, blanks, 0.95)
+    # the blank's amount over the sample's mass: 20 mL / 0.5 g; u² = s_b² (1 + 1/3)
+    u_blank = 40 * statistics.stdev(one.content.content for one in blanks) * math.sqrt(4 / 3)
+    assert u_blank == pytest.approx(0.8 * math.sqrt(4 / 3), rel=1e-3)
+    u_fit = before.in_sample.standard_uncertainty
+    assert after.in_sample.standard_uncertainty == pytest.approx(math.hypot(u_fit, u_blank), rel=1e-9)
+    assert after.in_sample.expanded_uncertainty > before.in_sample.expanded_uncertainty
+    assert after.effective_degrees_of_freedom == 2
+    assert "mean of 3 process blanks" in after.blank_note
+    assert subtract_process_blank(before, blanks[::-1], 0.95) == after
+
+
+def test_one_blank_counts_twice():
+    before, one = sample(), blank(0.1)
+    after = subtract_process_blank(before, [one], 0.95)
+    u_blank = one.content.standard_uncertainty * 20.0 / 0.5 * math.sqrt(2)
+    u_fit = before.in_sample.standard_uncertainty
+    assert after.in_sample.standard_uncertainty == pytest.approx(math.hypot(u_fit, u_blank), rel=1e-9)
+    assert "once for the mean and once for the blank of this sample" in after.blank_note
+
+
+def test_a_blank_by_one_addition_has_no_uncertainty_to_lend():
+    one = blank(0.1, levels=2)
+    assert one.content.standard_uncertainty is None
+    after = subtract_process_blank(sample(), [one], 0.95)
+    assert after.in_sample.standard_uncertainty == pytest.approx(sample().in_sample.standard_uncertainty)
+    assert "its uncertainty is not known" in after.blank_note
+
+
+def test_a_sample_by_one_addition_keeps_its_reason():
+    before = sample(levels=2)
+    after = subtract_process_blank(before, [blank(0.1)], 0.95)
+    assert after.in_sample.content < before.in_sample.content
+    assert after.in_sample.standard_uncertainty is None
+    assert after.in_sample.reason == before.in_sample.reason
+
+
+def test_the_background_stays_in_the_uncertainty():
+    known = {(KEY.batch_key, "Cd", ""): Background(0.01, 0.004, 5, 6, (), "")}
+    before = solve_lines([line(2.0, 0.12, KEY, BACK)], known, 0.95)[0]
+    after = subtract_process_blank(before, [blank(0.10), blank(0.10, "PB2")], 0.95)
+    assert after.in_sample.standard_uncertainty == pytest.approx(before.in_sample.standard_uncertainty, rel=1e-9)
+
+
+def test_units_of_two_standards():
+    micro = blank(2.0, unit="ug/L")
+    assert blank_amount(micro, sample().prepared) == pytest.approx(micro.content.content / 1000 * 20.0 / 0.5)
+    amount = blank(0.1, unit="mmol/L")
+    assert blank_amount(amount, sample().prepared) is None
+    assert "in mmol/L" in subtract_process_blank(sample(), [amount], 0.95).blank_note
+
+
+def test_blanks_without_a_number_are_named():
+    dead = blank(0.1, noise=(0.0, -1.0, -2.0, -3.0))
+    assert dead.no_number
+    after = subtract_process_blank(sample(), [dead], 0.95)
+    assert after.blank is None
+    assert after.in_sample == sample().in_sample
+    assert "no process blank was subtracted: PB1 gives no number" in after.blank_note
+    mixed = subtract_process_blank(sample(), [dead, blank(0.1, "PB2")], 0.95)
+    assert mixed.blank is not None
+    assert "PB1 gives no number" in mixed.blank_note
+    assert "the batch has none" in subtract_process_blank(sample(), [], 0.95).blank_note
+
+
+def test_never_twice_and_never_without_a_way_back():
+    already = subtract_process_blank(sample(already=("blank",)), [blank(0.1)], 0.95)
+    assert already.blank is None
+    assert "taken off already" in already.blank_note
+    assert "no way back" in subtract_process_blank(sample(back=None), [blank(0.1)], 0.95).blank_note
+    own = blank(0.1)
+    assert subtract_process_blank(own, [own], 0.95) == own
+
+
+def test_a_digest_volume_on_one_side_only():
+    after = subtract_process_blank(sample(), [blank(0.1, back=None)], 0.95)
+    assert after.blank is None
+    assert "not both known" in after.blank_note
+    liquid = WayBack(10.0, "mg/L", "", None, None, "diluted by a factor 10")
+    same = subtract_process_blank(sample(back=liquid), [blank(0.1, back=liquid)], 0.95)
+    assert same.blank == pytest.approx(10 * blank(0.1).content.content)
+
+
+def test_more_blank_than_sample_is_named():
+    after = subtract_process_blank(sample(0.05), [blank(0.4)], 0.95)
+    assert after.in_sample.content < 0
+    assert any("below zero" in note for note in after.notes)
+
+
+def test_a_blank_beyond_all_numbers():
+    vast = replace(BLANK_BACK, digest_ml=1e308)
+    after = subtract_process_blank(sample(), [blank(0.1, back=vast), blank(2.0, "PB2", back=vast)], 0.95)
+    assert "too large or too small" in after.no_number
+    assert after.in_sample is None
