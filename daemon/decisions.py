@@ -17,9 +17,10 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from spikeward.daemon.disk import Disk
-from spikeward.daemon.holdings import Place
+from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.ledger import Ledger
 from spikeward.daemon.names import shown
+from spikeward.daemon.pages.facts import Notice
 from spikeward.daemon.settle import Stamp
 from spikeward.daemon.station import Clock
 from spikeward.daemon.yaml_text import Node, compose
@@ -28,6 +29,7 @@ from spikeward.rules.records import Decision
 _LARGEST = 1 << 20
 KINDS = ("exclude", "prefer")
 _KEYS = ("by", "on", "why")
+_UNKNOWN = "no solution and no file is named {}; the decision has no effect. Correct the name"
 
 
 @dataclass(slots=True)
@@ -57,6 +59,25 @@ class DecisionBook:
             if where == root and _covers(_folder(path), folder)
             for decision in decisions
         )
+
+    def notices(self, holdings: Holdings) -> list[tuple[str, str, Notice]]:
+        """Refused versions, and decisions about solutions or files that nobody knows, as (root, folder, notice)."""
+        found = [
+            (root, _folder(path), Notice("decision", shown(path), sentence))
+            for (root, path), sentence in self.refused.items()
+        ]
+        for (root, path), decisions in self.adopted.items():
+            if not decisions:
+                continue
+            known = {where for root_, where in holdings.contents if root_ == root} | {
+                reading.solution for place, named in holdings.named.items() if place[0] == root for reading in named.readings
+            }
+            found += [
+                (root, _folder(path), Notice("decision", shown(path), f"line {each.line}: {_UNKNOWN.format(shown(each.target))}"))
+                for each in decisions
+                if each.target not in known
+            ]
+        return found
 
     def see(self, place: Place, stamp: Stamp, path: str) -> str | None:
         """Look at a decisions file; the folder that a newly adopted version applies to, or None."""

@@ -57,6 +57,10 @@ class Output:
             )
             self.recorded[key] = event["result"]
 
+    def outcome(self, key: SeriesKey) -> Outcome:
+        """The outcome of a series as it was last published."""
+        return self._outcomes[key]
+
     def publish(self, batch: BatchOutcome, check_all: bool = False) -> list[SeriesKey]:
         """Publish what changed in a batch; with ``check_all`` also restore what a person deleted or edited.
 

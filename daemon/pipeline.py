@@ -9,6 +9,7 @@ here may be lost and found again by a new look at the folders; what may not is i
 
 from __future__ import annotations
 
+import os
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 
@@ -17,11 +18,12 @@ from spikeward.daemon.claims import DECISIONS
 from spikeward.daemon.closings import Closings, closing_event, lapse_event
 from spikeward.daemon.decisions import DecisionBook
 from spikeward.daemon.disk import Disk
-from spikeward.daemon.holdings import Content, Holdings, Place
+from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.intake import Intake
 from spikeward.daemon.ledger import Ledger, RuleTexts
 from spikeward.daemon.names import unread_name
 from spikeward.daemon.output import Output
+from spikeward.daemon.pages.facts import Notice
 from spikeward.daemon.pages.flag import render_unread
 from spikeward.daemon.records import Records
 from spikeward.daemon.solving import Solved, Solving
@@ -48,6 +50,7 @@ class Pipeline:
     closings: Closings = field(default_factory=Closings)
     touched: set[BatchKey] = field(default_factory=set)
     solved: dict[BatchKey, Solved] = field(default_factory=dict)
+    rules_notice: Notice | None = None
     intake: Intake = field(init=False)
     solving: Solving = field(init=False)
     decisions: DecisionBook = field(init=False)
@@ -117,7 +120,7 @@ class Pipeline:
         for key in sorted(set(keys)):
             if key in self.solved:
                 self.boards.publish(self.solved[key].outcome, notices)
-        self.boards.publish_folders(notices, {key.root for key in self.solving.every()} | set(self.intake.roots), self.solved)
+        self.boards.publish_folders(notices, self.solving.every())
 
     # ---- what time decides, entered as data --------------------------------------------------------------------------
 
@@ -138,6 +141,15 @@ class Pipeline:
             event = lapse_event(one.batch.members[key], self.clock())
             self.ledger.append(event)
             self.closings.take(event)
+            self.touched.add(one.batch.key)
+
+    def time_is_up(self, one: Solved) -> None:
+        """Nothing of a batch has arrived for the stated time: incomplete series lapse, and the batch may close."""
+        waiting = [outcome.key for outcome in one.outcome.outcomes if outcome.incomplete]
+        if waiting:
+            self.lapse(one, waiting)
+        elif not closing_roles(one.rules):
+            self.close([one])
             self.touched.add(one.batch.key)
 
     def reopen(self, batch: str | None) -> list[Solved]:
@@ -190,6 +202,42 @@ class Pipeline:
 
     # ---- small answers -----------------------------------------------------------------------------------------------
 
+    def notices(self) -> list[tuple[str, str, Notice]]:
+        """What a person should know besides results, as (root, output folder, notice)."""
+        found = self.intake.notices() + self.decisions.notices(self.solving.present)
+        for place, named in self.solving.present.named.items():
+            folder = self.solving.present.output_folder(place)
+            found += [(place[0], folder, Notice("unnamed", place[1], sentence)) for sentence in named.unnamed]
+        for place, sentence in self.solving.present.unread().items():
+            folder = self.solving.present.output_folder(place)
+            found.append((place[0], folder, Notice("unread", place[1], sentence)))
+        for one in self.solved.values():
+            key = one.batch.key
+            notes = sorted({note for members in one.batch.members.values() for note in members.notes})
+            found += [(key.root, key.folder, Notice("duplicate", key.batch, note)) for note in notes]
+        found += [(key.root, key.folder, notice) for key, notice in self.output.held.items()]
+        found += [(root, "", Notice("kept aside", os.path.basename(path), _KEPT)) for path in self.records.kept for root in self.intake.roots]
+        if self.rules_notice is not None:
+            found += [(root, "", self.rules_notice) for root in self.intake.roots]
+        return found
+
+    def needs_a_person(self) -> list[str]:
+        """One line for everything that is neither a result nor in order."""
+        quiet = ("duplicate", "no reader")
+        return [f"{each.kind}: {each.subject}: {each.sentence}" for _, _, each in self.notices() if each.kind not in quiet]
+
+    def remedies(self) -> list[str]:
+        """How to solve closed batches again that stand under other rules than the present ones."""
+        other = sorted(
+            key.batch or key.folder or key.root
+            for key, closing in self.closings.closed.items()
+            if closing.rules_digest != self.rules.digest or closing.calculation_version != CALCULATION_VERSION
+        )
+        if not other:
+            return []
+        told = ", ".join(other[:5]) + (f" and {len(other) - 5} more" if len(other) > 5 else "")
+        return [f"closed under earlier rules: {told}; solve again under the present ones with: spikeward sweep CONFIG --again"]
+
     def _folder_of(self, root: str, folder: str) -> str:
         watch = next((watch for watch in self.rules.watches if watch.folder == root), None)
         base = self.places.outputs(watch) if watch else f"{self.places.base}/{root}"
@@ -226,6 +274,9 @@ class Pipeline:
         root, path = place
         folder = self._folder_of(root, self.solving.present.output_folder(place))
         self.records.withdraw_unread(folder, path.rsplit("/", 1)[-1])
+
+
+_KEPT = "somebody had edited this file; the edit was kept aside under this name"
 
 
 def _below(folder: str, where: str) -> bool:

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 
-from spikeward.daemon.config import load_file, load_rules
+from spikeward.daemon.config import load_rules
 from spikeward.daemon.problems import Problem
 from spikeward.daemon.trouble import Trouble
 from spikeward.rules.rulebook import Rulebook, Watch
@@ -60,6 +60,11 @@ def usable(rule_file: RuleFile) -> Rulebook:
         lines = "\n".join(problem.line_text() for problem in rule_file.errors)
         raise Trouble(f"{rule_file.path} cannot be used:\n{lines}")
     return rule_file.rules
+
+
+def rules_from(text: str | None) -> Rulebook | None:
+    """Rules from a text that was kept; None where it is gone or no longer understood."""
+    return None if text is None else load_rules(text, "kept rules")[0]
 
 
 @dataclass(frozen=True, slots=True)

@@ -136,6 +136,7 @@ class Outcome:
     inputs_digest: str
     rules_digest: str
     calculation_version: str = CALCULATION_VERSION
+    incomplete: bool = False  # members of its own are missing, and it has not lapsed
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,8 +8,8 @@ from dataclasses import dataclass, replace
 from spikeward.rules.checks.brackets import around
 from spikeward.rules.checks.quality import blank_lacking
 from spikeward.rules.checks.registry import BATCH, REGISTRY, check_line
-from spikeward.rules.checks.series import completeness, troubles
-from spikeward.rules.checks.subject import Context, Subject
+from spikeward.rules.checks.series import completeness, conflicts
+from spikeward.rules.checks.subject import Context, Subject, line_words
 from spikeward.rules.digests import inputs_digest
 from spikeward.rules.naming import level_order
 from spikeward.rules.outcomes import Check, Outcome, Result, VesselReport, worst
@@ -46,10 +46,7 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
     """
     rules, members = context.rules, standing.members
     lines = [line.prepared for line in solved]
-    checks = (
-        completeness(standing.missing, lines, standing.over, rules),
-        *troubles(members, lines),
-    )
+    checks = (completeness(members, standing.missing, standing.over, rules), *conflicts(members))
     subjects = [Subject(line, context) for line in solved]
     results = tuple(_result(subject, checks, standing) for subject in subjects)
     so_far = worst([check.verdict for check in (*checks, *(c for result in results for c in result.checks))])
@@ -73,6 +70,7 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
             members, context.batch, entered, told, standing.waiting_for, standing.settled, rules
         ),
         rules_digest=rules.digest,
+        incomplete=standing.incomplete,
     )
 
 
@@ -83,7 +81,7 @@ def _from_batch(check: Check) -> bool:
 def _result(subject: Subject, common: Sequence[Check], standing: Standing) -> Result:
     """One line; its verdict counts the checks of the whole series too, for a table shows it beside the number."""
     solved = subject.solved
-    checks = check_line(subject, only_certain=standing.incomplete)
+    checks = check_line(subject, only_certain=standing.incomplete or bool(solved.prepared.problems))
     so_far = worst([check.verdict for check in (*common, *checks)])
     withheld = _withheld(subject, standing)
     back = solved.prepared.way_back
@@ -168,7 +166,7 @@ def _vessel(
 def _notes(members: Members, solved: Sequence[Solved]) -> tuple[str, ...]:
     notes = dict.fromkeys(members.notes)
     for line in solved:
-        name = f"{line.prepared.line or line.prepared.analyte}: " if len(solved) > 1 else ""
+        name = f"{line_words(line.prepared.analyte, line.prepared.line)}: " if len(solved) > 1 else ""
         notes.update(dict.fromkeys(f"{name}{note}" for note in line.notes))
         if line.blank_note:
             notes[f"{name}{line.blank_note}"] = None

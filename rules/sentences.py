@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from spikeward.rules.checks.registry import REGISTRY
+from spikeward.rules.checks.subject import line_words
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, WAITING, WARN, Check, Estimate, Result
 from spikeward.rules.records import SeriesKey
 from spikeward.rules.rounding import figure, percent, rounded
@@ -19,11 +20,6 @@ def series_name(key: SeriesKey) -> str:
     return name if key.role == "sample" else f"{key.role.replace('_', ' ')} {name}"
 
 
-def line_name(result: Result) -> str:
-    """The line where there is one, else the analyte."""
-    return result.line or result.analyte
-
-
 def estimate_words(estimate: Estimate, basis: str = "") -> str:
     """A content with expanded uncertainty and unit, rounded for a report."""
     unit = f"{estimate.unit} {basis}".strip()
@@ -35,15 +31,18 @@ def estimate_words(estimate: Estimate, basis: str = "") -> str:
 
 def short_result(result: Result) -> str:
     """One result without its details."""
+    # a wavelength must not run into the number
+    name = f"{line_words(result.analyte, result.line)}{':' if result.line else ''}"
     if result.reported is None:
-        return f"{line_name(result)} no number"
-    return f"{line_name(result)} {estimate_words(result.reported, result.basis if result.in_sample else '')}"
+        return f"{name} no number"
+    return f"{name} {estimate_words(result.reported, result.basis if result.in_sample else '')}"
 
 
 def result_sentence(result: Result, solved: Solved) -> str:
     """One result with coverage, vessels, what was subtracted, what the interval holds and what is not shown."""
     if result.reported is None:
-        return f"{line_name(result)}: no number, because {_uncapital(result.no_number.rstrip('.'))}."
+        name, why = line_words(result.analyte, result.line), result.no_number.rstrip(".")
+        return f"{name}: no number, because {_uncapital(why)}."
     text = f"{short_result(result)} ({'; '.join(_details(result))})."
     holds = interval_holds(result, solved)
     missing = not_shown([result])
@@ -84,12 +83,17 @@ def interval_holds(result: Result, solved: Solved) -> str:
 
 def not_shown(results: Sequence[Result]) -> str:
     """What checks could not speak about, as a sentence, or an empty text."""
-    told: dict[str, None] = {}
+    found: dict[str, dict[str, str]] = {}  # what is not shown -> line -> reason
     for result in results:
         for check in result.checks:
-            word = REGISTRY[check.name].not_shown if check.name in REGISTRY else ""
+            word = REGISTRY[check.name].not_shown
             if word and check.verdict == NOT_EVALUATED:
-                told[f"{word} ({check.sentence.removeprefix('Not evaluated: ').rstrip('.')})"] = None
+                reason = check.sentence.removeprefix("Not evaluated: ").rstrip(".")
+                found.setdefault(word, {})[line_words(result.analyte, result.line)] = reason
+    told = []
+    for word, reasons in found.items():
+        every = set(reasons.values())
+        told.append(f"{word} ({every.pop()})" if len(every) == 1 else f"{word} of {', '.join(reasons)}")
     return f"Not shown: {', '.join(told)}." if told else ""
 
 
@@ -114,7 +118,7 @@ def headline(
         return f"{word}{'' if final else ' (so far)'}. {name}{_failures(checks, results)}"
     if verdict == WAITING:
         worries = f" {_troubles(checks, results, WARN)}" if so_far == WARN else ""
-        return f"WAITING. {name}: so far {so_far}; missing {', '.join(waiting_for)}.{worries}"
+        return f"WAITING. {name}: so far {so_far}; waits for {', '.join(waiting_for)}.{worries}"
     worries = f" {_troubles(checks, results, WARN)}" if verdict == WARN else ""
     return f"{verdict.upper()}. {name} {_results(results)}{worries}"
 
@@ -128,24 +132,34 @@ def _results(results: Sequence[Result]) -> str:
 
 
 def _failures(checks: Sequence[Check], results: Sequence[Result]) -> str:
+    """What fails, the whole series first, then each line by its first failing check; equal words once."""
     common = [check for check in checks if check.verdict == FAIL]
-    own = [(result, [check for check in result.checks if check.verdict == FAIL]) for result in results]
-    good = [line_name(result) for result, failing in own if not failing]
-    told = [_told(check) for check in common[:_SHOWN_AT_MOST]]
-    told += [f"{line_name(result)}: {_told(failing[0])}" for result, failing in own if failing and not common]
-    count = len(common) + sum(len(failing) for _, failing in own)
-    shown = told[:_SHOWN_AT_MOST]
-    rest = count - len(shown)
-    more = f" {rest} more {'check fails' if rest == 1 else 'checks fail'}." if rest else ""
-    stands = f" Not touched by this: {', '.join(good)}." if good and not common else ""
-    lead = ": " if common else " "
-    return f"{lead}{' '.join(shown)}{more}{stands}"
+    if common:
+        told = [_told(check) for check in common]
+        return f": {' '.join(told[:_SHOWN_AT_MOST])}{_more(len(told) - _SHOWN_AT_MOST)}"
+    said: dict[str, list[str]] = {}
+    good, count = [], 0
+    for result in results:
+        failing = [check for check in result.checks if check.verdict == FAIL]
+        name = line_words(result.analyte, result.line)
+        count += max(0, len(failing) - 1)
+        if failing:
+            said.setdefault(_told(failing[0]), []).append(name)
+        else:
+            good.append(name)
+    told = [f"{', '.join(names)}: {text}" for text, names in said.items()]
+    stands = f" Not touched by this: {', '.join(good)}." if good else ""
+    return f" {' '.join(told[:_SHOWN_AT_MOST])}{_more(count + max(0, len(told) - _SHOWN_AT_MOST))}{stands}"
+
+
+def _more(count: int) -> str:
+    return f" {count} more {'check fails' if count == 1 else 'checks fail'}." if count > 0 else ""
 
 
 def _troubles(checks: Sequence[Check], results: Sequence[Result], verdict: str) -> str:
     told = [check.sentence for check in checks if check.verdict == verdict]
     for result in results:
-        name = f"{line_name(result)}: " if len(results) > 1 else ""
+        name = f"{line_words(result.analyte, result.line)}: " if len(results) > 1 else ""
         told += [f"{name}{check.sentence}" for check in result.checks if check.verdict == verdict]
     rest = len(told) - _SHOWN_AT_MOST
     return " ".join(told[:_SHOWN_AT_MOST]) + (f" {rest} more to look at." if rest > 0 else "")

@@ -18,7 +18,8 @@ from spikeward.daemon.pages.text import visible
 from spikeward.rules.outcomes import Point, Result
 
 _WIDTH, _HEIGHT = 440, 330
-_LEFT, _RIGHT, _TOP, _BOTTOM = 58, 428, 16, 272
+_RIGHT, _TOP, _BOTTOM = 428, 16, 272
+_LETTER = 7.6  # of a tick label
 _SHAPES = ("round", "square", "diamond", "triangle")
 _REACH = 1.5  # an interval is drawn this far beyond the rest, in widths of the rest; an arrow says that it goes on
 
@@ -30,8 +31,16 @@ class _Frame:
     x: Axis
     y: Axis
 
+    @property
+    def left(self) -> float:
+        """Where the drawing starts: the labels beside it need room."""
+        return 32.0 + _LETTER * max(len(label) for _, label in self.y.ticks)
+
+    def along(self, share: float) -> float:
+        return self.left + (_RIGHT - self.left) * share
+
     def across(self, value: float) -> float:
-        return _LEFT + (_RIGHT - _LEFT) * self.x.share(value)
+        return self.along(self.x.share(value))
 
     def up(self, value: float) -> float:
         return _BOTTOM - (_BOTTOM - _TOP) * self.y.share(value)
@@ -96,19 +105,18 @@ def _frame(result: Result, points: Sequence[Point]) -> _Frame:
 
 def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
     for share, label in frame.x.ticks:
-        yield Markup('<path class="grid" d="M{0:.1f} {1}V{2}"/><text class="tick" x="{0:.1f}" y="{3}">{4}</text>').format(
-            _LEFT + (_RIGHT - _LEFT) * share, _TOP, _BOTTOM, _BOTTOM + 18, label
-        )
+        at = frame.along(share)
+        yield Markup('<path class="grid" d="M{0:.1f} {1}V{2}"/>').format(at, _TOP, _BOTTOM)
+        yield Markup('<text class="tick" x="{0:.1f}" y="{1}">{2}</text>').format(at, _BOTTOM + 18, label)
     for share, label in frame.y.ticks:
         at = _BOTTOM - (_BOTTOM - _TOP) * share
-        yield Markup('<path class="grid" d="M{0} {1:.1f}H{2}"/><text class="tick up" x="{3}" y="{4:.1f}">{5}</text>').format(
-            _LEFT, at, _RIGHT, _LEFT - 6, at + 4.5, label
-        )
-    yield Markup('<path class="axis" d="M{0} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>').format(
-        _LEFT, frame.up(0.0), _RIGHT, frame.across(0.0), _TOP, _BOTTOM
+        yield Markup('<path class="grid" d="M{0:.1f} {1:.1f}H{2}"/>').format(frame.left, at, _RIGHT)
+        yield Markup('<text class="tick up" x="{0:.1f}" y="{1:.1f}">{2}</text>').format(frame.left - 6, at + 4.5, label)
+    yield Markup('<path class="axis" d="M{0:.1f} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>').format(
+        frame.left, frame.up(0.0), _RIGHT, frame.across(0.0), _TOP, _BOTTOM
     )
     added = frame.x.titled(f"{_analyte(result)} added", unit_shown(result.content_unit))
-    yield Markup('<text class="name" x="{0:.1f}" y="{1}">{2}</text>').format((_LEFT + _RIGHT) / 2, _HEIGHT - 12, added)
+    yield Markup('<text class="name" x="{0:.1f}" y="{1}">{2}</text>').format((frame.left + _RIGHT) / 2, _HEIGHT - 12, added)
     signal = frame.y.titled("Signal corrected for volume", visible(result.signal_unit))
     yield Markup('<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>').format(
         -(_TOP + _BOTTOM) / 2, signal
@@ -137,13 +145,13 @@ def _content(frame: _Frame, result: Result) -> Iterator[Markup]:
     if crossing is None:
         return
     if interval is not None:
-        left, right = (min(max(frame.across(end), _LEFT), _RIGHT) for end in interval)
+        left, right = (min(max(frame.across(end), frame.left), _RIGHT) for end in interval)
         ends = _end(left, floor, -1, frame.x.share(interval[0])) + _end(right, floor, 1, frame.x.share(interval[1]))
         yield Markup('<path class="interval" d="M{0:.1f} {1:.1f}H{2:.1f}{3}"/>').format(left, floor, right, ends)
     at = frame.across(crossing)
     yield Markup('<path class="crossing" d="M{0:.1f} {1:.1f}l5 5l-5 5l-5 -5z"/>').format(at, floor - 5)
     yield Markup('<text class="crossing-name" x="{0:.1f}" y="{1:.1f}">−C₀</text>').format(
-        max(at, _LEFT + 16.0), floor - 12
+        max(at - 3, frame.left + 28), floor - 12
     )
 
 
@@ -178,6 +186,18 @@ def _mark(frame: _Frame, point: Point, shape: str) -> Markup:
 
 def _analyte(result: Result) -> str:
     return visible(result.analyte)
+
+
+def caption(result: Result) -> str:
+    """What the marks of the plot mean, in words."""
+    words = "Each mark is a vessel, one shape for each preparation of a level."
+    if any(point.excluded for point in result.points):
+        words += " A cross is an excluded vessel, which the line leaves out."
+    if _crossing(result) is not None:
+        words += " The dashed part of the line reaches zero signal at minus the content, −C₀."
+    if _interval(result) is not None:
+        words += " The bar on the axis is its interval; an arrow says that it goes on beyond the drawing."
+    return words
 
 
 def _title(result: Result) -> str:

@@ -73,7 +73,8 @@ def _reasons(name: str, checks: Iterable[Check]) -> Iterator[Line]:
     for check in checks:
         if check.verdict in (FAIL, WARN):
             about = f"{check.verdict}, {f'{name}, ' if name else ''}{check.name}"
-            yield "reason", f"{about}: {check.sentence}{f' {check.remedy}.' if check.remedy else ''}"
+            remedy = f" {check.remedy.rstrip('.')}." if check.remedy else ""
+            yield "reason", f"{about}: {check.sentence}{remedy}"
 
 
 def _lines(lines: Iterable[Line]) -> bytes:

@@ -1,4 +1,4 @@
-"""Texts of unknown origin, made fit for a line, a page or a file: always encodable, never able to move their surroundings.
+"""Texts of unknown origin, fit for a line, a page or a file: encodable, and unable to move what stands around them.
 
 Names of files and solutions come from outside. A file name may hold bytes that are no text, a cell may hold line
 breaks, control codes or marks that turn the direction of writing around.
@@ -20,15 +20,12 @@ def encodable(text: str) -> str:
 
 
 def one_line(text: str) -> str:
-    r"""The text on one line: control codes, line breaks and marks of direction as ``\n``, ``\x07``, ``\u202e``.
-
-    A backslash is doubled, so that nothing is lost.
-    """
-    return _UNSEEN.sub(_escaped, encodable(text.replace("\\", "\\\\")))
+    r"""The text on one line: control codes, line breaks and marks of direction as ``\n``, ``\x07``, ``\u202e``."""
+    return _UNSEEN.sub(_escaped, encodable(text))
 
 
 def visible(text: str) -> str:
-    """The text for a page: line breaks and tabs as spaces, other control codes and marks of direction shown by number."""
+    """The text for a page: line breaks and tabs as spaces, other control codes and marks of direction by number."""
     return _UNSEEN.sub(_named, encodable(text))
 
 

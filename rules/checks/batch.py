@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from dataclasses import replace
 
 from spikeward.rules.checks.brackets import drift
-from spikeward.rules.checks.subject import NO_LIMITS, Context, plain
+from spikeward.rules.checks.subject import NO_LIMITS, Context, line_words, plain
 from spikeward.rules.outcomes import NOT_EVALUATED, PASS, WARN, Check, Outcome
 from spikeward.rules.series import closing_roles
 
@@ -47,5 +47,5 @@ def _brackets(context: Context) -> list[Check]:
         visits = context.brackets[analyte, line]
         check = drift(visits, visits, limits) if len(visits) > 1 else None
         if check is not None:
-            checks.append(replace(check, sentence=f"{line or analyte}: {check.sentence}"))
+            checks.append(replace(check, sentence=f"{line_words(analyte, line)}: {check.sentence}"))
     return checks

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 from scipy import special
+
 from spikeward.rules.checks.line import fitted_points
 from spikeward.rules.checks.subject import Subject, not_evaluated, number
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check

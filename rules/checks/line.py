@@ -6,7 +6,8 @@ import math
 from collections.abc import Callable
 
 from scipy import special
-from spikeward.rules.checks.subject import Subject, as_percent, graded, not_evaluated, number, plain
+
+from spikeward.rules.checks.subject import Subject, as_percent, capital, graded, not_evaluated, number, plain
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check, Estimate, Point
 from spikeward.rules.rounding import figure, percent
 from spikeward.rules.rulebook import Limits
@@ -39,21 +40,26 @@ def solved(subject: Subject, limits: Limits) -> Check:
     """Whether the line gives a number at all."""
     if subject.solved.no_number:
         remedy = "Look at the vessels of this series; repeat it if nothing explains them"
-        return plain("solved", FAIL, f"{subject.name} gives no number: {subject.solved.no_number}.", remedy)
-    return plain("solved", PASS, f"The line of {subject.name} gives a content.")
+        reason = subject.solved.no_number.rstrip(".")
+        sentence = f"There is no number: {reason}." if ": " not in reason else f"There is no number. {capital(reason)}."
+        return plain("solved", FAIL, sentence, remedy, "theory")
+    return plain("solved", PASS, "The line gives a content.")
 
 
 def levels(subject: Subject, limits: Limits) -> Check:
-    """Vessels that carry the line; a series with one addition is judged by its design."""
+    """Vessels that carry the line; below what the design needs it fails whatever the rules say."""
     points = fitted_points(subject)
     additions = len({point.x for point in points})
     told = f"{len(points)} vessels with {additions} different additions carry the line"
-    if subject.solved.prepared.design == "single":
-        return plain("levels", PASS, f"One addition, as the design says: {told}.", source="the rule file's design")
-    return graded(
-        "levels", float(len(points)), limits, told, "Measure the missing levels, or declare the design single",
-        unit="vessels",
-    )  # fmt: skip
+    single = subject.solved.prepared.design == "single"
+    needed = 2 if single else 3
+    remedy = "Measure the missing levels" if single else "Measure the missing levels, or declare the design single"
+    if len(points) < needed:
+        told = f"{told}; the design needs at least {needed}."
+        return Check("levels", FAIL, told, float(len(points)), "vessels", f"at least {needed}", "the design", remedy)
+    if single:
+        return plain("levels", PASS, f"One addition, as the design says: {told}.", source="the design")
+    return graded("levels", float(len(points)), limits, told, remedy, unit="vessels")
 
 
 def response(subject: Subject, limits: Limits) -> Check:
@@ -106,10 +112,8 @@ def residual(subject: Subject, limits: Limits) -> Check:
     if floor > abs(_fitted(points[sizes.index(largest)])):
         against = f"{percent(number(limits, 'floor') or 0.0)} of the largest fitted signal"
     sentence = f"The largest residual, of {where}, is {percent(largest)} of {against}"
-    return graded(
-        "residual", largest, limits, sentence, f"Look for a pipetting slip, first in {where}; prepare and measure it again",
-        show=as_percent,
-    )  # fmt: skip
+    remedy = f"Look for a pipetting slip, first in {where}; prepare and measure it again"
+    return graded("residual", largest, limits, sentence, remedy, show=as_percent)
 
 
 def studentised(subject: Subject, limits: Limits) -> Check:

@@ -6,6 +6,7 @@ import math
 from dataclasses import replace
 
 from scipy import special
+
 from spikeward.rules.checks.subject import Subject, as_percent, graded, not_evaluated, number
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, SEVERITY, WARN, Check
 from spikeward.rules.rounding import percent
@@ -28,8 +29,8 @@ def check_sample(subject: Subject, limits: Limits) -> Check:
 def _of(subject: Subject, limits: Limits, name: str, role: str) -> Check:
     if subject.role == role:
         return recovery(subject.solved, subject, limits, name)
-    if subject.role == "process_blank" or not number(limits, "samples_follow"):
-        return not_evaluated(name, f"this series does not depend on a {_WORDS[role]}")
+    if not number(limits, "samples_follow"):
+        return not_evaluated(name, f"the rules keep samples apart from the {_WORDS[role]}")
     found = [
         recovery(solved, subject, limits, name)
         for solved in subject.context.solved.get((role, subject.line_key), ())

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from spikeward.rules.checks import brackets, curvature, line, quality, reference, signal
+from spikeward.rules.checks import brackets, curvature, line, quality, reference, series, signal
 from spikeward.rules.checks.subject import NO_LIMITS, CheckOfLine, Subject
 from spikeward.rules.outcomes import Check
 
@@ -17,6 +17,7 @@ class Registered:
 
     ``certain_early``: what it finds on some levels cannot be undone by those still missing. ``not_shown``: what a
     reader should know is not shown where the check is not evaluated. ``always``: made whether the rules name it or not.
+    ``not_for``: roles of which it makes no sense.
     """
 
     name: str
@@ -26,16 +27,21 @@ class Registered:
     certain_early: bool = False
     not_shown: str = ""
     always: bool = False
+    not_for: tuple[str, ...] = ()
 
 
 REGISTRY: dict[str, Registered] = {
     one.name: one
     for one in (
+        Registered(
+            "preparation", series.preparation, RESULT, "volumes, standard and way back are known",
+            certain_early=True, always=True,
+        ),
         Registered("solved", line.solved, RESULT, "the line gives a number", always=True),
         Registered("units", signal.units, RESULT, "all signals come in one unit", certain_early=True),
         Registered("linear_top", signal.linear_top, RESULT, "no signal is above the straight part", certain_early=True),
         Registered("standard", quality.standard, RESULT, "the standard was in date", certain_early=True),
-        Registered("levels", line.levels, RESULT, "enough vessels carry the line"),
+        Registered("levels", line.levels, RESULT, "enough vessels carry the line", always=True),
         Registered("response", line.response, RESULT, "the signal answers to the additions"),
         Registered("correlation", line.correlation, RESULT, "r reaches what the method demands"),
         Registered("curvature", curvature.curvature, RESULT, "the response is straight", not_shown="linearity"),
@@ -47,16 +53,20 @@ REGISTRY: dict[str, Registered] = {
         Registered("expanded_uncertainty", quality.expanded_uncertainty, RESULT, "the result is known well enough"),
         Registered("blank", quality.blank, RESULT, "blanks came and are small beside the result", always=True),
         Registered("brackets", brackets.brackets, BATCH, "the sensitivity held on both sides", not_shown="drift"),
-        Registered("reference", reference.reference, BATCH, "the reference is recovered", not_shown="trueness"),
-        Registered("check_sample", reference.check_sample, BATCH, "the check sample is recovered"),
-    )
+        Registered(
+            "reference", reference.reference, BATCH, "the reference is recovered",
+            not_shown="trueness", not_for=("process_blank",),
+        ),
+        Registered(
+            "check_sample", reference.check_sample, BATCH, "the check sample is recovered", not_for=("process_blank",)
+        ),
+    )  # fmt: skip
 }
 """Checks of one analyte on one line, in the order of a report; those that look at the batch do so for that line."""
 
 SERIES_CHECKS: dict[str, str] = {
     "completeness": "every level, reading, analyte and bench value is there",
     "conflict": "sources do not contradict each other",
-    "preparation": "volumes, standard and way back are known",
     "identity": "nothing about the origin of the readings is doubtful",
 }
 """Checks of a whole series, always made; they have no limits."""
@@ -67,11 +77,13 @@ def check_line(subject: Subject, only_certain: bool = False) -> tuple[Check, ...
 
     Parameters
     ----------
-    only_certain : the series is not complete; make only checks whose finding more levels cannot undo
+    only_certain : the line is not complete or not prepared; make only checks whose finding more levels cannot undo
     """
     asked = subject.context.rules.checks
     return tuple(
         one.function(subject, asked.get(name, NO_LIMITS))
         for name, one in REGISTRY.items()
-        if (one.always or name in asked) and (one.certain_early or not only_certain)
+        if (one.always or name in asked)
+        and (one.certain_early or not only_certain)
+        and subject.role not in one.not_for
     )

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-from spikeward.rules.checks.subject import Subject, as_percent, graded, not_evaluated, number, plain
+from spikeward.rules.checks.subject import Subject, as_percent, capital, graded, not_evaluated, number, plain
 from spikeward.rules.outcomes import FAIL, PASS, Check
 from spikeward.rules.prepared import PreparedVessel
 from spikeward.rules.records import OVER_RANGE, Reading
@@ -31,7 +31,7 @@ def linear_top(subject: Subject, limits: Limits) -> Check:
     remedy = "Dilute the test solution and measure the series again"
     for vessel, reading in _read(subject):
         if reading.qualifier == OVER_RANGE:
-            sentence = f"{_capital(vessel)} is over range ({reading.solution}, {reading.path} row {reading.row})."
+            sentence = f"{capital(vessel)} is over range ({reading.solution}, {reading.path} row {reading.row})."
             return plain("linear_top", FAIL, sentence, remedy, "the instrument's own limit")
     top = _top(subject)
     largest = max((r.signal for _, r in _read(subject) if r.signal is not None), default=None)
@@ -43,7 +43,7 @@ def linear_top(subject: Subject, limits: Limits) -> Check:
         sentence = f"The linear top of {subject.name} is in {top.unit or 'no unit'}, the signals are in {unit}."
         return plain("linear_top", FAIL, sentence, "Declare the top in the unit of the export, under range")
     where = next(vessel for vessel, r in _read(subject) if r.signal == largest)
-    placed = f"{_capital(where)} reads {figure(largest)} {top.unit}"
+    placed = f"{capital(where)} reads {figure(largest)} {top.unit}"
     sentence = f"{placed}, {as_percent(largest / top.signal)} of the linear top {figure(top.signal)} {top.unit}"
     if any("blank" in reading.already for reading in subject.readings):
         sentence += ", after the export had taken its blank off"
@@ -91,6 +91,3 @@ def _top(subject: Subject) -> Top | None:
     tops = subject.context.rules.tops
     return tops.get(subject.solved.prepared.line) or tops.get(subject.solved.prepared.analyte)
 
-
-def _capital(text: str) -> str:
-    return text[:1].upper() + text[1:]

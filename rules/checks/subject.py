@@ -62,8 +62,8 @@ class Subject:
 
     @property
     def name(self) -> str:
-        """The line as sentences name it: the line where there is one, else the analyte."""
-        return self.solved.prepared.line or self.solved.prepared.analyte
+        """The line as sentences name it."""
+        return line_words(*self.line_key)
 
     @property
     def line_key(self) -> LineKey:
@@ -74,6 +74,16 @@ class Subject:
     def readings(self) -> tuple[Reading, ...]:
         """The readings of all vessels that are not excluded."""
         return tuple(r for vessel in self.solved.prepared.vessels if not vessel.excluded for r in vessel.readings)
+
+
+def line_words(analyte: str, line: str) -> str:
+    """An analyte and its spectral line as people say them: the line alone where it names the analyte."""
+    return (line if analyte in line else f"{analyte} {line}") if line else analyte
+
+
+def capital(text: str) -> str:
+    """A sentence with a capital letter, unless it begins with a file's or a solution's name."""
+    return text[:1].upper() + text[1:] if text.split(" ", 1)[0].isalpha() else text
 
 
 CheckOfLine = Callable[[Subject, Limits], Check]

@@ -11,7 +11,7 @@ from disk_that_dies import Died, DyingDisk
 
 from spikeward.daemon.disk import RealDisk
 from spikeward.daemon.names import VERDICTS
-from spikeward.daemon.publish import digests, publish, publish_files, publish_unread, withdraw_unread
+from spikeward.daemon.publish import publish, publish_files, publish_unread, withdraw_unread
 
 FOLDER = "/data"
 STEM = "MD1_07"
@@ -27,6 +27,14 @@ def revision(number: int) -> dict[str, bytes]:
 
 def flag_of(number: int, verdict: str) -> bytes:
     return b"verdict: %s\nrevision: %d\n" % (verdict.encode(), number)
+
+
+# Everything the daemon intends to write in these tests, as the journal would have it.
+KNOWN = {
+    hashlib.sha256(data).hexdigest()
+    for number in (1, 2)
+    for data in [*revision(number).values(), *(flag_of(number, verdict) for verdict in VERDICTS)]
+}
 
 
 def send(disk: DyingDisk, number: int, verdict: str, known: set[str] | None = None) -> None:
@@ -72,20 +80,8 @@ def test_killed_at_each_step_and_started_again_it_ends_as_if_nothing_had_happene
             send(disk, 2, second)
         assert len(standing(disk)) == 1, f"killed at step {k}"
         disk.restart()
-        send(disk, 2, second, set(digests(dict(enumerate_known()))))
+        send(disk, 2, second, KNOWN)
         assert disk.tree() == undisturbed.tree(), f"killed at step {k}"
-
-
-def enumerate_known() -> list[tuple[str, bytes]]:
-    """Everything the daemon intends to write in these tests, as the journal would have it."""
-    return [
-        (hashlib.sha256(data).hexdigest(), data)
-        for number in (1, 2)
-        for data in [*revision(number).values(), *(flag_of(number, verdict) for verdict in VERDICTS)]
-    ]
-
-
-KNOWN = {digest for digest, _ in enumerate_known()}
 
 
 def test_killed_at_each_step_of_the_first_publication() -> None:
@@ -182,6 +178,7 @@ def died_at(k: int, first: str, second: str) -> DyingDisk:
 def test_after_a_publication_nothing_is_left_for_a_power_cut_to_take() -> None:
     disk = start()
     send(disk, 1, "warn")
+    send(disk, 2, "pass")
     before = disk.tree()
     disk.cut_power(lambda number: False, torn=False)
     assert disk.tree() == before
@@ -210,6 +207,20 @@ def test_several_flags_end_as_one(present: tuple[str, ...], target: str) -> None
     send(disk, 2, target, KNOWN)
     assert standing(disk) == [f"{FOLDER}/{STEM}.{target}.flag"]
     assert disk.read(standing(disk)[0]) == flag_of(2, target)
+
+
+def test_an_edited_flag_among_several_is_kept_aside() -> None:
+    disk = start()
+    send(disk, 1, "fail")
+    disk.write_atomic(f"{FOLDER}/{STEM}.pass.flag", b"put here by hand")
+    send(disk, 2, "warn", KNOWN)
+    assert standing(disk) == [f"{FOLDER}/{STEM}.warn.flag"]
+    assert disk.read(f"{FOLDER}/{STEM}.pass.flag.kept-1") == b"put here by hand"
+
+
+def test_result_then_summary_then_flag() -> None:
+    done = publish(start(), FOLDER, STEM, revision(1), flag_of(1, "pass"), "pass")
+    assert done.written == (f"{STEM}.result.json", f"{STEM}.summary.html", f"{STEM}.pass.flag")
 
 
 def test_a_persons_edit_is_kept_aside_once_and_the_name_is_never_without_a_file() -> None:

@@ -1,0 +1,56 @@
+"""The files of a batch as a whole: its board and its table of results; and a board for a folder without any batch."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Collection, Iterable
+from dataclasses import dataclass, field
+
+from spikeward.daemon.names import BOARD, SUMMARY, TABLE, batch_stem, stems
+from spikeward.daemon.pages.board import render_board
+from spikeward.daemon.pages.csv_file import render_csv
+from spikeward.daemon.pages.facts import Notice
+from spikeward.daemon.records import Records
+from spikeward.rules.outcomes import BatchOutcome
+from spikeward.rules.records import BatchKey
+
+Place = tuple[str, str]  # root, output folder
+Noticed = tuple[str, str, Notice]  # root, output folder, notice
+
+
+@dataclass(slots=True)
+class BoardOutput:
+    """Writes boards; a folder that once had a board of its own keeps it current."""
+
+    records: Records
+    folder_of: Callable[[str, str], str]
+    station: str
+    _own_boards: set[Place] = field(default_factory=set)
+
+    def publish(self, outcome: BatchOutcome, notices: Iterable[Noticed]) -> None:
+        """Write board and table of one batch, with what a person should know of its folder."""
+        key = outcome.key
+        named, _ = stems(one.key for one in outcome.outcomes)
+        links = {series: stem + SUMMARY for series, stem in named.items()}
+        mine = [notice for root, folder, notice in notices if root == key.root and _concerns(folder, key.folder)]
+        stem = batch_stem(key)
+        self.records.publish_files(
+            self.folder_of(key.root, key.folder),
+            {stem + BOARD: render_board(outcome, mine, links, self.station), stem + TABLE: render_csv(outcome)},
+        )
+
+    def publish_folders(self, notices: Iterable[Noticed], batches: Collection[BatchKey]) -> None:
+        """A board of its own for each folder that has something to say and no batch to say it on."""
+        with_batch = {(key.root, key.folder) for key in batches}
+        found: dict[Place, list[Notice]] = {place: [] for place in self._own_boards - with_batch}
+        for root, folder, notice in notices:
+            if not any(where == root and _concerns(folder, below) for where, below in with_batch):
+                found.setdefault((root, folder), []).append(notice)
+        for (root, folder), mine in sorted(found.items(), key=lambda item: item[0]):
+            self._own_boards.add((root, folder))
+            board = render_board(None, mine, {}, self.station, folder or root)
+            self.records.publish_files(self.folder_of(root, folder), {"folder" + BOARD: board})
+
+
+def _concerns(noticed: str, folder: str) -> bool:
+    """What is noticed of a folder stands on the boards of its batches; of a watched folder, on all below it."""
+    return noticed in ("", folder)

@@ -1,0 +1,122 @@
+"""``BATCH.board.html``: one look over a batch in the morning. What needs a person comes first."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from urllib.parse import quote
+
+from spikeward.daemon.pages.facts import Notice
+from spikeward.daemon.pages.flag import result_name
+from spikeward.daemon.pages.numbers import coverage_shown, interval_shown, value_shown
+from spikeward.daemon.pages.template import attention, page
+from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WAITING, WARN, BatchOutcome, Check, Outcome, Result
+from spikeward.rules.records import SeriesKey
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """One analyte of one series, or a series that has no result yet, as the board lists it."""
+
+    verdict: str
+    role: str
+    sample: str
+    name: str  # analyte or line
+    value: str
+    how: str  # coverage and interval, or why there is no number
+    says: str
+    link: str
+
+
+def render_board(
+    batch: BatchOutcome | None,
+    notices: Sequence[Notice],
+    links: Mapping[SeriesKey, str],
+    station: str,
+    folder: str = "",
+) -> bytes:
+    """The board of one batch, or of a folder in which no batch was recognised.
+
+    Parameters
+    ----------
+    batch : None for a folder without any
+    notices : what stands on this board besides results, in any order
+    links : file name of each series' summary, beside the board
+    folder : as a person knows it; of the batch where it is left out
+    """
+    rows = [row for outcome in (batch.outcomes if batch else ()) for row in _rows(outcome, links)]
+    return page(
+        "board.html.jinja",
+        batch=batch,
+        headline=headline(batch, rows),
+        urgent=sorted((row for row in rows if row.verdict != PASS), key=lambda row: attention(row.verdict)),
+        rows=rows,
+        notices=sorted(notices, key=lambda notice: (notice.kind, notice.subject, notice.sentence, notice.since)),
+        folder=folder or (_place(batch.key.root, batch.key.folder) if batch else ""),
+        station=station,
+    )
+
+
+def headline(batch: BatchOutcome | None, rows: Sequence[Row]) -> str:
+    """The first line: ``41 of 44 results reportable, 2 fail, 1 waits; in control: brackets, reference.``"""
+    if batch is None:
+        return "No batch was recognised in this folder."
+    if not rows:
+        return "No addition series yet."
+    count = {verdict: sum(row.verdict == verdict for row in rows) for verdict in (PASS, WARN, FAIL, WAITING)}
+    good = count[PASS] + count[WARN]
+    parts = [f"{good} of {len(rows)} {'result' if len(rows) == 1 else 'results'} reportable"]
+    if count[WARN]:
+        parts[0] += f" ({count[WARN]} with a warning)"
+    parts += [f"{count[FAIL]} {'fails' if count[FAIL] == 1 else 'fail'}"] if count[FAIL] else []
+    parts += [f"{count[WAITING]} {'waits' if count[WAITING] == 1 else 'wait'}"] if count[WAITING] else []
+    return f"{', '.join(parts)}{_control(batch.checks)}."
+
+
+def _control(checks: Iterable[Check]) -> str:
+    told = {FAIL: "out of control", WARN: "to look at", NOT_EVALUATED: "not evaluated", PASS: "in control"}
+    named = [
+        (words, [check.name.replace("_", " ") for check in checks if check.verdict == verdict])
+        for verdict, words in told.items()
+    ]
+    return "".join(f"; {words}: {', '.join(dict.fromkeys(names))}" for words, names in named if names)
+
+
+def _rows(outcome: Outcome, links: Mapping[SeriesKey, str]) -> list[Row]:
+    key = outcome.key
+    name = links.get(key, "")
+    # a colon or a leading slash in a name must not turn the link into an address elsewhere
+    link = f"./{quote(name, safe='', errors='surrogateescape')}" if name else ""
+    role, sample = key.role.replace("_", " "), key.sample or key.batch or "one series"
+    if not outcome.results:
+        return [Row(outcome.verdict, role, sample, "", "no result yet", "", outcome.sentence, link)]
+    return [
+        Row(result.verdict, role, sample, result_name(result), *_value(result), _says(outcome, result), link)
+        for result in outcome.results
+    ]
+
+
+def _value(result: Result) -> tuple[str, str]:
+    reported = result.reported
+    if reported is None or result.no_number:
+        return "no number", result.no_number or "it was not calculated"
+    basis = f" {result.basis}" if result.basis and result.in_sample is not None else ""
+    where = "" if result.in_sample is not None else "in the test solution; "
+    interval = interval_shown(reported)
+    return value_shown(reported) + basis, f"{where}{coverage_shown(reported)}{f'; {interval}' if interval else ''}"
+
+
+def _says(outcome: Outcome, result: Result) -> str:
+    """Why a result needs a person: failing checks before warning ones, then what is waited for."""
+    checks = (*outcome.checks, *result.checks)
+    for verdict in (FAIL, WARN):
+        told = [f"{check.sentence} {check.remedy}".strip() for check in checks if check.verdict == verdict]
+        if told and result.verdict in (verdict, WAITING):
+            return " ".join(told)
+    if outcome.waiting_for and result.verdict == WAITING:
+        return f"Waiting for {', '.join(outcome.waiting_for)}."
+    return result.sentence
+
+
+def _place(*parts: str) -> str:
+    return "/".join(part for part in parts if part)
