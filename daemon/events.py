@@ -185,15 +185,21 @@ def folders_watched() -> int | None:
 
     When the system's limit is reached inside a tree, the folders that are left out are not reported otherwise.
     """
-    count = 0
     try:
-        for handle in os.listdir("/proc/self/fd"):
-            if os.readlink(f"/proc/self/fd/{handle}") == "anon_inode:inotify":
-                with open(f"/proc/self/fdinfo/{handle}", encoding="ascii") as file:
-                    count += sum(line.startswith("inotify ") for line in file)
-    except FileNotFoundError:  # also a handle that was closed meanwhile
+        handles = os.listdir("/proc/self/fd")
+    except OSError:
         return None
-    return count
+    return sum(_folders_of(handle) for handle in handles)
+
+
+def _folders_of(handle: str) -> int:
+    try:
+        if os.readlink(f"/proc/self/fd/{handle}") != "anon_inode:inotify":
+            return 0
+        with open(f"/proc/self/fdinfo/{handle}", encoding="ascii") as file:
+            return sum(line.startswith("inotify ") for line in file)
+    except OSError:  # closed meanwhile, such as the one that listed the handles
+        return 0
 
 
 class _Handler(FileSystemEventHandler):

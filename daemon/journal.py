@@ -207,9 +207,12 @@ class Journal:
             raise JournalUnavailable(self._why_not(error)) from error
 
     def _open(self) -> sqlite3.Connection:
+        stands = os.path.exists(self._path) and os.path.getsize(self._path) > 0
         db = sqlite3.connect(self._path, timeout=self._busy_s, isolation_level=None)
         try:
             _check(db)
+            if stands and not _version(db):
+                raise _lost("what is left of it is no journal")
             self._migrate(db)
             db.execute("pragma journal_mode = wal")
             db.execute("pragma synchronous = full")
@@ -220,7 +223,7 @@ class Journal:
         return db
 
     def _migrate(self, db: sqlite3.Connection) -> None:
-        version = db.execute("pragma user_version").fetchone()[0]
+        version = _version(db)
         newest = len(self._migrations)
         if version > newest:
             raise JournalRefused(
@@ -265,9 +268,18 @@ class Journal:
 def _check(db: sqlite3.Connection) -> None:
     answer = db.execute("pragma quick_check(1)").fetchone()[0]
     if answer != "ok":
-        lost = sqlite3.DatabaseError(str(answer).replace("\n", " "))
-        lost.sqlite_errorcode = sqlite3.SQLITE_CORRUPT
-        raise lost
+        raise _lost(str(answer).replace("\n", " "))
+
+
+def _version(db: sqlite3.Connection) -> int:
+    version: int = db.execute("pragma user_version").fetchone()[0]
+    return version
+
+
+def _lost(why: str) -> sqlite3.DatabaseError:
+    error = sqlite3.DatabaseError(why)
+    error.sqlite_errorcode = sqlite3.SQLITE_CORRUPT
+    return error
 
 
 def _is_lost(error: sqlite3.DatabaseError) -> bool:

@@ -25,6 +25,18 @@ from spikeward.rules.records import SeriesKey
 Present = Callable[[SeriesKey, str, str], bool]
 
 
+@dataclass(frozen=True, slots=True)
+class _Sheaf:
+    """One series, ready to be written; ``revision`` is the ledger's record where its content changed."""
+
+    outcome: Outcome
+    folder: str
+    stem: str
+    result: bytes
+    digest: str
+    revision: Mapping[str, Any] | None
+
+
 @dataclass(slots=True)
 class Output:
     """Remembers what was published, so that only changed content is rendered and written.
@@ -73,32 +85,48 @@ class Output:
         OSError : the disk does not take it now; a later call with the same batch finishes what was begun
         """
         named, clashing = stems(outcome.key for outcome in batch.outcomes)
-        written = []
+        changed = []
         for outcome in batch.outcomes:
-            key = outcome.key
-            if key in clashing:
-                outcome = _clash(outcome, [other for other in clashing if other != key])
-            if (check_all or self._outcomes.get(key) != outcome) and self._one(outcome, named[key], key in clashing):
-                written.append(key)
-            self._outcomes[key] = outcome
+            if outcome.key in clashing:
+                outcome = _clash(outcome, [other for other in clashing if other != outcome.key])
+            if check_all or self._outcomes.get(outcome.key) != outcome:
+                changed.append(outcome)
+        sheaves = [
+            sheaf
+            for outcome in changed
+            if (sheaf := self._sheaf(outcome, named[outcome.key])) is not None
+        ]
+        events = [sheaf.revision for sheaf in sheaves if sheaf.revision is not None]
+        if events:
+            self.ledger.append(*events)
+        for event in events:
+            self.take(event)
+        written = [sheaf.outcome.key for sheaf in sheaves if self._write(sheaf)]
+        self._outcomes.update((outcome.key, outcome) for outcome in changed)
         return written
 
-    def _one(self, outcome: Outcome, stem: str, clashes: bool) -> bool:
+    def _sheaf(self, outcome: Outcome, stem: str) -> _Sheaf | None:
+        """What is to be written for a series; None while a quoted source is missing."""
         key = outcome.key
         folder = self.folder_of(key.root, key.folder)
-        stem = f"{stem}_{outcome.inputs_digest[:12]}" if clashes else stem
         result = render_result(outcome)
-        digest = next(iter(digests({RESULT: result}).values()))
+        digest = digests({RESULT: result})[RESULT]
+        revision = None
         if self.recorded.get(key) != digest:
             before = self._standing(os.path.join(folder, stem + RESULT))
             if not self._sources_there(key, before):
-                return False
+                return None
             if outcome.verdict != WAITING or key in self.history:
-                self._revise(outcome, digest, before, json.loads(result))
+                revision = self._revision(outcome, digest, before, json.loads(result))
         self.held.pop(key, None)
-        files = {RESULT: result, SUMMARY: render_summary(outcome, tuple(self.history.get(key, ())), self.station)}
-        flag = render_flag(outcome, digest)
-        return self.records.publish(folder, stem, files, flag, outcome.verdict)
+        return _Sheaf(outcome, folder, stem, result, digest, revision)
+
+    def _write(self, sheaf: _Sheaf) -> bool:
+        outcome = sheaf.outcome
+        history = tuple(self.history.get(outcome.key, ()))
+        files = {RESULT: sheaf.result, SUMMARY: render_summary(outcome, history, self.station)}
+        flag = render_flag(outcome, sheaf.digest)
+        return self.records.publish(sheaf.folder, sheaf.stem, files, flag, outcome.verdict)
 
     def _standing(self, path: str) -> dict[str, Any] | None:
         """The result that stands beside the data, None where there is none that can be read."""
@@ -127,15 +155,16 @@ class Output:
             )  # fmt: skip
         return not missing
 
-    def _revise(
+    def _revision(
         self, outcome: Outcome, digest: str, before: Mapping[str, Any] | None, after: Mapping[str, Any]
-    ) -> None:
+    ) -> dict[str, Any]:
+        """The ledger's record of a revision."""
         key = outcome.key
         why, changed = what_changed(before, after)
-        event = {
+        return {
             "event": "revision",
             "series": [key.root, key.folder, key.batch, key.role, key.sample],
-            "number": len(self.history[key]) + 1,
+            "number": len(self.history.get(key, ())) + 1,
             "at": self.clock(),
             "verdict": outcome.verdict,
             "inputs_digest": outcome.inputs_digest,
@@ -143,9 +172,6 @@ class Output:
             "why": why,
             "changed": list(changed),
         }
-        self.ledger.append(event)
-        self.take(event)
-
 
 
 def _clash(outcome: Outcome, others: Iterable[SeriesKey]) -> Outcome:

@@ -11,7 +11,7 @@ import os
 import re
 import sys
 
-from spikeward.daemon.names import HOLD, RESULT, SUMMARY, TABLE, is_ours
+from spikeward.daemon.names import RESULT, SUMMARY, TABLE, is_ours
 
 _HISTORY = re.compile(rb"<!-- history -->.*?<!-- /history -->", re.DOTALL)
 
@@ -45,7 +45,7 @@ def _published(folder: str) -> list[bytes]:
 
 
 def _counts(name: str) -> bool:
-    return is_ours(name) and (name.endswith((RESULT, SUMMARY, TABLE, ".flag")) or name == HOLD)
+    return is_ours(name) and not name.startswith(".") and name.endswith((RESULT, SUMMARY, TABLE, ".flag"))
 
 
 def main(arguments: list[str]) -> int:

@@ -96,6 +96,12 @@ class Watching:
         """What outlives a restart."""
         return self.opened.journal
 
+    @property
+    def busy(self) -> bool:
+        """Whether anything is being read, waits to settle, or waits to be published."""
+        waiting = any(root.settling.due_in() is not None for root in self.pipeline.intake.roots.values())
+        return waiting or self.readers.busy or bool(self.pipeline.touched) or self._boards_due is not None
+
     def run(self, stop: threading.Event) -> None:
         """Go on until ``stop`` is set; then finish what is in hand."""
         recall(self.pipeline, self.journal)

@@ -9,7 +9,7 @@ from decimal import Decimal
 import re2
 
 from spikeward.rules.naming import level_order
-from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
+from spikeward.rules.prepared import PreparedLine, PreparedVessel
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Batch, Members, Reading, SeriesKey
 from spikeward.rules.rulebook import Preparation, Rulebook, Standard

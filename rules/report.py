@@ -164,7 +164,7 @@ def _vessel(
 
 
 def _notes(members: Members, solved: Sequence[Solved]) -> tuple[str, ...]:
-    notes = dict.fromkeys(members.notes)
+    notes: dict[str, None] = {}
     for line in solved:
         name = f"{line_words(line.prepared.analyte, line.prepared.line)}: " if len(solved) > 1 else ""
         notes.update(dict.fromkeys(f"{name}{note}" for note in line.notes))

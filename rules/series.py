@@ -6,8 +6,8 @@ from collections import defaultdict
 from collections.abc import Mapping, Sequence
 
 from spikeward.rules.naming import level_order
-from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.preparation import preparation_for
+from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.records import PLAIN_ROLES, SERIES_ROLES, Batch, Members, SeriesKey
 from spikeward.rules.rulebook import Rulebook
 

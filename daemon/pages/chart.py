@@ -19,7 +19,7 @@ from spikeward.rules.outcomes import Point, Result
 
 _WIDTH, _HEIGHT = 440, 330
 _RIGHT, _TOP, _BOTTOM = 428, 16, 272
-_LETTER = 7.6  # of a tick label
+_LETTER = 9.3  # width of a digit where the labels are largest, on a narrow screen
 _SHAPES = ("round", "square", "diamond", "triangle")
 _REACH = 1.5  # an interval is drawn this far beyond the rest, in widths of the rest; an arrow says that it goes on
 
@@ -34,7 +34,7 @@ class _Frame:
     @property
     def left(self) -> float:
         """Where the drawing starts: the labels beside it need room."""
-        return 32.0 + _LETTER * max(len(label) for _, label in self.y.ticks)
+        return 30.0 + _LETTER * max(len(label) for _, label in self.y.ticks)
 
     def along(self, share: float) -> float:
         return self.left + (_RIGHT - self.left) * share
@@ -104,10 +104,12 @@ def _frame(result: Result, points: Sequence[Point]) -> _Frame:
 
 
 def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
+    shown_labels = _with_room(frame)
     for share, label in frame.x.ticks:
         at = frame.along(share)
         yield Markup('<path class="grid" d="M{0:.1f} {1}V{2}"/>').format(at, _TOP, _BOTTOM)
-        yield Markup('<text class="tick" x="{0:.1f}" y="{1}">{2}</text>').format(at, _BOTTOM + 18, label)
+        if label in shown_labels:
+            yield Markup('<text class="tick" x="{0:.1f}" y="{1}">{2}</text>').format(at, _BOTTOM + 18, label)
     for share, label in frame.y.ticks:
         at = _BOTTOM - (_BOTTOM - _TOP) * share
         yield Markup('<path class="grid" d="M{0:.1f} {1:.1f}H{2}"/>').format(frame.left, at, _RIGHT)
@@ -121,6 +123,15 @@ def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
     yield Markup('<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>').format(
         -(_TOP + _BOTTOM) / 2, signal
     )
+
+
+def _with_room(frame: _Frame) -> set[str]:
+    """The labels below the axis that can stand beside each other: every one, or each second or third from zero on."""
+    labels = [label for _, label in frame.x.ticks]
+    needed = (max(map(len, labels)) + 1) * _LETTER * (len(labels) - 1)
+    every = math.ceil(needed / (_RIGHT - frame.left))
+    zero = round(frame.x.share(0.0) * (len(labels) - 1))
+    return {label for place, label in enumerate(labels) if (place - zero) % every == 0}
 
 
 def _line(frame: _Frame, result: Result, points: Sequence[Point]) -> Iterator[Markup]:

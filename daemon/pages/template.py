@@ -43,6 +43,12 @@ def _words(name: str) -> str:
     return name.replace("_", " ")
 
 
+def _says(check: Check) -> str:
+    """The sentence without the words that already stand before it as the verdict."""
+    told = check.sentence.removeprefix("Not evaluated: ")
+    return told[:1].upper() + told[1:]
+
+
 def _observed(check: Check) -> str:
     return with_unit(shown(check.observed), check.unit) if check.observed is not None else ""
 
@@ -66,6 +72,7 @@ def _environment() -> Environment:
     environment.filters |= {
         "in_order": _checks_in_order,
         "words": _words,
+        "says": _says,
         "observed": _observed,
         "shown": shown,
         "unit": unit_shown,

@@ -71,11 +71,11 @@ def around(subject: Subject) -> tuple[Bracket, ...]:
     times = [reading.when for reading in subject.readings]
     if not every or not times:
         return ()
-    before = [one for one in every if one.last <= min(times)][-1:]
-    after = [one for one in every if one.first >= max(times)][:1]
-    within = [one for one in every if one not in before + after and min(times) < one.last and one.first < max(times)]
-    near = [*before, *within, *after]
-    return tuple(one for one in every if one in near or one is every[0])
+    start, end = min(times), max(times)
+    before = sum(one.last <= start for one in every)
+    upto = sum(one.first < end for one in every)
+    near = every[max(before - 1, 0) : upto + 1]  # they stand in the order of time
+    return near if near and near[0] is every[0] else (every[0], *near)
 
 
 def brackets(subject: Subject, limits: Limits) -> Check:

@@ -132,7 +132,7 @@ def _waiting() -> Outcome:
 
 def _failed() -> Outcome:
     failed = cadmium(
-        [0.0, 10.0, 10.0, 20.0, 20.0, 30.0], [0.246, 0.352, 0.346, 0.441, 0.447, 1.12], " aabba", verdict="fail",
+        [0.0, 10.0, 10.0, 20.0, 20.0, 30.0], [0.246, 0.352, 0.346, 0.441, 0.447, 1.12], " abab", verdict="fail",
         excluded="R. Example, 2031-02-12: spilled", checks=(FAILED, WARNED, PASSED, SILENT),
     )  # fmt: skip
     lead = Result(

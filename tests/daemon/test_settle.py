@@ -96,7 +96,7 @@ def test_due_in_names_the_next_moment_worth_a_look() -> None:
 def test_settled_means_equal_looks_over_the_settling_time_whatever_restarts(
     looks: list[tuple[Stamp, float, bool]], quiet: float
 ) -> None:
-    """A model that remembers every look: the file must have looked the same for the settling time, restarts excluded."""
+    """A model that remembers every look: equal for the settling time, the time between restarts left out."""
     settling: Settling[str] = Settling(quiet)
     now, same_for, last, fresh = 0.0, 0.0, None, True
     for stamp, pause, restart in looks:

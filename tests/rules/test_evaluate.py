@@ -6,8 +6,9 @@ import random
 from dataclasses import replace
 
 import pytest
-from hypothesis import given, settings
+from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+from scipy import stats
 
 from spikeward.rules.evaluate import evaluate
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WAITING, WARN
@@ -362,12 +363,9 @@ def test_a_whole_night(bench):
     }  # fmt: skip
 
 
-@settings(max_examples=20, deadline=None)
+@settings(max_examples=20, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
 @given(seed=st.integers(0, 10_000))
-def test_the_order_of_batches_and_members_changes_nothing(seed):
-    import sys
-
-    bench = sys.modules[__name__].BENCH
+def test_the_order_of_batches_and_members_changes_nothing(bench, seed):
     nights = [full_night(bench, n) for n in range(3)]
     batches = [night.batch(closed=n != 1) for n, night in enumerate(nights)]
     expected = evaluate(batches, nights[0].rules)
@@ -420,6 +418,44 @@ def test_what_concerns_another_sample_does_not_change_the_digest(bench):
     assert bench.outcome_of(evaluate([changed.batch(closed=True, decisions=[decision])], rules)) == plain
 
 
-@pytest.fixture(autouse=True)
-def _known_to_property_tests(bench):
-    globals()["BENCH"] = bench
+@pytest.mark.parametrize("found", [0.306, 0.31, 0.312, 0.318])
+def test_the_distance_of_a_reference_is_held_against_students_t(bench, found):
+    night = with_reference(bench, found)
+    limits = night.rules.checks["reference"]
+    strict = replace(limits, values={**limits.values, "fail_p": 0.001})
+    night.rules = replace(night.rules, checks={**night.rules.checks, "reference": strict})
+    (result,) = solve(bench, night, sample="MUD", closed=True).results
+    own, known = result.in_sample.standard_uncertainty, 0.3
+    u = (own**2 + known**2) ** 0.5
+    p = 2 * stats.t.sf(abs(result.in_sample.content - 30) / u, 2 * (u / own) ** 4)
+    expected = FAIL if p < 0.001 else WARN if p < 0.01 else PASS
+    assert bench.named(result.checks, "reference").verdict == expected
+
+
+def test_a_batch_says_what_it_waits_for(bench):
+    night = bracketed(bench, (1, 1, None))
+    (batch,) = evaluate([night.batch()], night.rules)
+    assert batch.waiting_for == ("a closing bracket later than every vessel",)
+    assert bench.named(batch.checks, "closing").verdict == NOT_EVALUATED
+    assert not batch.closed
+    (closed,) = evaluate([night.batch(closed=True)], night.rules)
+    assert closed.waiting_for == ()
+
+
+def test_two_lines_of_one_analyte_stand_apart(bench):
+    night = bench.Night().series(line="Cd 214.4").series(line="226.5", content=0.31)
+    outcome = solve(bench, night)
+    assert [result.line for result in outcome.results] == ["226.5", "Cd 214.4"]
+    assert "Cd 226.5: 31.0" in outcome.sentence
+    assert "Cd 214.4: 30.0" in outcome.sentence
+
+
+def test_a_series_without_readings_fails_when_its_batch_closes(bench):
+    batch = bench.Night().series().batch(closed=True)
+    empty = {key: replace(members, readings=()) for key, members in batch.members.items()}
+    outcome = bench.outcome_of(evaluate([replace(batch, members=empty)], bench.rulebook()))
+    assert (outcome.verdict, outcome.results) == (FAIL, ())
+
+
+def test_no_batches_no_outcomes(bench):
+    assert evaluate([], bench.rulebook()) == ()

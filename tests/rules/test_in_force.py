@@ -8,6 +8,7 @@ from dataclasses import replace
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from spikeward.rules.in_force import State, in_force
 from spikeward.rules.records import BatchKey, Decision, Reading, SeriesKey
 from spikeward.rules.rulebook import BlankRule, Rulebook, SeriesRule

@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
 from spikeward.rules.records import FAULTY, MISSING, NOT_DETECTED, OVER_RANGE, Reading, SeriesKey
 from spikeward.rules.solve.background import background_of

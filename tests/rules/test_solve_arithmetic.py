@@ -8,10 +8,11 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-import spikeward.rules.records
 import statsmodels.api as sm
 from hypothesis import given
 from hypothesis import strategies as st
+
+import spikeward.rules.records
 from spikeward.rules.solve.line import Fit, Fits, fit_lines
 
 RULES = Path(spikeward.rules.records.__file__).parent

@@ -7,6 +7,7 @@ import statistics
 from dataclasses import replace
 
 import pytest
+
 from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
 from spikeward.rules.records import Reading, SeriesKey
 from spikeward.rules.solve.lines import solve_lines

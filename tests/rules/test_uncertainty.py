@@ -8,6 +8,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from scipy.optimize import brentq
+
 from spikeward.rules.uncertainty.fieller import g_value, half_widths, t_quantile
 from spikeward.rules.uncertainty.interval import Component, FitPart, effective_degrees_of_freedom, printed
 

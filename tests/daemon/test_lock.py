@@ -1,0 +1,121 @@
+"""One daemon per state folder and per data folder."""
+
+from __future__ import annotations
+
+import errno
+import os
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+
+from spikeward.daemon.lock import Identity, Locked, acquire, acquire_stations
+from spikeward.daemon.names import STATION
+
+ME = Identity(4711, "bench-2", "spikeward watch rules.yaml", "2026-12-01T03:00:00Z")
+
+
+def test_the_second_is_told_who_the_first_is(tmp_path: Path) -> None:
+    path = str(tmp_path / "lock")
+    held = acquire(path, ME, "the state folder S")
+    with pytest.raises(Locked) as refused:
+        acquire(path, Identity(1, "other", "spikeward sweep", "now"), "the state folder S")
+    sentence = str(refused.value)
+    assert "the state folder S" in sentence
+    for part in ("pid: 4711", "host: bench-2", "command: spikeward watch rules.yaml", "since: 2026-12-01T03:00:00Z"):
+        assert part in sentence
+    held.release()
+    held.release()
+    assert not os.path.exists(path)
+    acquire(path, ME, "the state folder S").release()
+
+
+def test_a_refused_attempt_leaves_the_holders_name(tmp_path: Path) -> None:
+    held = acquire(str(tmp_path / "lock"), ME, "S")
+    for _ in range(2):
+        with pytest.raises(Locked, match="pid: 4711"):
+            acquire(str(tmp_path / "lock"), Identity(1, "o", "c", "n"), "S")
+    held.release()
+
+
+def test_a_lock_of_a_dead_process_is_taken_over(tmp_path: Path) -> None:
+    program = (
+        "import os, sys\n"
+        "from spikeward.daemon.lock import *\n"
+        "held = acquire(sys.argv[1], Identity(os.getpid(), 'h', 'c', 's'), 'S')\n"
+        "print('held', flush=True); sys.stdin.read()\n"
+    )
+    path = str(tmp_path / "lock")
+    other = subprocess.Popen([sys.executable, "-c", program, path], stdin=subprocess.PIPE, stdout=subprocess.PIPE)
+    assert other.stdout is not None
+    assert other.stdin is not None
+    other.stdout.readline()
+    with pytest.raises(Locked, match=f"pid: {other.pid}"):
+        acquire(path, ME, "S")
+    other.kill()
+    other.wait()
+    other.stdout.close()
+    other.stdin.close()
+    assert f"pid: {other.pid}" in Path(path).read_text()
+    held = acquire(path, ME, "S")
+    assert "pid: 4711" in Path(path).read_text()
+    held.release()
+
+
+def test_a_lock_file_that_somebody_deletes_is_noticed(tmp_path: Path) -> None:
+    path = tmp_path / "lock"
+    held = acquire(str(path), ME, "S")
+    assert not held.lost()
+    path.unlink()
+    assert held.lost()
+    second = acquire(str(path), ME, "S")
+    assert held.lost()
+    held.release()
+    assert not second.lost(), "the first one leaves alone what is no longer its own"
+    second.release()
+
+
+def test_a_link_in_place_of_the_lock_is_not_followed(tmp_path: Path) -> None:
+    (tmp_path / "raw").write_bytes(b"raw data")
+    (tmp_path / "lock").symlink_to(tmp_path / "raw")
+    with pytest.raises(OSError, match=os.strerror(errno.ELOOP)):
+        acquire(str(tmp_path / "lock"), ME, "S")
+    assert (tmp_path / "raw").read_bytes() == b"raw data"
+
+
+def test_line_breaks_in_a_command_stay_in_their_line(tmp_path: Path) -> None:
+    assert Identity(1, "h", "spikeward watch a\nhost: b", "s").text().count("\n") == 4
+
+
+def test_two_stations_on_one_data_folder(tmp_path: Path) -> None:
+    one, two, three = (tmp_path / name for name in ("one", "two", "three"))
+    for folder in (one, two, three):
+        folder.mkdir()
+    held, warnings = acquire_stations([str(one), str(two), str(one) + "/."], ME)
+    assert len(held) == 2
+    assert warnings == []
+    with pytest.raises(Locked, match="pid: 4711"):
+        acquire_stations([str(three), str(two)], Identity(1, "h", "c", "s"))
+    assert not (three / STATION).exists(), "nothing is held by the one that was refused"
+    for each in held:
+        each.release()
+    assert list(one.iterdir()) == []
+
+
+def test_folders_that_cannot_be_locked_are_said(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    real = os.open
+
+    def read_only(path: str, flags: int, mode: int = 0o777) -> int:
+        if str(path).startswith(str(tmp_path / "ro")):
+            raise OSError(errno.EROFS, os.strerror(errno.EROFS), path)
+        return real(path, flags, mode)
+
+    for name in ("ro", "rw"):
+        (tmp_path / name).mkdir()
+    monkeypatch.setattr(os, "open", read_only)
+    held, warnings = acquire_stations([str(tmp_path / name) for name in ("ro", "rw", "missing")], ME)
+    assert len(held) == 1
+    assert len(warnings) == 2
+    assert any("Read-only" in each for each in warnings)
+    held[0].release()
