@@ -105,7 +105,10 @@ def _sweep(commands: _Commands) -> None:  # type: ignore[valid-type]
 
 def _vet(commands: _Commands) -> None:  # type: ignore[valid-type]
     parser = _command(
-        commands, "vet", "say what is wrong in a rule file, and show how real names are read", "spikeward vet rules.yaml"
+        commands,
+        "vet",
+        "say what is wrong in a rule file, and show how real names are read",
+        "spikeward vet rules.yaml",
     )
     parser.add_argument("config", help="the rule file")
     parser.add_argument("--short", action="store_true", help="one line a problem, for tools")

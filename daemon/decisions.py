@@ -1,4 +1,4 @@
-"""What people decided beside the data: each version that holds together is adopted once, in the ledger, and then stands.
+"""What people decided beside the data: a version that holds together is adopted once, in the ledger, and then stands.
 
 A decisions file is a list, each entry naming what is decided, by whom, when and why:
 
@@ -70,10 +70,17 @@ class DecisionBook:
             if not decisions:
                 continue
             known = {where for root_, where in holdings.contents if root_ == root} | {
-                reading.solution for place, named in holdings.named.items() if place[0] == root for reading in named.readings
+                reading.solution
+                for place, named in holdings.named.items()
+                if place[0] == root
+                for reading in named.readings
             }
             found += [
-                (root, _folder(path), Notice("decision", shown(path), f"line {each.line}: {_UNKNOWN.format(shown(each.target))}"))
+                (
+                    root,
+                    _folder(path),
+                    Notice("decision", shown(path), f"line {each.line}: {_UNKNOWN.format(shown(each.target))}"),
+                )
                 for each in decisions
                 if each.target not in known
             ]
@@ -156,7 +163,7 @@ def _contradictions(decisions: list[Decision], name: str) -> Iterator[str]:
     for decision in decisions:
         first = seen.setdefault((decision.kind, decision.target), decision.line)
         if first != decision.line:
-            yield f"{name}:{decision.line}: {decision.target} is decided on already in line {first}; keep one of the two"
+            yield f"{name}:{decision.line}: {decision.target} is decided on in line {first}; keep one of the two"
 
 
 def _is_date(text: str) -> bool:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import os
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
@@ -11,7 +10,7 @@ from typing import Any
 
 from spikeward.daemon.disk import RealDisk
 from spikeward.daemon.holdings import Place
-from spikeward.daemon.ledger import RuleTexts
+from spikeward.daemon.ledger import RuleTexts, whole_events
 from spikeward.daemon.names import VERDICTS, series_stem, shown
 from spikeward.daemon.pipeline import Pipeline
 from spikeward.daemon.records import Records
@@ -36,7 +35,7 @@ class LedgerCopy:
         """All events, oldest first."""
         if not self.path.exists():
             return []
-        return [json.loads(line) for line in self.path.read_bytes().split(b"\n")[:-1]]
+        return whole_events(self.path.read_bytes(), str(self.path))[0]
 
     def append(self, *events: Mapping[str, Any]) -> None:
         """Events that a daemon would record."""
@@ -90,7 +89,7 @@ def _file(place: Place, pipeline: Pipeline, solved: list[Solved]) -> Iterator[st
     holdings = pipeline.solving.present
     content = holdings.contents.get(place)
     if content is None:
-        yield "  no reader takes it: its name matches no 'files' pattern under readers or bench, or it is one of our own"
+        yield "  no reader takes it: its name matches no 'files' pattern of readers or bench, or it is our own"
         return
     if content.sentence:
         yield f"  it cannot be read: {content.sentence}"
@@ -112,7 +111,7 @@ def _file(place: Place, pipeline: Pipeline, solved: list[Solved]) -> Iterator[st
     }
     for reading in named.readings:
         counts = (reading.path, reading.row, reading.analyte, reading.line) in force
-        yield f"  row {reading.row}: {_reading(reading)}{'' if counts else ' (does not count: another reading is in force)'}"
+        yield f"  row {reading.row}: {_reading(reading)}{'' if counts else ' (another reading is in force)'}"
     yield from (f"  {sentence}" for sentence in named.unnamed)
 
 
@@ -151,7 +150,8 @@ def _outcome(one: Solved, outcome: Outcome) -> Iterator[str]:
     yield from (f"  waits for {what}" for what in outcome.waiting_for)
     for vessel in outcome.vessels:
         volumes = f"aliquot {_ml(vessel.aliquot_ml)}, addition {_ml(vessel.addition_ml)}, final {_ml(vessel.final_ml)}"
-        yield f"  level {vessel.level}{vessel.vessel}: {volumes}{'; excluded: ' + vessel.excluded if vessel.excluded else ''}"
+        excluded = f"; excluded: {vessel.excluded}" if vessel.excluded else ""
+        yield f"  level {vessel.level}{vessel.vessel}: {volumes}{excluded}"
         for reading in vessel.readings:
             signal = reading.qualifier or f"{reading.text} {reading.unit}".strip()
             yield f"    {shown(reading.path)} row {reading.row}: {reading.line or reading.analyte} {signal}"

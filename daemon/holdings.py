@@ -1,4 +1,4 @@
-"""What has been read so far, under one rule book: files, their readings and bench entries, and which batch each touches."""
+"""What has been read so far, under one rule book: files, readings, bench entries, and which batch each touches."""
 
 from __future__ import annotations
 

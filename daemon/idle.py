@@ -1,4 +1,4 @@
-"""For how long nothing of a batch has arrived: monotonic time, accumulated over restarts, stopped while a share is away."""
+"""For how long nothing of a batch has arrived: monotonic, accumulated over restarts, stopped while a share is away."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ from spikeward.rules.records import BatchKey
 
 
 class Idle:
-    """Seconds of quiet by batch. ``now`` is monotonic time; ``carried`` what an earlier run had counted, by key text."""
+    """Seconds of quiet by batch. ``now`` is monotonic; ``carried`` is what an earlier run had counted, by key text."""
 
     def __init__(self, now: float, carried: Mapping[str, float]) -> None:
         self._last = now

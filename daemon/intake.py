@@ -55,9 +55,9 @@ class Intake:
         """Set the rules in force: the watched folders are theirs; what was read already is fed to new holdings."""
         known = {id(each): claims for each, claims in self.feed}
         self.feed = [(each, known.get(id(each)) or Claims(each.rules)) for each in holdings]
-        self.roots = {
-            watch.folder: Root(watch, Settling(watch.settle)) for watch in rules.watches
-        } | {folder: root for folder, root in self.roots.items() if root.watch in rules.watches}
+        self.roots = {watch.folder: Root(watch, Settling(watch.settle)) for watch in rules.watches} | {
+            folder: root for folder, root in self.roots.items() if root.watch in rules.watches
+        }
         for place, state in self.files.items():
             self._feed(place, state)
 
@@ -166,7 +166,9 @@ class Intake:
             if root.away:
                 found.append((folder, "", Notice("share away", folder, f"{root.away}; nothing counts as deleted", "")))
             if root.listing is not None:
-                found += [(folder, "", Notice("not opened", odd.path, odd.sentence, "")) for odd in root.listing.oddities]
+                found += [
+                    (folder, "", Notice("not opened", odd.path, odd.sentence, "")) for odd in root.listing.oddities
+                ]
                 found += [
                     (folder, "", Notice("not listed", path or folder, f"{why}; what it holds is not known", ""))
                     for path, why in root.listing.unlisted.items()
@@ -181,7 +183,9 @@ class Intake:
             ]
         for (folder, path), state in self.files.items():
             if state.trouble and folder in self.roots:
-                found.append((folder, "", Notice("cannot be read now", shown(path), f"{state.trouble}; tried again", "")))
+                found.append(
+                    (folder, "", Notice("cannot be read now", shown(path), f"{state.trouble}; tried again", ""))
+                )
         return found
 
 

@@ -45,8 +45,19 @@ class JournalRefused(Exception):
     """The journal must not be used: one sentence for a person."""
 
 
-class JournalUnavailable(Exception):
-    """The journal cannot be used at the moment (full disk, locked by another program): one sentence with the reason."""
+class JournalUnavailable(OSError):
+    """The journal cannot be used at the moment (full disk, locked by another program): one sentence with the reason.
+
+    An ``OSError``, because it is met and passes like any other refusal of a disk.
+    """
+
+    def __init__(self, path: str, reason: str) -> None:
+        super().__init__()
+        self.filename = path
+        self.strerror = f"the journal cannot be used now ({reason})"
+
+    def __str__(self) -> str:
+        return f"{self.filename}: {self.strerror}. Work waits and goes on by itself."
 
 
 class FileRecord(NamedTuple):
@@ -179,12 +190,12 @@ class Journal:
             return work(self._connection)
         except sqlite3.DatabaseError as error:
             if not _is_lost(error):
-                raise JournalUnavailable(self._why_not(error)) from error
+                raise JournalUnavailable(self._path, str(error)) from error
             self._rebuild(f"is damaged ({error})")
         try:
             return work(self._connection)
         except sqlite3.DatabaseError as error:
-            raise JournalUnavailable(self._why_not(error)) from error
+            raise JournalUnavailable(self._path, str(error)) from error
 
     def _in_place(self) -> bool:
         try:
@@ -192,19 +203,19 @@ class Journal:
         except FileNotFoundError:
             return False
         except OSError as error:
-            raise JournalUnavailable(self._why_not(error)) from error
+            raise JournalUnavailable(self._path, str(error)) from error
 
     def _open_or_rebuild(self) -> sqlite3.Connection:
         try:
             return self._open()
         except sqlite3.DatabaseError as error:
             if not _is_lost(error):
-                raise JournalUnavailable(self._why_not(error)) from error
+                raise JournalUnavailable(self._path, str(error)) from error
             self._set_aside(f"is damaged ({error})")
         try:
             return self._open()
         except sqlite3.DatabaseError as error:
-            raise JournalUnavailable(self._why_not(error)) from error
+            raise JournalUnavailable(self._path, str(error)) from error
 
     def _open(self) -> sqlite3.Connection:
         stands = os.path.exists(self._path) and os.path.getsize(self._path) > 0
@@ -257,12 +268,9 @@ class Journal:
                 with contextlib.suppress(FileNotFoundError):
                     os.replace(self._path + ending, aside + ending)
         except OSError as error:
-            raise JournalUnavailable(self._why_not(error)) from error
+            raise JournalUnavailable(self._path, str(error)) from error
         where = f" What was left of it is kept as {aside}." if os.path.exists(aside) else ""
         self.sentences.append(f"The journal {self._path} {why}; a new one was begun, all files are read again.{where}")
-
-    def _why_not(self, error: Exception) -> str:
-        return f"The journal {self._path} cannot be used now: {error}. Work waits and goes on by itself."
 
 
 def _check(db: sqlite3.Connection) -> None:

@@ -18,7 +18,7 @@ class LedgerDamaged(Exception):
 
 
 class Ledger:
-    """JSON lines, each brought to the medium before the call returns.
+    """JSON lines, each brought to the medium before the call returns: one event, or a list of events of one call.
 
     A last line that a power cut left torn is cut off when the ledger is read, and ``sentences`` says so. Damage
     anywhere else raises ``LedgerDamaged``: no result may rest on a ledger with a hole.
@@ -31,15 +31,15 @@ class Ledger:
         self._sound = False
 
     def append(self, *events: Mapping[str, Any]) -> None:
-        """Record events, in this order, as one write. Raises ``OSError``; then a repetition records them whole."""
+        """Record events, all or none. Raises ``OSError``; then none counts, and a repetition records them once."""
+        line = json.dumps(
+            events[0] if len(events) == 1 else events, separators=(",", ":"), sort_keys=True, allow_nan=False
+        )
         if not self._sound:
             self._mend()
-        lines = "".join(
-            json.dumps(event, separators=(",", ":"), sort_keys=True, allow_nan=False) + "\n" for event in events
-        )
         is_new = not self._disk.exists(self._path)
         self._sound = False  # until the write is known to be whole
-        self._disk.append(self._path, lines.encode("ascii"))
+        self._disk.append(self._path, line.encode("ascii") + b"\n")
         if is_new:
             self._disk.sync_folder(os.path.dirname(self._path))
         self._sound = True
@@ -51,21 +51,10 @@ class Ledger:
     def _mend(self) -> list[dict[str, Any]]:
         """Read the ledger and leave it ending with a whole line."""
         data = self._disk.read(self._path) if self._disk.exists(self._path) else b""
-        lines = data.split(b"\n")
-        unfinished = lines.pop()
-        events, end = [], 0
-        for number, line in enumerate(lines, start=1):
-            event = _event(line)
-            if event is None:
-                if number < len(lines) or unfinished:
-                    raise LedgerDamaged(_hole(self._path, number))
-                break
-            events.append(event)
-            end += len(line) + 1
-        if unfinished and (whole := _event(unfinished)) is not None:
-            self._disk.append(self._path, b"\n")
-            events.append(whole)
-        elif end < len(data):
+        events, end = whole_events(data, self._path)
+        if end == len(data) and data and not data.endswith(b"\n"):
+            self._disk.append(self._path, b"\n")  # whole but for its end, or saved so by an editor
+        elif data[end:]:
             self._disk.truncate(self._path, end)
             self.sentences.append(
                 f"The last line of {self._path} was torn, as a power cut leaves it, and was cut off ({len(data) - end} "
@@ -73,6 +62,30 @@ class Ledger:
             )
         self._sound = True
         return events
+
+
+def whole_events(data: bytes, path: str) -> tuple[list[dict[str, Any]], int]:
+    """The events of a ledger, and the number of bytes that its whole lines take; what follows them was torn.
+
+    Raises
+    ------
+    LedgerDamaged : a line that is not the last one cannot be read
+    """
+    lines = data.split(b"\n")
+    unfinished = lines.pop()
+    events: list[dict[str, Any]] = []
+    end = 0
+    for number, line in enumerate(lines, start=1):
+        found = _events(line)
+        if found is None:
+            if number < len(lines) or unfinished:
+                raise LedgerDamaged(_hole(path, number))
+            break
+        events += found
+        end += len(line) + 1
+    if unfinished and (found := _events(unfinished)) is not None:
+        return events + found, len(data)
+    return events, end
 
 
 class RuleTexts:
@@ -102,12 +115,13 @@ class RuleTexts:
         return os.path.join(self._folder, f"{digest}.yaml")
 
 
-def _event(line: bytes) -> dict[str, Any] | None:
+def _events(line: bytes) -> list[dict[str, Any]] | None:
     try:
-        event = json.loads(line)
+        found = json.loads(line)
     except ValueError:
         return None
-    return event if isinstance(event, dict) else None
+    events = found if isinstance(found, list) else [found]
+    return events if all(isinstance(each, dict) for each in events) else None
 
 
 def _hole(path: str, number: int) -> str:

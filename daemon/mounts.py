@@ -45,18 +45,6 @@ def network_kind(folder: str, mounts: str) -> str:
     return kind if kind in NETWORK else ""
 
 
-def unfit_for_state(folder: str, mounts: str) -> str:
-    """Why a folder must not hold the state of a station, as a sentence, or nothing."""
-    kind = network_kind(folder, mounts)
-    if not kind:
-        return ""
-    return (
-        f"The state folder {folder} lies on a network file system ({kind}). The journal's write-ahead log needs memory "
-        "that all its users share, and locks on a share cannot be relied on: give a folder on this machine's own disk "
-        "as `state`."
-    )
-
-
 def _unescaped(point: str) -> str:
     """Blanks and backslashes stand in the list as octal numbers."""
     for octal, character in (("\\040", " "), ("\\011", "\t"), ("\\012", "\n"), ("\\134", "\\")):

@@ -63,7 +63,11 @@ class Output:
             key = SeriesKey(*event["series"])
             self.history[key].append(
                 Revision(
-                    event["number"], event["at"], event["verdict"], event["inputs_digest"], event["why"],
+                    event["number"],
+                    event["at"],
+                    event["verdict"],
+                    event["inputs_digest"],
+                    event["why"],
                     tuple(event["changed"]),
                 )  # fmt: skip
             )
@@ -91,11 +95,7 @@ class Output:
                 outcome = _clash(outcome, [other for other in clashing if other != outcome.key])
             if check_all or self._outcomes.get(outcome.key) != outcome:
                 changed.append(outcome)
-        sheaves = [
-            sheaf
-            for outcome in changed
-            if (sheaf := self._sheaf(outcome, named[outcome.key])) is not None
-        ]
+        sheaves = [sheaf for outcome in changed if (sheaf := self._sheaf(outcome, named[outcome.key])) is not None]
         events = [sheaf.revision for sheaf in sheaves if sheaf.revision is not None]
         if events:
             self.ledger.append(*events)

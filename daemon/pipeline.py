@@ -216,7 +216,11 @@ class Pipeline:
             notes = sorted({note for members in one.batch.members.values() for note in members.notes})
             found += [(key.root, key.folder, Notice("duplicate", key.batch, note)) for note in notes]
         found += [(key.root, key.folder, notice) for key, notice in self.output.held.items()]
-        found += [(root, "", Notice("kept aside", os.path.basename(path), _KEPT)) for path in self.records.kept for root in self.intake.roots]
+        found += [
+            (root, "", Notice("kept aside", os.path.basename(path), _KEPT))
+            for path in self.records.kept
+            for root in self.intake.roots
+        ]
         if self.rules_notice is not None:
             found += [(root, "", self.rules_notice) for root in self.intake.roots]
         return found
@@ -224,7 +228,9 @@ class Pipeline:
     def needs_a_person(self) -> list[str]:
         """One line for everything that is neither a result nor in order."""
         quiet = ("duplicate", "no reader")
-        return [f"{each.kind}: {each.subject}: {each.sentence}" for _, _, each in self.notices() if each.kind not in quiet]
+        return [
+            f"{each.kind}: {each.subject}: {each.sentence}" for _, _, each in self.notices() if each.kind not in quiet
+        ]
 
     def remedies(self) -> list[str]:
         """How to solve closed batches again that stand under other rules than the present ones."""
@@ -236,7 +242,9 @@ class Pipeline:
         if not other:
             return []
         told = ", ".join(other[:5]) + (f" and {len(other) - 5} more" if len(other) > 5 else "")
-        return [f"closed under earlier rules: {told}; solve again under the present ones with: spikeward sweep CONFIG --again"]
+        return [
+            f"closed under earlier rules: {told}; to solve again under the present ones: spikeward sweep CONFIG --again"
+        ]
 
     def _folder_of(self, root: str, folder: str) -> str:
         watch = next((watch for watch in self.rules.watches if watch.folder == root), None)
@@ -285,5 +293,3 @@ def _below(folder: str, where: str) -> bool:
 
 def _digest_of(outcome: BatchOutcome) -> list[str]:
     return [one.inputs_digest for one in outcome.outcomes]
-
-

@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
-
-from spikeward.daemon.names import shown
 
 ERROR, WARNING = "error", "warning"
 
@@ -57,21 +56,21 @@ class Problem:
     def sentence(self) -> str:
         """What is wrong, what is expected and what to do, without the place."""
         parts = [self.found, f"expected {self.expected}" if self.expected else "", self.hint]
-        return shown("; ".join(part for part in parts if part))
+        return printable("; ".join(part for part in parts if part))
 
     def line_text(self) -> str:
         """One line: ``rules.yaml:4:5: series.lapses_afer: R012 …``."""
-        place = f"{shown(self.file)}:{self.line}:{self.column}: " + (f"{shown(self.path)}: " if self.path else "")
+        place = f"{printable(self.file)}:{self.line}:{self.column}: " + (f"{printable(self.path)}: " if self.path else "")
         told = f"{self.code} {self.sentence}"
         return place + (told if self.severity == ERROR else f"warning {told}")
 
     def block_text(self, source: str) -> str:
         """A block for people: the problem, the line of ``source`` that it stands in, and a caret below its place."""
-        lines = source.split("\n")
+        lines = lines_of(source)
         if not 1 <= self.line <= len(lines):
             return self.line_text()
         # The caret counts characters; a tab or a control code would move it.
-        line = "".join(character if character.isprintable() else " " for character in lines[self.line - 1].rstrip("\r"))
+        line = "".join(character if character.isprintable() else " " for character in lines[self.line - 1])
         first = max(0, self.column - 1 - _WIDTH // 2) if len(line) > _WIDTH else 0
         number = f"{self.line} | "
         caret = " " * (len(number) + self.column - 1 - first) + "^"
@@ -79,3 +78,16 @@ class Problem:
 
 
 _WIDTH = 110
+_BREAK = re.compile("\r\n|[\n\r\x85\u2028\u2029]")
+
+
+def lines_of(text: str) -> list[str]:
+    """The lines of a text as YAML counts them."""
+    return _BREAK.split(text)
+
+
+def printable(text: str) -> str:
+    """A text for one line of output: what does not print is written as an escape."""
+    if text.isprintable():
+        return text
+    return "".join(each if each.isprintable() else each.encode("unicode_escape").decode("ascii") for each in text)

@@ -54,19 +54,12 @@ def publish(
 def publish_files(
     disk: Disk, folder: str, outputs: Mapping[str, bytes], known: Collection[str] | None = None
 ) -> Published:
-    """Publish files that have no flag of their own (board, table of a batch), by name."""
+    """Publish files that have no verdict (board, table, the flag beside a file that could not be read), by name."""
     work = _Work(disk, folder, known)
     for name in sorted(outputs):
         work.put(name, outputs[name])
     work.sync()
     return work.done()
-
-
-def publish_unread(
-    disk: Disk, folder: str, file_name: str, data: bytes, known: Collection[str] | None = None
-) -> Published:
-    """Say beside a file that it could not be read."""
-    return publish_files(disk, folder, {unread_name(file_name): data}, known)
 
 
 def withdraw_unread(disk: Disk, folder: str, file_name: str, known: Collection[str] | None = None) -> bool:

@@ -38,7 +38,7 @@ class Solving:
 
     def every(self) -> set[BatchKey]:
         """All batches that any rules in use know of."""
-        return {key for key in self._under_earlier_rules()} | set(self.present.batch_keys())
+        return set(self._under_earlier_rules()) | set(self.present.batch_keys())
 
     def _under_earlier_rules(self) -> Iterable[BatchKey]:
         return (
@@ -64,7 +64,9 @@ class Solving:
     def _assemble(self, keys: list[BatchKey]) -> Iterable[tuple[Holdings, Batch]]:
         left = set(keys)
         for digest, holdings in self.earlier.items():
-            mine = {key for key in left if key in self.closings.closed and self.closings.closed[key].rules_digest == digest}
+            mine = {
+                key for key in left if key in self.closings.closed and self.closings.closed[key].rules_digest == digest
+            }
             for batch in self._batches(holdings, mine):
                 if batch.closed:
                     left.discard(batch.key)
@@ -73,9 +75,7 @@ class Solving:
             yield self.present, batch
 
     def _batches(self, holdings: Holdings, keys: set[BatchKey]) -> Iterable[Batch]:
-        states = {
-            key: State(bench=holdings.bench(key), decisions=self.decisions(key.root, key.folder)) for key in keys
-        }
+        states = {key: State(bench=holdings.bench(key), decisions=self.decisions(key.root, key.folder)) for key in keys}
         for batch in in_force(holdings.readings(keys), holdings.rules, states):
             closed = self.closings.covers(batch.key, batch.members)
             yield replace(batch, closed=closed, lapsed=self.closings.lapses_of(batch))

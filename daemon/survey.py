@@ -195,7 +195,7 @@ def _was_listed(path: str, listing: Listing) -> bool:
         folder = folder.rsplit("/", 1)[0]
         if folder in listing.unlisted:
             return False
-    return "" not in listing.unlisted
+    return True
 
 
 def _reason(error: OSError) -> str:

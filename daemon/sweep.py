@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
-import os
 import sys
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
-from spikeward.daemon.opening import Opened, open_station
+from spikeward.daemon.opening import open_station
 from spikeward.daemon.pipeline import Pipeline
 from spikeward.daemon.solving import Solved
 from spikeward.daemon.survey import survey
-from spikeward.daemon.workers import Readers, ReadJob, ReadReply
+from spikeward.daemon.workers import Readers, ReadJob
 from spikeward.rules.outcomes import PASS
 from spikeward.rules.series import closing_roles
 
@@ -32,7 +31,9 @@ def sweep_command(config: str, close: bool, again: str | None, workers: int, jso
 
     with open_station(config, json_log=json_log) as opened, Readers(workers) as readers:
         pipeline = opened.pipeline
-        solved = sweep(pipeline, readers, Pauses(time.monotonic, time.sleep), close=close, again=again, bar=progress_bar)
+        solved = sweep(
+            pipeline, readers, Pauses(time.monotonic, time.sleep), close=close, again=again, bar=progress_bar
+        )
         for line in report(pipeline, solved):
             print(line)
         return 0 if all_pass(pipeline, solved) else 1
@@ -120,11 +121,11 @@ def report(pipeline: Pipeline, solved: Sequence[Solved]) -> list[str]:
         counts: dict[str, int] = {}
         for outcome in one.outcome.outcomes:
             counts[outcome.verdict] = counts.get(outcome.verdict, 0) + 1
-        told = ", ".join(f"{counts[verdict]} {verdict}" for verdict in ("fail", "waiting", "warn", "pass") if verdict in counts)
+        told = ", ".join(
+            f"{counts[verdict]} {verdict}" for verdict in ("fail", "waiting", "warn", "pass") if verdict in counts
+        )
         state = "closed" if one.outcome.closed else "open"
         lines.append(f"batch {one.batch.key.batch or one.batch.key.folder or one.batch.key.root}: {told} ({state})")
     lines += pipeline.needs_a_person()
     lines += pipeline.remedies()
     return lines
-
-

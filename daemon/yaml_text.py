@@ -12,7 +12,7 @@ from typing import Any
 
 import yaml
 
-from spikeward.daemon.problems import Problem
+from spikeward.daemon.problems import Problem, lines_of
 
 LARGEST = 1 << 20  # bytes
 DEEPEST = 20
@@ -98,7 +98,7 @@ def _check_text(text: str, file_name: str) -> None:
         raise _Refused(
             Problem("R002", file_name, 1, 1, "", f"the file is larger than {LARGEST >> 20} MiB", hint="shorten it")
         )
-    for number, line in enumerate(text.split("\n"), start=1):
+    for number, line in enumerate(lines_of(text), start=1):
         blanks = line[: len(line) - len(line.lstrip())]
         if "\t" in blanks and line.strip():
             column = blanks.index("\t") + 1
@@ -106,8 +106,8 @@ def _check_text(text: str, file_name: str) -> None:
 
 
 def _unprintable(text: str, position: int, file_name: str) -> Problem:
-    before = text[:position]
-    line, column = before.count("\n") + 1, position - (before.rfind("\n") + 1) + 1
+    before = lines_of(text[:position])
+    line, column = len(before), len(before[-1]) + 1
     code = ord(text[position]) if position < len(text) else 0
     return Problem(
         "R001", file_name, line, column, "", f"a character that does not print (U+{code:04X})", hint="delete it"

@@ -71,9 +71,7 @@ def in_force(
     result = []
     for batch_key in sorted(batches):
         state = (states or {}).get(batch_key, State())
-        result.append(
-            Batch(batch_key, batches[batch_key], state.bench, state.decisions, state.closed, state.lapsed)
-        )
+        result.append(Batch(batch_key, batches[batch_key], state.bench, state.decisions, state.closed, state.lapsed))
     return tuple(result)
 
 
@@ -153,17 +151,17 @@ def _one(candidates: list[Reading], preferred: Mapping[str, Decision], found: _F
         places = " and ".join(f"{_place(r)} ({r.text} {r.unit})".replace(" )", ")") for r in rivals)
         found.conflicts.append(
             f"{rivals[0].solution}, {rivals[0].line or rivals[0].analyte}: {places} disagree about one reading; "
-            "remove the wrong file, declare the column of the processing time, or decide with prefer in the decisions file"
+            "remove the wrong file, declare the column of the processing time, or say prefer in the decisions file"
         )
         found.kept.append(rivals[0])
         return
     found.kept.append(chosen)
-    found.notes += [f"{_place(r)} ({r.text}) is superseded by {_place(chosen)} ({chosen.text})" for r in rivals if r is not chosen]
+    found.notes += [
+        f"{_place(r)} ({r.text}) is superseded by {_place(chosen)} ({chosen.text})" for r in rivals if r is not chosen
+    ]
 
 
-def _chosen(
-    rivals: list[Reading], candidates: list[Reading], preferred: Mapping[str, Decision]
-) -> Reading | None:
+def _chosen(rivals: list[Reading], candidates: list[Reading], preferred: Mapping[str, Decision]) -> Reading | None:
     in_preferred = [reading for reading in candidates if reading.path in preferred]
     if in_preferred and len({_value(reading) for reading in in_preferred}) == 1:
         return in_preferred[0]

@@ -69,7 +69,9 @@ class Namer:
     def takers(self, solution: str, path: str) -> tuple[NameRule, ...]:
         """Every rule that could take a name, in order; more than one means that a later rule is shadowed here."""
         texts = _texts(solution, path)
-        return tuple(rule for rule, pattern in self._rules if texts[rule.source] and pattern.fullmatch(texts[rule.source]))
+        return tuple(
+            rule for rule, pattern in self._rules if texts[rule.source] and pattern.fullmatch(texts[rule.source])
+        )
 
 
 def _texts(solution: str, path: str) -> dict[str, str]:
@@ -121,9 +123,7 @@ def _only_analyte(rules: Rulebook) -> str:
     return analytes.pop() if len(analytes) == 1 else ""
 
 
-def _reading(
-    entry: Entry, source: Source, understood: Understood, only_analyte: str
-) -> tuple[Reading | None, str]:
+def _reading(entry: Entry, source: Source, understood: Understood, only_analyte: str) -> tuple[Reading | None, str]:
     groups, rule = understood.groups, understood.rule
     level = number_of(groups.get("level", ""))
     if not level and rule.role not in PLAIN_ROLES:

@@ -1,4 +1,4 @@
-"""How the vessels of a series were made: level to volumes, standard and final volume, and the way back to the sample."""
+"""How the vessels of a series were made: volumes and standard by level, and the way back to the sample."""
 
 from __future__ import annotations
 
@@ -68,7 +68,18 @@ def _line(
         told = f"role {key.role}, batch {key.batch or '(folder)'}, sample {key.sample}, {analyte}"
         findings.fails(f"no preparation in the rule file applies to {told}; widen a 'for' under preparations")
         return PreparedLine(
-            key, analyte, line, "", unit, signal_unit, (), None, "", "", tuple(findings.missing), tuple(findings.problems)
+            key,
+            analyte,
+            line,
+            "",
+            unit,
+            signal_unit,
+            (),
+            None,
+            "",
+            "",
+            tuple(findings.missing),
+            tuple(findings.problems),
         )
     standard = _standard(preparation, sources, findings, rules)
     content = standard.contents.get(analyte) if standard else None
@@ -84,16 +95,16 @@ def _line(
     )  # fmt: skip
 
 
-def _standard(
-    preparation: Preparation, sources: Sources, findings: Findings, rules: Rulebook
-) -> Standard | None:
+def _standard(preparation: Preparation, sources: Sources, findings: Findings, rules: Rulebook) -> Standard | None:
     told = sources.find("standard", "", findings)
     names = {preparation.standard} if told is None else {str(told)}
     names |= {text for (meaning, _), texts in sources.given.items() if meaning == "standard" for text, _ in texts}
     if told is None and len(names) > 1:
         names.discard(preparation.standard)
     if len(names) > 1:
-        findings.fails(f"the vessels name several standards ({', '.join(sorted(names))}); one series takes one standard")
+        findings.fails(
+            f"the vessels name several standards ({', '.join(sorted(names))}); one series takes one standard"
+        )
     name = sorted(names)[0]
     if name not in rules.standards:
         findings.fails(f"standard {name} is not under standards in the rule file; add it there")
@@ -123,8 +134,14 @@ def _vessels(
         added = float(content.value) * volumes["addition"] if content else 0.0
         vessels.append(
             PreparedVessel(
-                level, vessel, volumes["aliquot"], volumes["addition"], volumes["final"], added,
-                tuple(kept or grouped[level, vessel]), decision,
+                level,
+                vessel,
+                volumes["aliquot"],
+                volumes["addition"],
+                volumes["final"],
+                added,
+                tuple(kept or grouped[level, vessel]),
+                decision,
             )  # fmt: skip
         )
     return tuple(vessels)

@@ -23,7 +23,7 @@ def closing_roles(rules: Rulebook) -> tuple[str, ...]:
 
 
 def missing_members(members: Members, lines: Sequence[PreparedLine], rules: Rulebook) -> tuple[str, ...]:
-    """What the series itself still lacks: levels, repeated readings, analytes, quantities. Empty when it is complete."""
+    """What the series itself still lacks: levels, repeated readings, analytes, quantities. Empty when complete."""
     lacking: list[str] = []
     expected = _expected_levels(members, rules)
     present = {reading.level for reading in members.readings}

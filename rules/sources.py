@@ -1,7 +1,7 @@
 """Where a quantity comes from: bench file, column or name of this very solution, else the rule file's general value.
 
-What is written for this very solution goes before the rule file. Where several of the three speak, they must agree, else
-the series fails and names both.
+What is written for this very solution goes before the rule file. Where several of the three speak, they must agree,
+else the series fails and names both.
 """
 
 from __future__ import annotations

@@ -100,9 +100,9 @@ def test_packages_are_all_listed():
 
 
 def test_the_root_holds_what_was_planned():
-    tracked = subprocess.run(
-        ["git", "ls-files"], cwd=HOUSE, capture_output=True, text=True, check=False
-    ).stdout.split("\n")
+    tracked = subprocess.run(["git", "ls-files"], cwd=HOUSE, capture_output=True, text=True, check=False).stdout.split(
+        "\n"
+    )
     names = {name.split("/")[0] for name in tracked if name and not name.startswith(".")}
     if not names:
         pytest.skip("not a git checkout: the list of files is not known")

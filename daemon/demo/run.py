@@ -40,7 +40,10 @@ def demo(folder: str, pace: float, seed: int) -> int:
         raise Trouble(f"{folder}: {error.strerror}; give a folder that can be written") from None
     minutes = invented.deliveries[-1].minute
     told = f"about {minutes / pace:.0f} s" if pace else "all at once"
-    print(f"An invented night of {len(invented.deliveries)} deliveries is played into {home / 'inbox'} ({told}).", flush=True)
+    print(
+        f"An invented night of {len(invented.deliveries)} deliveries is played into {home / 'inbox'} ({told}).",
+        flush=True,
+    )
     with Readers(1) as readers:
         _watch(home, invented, pace, readers)
         with open_station(str(home / "rules.yaml")) as opened:
@@ -51,7 +54,7 @@ def demo(folder: str, pace: float, seed: int) -> int:
 
 
 def _watch(home: Path, invented: Night, pace: float, readers: Readers) -> None:
-    """The daemon in this thread, the instruments in another; it ends when all is delivered and nothing is left to do."""
+    """The daemon in this thread, the instruments in another; ends when all is delivered and nothing is left to do."""
     stop, delivered = threading.Event(), threading.Event()
 
     def deliver() -> None:
@@ -90,5 +93,7 @@ def _where_to_look(home: Path, solved: Sequence[Solved]) -> list[str]:
         folder = home / failed.key.root / failed.key.folder
         lines.append(f"  {folder / (series_stem(failed.key) + SUMMARY)}   why a series failed"[: max(width, 80)])
     lines.append(f"  {home / 'inbox'}   a flag, a result and a summary beside the data of every series")
-    lines.append(f"  {home / 'rules.yaml'}   the rule file of this laboratory; try: spikeward vet {home / 'rules.yaml'}")
+    lines.append(
+        f"  {home / 'rules.yaml'}   the rule file of this laboratory; try: spikeward vet {home / 'rules.yaml'}"
+    )
     return lines[:10]

@@ -7,11 +7,13 @@ from dataclasses import dataclass
 from urllib.parse import quote
 
 from spikeward.daemon.pages.facts import Notice
-from spikeward.daemon.pages.flag import result_name
+from spikeward.daemon.pages.flag import result_name, told
 from spikeward.daemon.pages.numbers import coverage_shown, interval_shown, value_shown
 from spikeward.daemon.pages.template import attention, page
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WAITING, WARN, BatchOutcome, Check, Outcome, Result
 from spikeward.rules.records import SeriesKey
+
+_REPORTED = ("sample", "duplicate", "spiked sample")
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,23 +63,29 @@ def headline(batch: BatchOutcome | None, rows: Sequence[Row]) -> str:
     """The first line: ``41 of 44 results reportable, 2 fail, 1 waits; in control: brackets, reference.``"""
     if batch is None:
         return "No batch was recognised in this folder."
-    if not rows:
-        return "No addition series yet."
-    count = {verdict: sum(row.verdict == verdict for row in rows) for verdict in (PASS, WARN, FAIL, WAITING)}
-    good = count[PASS] + count[WARN]
-    parts = [f"{good} of {len(rows)} {'result' if len(rows) == 1 else 'results'} reportable"]
-    if count[WARN]:
-        parts[0] += f" ({count[WARN]} with a warning)"
-    parts += [f"{count[FAIL]} {'fails' if count[FAIL] == 1 else 'fail'}"] if count[FAIL] else []
-    parts += [f"{count[WAITING]} {'waits' if count[WAITING] == 1 else 'wait'}"] if count[WAITING] else []
-    return f"{', '.join(parts)}{_control(batch.checks)}."
+    reported = [row for row in rows if row.role in _REPORTED]
+    controls = [row for row in rows if row.role not in _REPORTED]
+    good = sum(row.verdict in (PASS, WARN) for row in reported)
+    noun = "result" if len(reported) == 1 else "results"
+    text = f"{good} of {len(reported)} {noun} reportable{_trouble(reported)}" if reported else "No sample yet"
+    if controls and (trouble := _trouble(controls)):
+        text += f"; {len(controls)} {'result' if len(controls) == 1 else 'results'} of blanks and references{trouble}"
+    return f"{text}{_control(batch.checks)}."
+
+
+def _trouble(rows: Sequence[Row]) -> str:
+    """How many warn, fail and wait, those that there are none of left out."""
+    count = {verdict: sum(row.verdict == verdict for row in rows) for verdict in (WARN, FAIL, WAITING)}
+    words = f" ({count[WARN]} with a warning)" if count[WARN] else ""
+    words += f", {count[FAIL]} {'fails' if count[FAIL] == 1 else 'fail'}" if count[FAIL] else ""
+    return words + (f", {count[WAITING]} {'waits' if count[WAITING] == 1 else 'wait'}" if count[WAITING] else "")
 
 
 def _control(checks: Iterable[Check]) -> str:
-    told = {FAIL: "out of control", WARN: "to look at", NOT_EVALUATED: "not evaluated", PASS: "in control"}
+    words_for = {FAIL: "out of control", WARN: "to look at", NOT_EVALUATED: "not evaluated", PASS: "in control"}
     named = [
         (words, [check.name.replace("_", " ") for check in checks if check.verdict == verdict])
-        for verdict, words in told.items()
+        for verdict, words in words_for.items()
     ]
     return "".join(f"; {words}: {', '.join(dict.fromkeys(names))}" for words, names in named if names)
 
@@ -110,9 +118,9 @@ def _says(outcome: Outcome, result: Result) -> str:
     """Why a result needs a person: failing checks before warning ones, then what is waited for."""
     checks = (*outcome.checks, *result.checks)
     for verdict in (FAIL, WARN):
-        told = [f"{check.sentence} {check.remedy}".strip() for check in checks if check.verdict == verdict]
-        if told and result.verdict in (verdict, WAITING):
-            return " ".join(told)
+        sentences = [told(check) for check in checks if check.verdict == verdict]
+        if sentences and result.verdict in (verdict, WAITING):
+            return " ".join(sentences)
     if outcome.waiting_for and result.verdict == WAITING:
         return f"Waiting for {', '.join(outcome.waiting_for)}."
     return result.sentence

@@ -117,8 +117,8 @@ def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
     yield Markup('<path class="axis" d="M{0:.1f} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>').format(
         frame.left, frame.up(0.0), _RIGHT, frame.across(0.0), _TOP, _BOTTOM
     )
-    added = frame.x.titled(f"{_analyte(result)} added", unit_shown(result.content_unit))
-    yield Markup('<text class="name" x="{0:.1f}" y="{1}">{2}</text>').format((frame.left + _RIGHT) / 2, _HEIGHT - 12, added)
+    added, middle = frame.x.titled(f"{_analyte(result)} added", unit_shown(result.content_unit)), frame.along(0.5)
+    yield Markup('<text class="name" x="{0:.1f}" y="{1}">{2}</text>').format(middle, _HEIGHT - 12, added)
     signal = frame.y.titled("Signal corrected for volume", visible(result.signal_unit))
     yield Markup('<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>').format(
         -(_TOP + _BOTTOM) / 2, signal
@@ -160,7 +160,7 @@ def _content(frame: _Frame, result: Result) -> Iterator[Markup]:
         ends = _end(left, floor, -1, frame.x.share(interval[0])) + _end(right, floor, 1, frame.x.share(interval[1]))
         yield Markup('<path class="interval" d="M{0:.1f} {1:.1f}H{2:.1f}{3}"/>').format(left, floor, right, ends)
     at = frame.across(crossing)
-    yield Markup('<path class="crossing" d="M{0:.1f} {1:.1f}l5 5l-5 5l-5 -5z"/>').format(at, floor - 5)
+    yield Markup('<path class="crossing" d="M{0:.1f} {1:.1f}l4 4l-4 4l-4 -4z"/>').format(at, floor - 4)
     yield Markup('<text class="crossing-name" x="{0:.1f}" y="{1:.1f}">−C₀</text>').format(
         max(at - 3, frame.left + 28), floor - 12
     )
@@ -168,7 +168,7 @@ def _content(frame: _Frame, result: Result) -> Iterator[Markup]:
 
 def _end(at: float, floor: float, side: int, share: float) -> str:
     if 0 <= share <= 1:
-        return f"M{at:.1f} {floor - 6:.1f}v12"
+        return f"M{at:.1f} {floor - 9:.1f}v18"
     return f"M{at - 6 * side:.1f} {floor - 6:.1f}l{6 * side} 6l{-6 * side} 6"
 
 

@@ -69,12 +69,16 @@ def _result(result: Result) -> str:
     return f"{result.verdict}, {name}, {value_shown(reported)}{basis} ({coverage_shown(reported)})"
 
 
+def told(check: Check) -> str:
+    """What a check found and what to do about it."""
+    return f"{check.sentence} {check.remedy.rstrip('.')}." if check.remedy else check.sentence
+
+
 def _reasons(name: str, checks: Iterable[Check]) -> Iterator[Line]:
     for check in checks:
         if check.verdict in (FAIL, WARN):
             about = f"{check.verdict}, {f'{name}, ' if name else ''}{check.name}"
-            remedy = f" {check.remedy.rstrip('.')}." if check.remedy else ""
-            yield "reason", f"{about}: {check.sentence}{remedy}"
+            yield "reason", f"{about}: {told(check)}"
 
 
 def _lines(lines: Iterable[Line]) -> bytes:

@@ -45,8 +45,12 @@ def _words(name: str) -> str:
 
 def _says(check: Check) -> str:
     """The sentence without the words that already stand before it as the verdict."""
-    told = check.sentence.removeprefix("Not evaluated: ")
-    return told[:1].upper() + told[1:]
+    return _capital(check.sentence.removeprefix("Not evaluated: "))
+
+
+def _capital(text: str) -> str:
+    """The first letter as a capital, the others as they are."""
+    return text[:1].upper() + text[1:]
 
 
 def _observed(check: Check) -> str:
@@ -72,6 +76,7 @@ def _environment() -> Environment:
     environment.filters |= {
         "in_order": _checks_in_order,
         "words": _words,
+        "capital": _capital,
         "says": _says,
         "observed": _observed,
         "shown": shown,

@@ -107,7 +107,7 @@ def outcome(sample: str, verdict: str, *results: Result, role: str = "sample", *
         for level in range(4)
     )
     made = Outcome(
-        key, verdict, verdict, True, (), "flasks", f"{verdict.upper()}. {BATCH}-{sample} told in one sentence.", results,
+        key, verdict, verdict, True, (), "flasks", f"{verdict.upper()}. {BATCH}-{sample} in one sentence.", results,
         (COMPLETE,), vessels, (reading(series_key("1", "background"), "", "", 0.0021, 1),), (),
         digest_of(sample), digest_of("rules"),
     )  # fmt: skip

@@ -214,14 +214,24 @@ def test_deleted_in_the_middle_of_something(path: str) -> None:
         assert [each.path for each in journal.load_files()] == ["b.csv", "c.csv"]
 
 
+def test_deleted_in_the_middle_of_something_that_fails(path: str) -> None:
+    with opened(path) as journal:
+        with contextlib.suppress(KeyError), journal.together():
+            os.unlink(path)
+            journal.record_files([record("b.csv")])
+            raise KeyError
+        assert journal.load_files() == []
+
+
 # ---- other programs, other versions, a full disk ---------------------------------------------------------------------
 
 
 def test_locked_by_another_program_is_said_and_passes(path: str) -> None:
     with opened(path, busy_s=0.0) as journal, contextlib.closing(sqlite3.connect(path, isolation_level=None)) as other:
         other.execute("begin exclusive")
-        with pytest.raises(JournalUnavailable, match="locked"):
+        with pytest.raises(JournalUnavailable, match="locked") as refused:
             journal.record_files([record("a.csv")])
+        assert refused.value.filename == path
         other.execute("rollback")
         journal.record_files([record("a.csv")])
         assert len(journal.load_files()) == 1

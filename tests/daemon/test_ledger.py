@@ -33,7 +33,7 @@ def test_what_was_appended_is_read(tmp_path: Path) -> None:
     ledger.append(*EVENTS[1:])
     assert ledger.read() == EVENTS
     assert Ledger(RealDisk(), path).read() == EVENTS
-    assert (tmp_path / "ledger.jsonl").read_bytes().count(b"\n") == 3
+    assert (tmp_path / "ledger.jsonl").read_bytes().count(b"\n") == 2
 
 
 def write_all(disk: DyingDisk) -> list[int]:
@@ -75,7 +75,8 @@ def test_an_event_whose_call_returned_is_never_lost(how: str) -> None:
 
 def test_every_torn_end_is_cut_off_and_said() -> None:
     disk = start()
-    Ledger(disk, PATH).append(*EVENTS)
+    for event in EVENTS:
+        Ledger(disk, PATH).append(event)
     whole = disk.read(PATH)
     last = whole.rindex(b"\n", 0, -1) + 1
     for cut in range(last, len(whole)):
@@ -99,14 +100,30 @@ def test_an_end_that_a_power_cut_filled_with_rubbish(tail: bytes) -> None:
     assert "cut off" in ledger.sentences[0]
 
 
-def test_damage_in_the_middle_is_refused_with_its_line() -> None:
+def test_events_of_one_call_are_torn_together() -> None:
     disk = start()
-    Ledger(disk, PATH).append(*EVENTS)
+    ledger = Ledger(disk, PATH)
+    ledger.append(EVENTS[0])
+    ledger.append(*EVENTS[1:])
+    whole = disk.read(PATH)
+    for cut in range(whole.index(b"\n") + 1, len(whole)):
+        torn = start()
+        torn.append(PATH, whole[:cut])
+        assert Ledger(torn, PATH).read() == (EVENTS if cut == len(whole) - 1 else EVENTS[:1])
+    assert Ledger(disk, PATH).read() == EVENTS
+
+
+@pytest.mark.parametrize(("broken", "last"), [(1, b""), (2, b'{"event":"unfini')])
+def test_damage_in_the_middle_is_refused_with_its_line(broken: int, last: bytes) -> None:
+    disk = start()
+    for event in EVENTS:
+        Ledger(disk, PATH).append(event)
     lines = disk.read(PATH).split(b"\n")
-    lines[1] = lines[1][:-4]
+    lines[broken] = lines[broken][:-4]
+    lines[-1] = last
     damaged = start()
     damaged.append(PATH, b"\n".join(lines))
-    with pytest.raises(LedgerDamaged, match="Line 2"):
+    with pytest.raises(LedgerDamaged, match=f"Line {broken + 1}"):
         Ledger(damaged, PATH).read()
     with pytest.raises(LedgerDamaged):
         Ledger(damaged, PATH).append({"event": "x"})

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import errno
+import fcntl
 import os
 import subprocess
 import sys
@@ -74,6 +75,27 @@ def test_a_lock_file_that_somebody_deletes_is_noticed(tmp_path: Path) -> None:
     held.release()
     assert not second.lost(), "the first one leaves alone what is no longer its own"
     second.release()
+
+
+def test_a_holder_that_leaves_between_opening_and_locking(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """The file that was opened is taken away before it is locked: a lock on it would keep nobody out."""
+    path = tmp_path / "lock"
+    real = fcntl.flock
+    asked = []
+
+    def flock(handle: int, operation: int) -> None:
+        if not asked:
+            path.unlink()
+        asked.append(handle)
+        real(handle, operation)
+
+    monkeypatch.setattr(fcntl, "flock", flock)
+    held = acquire(str(path), ME, "S")
+    assert len(asked) == 2
+    assert not held.lost()
+    with pytest.raises(Locked):
+        acquire(str(path), ME, "S")
+    held.release()
 
 
 def test_a_link_in_place_of_the_lock_is_not_followed(tmp_path: Path) -> None:

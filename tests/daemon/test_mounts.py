@@ -6,7 +6,7 @@ from pathlib import Path
 
 import pytest
 
-from spikeward.daemon.mounts import kind_of, network_kind, read_mounts, unfit_for_state
+from spikeward.daemon.mounts import kind_of, network_kind, read_mounts
 
 MOUNTS = r"""/dev/sda1 / ext4 rw 0 0
 proc /proc proc rw 0 0
@@ -40,11 +40,6 @@ def test_network_file_systems_are_known() -> None:
     assert network_kind("/mnt/nfs/a", MOUNTS) == "nfs4"
     assert network_kind("/mnt/nfs/cache", MOUNTS) == ""
     assert network_kind("/data", "") == ""
-
-
-def test_a_state_folder_on_a_share_is_refused_with_the_reason() -> None:
-    assert "write-ahead log" in unfit_for_state("/mnt/nfs/state", MOUNTS)
-    assert unfit_for_state("/var/lib/spikeward", MOUNTS) == ""
 
 
 def test_links_are_seen_through(tmp_path: Path) -> None:

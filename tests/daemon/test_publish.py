@@ -10,8 +10,8 @@ import pytest
 from disk_that_dies import Died, DyingDisk
 
 from spikeward.daemon.disk import RealDisk
-from spikeward.daemon.names import VERDICTS
-from spikeward.daemon.publish import publish, publish_files, publish_unread, withdraw_unread
+from spikeward.daemon.names import VERDICTS, unread_name
+from spikeward.daemon.publish import publish, publish_files, withdraw_unread
 
 FOLDER = "/data"
 STEM = "MD1_07"
@@ -301,7 +301,7 @@ def test_a_table_and_a_board_have_no_flag() -> None:
 
 def test_unread_comes_and_goes() -> None:
     disk = start()
-    publish_unread(disk, FOLDER, "tray 1.csv", b"sentence: row 3 has 4 cells, the heading 5\n")
+    publish_files(disk, FOLDER, {unread_name("tray 1.csv"): b"sentence: row 3 has 4 cells, the heading 5\n"})
     assert list(disk.tree()) == [f"{FOLDER}/tray%201.csv.unread.flag"]
     assert withdraw_unread(disk, FOLDER, "tray 1.csv")
     assert not withdraw_unread(disk, FOLDER, "tray 1.csv")

@@ -5,12 +5,14 @@ from __future__ import annotations
 from dataclasses import replace
 
 import pytest
+
 from spikeward.rules.in_force import in_force
 from spikeward.rules.preparation import prepare
 from spikeward.rules.quantities import parse_quantity as q
 from spikeward.rules.records import BenchEntry, Decision, Reading, SeriesKey
 from spikeward.rules.rulebook import BlankRule, Preparation, Rulebook, SampleRule, SeriesRule, Standard
 
+STANDARDS = {"Mix": "10 mg/L", "Old": "5 mg/L"}
 KEY = SeriesKey("inbox", "", "N1", "sample", "7")
 FLASKS = Preparation(
     applies={}, design="flasks", aliquot={"": q("10 mL")}, final=q("25 mL"),
@@ -21,7 +23,7 @@ FLASKS = Preparation(
 def book(preparation: Preparation) -> Rulebook:
     return Rulebook(
         station="bench", language="en", state=".spikeward", watches=(), layouts={}, bench=None, names=(),
-        series=SeriesRule(), standards={"Mix": Standard("Mix", {"Mn": q("10 mg/L")}), "Old": Standard("Old", {"Mn": q("5 mg/L")})},
+        series=SeriesRule(), standards={name: Standard(name, {"Mn": q(text)}) for name, text in STANDARDS.items()},
         preparations=(preparation,), blanks=BlankRule(), brackets={}, references={}, tops={}, checks={}, coverage=0.95,
         decisions="decisions.yaml", digest="d",
     )  # fmt: skip
@@ -29,9 +31,9 @@ def book(preparation: Preparation) -> Rulebook:
 
 def reading(level: str, *values: tuple[str, str, str], vessel: str = "") -> Reading:
     return Reading(
-        series=KEY, level=level, vessel=vessel, injection="", reading="", solution=f"N1_7_A{level}{vessel}", analyte="Mn",
-        line="", unit="A", signal=0.1, text="0.1", qualifier="", readings=1, sd=None, measured_at="", processed_at="",
-        order=None, values=values, already=(), path=f"v{level}{vessel}.csv", row=2, digest=level + vessel,
+        series=KEY, level=level, vessel=vessel, injection="", reading="", solution=f"N1_7_A{level}{vessel}",
+        analyte="Mn", line="", unit="A", signal=0.1, text="0.1", qualifier="", readings=1, sd=None, measured_at="",
+        processed_at="", order=None, values=values, already=(), path=f"v{level}{vessel}.csv", row=2, digest=level + vessel,
     )  # fmt: skip
 
 
@@ -92,7 +94,11 @@ def test_unequal_aliquots():
 
 
 def test_what_is_written_for_this_solution_goes_before_the_rule_file():
-    readings = [reading("0"), reading("1", ("addition", "0.3 mL", "column")), reading("2", ("addition", "600 uL", "name"))]
+    readings = [
+        reading("0"),
+        reading("1", ("addition", "0.3 mL", "column")),
+        reading("2", ("addition", "600 uL", "name")),
+    ]
     assert [addition for _, addition, _ in volumes(line(FLASKS, readings))] == [0.0, 0.3, 0.6]
 
 
@@ -173,5 +179,3 @@ def test_a_standard_of_another_name_comes_from_a_column():
 def test_series_without_a_preparation_say_so():
     prepared = line(replace(FLASKS, applies={"batch": "X.*"}), THREE)
     assert "no preparation in the rule file applies" in prepared.problems[0]
-
-
