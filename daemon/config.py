@@ -32,7 +32,9 @@ def load_rules(text: str, file_name: str, packs: Mapping[str, str] | None = None
     """
     root, syntax = compose(text, file_name)
     if root is None:
-        return None, syntax or (Problem("R010", file_name, 1, 1, "", "the rule file is empty", hint="begin with watch:"),)
+        return None, syntax or (
+            Problem("R010", file_name, 1, 1, "", "the rule file is empty", hint="begin with watch:"),
+        )
     walker = Walker(file_name, RULE_FILE)
     checks, value = {}, None
     try:

@@ -43,8 +43,12 @@ def build(value: Values, checks: Mapping[str, Limits], walker: Walker) -> Rulebo
             for number, each in enumerate(value["names"])
         ),
         series=SeriesRule(
-            tuple(number_of(level) for level in series["expects"]["levels"]), series["expects"]["readings"],
-            series["same_name"], series["lapses_after"], series["lapsed"], tuple(series["closes_with"]),
+            tuple(number_of(level) for level in series["expects"]["levels"]),
+            series["expects"]["readings"],
+            series["same_name"],
+            series["lapses_after"],
+            series["lapsed"],
+            tuple(series["closes_with"]),
         ),  # fmt: skip
         standards={name: _standard(name, each) for name, each in value["standards"].items()},
         preparations=tuple(
@@ -91,7 +95,7 @@ _TUPLES = ("files", "header_contains", "ends_at", "date_patterns", "already", "n
 
 
 def _layout(name: str, each: Values) -> Layout:
-    values = {key: tuple(part) if key in _TUPLES else part for key, part in each.items()}
+    values: dict[str, Any] = {key: tuple(part) if key in _TUPLES else part for key, part in each.items()}
     values["wide"] = {heading: (meant["analyte"], meant["line"]) for heading, meant in each["wide"].items()}
     return Layout(name=name, **values)
 

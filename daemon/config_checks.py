@@ -139,7 +139,11 @@ def _change(found: dict[str, Limits], check: str, node: Node, pack: Pack, walker
 
 
 def _possible(check: str, pack: Pack) -> str:
-    return f"possible here: {one_of(tuple(pack[check]))}" if pack[check] else f"{check} has no limits; only off is possible"
+    return (
+        f"possible here: {one_of(tuple(pack[check]))}"
+        if pack[check]
+        else f"{check} has no limits; only off is possible"
+    )
 
 
 _BOUND: Scalar = limit(whole=False)

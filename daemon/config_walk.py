@@ -117,7 +117,11 @@ class Walker:
         for field in shape.fields:
             if field.required and field.name not in given:
                 where = f"{path}.{field.name}".lstrip(".")
-                hint = f"add {field.name}: {field.example}" if field.example and "\n" not in field.example else f"add {field.name}:"
+                hint = (
+                    f"add {field.name}: {field.example}"
+                    if field.example and "\n" not in field.example
+                    else f"add {field.name}:"
+                )
                 self.at_node(node, where, "R010", f"{field.name} is missing", "", hint)
         return values
 
@@ -171,9 +175,7 @@ class Walker:
         path = path if len(path) <= _LONGEST else f"{path[:_LONGEST]} …"
         self.problems.append(Problem(code, self.file, node.line, node.column, path, found, expected, hint, severity))
 
-    def at(
-        self, path: str, code: str, found: str, expected: str = "", hint: str = "", severity: str = ERROR
-    ) -> None:
+    def at(self, path: str, code: str, found: str, expected: str = "", hint: str = "", severity: str = ERROR) -> None:
         """Report a problem at the value of a path, or at the nearest part of the file around it."""
         where = path
         while where and where not in self.places:

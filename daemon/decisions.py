@@ -21,7 +21,6 @@ from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.ledger import Ledger
 from spikeward.daemon.names import shown
 from spikeward.daemon.pages.facts import Notice
-from spikeward.daemon.settle import Stamp
 from spikeward.daemon.station import Clock
 from spikeward.daemon.yaml_text import Node, compose
 from spikeward.rules.records import Decision
@@ -42,7 +41,6 @@ class DecisionBook:
     adopted: dict[Place, tuple[Decision, ...]] = field(default_factory=dict)
     refused: dict[Place, str] = field(default_factory=dict)
     _digests: dict[Place, str] = field(default_factory=dict)
-    _stamps: dict[Place, Stamp] = field(default_factory=dict)
 
     def take(self, event: Mapping[str, Any]) -> None:
         """Enter an adopted version from the ledger; events of other kinds change nothing."""
@@ -86,10 +84,8 @@ class DecisionBook:
             ]
         return found
 
-    def see(self, place: Place, stamp: Stamp, path: str) -> str | None:
+    def see(self, place: Place, path: str) -> str | None:
         """Look at a decisions file; the folder that a newly adopted version applies to, or None."""
-        if self._stamps.get(place) == stamp:
-            return None
         try:
             data = self.disk.read(path, _LARGEST)
             text = data.decode("utf-8")
@@ -97,9 +93,8 @@ class DecisionBook:
             self.refused[place] = f"{shown(place[1])} is not UTF-8; save it as UTF-8. The decisions before it stand"
             return None
         except OSError as error:
-            self.refused[place] = f"{shown(place[1])}: {error.strerror}; tried again"
+            self.refused[place] = f"{shown(place[1])}: {error.strerror}; make it readable and save it again"
             return None
-        self._stamps[place] = stamp
         decisions, problems = read_decisions(text, place[1])
         if problems:
             self.refused[place] = f"{'; '.join(problems)}. The decisions before it stand"

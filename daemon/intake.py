@@ -9,9 +9,9 @@ from spikeward.daemon.claims import DECISIONS, Claim, Claims
 from spikeward.daemon.holdings import Content, Holdings, Place
 from spikeward.daemon.names import shown
 from spikeward.daemon.pages.facts import Notice
-from spikeward.daemon.settle import Settling, Stamp
+from spikeward.daemon.settle import Settling, Stamp, Waited
 from spikeward.daemon.station import Places
-from spikeward.daemon.survey import Listing, Presence, compare
+from spikeward.daemon.survey import Listing, Oddity, Presence, compare
 from spikeward.daemon.workers import ReadJob, ReadReply
 from spikeward.rules.records import BatchKey
 from spikeward.rules.rulebook import Rulebook, Watch
@@ -21,23 +21,42 @@ Key = tuple[str, str, str]  # root, path, key of the claim
 
 @dataclass(slots=True)
 class FileState:
-    """One file that was seen: how it looked when it was read, and what it holds by way of reading."""
+    """One file that was read: how it looked then, and what it holds by way of reading."""
 
     stamp: Stamp
     contents: dict[str, Content] = field(default_factory=dict)
-    trouble: str = ""  # why it cannot be read now; it is tried again
 
 
 @dataclass(slots=True)
 class Root:
-    """What is remembered of one watched folder."""
+    """What is remembered of one watched folder: what was read, what still waits, and what nobody takes."""
 
     watch: Watch
     settling: Settling[Place]
     presence: Presence = field(default_factory=Presence)
     away: str = ""
-    listing: Listing | None = None
-    unclaimed: list[str] = field(default_factory=list)
+    stamps: dict[str, Stamp] = field(default_factory=dict)
+    unclaimed: set[str] = field(default_factory=set)
+    oddities: list[Oddity] = field(default_factory=list)
+    unlisted: dict[str, str] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True)
+class _Trouble:
+    """A file that cannot be read now: why, when it is tried again, and the pause after that."""
+
+    sentence: str
+    due: float
+    pause: float
+
+
+@dataclass(slots=True)
+class Seen:
+    """What a look at a folder asks for: files to read, files that are gone, and decisions files that settled."""
+
+    jobs: list[ReadJob] = field(default_factory=list)
+    gone: list[Place] = field(default_factory=list)
+    decisions: list[Place] = field(default_factory=list)
 
 
 class Intake:
@@ -46,86 +65,123 @@ class Intake:
     def __init__(self, rules: Rulebook, places: Places, holdings: Iterable[Holdings]) -> None:
         self.places = places
         self.files: dict[Place, FileState] = {}
-        self.inflight: set[Key] = set()
         self.roots: dict[str, Root] = {}
-        self.feed: list[tuple[Holdings, Claims]] = []
+        self._inflight: set[Key] = set()
+        self._troubles: dict[Place, _Trouble] = {}
+        self._lacking: set[Place] = set()  # read, but not the way that rules in use ask for
+        self._feed: list[tuple[Holdings, Claims]] = []
+        self._now = 0.0
         self.rule(rules, holdings)
 
     def rule(self, rules: Rulebook, holdings: Iterable[Holdings]) -> None:
         """Set the rules in force: the watched folders are theirs; what was read already is fed to new holdings."""
-        known = {id(each): claims for each, claims in self.feed}
-        self.feed = [(each, known.get(id(each)) or Claims(each.rules)) for each in holdings]
-        self.roots = {watch.folder: Root(watch, Settling(watch.settle)) for watch in rules.watches} | {
-            folder: root for folder, root in self.roots.items() if root.watch in rules.watches
+        known = {id(each): claims for each, claims in self._feed}
+        self._feed = [(each, known.get(id(each)) or Claims(each.rules)) for each in holdings]
+        standing = {folder: root for folder, root in self.roots.items() if root.watch in rules.watches}
+        self.roots = {
+            watch.folder: standing.get(watch.folder) or Root(watch, Settling(watch.settle)) for watch in rules.watches
         }
+        for root in self.roots.values():
+            root.unclaimed.clear()
+        for place in [place for place in self.files if place[0] not in self.roots]:
+            del self.files[place]
         for place, state in self.files.items():
-            self._feed(place, state)
+            self.roots[place[0]].stamps[place[1]] = state.stamp
+            self._feed_all(place, state)
+
+    def carry(self, waiting: Iterable[Waited[Place]]) -> None:
+        """Waiting that an earlier run had counted: a restart makes a file later by the pause only."""
+        by_root: dict[str, list[Waited[Place]]] = {}
+        for each in waiting:
+            by_root.setdefault(each.place[0], []).append(each)
+        for folder, root in self.roots.items():
+            root.settling = Settling(root.watch.settle, by_root.get(folder, ()))
 
     def claims(self, place: Place) -> list[Claim]:
         """Every way in which a file is to be read; none where nobody takes it."""
-        root = self.roots.get(place[0])
-        if root is None:
-            return []
-        found = {claim.key: claim for _, claims in self.feed if (claim := claims.of(place[1], root.watch)) is not None}
+        watch = self.roots[place[0]].watch
+        found = {claim.key: claim for _, claims in self._feed if (claim := claims.of(place[1], watch)) is not None}
         return list(found.values())
 
-    def see(self, folder: str, listing: Listing, now: float) -> tuple[list[ReadJob], list[Place]]:
-        """Compare a listing with what is known.
-
-        Returns
-        -------
-        the files to read now, and those that are gone
-        """
+    def see(self, folder: str, listing: Listing, now: float) -> Seen:
+        """Compare a listing of a watched folder, or of a part of it, with what is known."""
         root = self.roots[folder]
-        known = {path: state.stamp for (where, path), state in self.files.items() if where == folder}
-        root.listing = listing
-        root.away = root.presence.away(listing, held_files=bool(known))
+        self._now = now
+        root.away = root.presence.away(listing, held_files=bool(root.stamps))
         if root.away:
-            return [], []
-        changes = compare(listing, known)
-        unclaimed, jobs = [], []
-        for path in (*changes.new, *changes.changed, *self._unfinished(folder, listing, known)):
-            place = (folder, path)
-            claims = self.claims(place)
-            if not claims:
-                unclaimed.append(path)
-            elif root.settling.look(place, listing.files[path], now):
-                jobs += self._jobs(place, claims)
-        root.unclaimed = unclaimed
-        root.settling.keep_only({(folder, path) for path in listing.files})
-        return jobs, [(folder, path) for path in changes.vanished]
+            return Seen()
+        if not listing.start:
+            root.oddities, root.unlisted = listing.oddities, listing.unlisted
+            root.unclaimed.intersection_update(listing.files)
+        changes = compare(listing, root.stamps)
+        seen = Seen(gone=[(folder, path) for path in changes.vanished])
+        for path in (*changes.new, *changes.changed):
+            if path not in root.unclaimed:
+                self._look(root, path, listing.files[path], seen)
+        seen.jobs += self._lacking_jobs(folder, listing)
+        self._forget_gone(root, listing)
+        return seen
 
-    def _unfinished(self, folder: str, listing: Listing, known: dict[str, Stamp]) -> Iterator[str]:
-        """Files that look as before but could not be read, or lack a reading under some rules."""
-        for path, stamp in known.items():
-            state = self.files[folder, path]
-            if listing.files.get(path) == stamp and (
-                state.trouble or any(claim.key not in state.contents for claim in self.claims((folder, path)))
-            ):
-                yield path
+    def _look(self, root: Root, path: str, stamp: Stamp, seen: Seen) -> None:
+        place = (root.watch.folder, path)
+        trouble = self._troubles.get(place)
+        if trouble is not None and self._now < trouble.due:
+            return
+        claims = self.claims(place)
+        if not claims:
+            root.unclaimed.add(path)
+        elif root.settling.look(place, stamp, self._now):
+            seen.jobs += self._jobs(place, claims)
+            if DECISIONS in claims:
+                seen.decisions.append(place)
+                root.stamps[path] = stamp
+                root.settling.forget(place)
 
-    def _jobs(self, place: Place, claims: list[Claim]) -> Iterator[ReadJob]:
+    def _lacking_jobs(self, folder: str, listing: Listing) -> list[ReadJob]:
+        jobs: list[ReadJob] = []
+        for place in sorted(place for place in self._lacking if place[0] == folder and place[1] in listing.files):
+            state = self.files.get(place)
+            jobs += self._jobs(
+                place, [each for each in self.claims(place) if not state or each.key not in state.contents]
+            )
+        return jobs
+
+    def _forget_gone(self, root: Root, listing: Listing) -> None:
+        """Files that vanished while they were being waited for."""
+        below = listing.start + "/" if listing.start else ""
+        for waited in root.settling.waiting():
+            path = waited.place[1]
+            if path.startswith(below) and path not in listing.files:
+                root.settling.forget(waited.place)
+                self._troubles.pop(waited.place, None)
+
+    def _jobs(self, place: Place, claims: Iterable[Claim]) -> Iterator[ReadJob]:
         for claim in claims:
             key = (*place, claim.key)
-            if claim is not DECISIONS and key not in self.inflight:
-                self.inflight.add(key)
-                root = self.roots[place[0]]
-                yield ReadJob(f"{self.places.inputs(root.watch)}/{place[1]}", key, claim.layout or claim.bench)
+            if claim is not DECISIONS and key not in self._inflight:
+                self._inflight.add(key)
+                yield ReadJob(
+                    f"{self.places.inputs(self.roots[place[0]].watch)}/{place[1]}", key, claim.layout or claim.bench
+                )
 
     def take(self, reply: ReadReply) -> set[BatchKey]:
         """Take in what a reader answered; the batches whose evaluation may change."""
         root, path, claim_key = reply.key
         place = (root, path)
-        self.inflight.discard(reply.key)
+        self._inflight.discard(reply.key)
+        if root not in self.roots:
+            return set()  # the rules changed meanwhile
         claim = next((each for each in self.claims(place) if each.key == claim_key), None)
         if claim is None:
-            return set()  # the rules changed meanwhile
-        state = self.files.get(place)
-        if reply.temporary:
-            if state is not None:
-                state.trouble = reply.sentence
             return set()
-        return self.hold(place, reply.stamp, claim_key, content_of(reply, claim, self._folder(place)))
+        unfinished = reply.table is not None and reply.table.whole is False
+        if reply.temporary or unfinished:
+            before = self._troubles.get(place)
+            pause = min(60.0, before.pause * 2) if before else 1.0
+            sentence = "waits for the end of the file" if unfinished else reply.sentence
+            self._troubles[place] = _Trouble(sentence, self._now + pause, pause)
+            return set()
+        return self.hold(place, reply.stamp, claim_key, content_of(reply, claim))
 
     def hold(self, place: Place, stamp: Stamp, claim_key: str, content: Content) -> set[BatchKey]:
         """Enter the content of a file, and feed it to the holdings that read it this way."""
@@ -133,63 +189,63 @@ class Intake:
         if state is None or state.stamp != stamp:
             state = self.files[place] = FileState(stamp)
         state.contents[claim_key] = content
-        state.trouble = ""
-        if place[0] in self.roots:
-            self.roots[place[0]].settling.forget(place)
-        return self._feed(place, state)
+        root = self.roots[place[0]]
+        root.stamps[place[1]] = stamp
+        root.settling.forget(place)
+        self._troubles.pop(place, None)
+        return self._feed_all(place, state)
 
-    def _feed(self, place: Place, state: FileState) -> set[BatchKey]:
+    def _feed_all(self, place: Place, state: FileState) -> set[BatchKey]:
         touched: set[BatchKey] = set()
-        root = self.roots.get(place[0])
-        for holdings, claims in self.feed if root else ():
-            claim = claims.of(place[1], root.watch) if root else None
+        lacking = False
+        for holdings, claims in self._feed:
+            claim = claims.of(place[1], self.roots[place[0]].watch)
             content = state.contents.get(claim.key) if claim else None
             if content is not None and holdings.contents.get(place) is not content:
                 touched |= holdings.put(place, content)
+            elif content is None and claim is None:
+                touched |= holdings.drop(place)
+            lacking |= claim is not None and claim is not DECISIONS and content is None
+        (self._lacking.add if lacking else self._lacking.discard)(place)
         return touched
 
     def gone(self, place: Place) -> set[BatchKey]:
         """A file was deleted or renamed."""
         self.files.pop(place, None)
+        self._lacking.discard(place)
+        self._troubles.pop(place, None)
+        self.roots[place[0]].stamps.pop(place[1], None)
         touched: set[BatchKey] = set()
-        for holdings, _ in self.feed:
+        for holdings, _ in self._feed:
             touched |= holdings.drop(place)
         return touched
 
-    def _folder(self, place: Place) -> str:
-        return self.feed[0][0].output_folder(place)
-
     def notices(self) -> list[tuple[str, str, Notice]]:
         """What a person should know of files and folders, as (root, folder, notice)."""
-        found = []
-        for folder, root in self.roots.items():
-            if root.away:
-                found.append((folder, "", Notice("share away", folder, f"{root.away}; nothing counts as deleted", "")))
-            if root.listing is not None:
-                found += [
-                    (folder, "", Notice("not opened", odd.path, odd.sentence, "")) for odd in root.listing.oddities
-                ]
-                found += [
-                    (folder, "", Notice("not listed", path or folder, f"{why}; what it holds is not known", ""))
-                    for path, why in root.listing.unlisted.items()
-                ]
-            if root.unclaimed:
-                told = ", ".join(shown(path) for path in root.unclaimed[:3])
-                more = f" and {len(root.unclaimed) - 3} more" if len(root.unclaimed) > 3 else ""
-                found.append((folder, "", Notice("no reader", told + more, "no reader's files pattern takes them", "")))
-            found += [
-                (folder, "", Notice("still being written", shown(waited.place[1]), "waits until it stops changing", ""))
-                for waited in root.settling.waiting()
-            ]
-        for (folder, path), state in self.files.items():
-            if state.trouble and folder in self.roots:
-                found.append(
-                    (folder, "", Notice("cannot be read now", shown(path), f"{state.trouble}; tried again", ""))
-                )
-        return found
+        return [(folder, "", notice) for folder, root in self.roots.items() for notice in self._of(folder, root)]
+
+    def _of(self, folder: str, root: Root) -> Iterator[Notice]:
+        if root.away:
+            yield Notice("share away", folder, f"{root.away}; nothing counts as deleted")
+        for odd in root.oddities:
+            yield Notice("not opened", shown(odd.path), odd.sentence)
+        for path, why in root.unlisted.items():
+            yield Notice("not listed", shown(path or folder), f"{why}; what it holds is not known")
+        if root.unclaimed:
+            told = ", ".join(shown(path) for path in sorted(root.unclaimed)[:3])
+            more = f" and {len(root.unclaimed) - 3} more" if len(root.unclaimed) > 3 else ""
+            yield Notice(
+                "no reader", told + more, "no pattern under files of a reader takes this name; nothing was read"
+            )
+        for waited in root.settling.waiting():
+            if waited.place not in self._troubles:
+                yield Notice("still being written", shown(waited.place[1]), "waits until it stops changing")
+        for (where, path), trouble in self._troubles.items():
+            if where == folder:
+                yield Notice("cannot be read now", shown(path), f"{trouble.sentence}; tried again")
 
 
-def content_of(reply: ReadReply, claim: Claim, folder: str) -> Content:
+def content_of(reply: ReadReply, claim: Claim) -> Content:
     """What a reader's answer means for the holdings."""
     if reply.sentence:
         return Content(reply.sha256, sentence=reply.sentence)

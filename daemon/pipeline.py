@@ -14,7 +14,6 @@ from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 from spikeward.daemon.board_output import BoardOutput
-from spikeward.daemon.claims import DECISIONS
 from spikeward.daemon.closings import Closings, closing_event, lapse_event
 from spikeward.daemon.decisions import DecisionBook
 from spikeward.daemon.disk import Disk
@@ -76,12 +75,13 @@ class Pipeline:
 
     def see(self, folder: str, listing: Listing, now: float) -> list[ReadJob]:
         """A watched folder was listed: what is gone is dropped, what has settled is to be read."""
-        jobs, gone = self.intake.see(folder, listing, now)
-        for place in gone:
+        seen = self.intake.see(folder, listing, now)
+        for place in seen.gone:
             self.touched |= self.intake.gone(place)
             self._withdraw_unread(place)
-        self.touched |= self._adopt_decisions(folder, listing)
-        return jobs
+        for place in seen.decisions:
+            self.touched |= self._adopt_decisions(place)
+        return seen.jobs
 
     def take(self, replies: Iterable[ReadReply]) -> None:
         """Files were read: their readings take their places, and what could not be read is said beside the file."""
@@ -257,15 +257,12 @@ class Pipeline:
         readings = (reading for holdings in self._holdings() for reading in holdings.readings([key.batch_key]))
         return any(reading.digest == digest for reading in readings)
 
-    def _adopt_decisions(self, folder: str, listing: Listing) -> set[BatchKey]:
-        changed: set[BatchKey] = set()
-        watch = self.intake.roots[folder].watch
-        for path, stamp in listing.files.items():
-            if DECISIONS in self.intake.claims((folder, path)):
-                where = self.decisions.see((folder, path), stamp, f"{self.places.inputs(watch)}/{path}")
-                if where is not None:
-                    changed |= {key for key in self.solving.every() if key.root == folder and _below(key.folder, where)}
-        return changed
+    def _adopt_decisions(self, place: Place) -> set[BatchKey]:
+        root, path = place
+        where = self.decisions.see(place, f"{self.places.inputs(self.intake.roots[root].watch)}/{path}")
+        if where is None:
+            return set()
+        return {key for key in self.solving.every() if key.root == root and _below(key.folder, where)}
 
     def say_unread(self, place: Place) -> None:
         """Leave or take away the flag that says why a file cannot be read."""

@@ -30,6 +30,7 @@ CODES: dict[str, str] = {
     "R032": "watched folders overlap",
     "R040": "a rule can never be reached, or takes what a later one is meant for",
     "R041": "something is declared and never used",
+    "R042": "some rules name a batch and others do not",
 }
 """Every code and what it stands for; R04x are warnings."""
 
@@ -60,7 +61,9 @@ class Problem:
 
     def line_text(self) -> str:
         """One line: ``rules.yaml:4:5: series.lapses_afer: R012 …``."""
-        place = f"{printable(self.file)}:{self.line}:{self.column}: " + (f"{printable(self.path)}: " if self.path else "")
+        place = f"{printable(self.file)}:{self.line}:{self.column}: " + (
+            f"{printable(self.path)}: " if self.path else ""
+        )
         told = f"{self.code} {self.sentence}"
         return place + (told if self.severity == ERROR else f"warning {told}")
 

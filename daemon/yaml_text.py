@@ -102,7 +102,9 @@ def _check_text(text: str, file_name: str) -> None:
         blanks = line[: len(line) - len(line.lstrip())]
         if "\t" in blanks and line.strip():
             column = blanks.index("\t") + 1
-            raise _Refused(Problem("R004", file_name, number, column, "", "a tab before a key", hint="indent with spaces"))
+            raise _Refused(
+                Problem("R004", file_name, number, column, "", "a tab before a key", hint="indent with spaces")
+            )
 
 
 def _unprintable(text: str, position: int, file_name: str) -> Problem:
@@ -178,7 +180,9 @@ class _Builder:
         self._add(node)
         if len(self._open) == DEEPEST:
             found = f"lists and maps nested more than {DEEPEST} deep"
-            raise _Refused(Problem("R002", self._file, node.line, node.column, "", found, hint="take some brackets away"))
+            raise _Refused(
+                Problem("R002", self._file, node.line, node.column, "", found, hint="take some brackets away")
+            )
         self._open.append(node)
         self._keys.append(None)
         self._seen.append({})
@@ -201,7 +205,9 @@ class _Builder:
             parent.entries.append((key, node))
             return
         found = f"the key '{key.text}' stands in line {self._seen[-1][key.text]} already"
-        self.problems.append(Problem("R005", self._file, key.line, key.column, key.text, found, hint="delete one of the two"))
+        self.problems.append(
+            Problem("R005", self._file, key.line, key.column, key.text, found, hint="delete one of the two")
+        )
 
     def _key(self, key: Node) -> Node:
         place = (self._file, key.line, key.column, "")

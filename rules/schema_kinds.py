@@ -224,7 +224,7 @@ def limit(whole: bool) -> Scalar:
         value = number_of(text) if whole else fraction_of(text)
         if value < 0 or (whole and value != int(value)):
             raise ValueError(f"'{text}' is not {'a whole number from 0 on' if whole else 'a limit'}")
-        return value
+        return int(value) if whole else value
 
     expected = "a whole number such as 4" if whole else "a number or a percentage such as 10 %"
     return Scalar(f"{expected}, or none", convert, "R014", wrong="1,5")
@@ -276,9 +276,9 @@ _QUIET = re2.Options()
 _QUIET.log_errors = False
 
 _OTHER_ENGINES = (
-    (re.compile(r"\(\?<?[=!]"), "looks ahead or behind, which patterns here cannot; write a special rule before the general one"),
-    (re.compile(r"\\[1-9]|\(\?P=|\\k"), "refers back to a group, which patterns here cannot; write the text out"),
-    (re.compile(r"\(\?>|[*+?}]\+"), "holds an atomic or possessive part, which patterns here do not need; leave it out"),
+    (r"\(\?<?[=!]", "looks ahead or behind, which patterns here cannot; write a special rule before the general one"),
+    (r"\\[1-9]|\(\?P=|\\k", "refers back to a group, which patterns here cannot; write the text out"),
+    (r"\(\?>|[*+?}]\+", "holds an atomic or possessive part, which patterns here do not need; leave it out"),
 )
 
 
@@ -290,7 +290,7 @@ def pattern() -> Scalar:
             re2.compile(text, _QUIET)
         except re2.error as error:
             for construct, told in _OTHER_ENGINES:
-                if construct.search(text):
+                if re.search(construct, text):
                     raise ValueError(f"the pattern '{text}' {told}") from None
             reason = error.args[0].decode("utf-8", "replace") if error.args else "it cannot be read"
             raise ValueError(f"the pattern '{text}' cannot be used ({reason})") from None

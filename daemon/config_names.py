@@ -1,0 +1,113 @@
+"""Naming rules: what their groups mean, which they need, and which rule can never be reached."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterator, Mapping
+from typing import Any
+
+import re2
+
+from spikeward.daemon.config_walk import Walker, near
+from spikeward.daemon.pattern_examples import examples
+from spikeward.daemon.problems import WARNING
+from spikeward.rules.naming import GROUPS
+from spikeward.rules.quantities import UNITS
+from spikeward.rules.records import SERIES_ROLES
+from spikeward.rules.schema_kinds import one_of
+
+DIMENSIONS = {"mass": "mass", "aliquot": "volume", "addition": "volume", "final": "volume"}
+"""What a quantity in a name measures, where it needs a unit."""
+_UNITLESS = ("dilution", "standard")
+
+Rules = list[dict[str, Any] | None]
+
+
+def groups_of(pattern: str) -> list[str]:
+    """The names of a pattern's groups in order, each as often as it stands there."""
+    # Escaped characters and classes are skipped: a bracket in them opens no group.
+    parts = re.finditer(r"\\.|\[\^?\]?(?:\\.|[^\]\\])*\]|\(\?P?<(\w+)>", pattern, re.DOTALL)
+    return [part[1] for part in parts if part[1]]
+
+
+def check_names(value: Mapping[str, Any], walker: Walker) -> None:
+    """Everything that the naming rules can get wrong once each is a rule."""
+    rules: Rules = value["names"] or []
+    for number, rule in enumerate(rules):
+        path = f"names[{number}]"
+        if rule is not None and rule["match"] is not None:
+            _check_groups(rule, path, walker)
+            _check_units(rule, path, walker)
+    if not walker.sound("names"):
+        return
+    _check_batches(rules, walker)
+    _check_shadows(rules, walker)
+
+
+def _check_groups(rule: dict[str, Any], path: str, walker: Walker) -> None:
+    groups = groups_of(rule["match"])
+    for group in dict.fromkeys(groups):
+        if group not in GROUPS:
+            meant = near(group, set(GROUPS) - set(groups))
+            hint = f"did you mean {meant}?" if meant else f"possible here: {one_of(GROUPS)}; or (?:…) for a group without meaning"
+            walker.at(f"{path}.match", "R021", f"the group '{group}' is not known", "", hint)
+        elif groups.count(group) > 1:
+            walker.at(f"{path}.match", "R021", f"the group '{group}' stands there twice", "", "write two naming rules")
+    if rule["role"] in SERIES_ROLES:
+        for needed in ("sample", "level"):
+            if needed not in groups and not near(needed, set(groups) - set(GROUPS)):
+                told = f"the pattern of role {rule['role']} does not say the {needed}"
+                walker.at(f"{path}.match", "R022", told, "", f"put (?P<{needed}>…) around the {needed} in the pattern")
+
+
+def _check_units(rule: dict[str, Any], path: str, walker: Walker) -> None:
+    groups, units = set(groups_of(rule["match"])), rule["units"] or {}
+    for group, dimension in DIMENSIONS.items():
+        if group in groups and group not in units:
+            if not walker.sound(f"{path}.units"):
+                continue
+            told = f"the {group} in the name has no unit"
+            walker.at(f"{path}.match", "R023", told, "", f"add units: {{{group}: {'mL' if dimension == 'volume' else 'g'}}}")
+    for group, unit in units.items():
+        where = f"{path}.units.{group}"
+        expected = DIMENSIONS.get(group, "fraction")
+        if group not in groups:
+            walker.at(where, "R031", f"the pattern has no group {group}", "", f"delete the unit, or add (?P<{group}>…)")
+        elif group in _UNITLESS:
+            walker.at(where, "R023", f"a {group} has no unit", "", "delete it")
+        elif unit is not None and UNITS[unit][0] != expected:
+            walker.at(where, "R023", f"{unit} is a unit of {UNITS[unit][0]}", f"a unit of {expected}")
+
+
+def _check_batches(rules: Rules, walker: Walker) -> None:
+    """A blank that names no batch never meets samples that do."""
+    named = [bool(rule) and "batch" in groups_of(rule["match"]) for rule in rules if rule]
+    if not any(named) or all(named):
+        return
+    number = named.index(False)
+    told = "this rule names no batch and others do; what it takes stands in a batch of its own, that of the folder"
+    walker.at(f"names[{number}].match", "R042", told, "", "add (?P<batch>…), or take it out of the others", WARNING)
+
+
+def _check_shadows(rules: Rules, walker: Walker) -> None:
+    for number, taken, before in shadowed(rules):
+        role, line = rules[before]["role"], walker.places[f"names[{before}]"].line  # type: ignore[index]
+        told = (
+            f"this rule for role {rules[number]['role']} takes nothing: "  # type: ignore[index]
+            f"names such as '{taken}' go to the rule for role {role} in line {line}"
+        )
+        walker.at(f"names[{number}]", "R040", told, "", "put the special rule before the general one", WARNING)
+
+
+def shadowed(rules: Rules) -> Iterator[tuple[int, str, int]]:
+    """Rules all of whose example names an earlier rule takes: (position, an example, position of the earlier)."""
+    compiled = [(rule["from"], re2.compile(rule["match"])) for rule in rules if rule]
+    for number, rule in enumerate(rules):
+        if rule is None:
+            continue
+        takers = [
+            next((n for n, (source, pattern) in enumerate(compiled[:number]) if source == rule["from"] and pattern.fullmatch(name)), None)
+            for name in (names := examples(rule["match"]))
+        ]
+        if takers and None not in takers:
+            yield number, names[0], takers[0]  # type: ignore[misc]
