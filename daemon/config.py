@@ -9,6 +9,7 @@ from pathlib import Path
 from spikeward.daemon.config_build import build
 from spikeward.daemon.config_checks import checks_of, shipped_packs
 from spikeward.daemon.config_digest import digest_of
+from spikeward.daemon.config_meaning import check_meaning
 from spikeward.daemon.config_walk import TooMany, Walker
 from spikeward.daemon.problems import ERROR, Problem
 from spikeward.daemon.yaml_text import LARGEST, compose
@@ -41,6 +42,7 @@ def load_rules(text: str, file_name: str, packs: Mapping[str, str] | None = None
         value = walker.walk(root, RULE_FILE, "")
         if value is not None:
             checks = checks_of(value["checks"], walker, shipped_packs() if packs is None else packs)
+            check_meaning(value, walker)
     except TooMany:
         value = None
     problems = tuple(sorted((*syntax, *walker.problems), key=lambda problem: (problem.line, problem.column)))

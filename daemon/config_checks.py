@@ -15,7 +15,7 @@ from spikeward.rules.schema_kinds import Scalar, limit, one_of
 
 Value = float | tuple[float, float] | None
 
-RULE_FILE = "rule file"
+FROM_RULE_FILE = "rule file"
 """The source of a limit that the rule file changes."""
 
 _OFF = ("off", "no")
@@ -134,7 +134,7 @@ def _change(found: dict[str, Limits], check: str, node: Node, pack: Pack, walker
         walker.places[where] = entry
         known = pack[check][name]
         values[name] = _pair(entry, where, walker) if known.pair else walker.walk(entry, limit(known.whole), where)
-        sources[name] = RULE_FILE
+        sources[name] = FROM_RULE_FILE
     found[check] = Limits(values, sources)
 
 

@@ -20,7 +20,7 @@ DIMENSIONS = {"mass": "mass", "aliquot": "volume", "addition": "volume", "final"
 """What a quantity in a name measures, where it needs a unit."""
 _UNITLESS = ("dilution", "standard")
 
-Rules = list[dict[str, Any] | None]
+Rule = dict[str, Any]
 
 
 def groups_of(pattern: str) -> list[str]:
@@ -32,7 +32,7 @@ def groups_of(pattern: str) -> list[str]:
 
 def check_names(value: Mapping[str, Any], walker: Walker) -> None:
     """Everything that the naming rules can get wrong once each is a rule."""
-    rules: Rules = value["names"] or []
+    rules: list[Rule | None] = value["names"] or []
     for number, rule in enumerate(rules):
         path = f"names[{number}]"
         if rule is not None and rule["match"] is not None:
@@ -40,16 +40,21 @@ def check_names(value: Mapping[str, Any], walker: Walker) -> None:
             _check_units(rule, path, walker)
     if not walker.sound("names"):
         return
-    _check_batches(rules, walker)
-    _check_shadows(rules, walker)
+    sound = [rule for rule in rules if rule]
+    _check_batches(sound, walker)
+    _check_shadows(sound, walker)
 
 
-def _check_groups(rule: dict[str, Any], path: str, walker: Walker) -> None:
+def _check_groups(rule: Rule, path: str, walker: Walker) -> None:
     groups = groups_of(rule["match"])
     for group in dict.fromkeys(groups):
         if group not in GROUPS:
             meant = near(group, set(GROUPS) - set(groups))
-            hint = f"did you mean {meant}?" if meant else f"possible here: {one_of(GROUPS)}; or (?:…) for a group without meaning"
+            hint = (
+                f"did you mean {meant}?"
+                if meant
+                else f"possible here: {one_of(GROUPS)}; or (?:…) for a group without meaning"
+            )
             walker.at(f"{path}.match", "R021", f"the group '{group}' is not known", "", hint)
         elif groups.count(group) > 1:
             walker.at(f"{path}.match", "R021", f"the group '{group}' stands there twice", "", "write two naming rules")
@@ -60,14 +65,16 @@ def _check_groups(rule: dict[str, Any], path: str, walker: Walker) -> None:
                 walker.at(f"{path}.match", "R022", told, "", f"put (?P<{needed}>…) around the {needed} in the pattern")
 
 
-def _check_units(rule: dict[str, Any], path: str, walker: Walker) -> None:
+def _check_units(rule: Rule, path: str, walker: Walker) -> None:
     groups, units = set(groups_of(rule["match"])), rule["units"] or {}
     for group, dimension in DIMENSIONS.items():
         if group in groups and group not in units:
             if not walker.sound(f"{path}.units"):
                 continue
             told = f"the {group} in the name has no unit"
-            walker.at(f"{path}.match", "R023", told, "", f"add units: {{{group}: {'mL' if dimension == 'volume' else 'g'}}}")
+            walker.at(
+                f"{path}.match", "R023", told, "", f"add units: {{{group}: {'mL' if dimension == 'volume' else 'g'}}}"
+            )
     for group, unit in units.items():
         where = f"{path}.units.{group}"
         expected = DIMENSIONS.get(group, "fraction")
@@ -79,9 +86,9 @@ def _check_units(rule: dict[str, Any], path: str, walker: Walker) -> None:
             walker.at(where, "R023", f"{unit} is a unit of {UNITS[unit][0]}", f"a unit of {expected}")
 
 
-def _check_batches(rules: Rules, walker: Walker) -> None:
+def _check_batches(rules: list[Rule], walker: Walker) -> None:
     """A blank that names no batch never meets samples that do."""
-    named = [bool(rule) and "batch" in groups_of(rule["match"]) for rule in rules if rule]
+    named = ["batch" in groups_of(rule["match"]) for rule in rules]
     if not any(named) or all(named):
         return
     number = named.index(False)
@@ -89,25 +96,29 @@ def _check_batches(rules: Rules, walker: Walker) -> None:
     walker.at(f"names[{number}].match", "R042", told, "", "add (?P<batch>…), or take it out of the others", WARNING)
 
 
-def _check_shadows(rules: Rules, walker: Walker) -> None:
+def _check_shadows(rules: list[Rule], walker: Walker) -> None:
     for number, taken, before in shadowed(rules):
-        role, line = rules[before]["role"], walker.places[f"names[{before}]"].line  # type: ignore[index]
+        role, line = rules[before]["role"], walker.places[f"names[{before}]"].line
         told = (
-            f"this rule for role {rules[number]['role']} takes nothing: "  # type: ignore[index]
+            f"this rule for role {rules[number]['role']} takes nothing: "
             f"names such as '{taken}' go to the rule for role {role} in line {line}"
         )
         walker.at(f"names[{number}]", "R040", told, "", "put the special rule before the general one", WARNING)
 
 
-def shadowed(rules: Rules) -> Iterator[tuple[int, str, int]]:
+def shadowed(rules: list[Rule]) -> Iterator[tuple[int, str, int]]:
     """Rules all of whose example names an earlier rule takes: (position, an example, position of the earlier)."""
-    compiled = [(rule["from"], re2.compile(rule["match"])) for rule in rules if rule]
+    compiled = [(rule["from"], re2.compile(rule["match"])) for rule in rules]
     for number, rule in enumerate(rules):
-        if rule is None:
-            continue
-        takers = [
-            next((n for n, (source, pattern) in enumerate(compiled[:number]) if source == rule["from"] and pattern.fullmatch(name)), None)
-            for name in (names := examples(rule["match"]))
-        ]
-        if takers and None not in takers:
-            yield number, names[0], takers[0]  # type: ignore[misc]
+        names = examples(rule["match"])
+        takers = [_taker(name, rule["from"], compiled[:number]) for name in names]
+        first = takers[0] if takers else None
+        if first is not None and None not in takers:
+            yield number, names[0], first
+
+
+def _taker(name: str, source: str, earlier: list[tuple[str, Any]]) -> int | None:
+    for number, (other, pattern) in enumerate(earlier):
+        if other == source and pattern.fullmatch(name):
+            return number
+    return None

@@ -12,6 +12,7 @@ from spikeward.rules.schema_kinds import Scalar, one_of
 from spikeward.rules.schema_shapes import WITH_ITS_DEFAULTS, Block, Field, Limits, ListOf, MapOf, Shape, kind_of
 
 MOST_PROBLEMS = 100
+LONGEST_LIST = 500  # what follows compares entries with each other
 _LONGEST = 300  # characters of what was found
 _LONGEST_WORD = 40  # beyond, no suggestion is looked for
 
@@ -55,6 +56,11 @@ class Walker:
             return self._map(node, shape, path)
         return self._block(node, shape, path)
 
+    def _not_too_long(self, node: Node, length: int, path: str) -> None:
+        if length > LONGEST_LIST:
+            self.at_node(node, path, "R002", f"{length} entries", f"at most {LONGEST_LIST}", "shorten the list")
+            raise TooMany
+
     def _scalar(self, node: Node, shape: Scalar, path: str) -> Any:
         if node.kind != SCALAR:
             hint = f"put it in single quotes if it begins with {'{' if node.kind == MAP else '['}"
@@ -73,6 +79,7 @@ class Walker:
 
     def _list(self, node: Node, shape: ListOf, path: str) -> list[Any] | None:
         if node.kind == LIST:
+            self._not_too_long(node, len(node.items), path)
             return [self.walk(item, shape.item, f"{path}[{number}]") for number, item in enumerate(node.items)]
         if shape.single:
             return [self.walk(node, shape.item, path)]
@@ -86,6 +93,7 @@ class Walker:
             hint = f"write {shape.example or shape.keys[0] if shape.keys else shape.example or 'name'}: …"
             self.at_node(node, path, "R011", f"a {node.kind}", kind_of(shape), hint)
             return None
+        self._not_too_long(node, len(node.entries), path)
         values: dict[str, Any] = {}
         for key, value in node.entries:
             name = key.text
@@ -103,11 +111,11 @@ class Walker:
     def _block(self, node: Node, shape: Block, path: str) -> dict[str, Any] | None:
         if node.kind == SCALAR and shape.short:
             field = next(field for field in shape.fields if field.name == shape.short)
-            return {**self.filled(shape), shape.short: self.walk(node, field.shape, path)}
+            return {**defaults(shape), shape.short: self.walk(node, field.shape, path)}
         if node.kind != MAP:
             self.at_node(node, path, "R011", f"a {node.kind}", kind_of(shape), "write key: value, one key a line")
             return None
-        values = self.filled(shape)
+        values = defaults(shape)
         given: set[str] = set()
         for field, key, value in self._entries(node, shape, path):
             where = f"{path}.{field.name}".lstrip(".")
@@ -151,19 +159,14 @@ class Walker:
         self.at_node(key, path, "R012", f"the key '{key.text}' is not known", "", hint)
         return meant
 
-    def filled(self, shape: Block) -> dict[str, Any]:
-        """The values of a block of which nothing is given."""
-        return {field.name: self._default(field) for field in shape.fields}
-
-    def _default(self, field: Field) -> Any:
-        shape, default = field.shape, field.default
-        if isinstance(shape, Block) and default == WITH_ITS_DEFAULTS:
-            return self.filled(shape)
-        if isinstance(shape, ListOf) and isinstance(shape.item, Scalar) and default is not None:
-            return [shape.item.convert(each) for each in default]
-        if isinstance(shape, Scalar) and isinstance(default, str):
-            return shape.convert(default) if default else default
-        return {} if isinstance(shape, MapOf) else None
+    def sound(self, *paths: str) -> bool:
+        """Whether nothing is wrong below some paths, so that what depends on them can be looked at."""
+        return not any(
+            problem.path == path or problem.path.startswith((f"{path}.", f"{path}["))
+            for problem in self.problems
+            if problem.severity == ERROR
+            for path in paths
+        )
 
     def at_node(
         self, node: Node, path: str, code: str, found: str, expected: str = "", hint: str = "", severity: str = ERROR
@@ -175,12 +178,38 @@ class Walker:
         path = path if len(path) <= _LONGEST else f"{path[:_LONGEST]} …"
         self.problems.append(Problem(code, self.file, node.line, node.column, path, found, expected, hint, severity))
 
-    def at(self, path: str, code: str, found: str, expected: str = "", hint: str = "", severity: str = ERROR) -> None:
-        """Report a problem at the value of a path, or at the nearest part of the file around it."""
+    def at(
+        self,
+        path: str,
+        code: str,
+        found: str,
+        expected: str = "",
+        hint: str = "",
+        severity: str = ERROR,
+        key: bool = False,
+    ) -> None:
+        """Report a problem at the value of a path (or at its key), or at the nearest part of the file around it."""
+        places = self.keys if key else self.places
         where = path
-        while where and where not in self.places:
+        while where and where not in places:
             where = where[: max(where.rfind("."), where.rfind("["), 0)]
-        self.at_node(self.places[where], path, code, found, expected, hint, severity)
+        self.at_node(places.get(where) or self.places[""], path, code, found, expected, hint, severity)
+
+
+def defaults(block: Block) -> dict[str, Any]:
+    """The values of a block of which nothing is given."""
+    return {field.name: _default(field) for field in block.fields}
+
+
+def _default(field: Field) -> Any:
+    shape, default = field.shape, field.default
+    if isinstance(shape, Block) and default == WITH_ITS_DEFAULTS:
+        return defaults(shape)
+    if isinstance(shape, ListOf) and isinstance(shape.item, Scalar) and default is not None:
+        return [shape.item.convert(each) for each in default]
+    if isinstance(shape, Scalar) and isinstance(default, str):
+        return shape.convert(default) if default else default
+    return {} if isinstance(shape, MapOf) else None
 
 
 def _homes(block: Block, name: str, path: str = "") -> list[str]:

@@ -61,7 +61,9 @@ def explain(config: str, subject: str) -> int:
     with Readers(0) as readers:
         for folder, root in pipeline.intake.roots.items():
             root.settling = Settling(0.0)  # files are taken as they stand
-            jobs = pipeline.see(folder, survey(disk, places.inputs(root.watch)), 0.0)
+            listing = survey(disk, places.inputs(root.watch))
+            listing.leftovers.clear()  # another daemon may be writing them
+            jobs = pipeline.see(folder, listing, 0.0)
             for reply in readers.read_many(jobs):
                 pipeline.intake.take(reply)
     solved = pipeline.solve(pipeline.solving.every())

@@ -220,6 +220,10 @@ class Intake:
             touched |= holdings.drop(place)
         return touched
 
+    def waiting(self) -> list[Waited[Place]]:
+        """All files that are being waited for, to be carried over a restart."""
+        return [waited for root in self.roots.values() for waited in root.settling.waiting()]
+
     def notices(self) -> list[tuple[str, str, Notice]]:
         """What a person should know of files and folders, as (root, folder, notice)."""
         return [(folder, "", notice) for folder, root in self.roots.items() for notice in self._of(folder, root)]

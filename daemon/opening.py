@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 from spikeward.daemon.disk import Disk, RealDisk
 from spikeward.daemon.journal import Journal, JournalRefused, JournalUnavailable
 from spikeward.daemon.ledger import Ledger, LedgerDamaged, RuleTexts
-from spikeward.daemon.lock import Identity, Locked, acquire, acquire_stations
+from spikeward.daemon.lock import Held, Identity, Locked, acquire, acquire_stations
 from spikeward.daemon.log import Log
 from spikeward.daemon.mounts import network_kind, read_mounts
 from spikeward.daemon.names import shown
@@ -30,7 +30,19 @@ class Opened:
     pipeline: Pipeline
     journal: Journal
     log: Log
+    locks: tuple[Held, ...]
     sentences: list[str] = field(default_factory=list)  # what a person should know of the opening
+    _told: int = 0
+
+    def new_sentences(self) -> list[str]:
+        """What the state folder has to say since the last call: a journal begun anew, a lock that was taken away."""
+        told, self._told = self._told, len(self.journal.sentences)
+        lost = [
+            f"The lock {shown(lock.path)} was taken away: a second daemon could start. Stop this one and start it again."
+            for lock in self.locks
+            if lock.lost()
+        ]
+        return self.journal.sentences[told:] + lost
 
 
 @contextmanager
@@ -51,7 +63,8 @@ def open_station(config: str, json_log: bool = False, disk: Disk | None = None) 
         try:
             disk.mkdirs(state)
             identity = Identity(os.getpid(), socket.gethostname(), " ".join(sys.argv[:2]), wall_clock())
-            stack.callback(acquire(f"{state}/lock", identity, f"the state folder {shown(state)}").release)
+            lock = acquire(f"{state}/lock", identity, f"the state folder {shown(state)}")
+            stack.callback(lock.release)
             folders = {places.inputs(watch) for watch in rules.watches} | {places.outputs(w) for w in rules.watches}
             held, warnings = acquire_stations(folders, identity)
             for each in held:
@@ -74,4 +87,4 @@ def open_station(config: str, json_log: bool = False, disk: Disk | None = None) 
         sentences = [*warnings, *journal.sentences, *ledger.sentences]
         for sentence in sentences:
             log.warning("opened", note=sentence)
-        yield Opened(rule_file, pipeline, journal, log, sentences)
+        yield Opened(rule_file, pipeline, journal, log, (lock, *held), sentences, len(journal.sentences))

@@ -88,7 +88,7 @@ class _Maker:
         if body[1]:
             taken = re2.compile(f"[{body[2]}]")
             return self._pick("".join(each for each in "A0z-_" if not taken.fullmatch(each)))
-        parts = re.findall(r"\\.|.", body[2], re.DOTALL)
+        parts: list[str] = re.findall(r"\\.|.", body[2], re.DOTALL)
         first, last = parts[0], parts[-1]
         chosen = last if self.last else first
         if chosen.startswith("\\"):
@@ -117,7 +117,7 @@ def examples(pattern: str) -> tuple[str, ...]:
     if len(pattern) > _LONGEST:
         return ()
     compiled = re2.compile(pattern)
-    found = {}
+    found: dict[str, None] = {}
     for full in (True, False):
         for last in (False, True):
             maker = _Maker(pattern, full, last)

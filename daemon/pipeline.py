@@ -11,6 +11,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable
+from contextlib import suppress
 from dataclasses import dataclass, field
 
 from spikeward.daemon.board_output import BoardOutput
@@ -75,6 +76,7 @@ class Pipeline:
 
     def see(self, folder: str, listing: Listing, now: float) -> list[ReadJob]:
         """A watched folder was listed: what is gone is dropped, what has settled is to be read."""
+        self._tidy(folder, listing)
         seen = self.intake.see(folder, listing, now)
         for place in seen.gone:
             self.touched |= self.intake.gone(place)
@@ -256,6 +258,13 @@ class Pipeline:
             return True
         readings = (reading for holdings in self._holdings() for reading in holdings.readings([key.batch_key]))
         return any(reading.digest == digest for reading in readings)
+
+    def _tidy(self, folder: str, listing: Listing) -> None:
+        """Take away temporary files of a run that was cut short; nothing is being published while a listing is taken in."""
+        base = self.places.inputs(self.intake.roots[folder].watch)
+        for path in listing.leftovers:
+            with suppress(OSError):
+                self.disk.remove(f"{base}/{path}")
 
     def _adopt_decisions(self, place: Place) -> set[BatchKey]:
         root, path = place

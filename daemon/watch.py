@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import signal
 import threading
 import time
@@ -10,9 +11,9 @@ from concurrent.futures import Future, ThreadPoolExecutor
 from contextlib import contextmanager, suppress
 from dataclasses import dataclass, field
 
-from spikeward.daemon.events import Hints, RootWatch
+from spikeward.daemon.events import NATIVE, POLL, Hints, RootWatch
 from spikeward.daemon.idle import Idle
-from spikeward.daemon.journal import Journal, JournalUnavailable
+from spikeward.daemon.journal import Journal
 from spikeward.daemon.log import Log
 from spikeward.daemon.memory import recall, remember
 from spikeward.daemon.mounts import read_mounts
@@ -22,9 +23,12 @@ from spikeward.daemon.rule_edits import RuleEdits
 from spikeward.daemon.survey import Listing, survey
 from spikeward.daemon.workers import Readers
 
-SCAN_EVERY = 5.0  # s, without events; the longest that a lost event makes a file late
+SCAN_EVERY = {POLL: 1.0, NATIVE: 15.0}  # s between looks at everything: the longest that a lost event makes a file late
+SHARE_OF_TIME = 50  # a look that takes long is repeated the more seldom: at most 1/50 of the time goes to looking
+DISK_PAUSE = 10.0  # s until what the disk refused is tried again
 CHECK_EVENTS_EVERY = 30.0  # s
 BOARDS_WITHIN = 2.0  # s; boards are written when there is time, at the latest so long after a flag
+_FAR = 1e9  # s, not at all
 _TICK = 0.5  # s, the longest sleep: signals, rule edits and replies are looked for so often
 
 
@@ -55,8 +59,12 @@ def stopping(stop: threading.Event) -> Iterator[None]:
 class _Scan:
     """When a watched folder is due for its next look, and the look that is under way."""
 
-    due: float = 0.0
+    full_due: float = 0.0
+    due: float = 0.0  # of the hinted folders, and of files that settle
+    hinted: set[str] = field(default_factory=set)
     under_way: Future[Listing] | None = None
+    began: float = 0.0
+    not_before: float = 0.0
 
 
 @dataclass(slots=True)
@@ -67,12 +75,11 @@ class Watching:
     readers: Readers
     monotonic: Callable[[], float]
     hints: Hints = field(default_factory=Hints)
-    scan_every: float = SCAN_EVERY
     _scans: dict[str, _Scan] = field(default_factory=dict)
     _watches: dict[str, RootWatch] = field(default_factory=dict)
     _threads: dict[str, ThreadPoolExecutor] = field(default_factory=dict)
     _boards_due: float | None = None
-    _events_due: float = 0.0
+    _health_due: float = 0.0
     _disk_wait: float = 0.0
     _idle: Idle = field(init=False)
     _edits: RuleEdits = field(init=False)
@@ -105,33 +112,43 @@ class Watching:
     def run(self, stop: threading.Event) -> None:
         """Go on until ``stop`` is set; then finish what is in hand."""
         recall(self.pipeline, self.journal)
+        self.pipeline.intake.carry(self.journal.load_waiting())
         self._follow_watches()
         self.log.info("watching", folders=", ".join(self.pipeline.intake.roots), workers=self.readers.count)
         try:
             while not stop.is_set():
                 self.step()
-                self.hints.wake.wait(self._pause())
+                if self.readers.busy:
+                    self.readers.wait(min(self._pause(), 0.02))
+                else:
+                    self.hints.wake.wait(self._pause())
         finally:
             self._finish()
 
     def step(self) -> None:
-        """One turn: look, read, solve, publish, close."""
+        """One turn: look, read, solve, publish, close. What the disk refuses is tried again after a pause."""
         now = self.monotonic()
         self._mind(now)
         self._look(now)
-        self._read()
-        if now >= self._disk_wait:
+        if now < self._disk_wait:
+            return
+        try:
+            self._read()
             self._publish(now)
             self._let_time_decide(now)
-        if self._boards_due is not None and now >= self._boards_due and not self.readers.busy:
-            self._boards(now)
+            if self._boards_due is not None and now >= self._boards_due and not self.readers.busy:
+                self.pipeline.publish_boards(self.pipeline.solved)
+                self._boards_due = None
+        except OSError as error:
+            self._disk_wait = now + DISK_PAUSE
+            said = f"{error.strerror or error}; tried again in {DISK_PAUSE:.0f} s"
+            self.log.error("disk", file=str(error.filename), note=said)
 
     def _pause(self) -> float:
         now = self.monotonic()
-        waits = [_TICK, *(scan.due - now for scan in self._scans.values() if scan.under_way is None)]
-        if self.readers.busy or any(scan.under_way for scan in self._scans.values()):
-            waits.append(0.002)
-        return max(0.0, min(waits))
+        waits = [_TICK]
+        waits += [min(scan.due, scan.full_due) - now for scan in self._scans.values() if scan.under_way is None]
+        return max(0.001, min(waits))
 
     # ---- looking -----------------------------------------------------------------------------------------------------
 
@@ -151,37 +168,63 @@ class Watching:
                 self.log.info("folder", note=self._watches[folder].start())
 
     def _mind(self, now: float) -> None:
-        """Rule edits, and the health of the event sources."""
+        """Rule edits, the locks, and the health of the event sources."""
         if self._edits.look(now):
             self._follow_watches()
             self._boards_due = now
             for scan in self._scans.values():
-                scan.due = now
-        if now >= self._events_due:
-            self._events_due = now + CHECK_EVENTS_EVERY
-            for watch in self._watches.values():
-                if said := watch.check():
-                    self.log.warning("events", note=said)
+                scan.full_due = now
+        if now < self._health_due:
+            return
+        self._health_due = now + CHECK_EVENTS_EVERY
+        for watch in self._watches.values():
+            if said := watch.check():
+                self.log.warning("events", note=said)
+        for sentence in self.opened.new_sentences():
+            self.log.warning("state", note=sentence)
+        with suppress(OSError):
+            self.journal.record_waiting(self.pipeline.intake.waiting())
+            self.journal.record_idle(self._idle.seconds())
 
     def _look(self, now: float) -> None:
-        for folder in self.hints.take():
+        for folder, below in self.hints.take().items():
             if folder in self._scans:
+                self._scans[folder].hinted.update(below)
                 self._scans[folder].due = min(self._scans[folder].due, now)
         for folder, scan in self._scans.items():
-            root = self.pipeline.intake.roots[folder]
-            if scan.under_way is None and now >= scan.due:
-                path = self.pipeline.places.inputs(root.watch)
-                scan.under_way = self._threads[folder].submit(survey, self.pipeline.disk, path)
-                scan.under_way.add_done_callback(lambda _: self.hints.wake.set())
-            elif scan.under_way is not None and scan.under_way.done():
-                listing, scan.under_way = scan.under_way.result(), None
-                was_away = root.away
-                self.readers.start(self.pipeline.see(folder, listing, now))
-                if root.away != was_away:
-                    self.log.warning("share", folder=folder, away=root.away or "back")
-                    self._boards_due = now
-                settles = root.settling.due_in()
-                scan.due = now + min(self.scan_every, self.scan_every if settles is None else settles + 0.001)
+            if scan.under_way is None:
+                self._begin_look(folder, scan, now)
+            elif scan.under_way.done():
+                self._end_look(folder, scan, now)
+
+    def _begin_look(self, folder: str, scan: _Scan, now: float) -> None:
+        """Look through everything, or only where something seems to have happened."""
+        if now < scan.not_before or (now < scan.due and now < scan.full_due):
+            return
+        root = self.pipeline.intake.roots[folder]
+        start = "" if now >= scan.full_due or len(scan.hinted) != 1 else next(iter(scan.hinted))
+        scan.hinted.clear()
+        scan.began = now
+        path = self.pipeline.places.inputs(root.watch)
+        scan.under_way = self._threads[folder].submit(survey, self.pipeline.disk, path, start)
+        scan.under_way.add_done_callback(lambda _: self.hints.wake.set())
+
+    def _end_look(self, folder: str, scan: _Scan, now: float) -> None:
+        assert scan.under_way is not None
+        listing, scan.under_way = scan.under_way.result(), None
+        root = self.pipeline.intake.roots[folder]
+        was_away = root.away
+        self.readers.start(self.pipeline.see(folder, listing, now))
+        if root.away != was_away:
+            self.log.warning("share", folder=folder, note=root.away or "back")
+            self._boards_due = now
+        took = now - scan.began
+        scan.not_before = now + took
+        if not listing.start:
+            scan.full_due = now + max(SCAN_EVERY[self._watches[folder].backend], SHARE_OF_TIME * took)
+        settles = root.settling.due_in()
+        scan.due = now + (_FAR if settles is None else settles + 0.001)
+        scan.hinted.update(os.path.dirname(waited.place[1]) for waited in root.settling.waiting())
 
     # ---- reading, solving, publishing --------------------------------------------------------------------------------
 
@@ -200,26 +243,12 @@ class Watching:
         if not touched:
             return
         self._idle.arrived(touched, now)
-        try:
-            solved = self.pipeline.solve(touched)
-            written = self.pipeline.publish(solved)
-        except OSError as error:
-            self._disk_wait = now + 10.0
-            self.log.error("disk", file=str(error.filename), note=f"{error.strerror}; tried again in 10 s")
-            return
+        written = self.pipeline.publish(self.pipeline.solve(touched))
         self.pipeline.touched -= touched
         for key in written:
             outcome = self.pipeline.output.outcome(key)
             self.log.info("published", batch=key.batch, sample=key.sample, role=key.role, verdict=outcome.verdict)
         self._boards_due = now + BOARDS_WITHIN if self._boards_due is None else self._boards_due
-
-    def _boards(self, now: float) -> None:
-        self._boards_due = None
-        try:
-            self.pipeline.publish_boards(self.pipeline.solved)
-        except OSError as error:
-            self._boards_due = now + 10.0
-            self.log.error("disk", file=str(error.filename), note=f"{error.strerror}; tried again in 10 s")
 
     def _let_time_decide(self, now: float) -> None:
         """Series that waited long enough lapse; batches without closing members close."""
@@ -233,11 +262,11 @@ class Watching:
         """Publish what is in hand, and remember what would make the next start slower."""
         with suppress(OSError):
             self._publish(self.monotonic())
-        self._boards(self.monotonic())
+            self.pipeline.publish_boards(self.pipeline.solved)
+            self.journal.record_idle(self._idle.seconds())
+            self.journal.record_waiting(self.pipeline.intake.waiting())
         for watch in self._watches.values():
             watch.stop()
         for thread in self._threads.values():
             thread.shutdown(wait=False, cancel_futures=True)
-        with suppress(JournalUnavailable):
-            self.journal.record_idle(self._idle.seconds())
         self.log.info("stopped")

@@ -47,7 +47,8 @@ WATCH = Block((
 BENCH = Block((
     Field("files", _TEXTS, "Which files are bench files. They are claimed before any reader sees them.", required=True,
           example='"*bench*.csv"'),
-    Field("key", MapOf(kind.text("a heading"), "batch, sample or level", keys=("batch", "sample", "level"), listed=True),
+    Field("key",
+          MapOf(kind.text("a heading"), "batch, sample or level", keys=("batch", "sample", "level"), listed=True),
           "The headings of the columns that say which sample a row is about; sample is needed. A list such as "
           "[batch, sample] stands for headings of the same names.", required=True,
           example="{batch: Batch, sample: Sample}"),
@@ -128,8 +129,8 @@ SERIES = Block((
     Field("same_name", kind.word("refuse", "reading"),
           "A vessel that is met again at another time: refuse it, or take it as a repeated reading.", "refuse",
           example="refuse"),
-    Field("lapses_after", kind.duration(), "A series that is not complete is given up this long after the last arrival.",
-          "90 min", example="90 min"),
+    Field("lapses_after", kind.duration(),
+          "A series that is not complete is given up this long after the last arrival.", "90 min", example="90 min"),
     Field("lapsed", kind.word("warn", "fail"), "The verdict of a series that was given up.", "warn", example="warn"),
     Field("closes_with", ListOf(kind.word(*ROLES), single=True),
           "Pass and warn wait until these are in, a bracket after the last vessel.", (),
@@ -155,14 +156,15 @@ SAMPLE = Block((
           "The volume to which it was made up; the test solution.", example="50 mL"),
     Field("dry_matter", kind.dry_matter(ELSEWHERE), "The share of dry matter; the result is then of dry matter.",
           example="bench"),
-    Field("dilution", kind.dilution(ELSEWHERE), "The dilution between digest and test solution: 1 + 4, or its factor 5.",
+    Field("dilution", kind.dilution(ELSEWHERE),
+          "The dilution between digest and test solution: 1 + 4, or its factor 5.",
           example="1 + 4", hidden=True),
 ))  # fmt: skip
 
 PREPARATION = Block((
     Field("for", MapOf(kind.pattern(), "batch, sample, role or analyte", keys=("batch", "sample", "role", "analyte")),
-          "Which series it applies to, as patterns that match the whole word. Left out: all. The first one that applies "
-          "counts.", example=r"{batch: 'MD\d+'}"),
+          "Which series it applies to, as patterns that match the whole word. Left out: all. The first one that "
+          "applies counts.", example=r"{batch: 'MD\d+'}"),
     Field("design", kind.word("single", "flasks", "successive"),
           "single: one unspiked and one spiked vessel. flasks: every level made up to the same final volume. "
           "successive: standard added again and again to one vessel.", required=True, example="flasks"),
@@ -217,7 +219,8 @@ KNOWN = Block((
 TOP = Block((
     Field("top", kind.number("0.80"), "The largest signal at which the response is still straight.", required=True,
           example="0.80"),
-    Field("unit", kind.text("the unit of the signal"), "Its unit, as the export writes it.", required=True, example="A"),
+    Field("unit", kind.text("the unit of the signal"), "Its unit, as the export writes it.", required=True,
+          example="A"),
 ))  # fmt: skip
 
 RULE_FILE = Block((
@@ -254,8 +257,10 @@ RULE_FILE = Block((
                               "MUD-1"),
           "Known contents of reference materials and check samples. uncertainty and k hold for each analyte, or stand "
           "with one.",
-          example="{MUD-1: {Cd: 2.40 mg/kg, Pb: {content: 31.0 mg/kg, uncertainty: 1.4 mg/kg, k: 2}, "
-                  "uncertainty: 0.16 mg/kg, k: 2}}"),
+          example="""
+MUD-1: {Cd: 2.40 mg/kg, uncertainty: 0.16 mg/kg, k: 2}
+MUD-2: {Cd: {content: 0.71 mg/kg, uncertainty: 5 %, k: 2}, Pb: 31.0 mg/kg}
+"""),
     Field("range", MapOf(TOP, "an analyte or line", "Cd 214.4"), "How far the response is straight."),
     Field("report", Block((
         Field("coverage", kind.share("95 %"), "The coverage of intervals.", "95 %", example="95 %"),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from spikeward.rules.schema_kinds import Scalar
+from spikeward.rules.schema_kinds import Scalar, one_of
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,7 +78,7 @@ def kind_of(shape: Shape) -> str:
         item = kind_of(shape.item)
         return f"{item}, or a list of such" if shape.single else f"a list, each entry {item}"
     if isinstance(shape, MapOf):
-        return f"a map from {shape.called} to {kind_of(shape.item)}"
+        return f"a map from {one_of(shape.keys) if shape.keys else shape.called} to {kind_of(shape.item)}"
     if isinstance(shape, Limits):
         return "a map of limits such as {warn_above: 10 %}, or off"
     keys = ", ".join(field.name for field in shape.fields)

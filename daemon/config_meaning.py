@@ -1,0 +1,288 @@
+"""What the parts of a rule file say of each other: the third layer, after syntax and shape."""
+
+from __future__ import annotations
+
+import codecs
+from collections.abc import Mapping
+from datetime import datetime
+from typing import Any
+from zoneinfo import ZoneInfo, available_timezones
+
+import re2
+
+from spikeward.daemon.config_folders import check_decisions, check_folders
+from spikeward.daemon.config_names import check_names, groups_of
+from spikeward.daemon.config_preparations import check_preparations, result_dimensions
+from spikeward.daemon.config_walk import Walker, near
+from spikeward.daemon.problems import WARNING
+from spikeward.rules.naming import number_of
+from spikeward.rules.records import SERIES_ROLES
+from spikeward.rules.schema_kinds import one_of
+
+Values = Mapping[str, Any]
+
+
+def check_meaning(value: Values, walker: Walker) -> None:
+    """Look at everything whose parts are sound enough to be looked at."""
+    check_folders(value, walker)
+    check_decisions(value["decisions"], walker)
+    _check_watches(value, walker)
+    for name, reader in (value["readers"] or {}).items():
+        if reader is not None and walker.sound(f"readers.{name}"):
+            _check_reader(reader, f"readers.{name}", value, walker)
+    _check_bench(value, walker)
+    check_names(value, walker)
+    _check_standards(value, walker)
+    check_preparations(value, walker)
+    _check_applies(value, walker)
+    _check_levels(value, walker)
+    _check_roles(value, walker)
+    _check_analytes(value, walker)
+    _check_references(value, walker)
+
+
+def _check_watches(value: Values, walker: Walker) -> None:
+    readers = value["readers"] or {}
+    if not walker.sound("watch", "readers"):
+        return
+    if not readers:
+        walker.at("readers", "R010", "there is no reader", "", "add one, with the columns of the export")
+    watches = value["watch"]
+    if not watches:
+        walker.at("watch", "R010", "no folder is watched", "", "add folder: inbox")
+    for number, watch in enumerate(watches):
+        for position, name in enumerate(watch["reader"] or ()):
+            if name not in readers:
+                meant = near(name, readers)
+                hint = f"did you mean {meant}?" if meant else f"possible here: {one_of(tuple(readers))}"
+                walker.at(f"watch[{number}].reader[{position}]", "R030", f"there is no reader '{name}'", "", hint)
+        if watch["reader"] == []:
+            walker.at(f"watch[{number}].reader", "R013", "no reader is named", "", "name one, or delete the key")
+    used = {name for watch in watches for name in watch["reader"] or readers}
+    for name in readers:
+        if name not in used and walker.sound("watch"):
+            walker.at(f"readers.{name}", "R041", f"no watched folder uses the reader '{name}'", "",
+                      "name it under watch, or delete it", WARNING)  # fmt: skip
+
+
+def _check_reader(reader: Values, path: str, value: Values, walker: Walker) -> None:
+    _check_time_zone(reader["time_zone"], f"{path}.time_zone", walker)
+    _check_encoding(reader["encoding"], f"{path}.encoding", walker)
+    for number, pattern in enumerate(reader["date_patterns"]):
+        _check_date_pattern(pattern, f"{path}.date_patterns[{number}]", walker)
+    columns, wide = reader["columns"], reader["wide"]
+    if reader["format"] not in ("delimited", "workbook"):
+        return  # other formats name their own fields
+    if not columns.get("signal") and not wide:
+        walker.at(f"{path}.columns", "R010", "no column of signals is named", "", "add signal: and its heading")
+    if columns.get("signal") and wide:
+        walker.at(
+            f"{path}.wide",
+            "R031",
+            "signals stand in one column and in one for each analyte",
+            "",
+            "delete one of the two",
+        )
+    for spread in ("signal_rsd", "signal_sd"):
+        if spread in columns and "readings" not in columns:
+            told = f"{spread} is the scatter of single readings, whose number is not given"
+            walker.at(f"{path}.columns.{spread}", "R010", told, "", "add readings: and its heading")
+    if not walker.sound("names", "standards"):
+        return
+    sources = {rule["from"] for rule in value["names"] or () if rule}
+    if "solution" not in columns and sources == {"solution"}:
+        told = "no column of solutions is named, and no rule under names reads the name of the file"
+        walker.at(f"{path}.columns", "R010", told, "", "add solution: and its heading")
+    groups = {group for rule in value["names"] or () if rule for group in groups_of(rule["match"])}
+    if "analyte" not in columns and not wide and "analyte" not in groups and len(_analytes(value)) != 1:
+        hint = "add analyte: and its heading, or (?P<analyte>…) to the patterns under names"
+        walker.at(f"{path}.columns", "R010", "nothing says the analyte, and the standards hold several", "", hint)
+
+
+def _check_time_zone(name: str, path: str, walker: Walker) -> None:
+    if not name:
+        return
+    try:
+        ZoneInfo(name)
+    except (ValueError, OSError, LookupError):
+        meant = near(name, available_timezones())
+        hint = f"did you mean {meant}?" if meant else ""
+        walker.at(path, "R017", f"'{name}' is not a time zone", "a name such as Europe/Lisbon, or UTC", hint)
+
+
+def _check_encoding(name: str, path: str, walker: Walker) -> None:
+    try:
+        known = name == "auto" or bool(codecs.lookup(name)) and "\n".encode(name) is not None
+    except (LookupError, ValueError):
+        known = False
+    if not known:
+        walker.at(path, "R017", f"'{name}' is not a character set", "auto, utf-8, utf-16, cp1252 or another name")
+
+
+_SOME_TIME = datetime(2027, 3, 31, 21, 45, 59)
+
+
+def _check_date_pattern(pattern: str, path: str, walker: Walker) -> None:
+    try:
+        datetime.strptime(_SOME_TIME.strftime(pattern), pattern)
+        sound = "%" in pattern
+    except ValueError:
+        sound = False
+    if not sound:
+        walker.at(path, "R017", f"'{pattern}' is not a pattern of a date", "one such as '%d.%m.%Y %H:%M:%S'")
+
+
+def _check_bench(value: Values, walker: Walker) -> None:
+    if value["bench"] is None or not walker.sound("bench"):
+        return
+    if "sample" not in value["bench"]["key"]:
+        walker.at("bench.key", "R010", "the heading of the sample is missing", "", "add sample: and its heading")
+    if not value["bench"]["columns"]:
+        walker.at("bench.columns", "R010", "no column is named", "", "add mass: and its heading")
+    _check_encoding(value["bench"]["encoding"], "bench.encoding", walker)
+
+
+def _check_standards(value: Values, walker: Walker) -> None:
+    if value["standards"] == {}:
+        walker.at("standards", "R010", "there is no standard", "", "add one: Cd-10: {analyte: Cd, content: 10 mg/L}")
+    if value["preparations"] == []:
+        walker.at("preparations", "R010", "there is no preparation", "", "add one, with design and additions")
+    if value["names"] == []:
+        walker.at("names", "R010", "there is no naming rule", "", "add one, with role and match")
+    for name, standard in (value["standards"] or {}).items():
+        path = f"standards.{name}"
+        if standard is None or not walker.sound(path):
+            continue
+        mix, analyte, content = standard["contents"], standard["analyte"], standard["content"]
+        if mix and (analyte or content):
+            walker.at(path, "R031", "the standard has contents and a content", "", "delete one of the two")
+        elif not mix and not (analyte and content):
+            hint = "add analyte and content, or contents: {Cd: 10 mg/L} for a mix"
+            walker.at(path, "R010", "the content of the standard is missing", "", hint)
+
+
+def _check_applies(value: Values, walker: Walker) -> None:
+    """Preparations that an earlier one leaves nothing for, and roles that none applies to."""
+    if not walker.sound("preparations", "names"):
+        return
+    preparations = value["preparations"] or []
+    for number, each in enumerate(preparations):
+        for before in range(number):
+            if preparations[before]["for"].items() <= each["for"].items():
+                line = walker.places[f"preparations[{before}]"].line
+                told = f"the preparation in line {line} applies first to all that this one is for"
+                walker.at(f"preparations[{number}]", "R040", told, "", "put the special one first", WARNING)
+                break
+    roles = {rule["role"]: f"names[{number}].role" for number, rule in enumerate(value["names"] or ())}
+    for role, path in roles.items():
+        if role in SERIES_ROLES and not any(
+            re2.fullmatch(each["for"].get("role", ".*"), role) for each in preparations
+        ):
+            walker.at(
+                path,
+                "R030",
+                f"no preparation applies to role {role}",
+                "",
+                "widen the role in a 'for' under preparations",
+            )
+
+
+def _check_levels(value: Values, walker: Walker) -> None:
+    """Levels that a series waits for, and that no preparation makes."""
+    if not walker.sound("series", "preparations"):
+        return
+    expected = [number_of(level) for level in value["series"]["expects"]["levels"]]
+    path = "series.expects.levels"
+    for level in dict.fromkeys(expected):
+        if expected.count(level) > 1:
+            walker.at(path, "R031", f"level {level} stands there twice", "", "delete one of the two")
+    made = [{number_of(level) for level in each["additions"]["levels"]} for each in value["preparations"] or ()]
+    for level in expected:
+        if made and all(made) and not any(level in levels | {"0"} for levels in made):
+            told = f"level {level} is expected, and no preparation says its addition"
+            walker.at(path, "R031", told, "", "add it under additions: levels, or delete it here")
+
+
+def _check_roles(value: Values, walker: Walker) -> None:
+    """Roles that something waits for or subtracts, and that no naming rule gives."""
+    if not walker.sound("names"):
+        return
+    named = {rule["role"] for rule in value["names"] or () if rule}
+    asked: list[tuple[str, tuple[str, ...]]] = [
+        (f"series.closes_with[{number}]", (role,))
+        for number, role in enumerate((value["series"] or {}).get("closes_with") or ())
+        if role
+    ]
+    blanks = value["blanks"] or {}
+    asked += [("blanks.background", ("background",))] if blanks.get("background") else []
+    asked += [("blanks.process", ("process_blank",))] if blanks.get("process") else []
+    asked += [("brackets", ("bracket",))] if value["brackets"] else []
+    asked += [("references", ("reference", "check"))] if value["references"] else []
+    for path, roles in asked:
+        if not named & set(roles):
+            hint = f"add a rule with role: {roles[0]} under names, or delete it here"
+            walker.at(path, "R030", f"no naming rule has the role {one_of(roles)}", "", hint)
+
+
+def _analytes(value: Values) -> set[str]:
+    found: set[str] = set()
+    for standard in (value["standards"] or {}).values():
+        if standard is not None:
+            found |= set(standard["contents"] or {})
+            found |= {standard["analyte"]} if standard["analyte"] else set()
+    return found
+
+
+def _check_analytes(value: Values, walker: Walker) -> None:
+    """Analytes of brackets and references that no standard holds."""
+    if not walker.sound("standards"):
+        return
+    analytes = _analytes(value)
+    places = [(f"brackets.contents.{each}", each) for each in (value["brackets"] or {}).get("contents") or {}]
+    places += [
+        (f"references.{sample}.{each}", each)
+        for sample, known in (value["references"] or {}).items()
+        for each in known or {}
+        if each not in ("uncertainty", "k")
+    ]
+    for path, analyte in places:
+        if analyte not in analytes:
+            known = (*analytes, "uncertainty", "k") if path.startswith("references") else analytes
+            meant = near(analyte, known)
+            hint = f"did you mean {meant}?" if meant else f"possible here: {one_of(tuple(sorted(analytes)))}"
+            walker.at(path, "R030", f"no standard holds '{analyte}'", "", hint, key=True)
+
+
+def _check_references(value: Values, walker: Walker) -> None:
+    if not walker.sound("references"):
+        return
+    reached: set[str] = set()
+    if walker.sound("preparations", "standards"):
+        reached = {each for one in value["preparations"] or () for each in result_dimensions(one, value)}
+    for sample, known in (value["references"] or {}).items():
+        path = f"references.{sample}"
+        _check_coverage(known, path, walker)
+        analytes = {name: each for name, each in known.items() if name not in ("uncertainty", "k")}
+        if not analytes:
+            walker.at(path, "R010", "no content is known", "", "add an analyte and its content, such as Cd: 2.40 mg/kg")
+        for analyte, each in analytes.items():
+            where, content = f"{path}.{analyte}", each["content"]
+            _check_coverage(each, where, walker)
+            stated = each if each["uncertainty"] is not None else known
+            if stated["uncertainty"] is not None and stated["uncertainty"].dimension not in (
+                content.dimension,
+                "fraction",
+            ):
+                told = f"the uncertainty is a {stated['uncertainty'].dimension}, the content a {content.dimension}"
+                walker.at(where, "R015", told, "", "give both in one unit")
+            if reached and content.dimension not in reached:
+                told = f"{content} is a {content.dimension}; results are {one_of(tuple(sorted(reached)))}"
+                walker.at(where, "R015", told, "", "give the content in the unit of the report")
+
+
+def _check_coverage(stated: Values, path: str, walker: Walker) -> None:
+    if stated["uncertainty"] is not None and stated["k"] is None:
+        hint = "add k: 2, or what the certificate says; 1 for a standard uncertainty"
+        walker.at(f"{path}.uncertainty", "R010", "the coverage factor k is missing", "", hint)
+    elif stated["uncertainty"] is None and stated["k"] is not None:
+        walker.at(f"{path}.k", "R010", "k has no uncertainty", "", "add uncertainty, or delete k")

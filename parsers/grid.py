@@ -1,0 +1,163 @@
+"""Text becomes rows of cells: the table is found by its headings, wherever it begins and whatever separates its cells."""
+
+from __future__ import annotations
+
+import csv
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import dataclass
+from typing import NamedTuple
+
+from spikeward.parsers.headings import Heading, folded, heading, lacking
+from spikeward.parsers.text import lines_of
+from spikeward.rules.records import Unreadable
+
+DELIMITERS = (";", "\t", "|", ",")  # the comma last, since it may be a decimal sign too
+_PREAMBLE = 2000  # lines in which the headings are looked for
+_MOST_ROWS = 200_000
+_RUN = 200  # rows under the headings that tell delimiters apart
+
+
+class Row(NamedTuple):
+    """One row: the line of the file where it begins, counted from 1, and its cells without blanks around them."""
+
+    number: int
+    cells: tuple[str, ...]
+
+    @property
+    def blank(self) -> bool:
+        """Whether nothing stands in any cell."""
+        return not any(self.cells)
+
+
+@dataclass(frozen=True, slots=True)
+class Style:
+    """How cells are written: the delimiter (or ``auto``), the quote, and what begins a comment line."""
+
+    delimiter: str = "auto"
+    quote: str = '"'
+    comment_prefix: str = ""
+
+
+class Grid(NamedTuple):
+    """The rows from the headings on, and the headings as they were understood."""
+
+    headings: tuple[Heading, ...]
+    rows: tuple[Row, ...]  # the row of headings is the first
+
+
+Lines = Sequence[tuple[int, str]]  # line of the file, text
+
+
+def grid_of(text: str, style: Style, wanted: Sequence[str]) -> Grid:
+    """Find the table whose headings hold all that is wanted.
+
+    Raises
+    ------
+    Unreadable : no row holds the headings, a quote is not closed, or the file is longer than a table may be
+    """
+    lines = [
+        (number, line)
+        for number, line in enumerate(lines_of(text), start=1)
+        if not (style.comment_prefix and line.lstrip().startswith(style.comment_prefix))
+    ]
+    if not any(line.strip() for _, line in lines):
+        raise Unreadable("the file holds no text; export it again")
+    found = [
+        (start, delimiter)
+        for delimiter in ((style.delimiter,) if style.delimiter != "auto" else DELIMITERS)
+        if (start := _start(lines, delimiter, style.quote, wanted)) is not None
+    ]
+    if not found:
+        raise _no_headings(lines, style, wanted)
+    start, delimiter = max(found, key=lambda each: _run(lines[each[0] :], each[1], style.quote))
+    rows = tuple(_rows(lines[start:], delimiter, style.quote))
+    return Grid(tuple(heading(cell) for cell in rows[0].cells), rows)
+
+
+def _start(lines: Lines, delimiter: str, quote: str, wanted: Sequence[str]) -> int | None:
+    """The position of the row of headings; one whose cells hold line breaks may begin on an earlier line."""
+    for position, (_, line) in enumerate(lines[:_PREAMBLE]):
+        if not lacking([heading(cell) for cell in _cells(line, delimiter, quote)], wanted):
+            return position
+    if not any(line.count(quote) % 2 for _, line in lines[:_PREAMBLE]):
+        return None
+    for position, (_, line) in enumerate(lines[:_PREAMBLE]):
+        if line.count(quote) % 2:
+            first = next(iter(_tolerant(lines[position : position + 20], delimiter, quote)), [])
+            if not lacking([heading(cell) for cell in first], wanted):
+                return position
+    return None
+
+
+def _run(lines: Lines, delimiter: str, quote: str) -> tuple[int, int]:
+    """How many rows from the headings on have as many cells as these, and how many cells."""
+    width, run = -1, 0
+    for _, line in lines[:_RUN]:
+        if not line.strip():
+            continue
+        count = len(_cells(line, delimiter, quote))
+        width = count if width < 0 else width
+        if count != width:
+            break
+        run += 1
+    return run, width
+
+
+def _cells(line: str, delimiter: str, quote: str) -> list[str]:
+    return next(iter(_tolerant([(0, line)], delimiter, quote)), [])
+
+
+def _tolerant(lines: Lines, delimiter: str, quote: str) -> Iterator[list[str]]:
+    texts = (text + "\n" for _, text in lines)
+    try:
+        yield from csv.reader(texts, delimiter=delimiter, quotechar=quote, skipinitialspace=True)
+    except csv.Error:
+        return
+
+
+def _rows(lines: Lines, delimiter: str, quote: str) -> Iterator[Row]:
+    texts = (text + "\n" for _, text in lines)
+    reader = csv.reader(texts, delimiter=delimiter, quotechar=quote, skipinitialspace=True, strict=True)
+    begun = 0
+    count = 0
+    try:
+        for cells in reader:
+            yield Row(lines[begun][0], tuple(cell.strip() for cell in cells))
+            begun = reader.line_num
+            count += 1
+            if count > _MOST_ROWS:
+                raise Unreadable(f"the table is longer than {_MOST_ROWS} rows; export in parts", lines[begun - 1][0])
+    except csv.Error as error:
+        raise _csv_error(error, lines[min(begun, len(lines) - 1)][0], quote) from None
+
+
+def _csv_error(error: csv.Error, row: int, quote: str) -> Unreadable:
+    told = str(error)
+    if "unexpected end" in told:
+        return Unreadable(f"a quote ({quote}) is opened in this row and never closed; the file may be torn", row)
+    if "field larger" in told:
+        return Unreadable(f"a cell is longer than 131072 characters; a quote ({quote}) may be missing", row)
+    return Unreadable(f"a quote ({quote}) stands in the middle of a cell; it must be doubled inside quotes", row)
+
+
+def _no_headings(lines: Lines, style: Style, wanted: Sequence[str]) -> Unreadable:
+    best: tuple[int, int, list[str]] | None = None
+    for delimiter in (style.delimiter,) if style.delimiter != "auto" else DELIMITERS:
+        for number, line in lines[:_PREAMBLE]:
+            missing = lacking([heading(cell) for cell in _cells(line, delimiter, style.quote)], wanted)
+            if len(missing) < len(wanted) and (best is None or len(missing) < best[1]):
+                best = (number, len(missing), missing)
+    told = ", ".join(f"'{each}'" for each in wanted)
+    if best is None:
+        return Unreadable(f"no row holds the headings {told}; correct columns, header_contains or the delimiter")
+    lost = ", ".join(f"'{each}'" for each in best[2])
+    return Unreadable(
+        f"no row holds all the headings {told}; this one comes nearest and lacks {lost}: export this column, or "
+        "correct columns in the rule file",
+        best[0],
+    )
+
+
+def same_headings(row: Row, headings: Iterable[Heading]) -> bool:
+    """Whether a row repeats the headings."""
+    return [folded(cell) for cell in row.cells] == [each.ways[0][0] for each in headings]
