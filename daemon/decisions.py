@@ -18,7 +18,7 @@ from typing import Any
 
 from spikeward.daemon.disk import Disk
 from spikeward.daemon.holdings import Holdings, Place
-from spikeward.daemon.ledger import Ledger
+from spikeward.daemon.ledger import EventLog
 from spikeward.daemon.names import shown
 from spikeward.daemon.pages.facts import Notice
 from spikeward.daemon.station import Clock
@@ -36,7 +36,7 @@ class DecisionBook:
     """The decisions in force, by the folder that their file lies in."""
 
     disk: Disk
-    ledger: Ledger
+    ledger: EventLog
     clock: Clock
     adopted: dict[Place, tuple[Decision, ...]] = field(default_factory=dict)
     refused: dict[Place, str] = field(default_factory=dict)

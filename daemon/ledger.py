@@ -6,11 +6,21 @@ import json
 import os
 import re
 from collections.abc import Mapping
-from typing import Any
+from typing import Any, Protocol
 
 from spikeward.daemon.disk import Disk
 
 _DIGEST = re.compile(r"[0-9a-f]{8,64}")
+
+
+class EventLog(Protocol):
+    """What the way of a file needs of a ledger."""
+
+    def append(self, *events: Mapping[str, Any]) -> None:
+        """Record events, all or none of them."""
+
+    def read(self) -> list[dict[str, Any]]:
+        """All events, oldest first."""
 
 
 class LedgerDamaged(Exception):

@@ -11,7 +11,7 @@ from typing import Any
 
 from spikeward.daemon.changes import quoted, what_changed
 from spikeward.daemon.disk import Disk
-from spikeward.daemon.ledger import Ledger
+from spikeward.daemon.ledger import EventLog
 from spikeward.daemon.names import RESULT, SUMMARY, series_stem, shown, stems
 from spikeward.daemon.pages.facts import Notice, Revision
 from spikeward.daemon.pages.flag import render_flag
@@ -46,7 +46,7 @@ class Output:
     """
 
     disk: Disk
-    ledger: Ledger
+    ledger: EventLog
     folder_of: Callable[[str, str], str]
     station: str
     clock: Callable[[], str]

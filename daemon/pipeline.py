@@ -20,7 +20,7 @@ from spikeward.daemon.decisions import DecisionBook
 from spikeward.daemon.disk import Disk
 from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.intake import Intake
-from spikeward.daemon.ledger import Ledger, RuleTexts
+from spikeward.daemon.ledger import EventLog, RuleTexts
 from spikeward.daemon.names import unread_name
 from spikeward.daemon.output import Output
 from spikeward.daemon.pages.facts import Notice
@@ -43,7 +43,7 @@ class Pipeline:
     places: Places
     rules: Rulebook
     disk: Disk
-    ledger: Ledger
+    ledger: EventLog
     texts: RuleTexts
     records: Records
     clock: Clock

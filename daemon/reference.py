@@ -166,22 +166,6 @@ def _codes_part() -> str:
     return head + rows
 
 
-def describe_defaults() -> str:
-    """Every key that has a default, one a line: ``series.lapses_after: 90 min``."""
-    return "\n".join(_defaults(RULE_FILE, "")) + "\n"
-
-
-def _defaults(shape: Shape, path: str) -> Iterator[str]:
-    if isinstance(shape, (ListOf, MapOf)):
-        yield from _defaults(shape.item, f"{path}[]" if isinstance(shape, ListOf) else f"{path}.NAME")
-    elif isinstance(shape, Block):
-        for field in shape.fields:
-            where = f"{path}.{field.name}".lstrip(".")
-            if text := _default_text(field):
-                yield f"{where}: {text}"
-            yield from _defaults(field.shape, where)
-
-
 def main() -> int:
     """Write both files into the source tree that this module belongs to."""
     root = Path(__file__).resolve().parents[1]

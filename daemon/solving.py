@@ -8,7 +8,7 @@ from dataclasses import dataclass, field, replace
 
 from spikeward.daemon.closings import Closings
 from spikeward.daemon.holdings import Holdings
-from spikeward.rules.evaluate import evaluate
+from spikeward.rules.evaluate import Earlier, evaluate
 from spikeward.rules.in_force import State, in_force
 from spikeward.rules.outcomes import BatchOutcome
 from spikeward.rules.records import Batch, BatchKey, Decision
@@ -35,6 +35,7 @@ class Solving:
     closings: Closings
     decisions: Callable[[str, str], tuple[Decision, ...]]
     earlier: dict[str, Holdings] = field(default_factory=dict)
+    _last: dict[str, dict[BatchKey, Earlier]] = field(default_factory=dict)
 
     def every(self) -> set[BatchKey]:
         """All batches that any rules in use know of."""
@@ -57,8 +58,10 @@ class Solving:
         solved = []
         for group in by_rules.values():
             rules = group[0][0]
-            outcomes = {outcome.key: outcome for outcome in evaluate([batch for _, batch in group], rules)}
+            last = self._last.setdefault(rules.digest, {})
+            outcomes = {outcome.key: outcome for outcome in evaluate([batch for _, batch in group], rules, last)}
             solved += [Solved(batch, rules, outcomes[batch.key]) for _, batch in group]
+            last.update((batch.key, Earlier(batch, outcomes[batch.key])) for _, batch in group)
         return sorted(solved, key=lambda one: one.batch.key)
 
     def _assemble(self, keys: list[BatchKey]) -> Iterable[tuple[Holdings, Batch]]:

@@ -11,12 +11,12 @@ from spikeward.daemon.names import shown
 from spikeward.daemon.station import Places, RuleFile, read_rule_file
 from spikeward.daemon.survey import survey
 from spikeward.daemon.workers import ReadJob, read_one
-from spikeward.rules.naming import Namer, Understood
+from spikeward.rules.naming import GROUPS, Namer, Understood
 from spikeward.rules.records import Layout
 from spikeward.rules.rulebook import Rulebook, Watch
 
-_FILES = 40  # read to show names; more would tell nothing new
-_NAMES = 60
+_FILES = 60  # read to show names; more would tell nothing new
+_EXAMPLES = 3  # names shown for each rule
 
 
 def vet(config: str, short: bool) -> int:
@@ -44,24 +44,24 @@ def vet(config: str, short: bool) -> int:
 def _names(rule_file: RuleFile, rules: Rulebook) -> Iterator[str]:
     """How the files that lie in the watched folders now would be read."""
     places = Places(rule_file.path.absolute().parent)
-    claims, namer = Claims(rules), Namer(rules.names)
+    claims = Claims(rules)
     for watch in rules.watches:
         listing = survey(RealDisk(), places.inputs(watch))
         if listing.away:
             yield f"{watch.folder}: {listing.away}; no real names can be shown"
             continue
-        yield f"{watch.folder}: {len(listing.files)} files"
+        paths = sorted(listing.files)
+        some = paths[:: max(1, len(paths) // _FILES)]
+        looked = f", {len(some)} of them looked at" if len(some) < len(paths) else ""
+        yield f"{watch.folder}: {len(paths)} files{looked}"
         names: dict[tuple[str, str], None] = {}
-        for path in sorted(listing.files)[:_FILES]:
+        for path in some:
             claim = claims.of(path, watch)
             if claim is None:
                 yield f"  {shown(path)}: no pattern under files of a reader takes it"
             elif claim.layout is not None:
                 yield from _solutions(f"{places.inputs(watch)}/{path}", path, claim.layout, watch, names)
-        for solution, path in list(names)[:_NAMES]:
-            yield f"  {_told(namer, solution, path)}"
-        if len(listing.files) > _FILES or len(names) > _NAMES:
-            yield "  and more of the same folder, not shown"
+        yield from _by_rule(Namer(rules.names), list(names))
 
 
 def _solutions(
@@ -72,19 +72,28 @@ def _solutions(
     if reply.sentence:
         yield f"  {shown(path)}: {reply.sentence}"
     for entry in reply.table.entries if reply.table else ():
-        names.setdefault((entry.solution, path if not entry.solution else ""), None)
+        names.setdefault((entry.solution, path), None)
 
 
-def _told(namer: Namer, solution: str, path: str) -> str:
-    understood = namer.understand(solution, path)
-    name = f"'{shown(solution or path)}'"
-    if understood is None:
-        return f"{name}: no naming rule takes it"
-    takers = namer.takers(solution, path)
-    also = f"; also taken by the rule in line {takers[1].line}, the first one counts" if len(takers) > 1 else ""
-    return f"{name}: {_meaning(understood)}{also}"
+def _by_rule(namer: Namer, names: list[tuple[str, str]]) -> Iterator[str]:
+    """For each naming rule some names that it took, and how; then every name that none takes."""
+    taken: dict[int, dict[str, str]] = {}
+    for solution, path in names:
+        understood = namer.understand(solution, path)
+        name = shown(solution or path)
+        if understood is None:
+            yield f"  '{name}': no naming rule takes it"
+            continue
+        takers = namer.takers(solution, path)
+        also = f" (the rule in line {takers[1].line} would take it too; the first counts)" if len(takers) > 1 else ""
+        taken.setdefault(understood.position, {}).setdefault(name, f"{_meaning(understood)}{also}")
+    for _, found in sorted(taken.items()):
+        for name, meaning in list(found.items())[:_EXAMPLES]:
+            yield f"  '{name}': {meaning}"
+        if len(found) > _EXAMPLES:
+            yield f"    … and {len(found) - _EXAMPLES} more by the same rule"
 
 
 def _meaning(understood: Understood) -> str:
-    groups = ", ".join(f"{group} {value}" for group, value in understood.groups.items())
-    return f"{understood.rule.role}, {groups}" if groups else understood.rule.role
+    groups = ", ".join(f"{group} {understood.groups[group]}" for group in GROUPS if group in understood.groups)
+    return f"{understood.rule.role}: {groups}" if groups else understood.rule.role

@@ -1,9 +1,9 @@
-"""Text becomes rows of cells: the table is found by its headings, wherever it begins and whatever separates its cells."""
+"""Text becomes rows of cells: the table is found by its headings, wherever it begins and whatever parts its cells."""
 
 from __future__ import annotations
 
 import csv
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -14,6 +14,8 @@ from spikeward.rules.records import Unreadable
 DELIMITERS = (";", "\t", "|", ",")  # the comma last, since it may be a decimal sign too
 _PREAMBLE = 2000  # lines in which the headings are looked for
 _MOST_ROWS = 200_000
+_NEAR = 200  # lines among which the nearest to a row of headings is looked for
+_TALLEST = 20  # lines of one row of headings
 _RUN = 200  # rows under the headings that tell delimiters apart
 
 
@@ -62,10 +64,11 @@ def grid_of(text: str, style: Style, wanted: Sequence[str]) -> Grid:
     ]
     if not any(line.strip() for _, line in lines):
         raise Unreadable("the file holds no text; export it again")
+    likely = _likely(lines, wanted)
     found = [
         (start, delimiter)
-        for delimiter in ((style.delimiter,) if style.delimiter != "auto" else DELIMITERS)
-        if (start := _start(lines, delimiter, style.quote, wanted)) is not None
+        for delimiter in _delimiters(style)
+        if (start := _start(lines, likely, delimiter, style.quote, wanted)) is not None
     ]
     if not found:
         raise _no_headings(lines, style, wanted)
@@ -74,19 +77,31 @@ def grid_of(text: str, style: Style, wanted: Sequence[str]) -> Grid:
     return Grid(tuple(heading(cell) for cell in rows[0].cells), rows)
 
 
-def _start(lines: Lines, delimiter: str, quote: str, wanted: Sequence[str]) -> int | None:
+def _start(lines: Lines, likely: Sequence[int], delimiter: str, quote: str, wanted: Sequence[str]) -> int | None:
     """The position of the row of headings; one whose cells hold line breaks may begin on an earlier line."""
-    for position, (_, line) in enumerate(lines[:_PREAMBLE]):
-        if not lacking([heading(cell) for cell in _cells(line, delimiter, quote)], wanted):
+    for position in likely:
+        if not lacking(_headings(lines[position : position + 1], delimiter, quote), wanted):
             return position
-    if not any(line.count(quote) % 2 for _, line in lines[:_PREAMBLE]):
-        return None
-    for position, (_, line) in enumerate(lines[:_PREAMBLE]):
-        if line.count(quote) % 2:
-            first = next(iter(_tolerant(lines[position : position + 20], delimiter, quote)), [])
-            if not lacking([heading(cell) for cell in first], wanted):
-                return position
+    for position, (_, line) in enumerate(lines[:_PREAMBLE] if not likely else ()):
+        broken = line.count(quote) % 2 and _headings(lines[position : position + _TALLEST], delimiter, quote)
+        if broken and not lacking(broken, wanted):
+            return position
     return None
+
+
+def _likely(lines: Lines, wanted: Sequence[str]) -> list[int]:
+    """The positions of lines in which every wanted heading occurs, whatever separates the cells."""
+    names = [folded(each) for each in wanted]
+    found = []
+    for position, (_, line) in enumerate(lines[:_PREAMBLE]):
+        text = folded(line)
+        if all(name in text for name in names):
+            found.append(position)
+    return found
+
+
+def _headings(lines: Lines, delimiter: str, quote: str) -> list[Heading]:
+    return [heading(cell) for cell in _cells(lines, delimiter, quote)]
 
 
 def _run(lines: Lines, delimiter: str, quote: str) -> tuple[int, int]:
@@ -95,7 +110,7 @@ def _run(lines: Lines, delimiter: str, quote: str) -> tuple[int, int]:
     for _, line in lines[:_RUN]:
         if not line.strip():
             continue
-        count = len(_cells(line, delimiter, quote))
+        count = len(_cells([(0, line)], delimiter, quote))
         width = count if width < 0 else width
         if count != width:
             break
@@ -103,16 +118,17 @@ def _run(lines: Lines, delimiter: str, quote: str) -> tuple[int, int]:
     return run, width
 
 
-def _cells(line: str, delimiter: str, quote: str) -> list[str]:
-    return next(iter(_tolerant([(0, line)], delimiter, quote)), [])
+def _delimiters(style: Style) -> Sequence[str]:
+    return DELIMITERS if style.delimiter == "auto" else (style.delimiter,)
 
 
-def _tolerant(lines: Lines, delimiter: str, quote: str) -> Iterator[list[str]]:
+def _cells(lines: Lines, delimiter: str, quote: str) -> list[str]:
+    """The cells of the first row, quotes taken as they come: what stands above a table is anybody's text."""
     texts = (text + "\n" for _, text in lines)
     try:
-        yield from csv.reader(texts, delimiter=delimiter, quotechar=quote, skipinitialspace=True)
+        return next(csv.reader(texts, delimiter=delimiter, quotechar=quote, skipinitialspace=True), [])
     except csv.Error:
-        return
+        return []
 
 
 def _rows(lines: Lines, delimiter: str, quote: str) -> Iterator[Row]:
@@ -142,9 +158,9 @@ def _csv_error(error: csv.Error, row: int, quote: str) -> Unreadable:
 
 def _no_headings(lines: Lines, style: Style, wanted: Sequence[str]) -> Unreadable:
     best: tuple[int, int, list[str]] | None = None
-    for delimiter in (style.delimiter,) if style.delimiter != "auto" else DELIMITERS:
-        for number, line in lines[:_PREAMBLE]:
-            missing = lacking([heading(cell) for cell in _cells(line, delimiter, style.quote)], wanted)
+    for delimiter in _delimiters(style):
+        for number, line in lines[:_NEAR]:
+            missing = lacking(_headings([(number, line)], delimiter, style.quote), wanted)
             if len(missing) < len(wanted) and (best is None or len(missing) < best[1]):
                 best = (number, len(missing), missing)
     told = ", ".join(f"'{each}'" for each in wanted)
@@ -156,8 +172,3 @@ def _no_headings(lines: Lines, style: Style, wanted: Sequence[str]) -> Unreadabl
         "correct columns in the rule file",
         best[0],
     )
-
-
-def same_headings(row: Row, headings: Iterable[Heading]) -> bool:
-    """Whether a row repeats the headings."""
-    return [folded(cell) for cell in row.cells] == [each.ways[0][0] for each in headings]

@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 import unicodedata
 from collections.abc import Iterable, Sequence
+from functools import lru_cache
 from typing import NamedTuple
 
 from spikeward.rules.records import Unreadable
@@ -14,6 +15,7 @@ _WITH_UNIT = (
     re.compile(r"(?P<name>.*\S)\s*\((?P<unit>[^()]*)\)"),
     re.compile(r"(?P<name>.*?\S)(?:\s+/\s*|\s*/\s+)(?P<unit>\S.*)"),
 )
+_LONGEST = 200  # characters of a heading with a unit
 _BRACKETED = re.compile(r"\[([^\[\]]*)\]|\(([^()]*)\)")
 
 
@@ -40,11 +42,12 @@ class Heading(NamedTuple):
     ways: tuple[tuple[str, str], ...]
 
 
+@lru_cache(maxsize=4096)
 def heading(text: str) -> Heading:
     """Understand a heading cell; the way that takes all of it as the name stands first."""
     shown = tidy(text)
     ways = [(shown.casefold(), "")]
-    for pattern in _WITH_UNIT:
+    for pattern in _WITH_UNIT if len(shown) <= _LONGEST else ():
         found = pattern.fullmatch(shown)
         if found:
             ways.append((found["name"].casefold(), found["unit"].strip()))

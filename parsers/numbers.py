@@ -1,117 +1,158 @@
-"""Numbers as instruments write them. A number that could be read in two ways refuses the file; nothing is guessed."""
+"""Numbers by the declared decimal sign, or by the one that all numeric cells of a file agree on; never by a guess."""
 
 from __future__ import annotations
 
 import math
 import re
 from collections.abc import Iterable
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from spikeward.rules.records import Unreadable
 
-_MINUS = str.maketrans({"\u2212": "-", "\u2013": "-"})
-_BLANKS = "[ \u00a0\u202f\u2009']"
-_EXPONENT = r"(?:[eE][+-]?\d{1,4})?"
-_PLAIN = re.compile(rf"[+-]?\d+{_EXPONENT}", re.ASCII)
-_POINT = re.compile(
-    rf"[+-]?(?:\d+|\d{{1,3}}(?:,\d{{3}})+|\d{{1,3}}(?:{_BLANKS}\d{{3}})+)?(?:\.\d*)?{_EXPONENT}", re.ASCII
-)
-_COMMA = re.compile(
-    rf"[+-]?(?:\d+|\d{{1,3}}(?:\.\d{{3}})+|\d{{1,3}}(?:{_BLANKS}\d{{3}})+)?(?:,\d*)?{_EXPONENT}", re.ASCII
-)
-_GROUPED_COMMA = re.compile(r"[+-]?[1-9]\d{0,2}(?:,\d{3})+", re.ASCII)  # 1,234: thousands, or a decimal comma
-_GROUPED_POINT = re.compile(r"[+-]?[1-9]\d{0,2}(?:\.\d{3})+", re.ASCII)
-_STRICT = {"point": re.compile(rf"[+-]?(?:\d+(?:\.\d*)?|\.\d+){_EXPONENT}", re.ASCII),
-           "comma": re.compile(rf"[+-]?(?:\d+(?:,\d*)?|,\d+){_EXPONENT}", re.ASCII)}  # fmt: skip
+POINT, COMMA = ".", ","
+_OTHER = {POINT: COMMA, COMMA: POINT}
+_DECLARED = {"point": POINT, "comma": COMMA}
+_NAMES = {POINT: "point", COMMA: "comma"}
+
+_LONGEST = 60  # characters of a number
+_SPACES = " \N{NO-BREAK SPACE}\N{NARROW NO-BREAK SPACE}\N{THIN SPACE}'\N{RIGHT SINGLE QUOTATION MARK}"
+_DROP_SPACES = dict.fromkeys(map(ord, _SPACES))
 
 
-@dataclass(frozen=True, slots=True)
-class Cell:
-    """The text of a numeric cell and its place, for the sentence that refuses it."""
+def _pattern(sign: str, marks: str) -> re.Pattern[str]:
+    """Numbers with ``sign`` as decimal sign; marks of thousands are of one kind, and stand before groups of three."""
+    decimal = re.escape(sign)
+    grouped = rf"[1-9]\d{{0,2}}(?P<mark>[{re.escape(marks)}])\d{{3}}(?:(?P=mark)\d{{3}})*(?:{decimal}\d*)?"
+    plain = rf"(?:\d+(?:{decimal}\d*)?|{decimal}\d+)(?:[eE][+-]?\d{{1,4}})?"
+    return re.compile(rf"[+-]?(?:{plain}|{grouped})", re.ASCII)
+
+
+_STRICT = {sign: _pattern(sign, _SPACES) for sign in _OTHER}
+_OPEN = {sign: _pattern(sign, _SPACES + other) for sign, other in _OTHER.items()}
+
+
+class Cell(NamedTuple):
+    """A cell with its place: row of the file, and heading of the column."""
 
     text: str
     row: int
     column: str
 
 
-def decimal_sign(declared: str, cells: Iterable[Cell]) -> str:
-    """The decimal sign of a file, ``point`` or ``comma``.
+class Numbers:
+    """How the numbers of one file are read: the decimal sign, and whether the other sign may mark thousands."""
 
-    Declared, it is taken as said. Otherwise every numeric cell is asked: a file in which one cell can only be read one
-    way is read that way throughout; a file in which that never happens, but marks occur, is refused.
+    def __init__(self, sign: str, marks: bool = False) -> None:
+        self.sign = sign
+        self._marks = marks
+        self._pattern = (_OPEN if marks else _STRICT)[sign]
+
+    def plain(self, cell: Cell) -> str:
+        """The digits of a number with a point as decimal sign and without marks of thousands.
+
+        Raises
+        ------
+        Unreadable : the cell holds no number, or one written with the other decimal sign
+        """
+        text = _tidy(cell.text)
+        if len(text) > _LONGEST or self._pattern.fullmatch(text) is None:
+            raise _not_a_number(cell, self.sign)
+        text = text.translate(_DROP_SPACES)
+        if self._marks:
+            text = text.replace(_OTHER[self.sign], "")
+        return text.replace(self.sign, POINT)
+
+    def value(self, cell: Cell) -> float:
+        """The number as a float; minus nought is nought.
+
+        Raises
+        ------
+        Unreadable : the cell holds no number, or one that no signal can have
+        """
+        text = self.plain(cell)
+        value = float(text)
+        lost = value == 0.0 and re.search("[1-9]", re.split("[eE]", text)[0])
+        if math.isinf(value) or lost:
+            raise Unreadable(f"'{_shown(cell.text)}' is too large or too small to be a signal", cell.row, cell.column)
+        return value + 0.0
+
+    def count(self, cell: Cell) -> int:
+        """A whole number from nought on.
+
+        Raises
+        ------
+        Unreadable : the cell holds anything else
+        """
+        value = self.value(cell)
+        if value != int(value) or value < 0:
+            raise Unreadable(f"'{_shown(cell.text)}' is not a whole number", cell.row, cell.column)
+        return int(value)
+
+
+def numbers_of(cells: Iterable[Cell], declared: str) -> Numbers:
+    """Decide how the numbers of a file are read.
+
+    Parameters
+    ----------
+    cells : every numeric cell of the file
+    declared : point, comma, or auto: the one sign that all cells allow
 
     Raises
     ------
-    Unreadable : the cells contradict each other, or all of them could be read both ways
+    Unreadable : a cell holds no number, the cells contradict each other, or they can be read both ways
     """
-    if declared in ("point", "comma"):
-        return declared
-    only: dict[str, Cell] = {}
-    either: Cell | None = None
+    if declared in _DECLARED:
+        return Numbers(_DECLARED[declared])
+    doubtful: Cell | None = None
+    deciding: dict[str, Cell] = {}
     for cell in cells:
-        text = _bare(cell.text)
-        if _PLAIN.fullmatch(text):
-            continue
-        point = _is_number(text, _POINT) and not _GROUPED_POINT.fullmatch(text)
-        comma = _is_number(text, _COMMA) and not _GROUPED_COMMA.fullmatch(text)
-        if _GROUPED_COMMA.fullmatch(text) or _GROUPED_POINT.fullmatch(text):
-            both = text.count(",") == 1 or text.count(".") == 1
-            if both:
-                either = either or cell
-                continue
-            point, comma = "," in text, "." in text
-        if point and not comma:
-            only.setdefault("point", cell)
-        elif comma and not point:
-            only.setdefault("comma", cell)
-    if len(only) == 2:
-        one, other = only["point"], only["comma"]
+        text = _tidy(cell.text)
+        possible = [sign for sign, pattern in _OPEN.items() if len(text) <= _LONGEST and pattern.fullmatch(text)]
+        if not possible:
+            raise _not_a_number(cell)
+        if len(possible) == 1:
+            deciding.setdefault(possible[0], cell)
+        elif doubtful is None and (POINT in text or COMMA in text):
+            doubtful = cell
+    if len(deciding) == 2:
+        raise _contradiction(*deciding.items())
+    if deciding:
+        return Numbers(next(iter(deciding)), marks=True)
+    if doubtful is not None:
         raise Unreadable(
-            f"'{one.text}' (row {one.row}) has a decimal point and '{other.text}' (row {other.row}) a decimal comma; "
-            "declare 'decimal' of the reader and export the file again",
-            other.row,
-            other.column,
+            f"'{_shown(doubtful.text)}' can be read with a decimal point or with a decimal comma, and no number of the "
+            "file tells which; declare decimal: point or decimal: comma",
+            doubtful.row,
+            doubtful.column,
         )
-    if not only and either is not None:
-        raise Unreadable(
-            f"'{either.text}' can be read in two ways, with thousands or with decimals; "
-            "declare 'decimal: point' or 'decimal: comma' of the reader",
-            either.row,
-            either.column,
-        )
-    return next(iter(only), "point")
+    return Numbers(POINT)
 
 
-def number(cell: Cell, sign: str) -> float:
-    """Read one number with a known decimal sign. Thousands marks are refused unless they are blanks or apostrophes.
-
-    Raises
-    ------
-    Unreadable : it is not a finite number, or it uses the other sign
-    """
-    text = re.sub(rf"(?<=\d){_BLANKS}(?=\d{{3}})", "", _bare(cell.text))
-    mark, other = (".", ",") if sign == "point" else (",", ".")
-    grouped = _POINT if sign == "point" else _COMMA
-    if other in text and mark in text and _is_number(text, grouped):
-        text = text.replace(other, "")  # 1.234,5: both signs stand there, so the other one groups thousands
-    if not _STRICT[sign].fullmatch(text):
-        hint = f"; the decimal sign is a {sign}, correct 'decimal' of the reader" if other in text else ""
-        raise Unreadable(f"'{cell.text}' is not a number{hint}", cell.row, cell.column)
-    value = float(text.replace(",", "."))
-    if not math.isfinite(value):
-        raise Unreadable(f"'{cell.text}' is too large for a number", cell.row, cell.column)
-    return value
+def _contradiction(first: tuple[str, Cell], second: tuple[str, Cell]) -> Unreadable:
+    (sign, cell), (other, earlier) = second, first
+    return Unreadable(
+        f"'{_shown(cell.text)}' has a decimal {_NAMES[sign]}, but '{_shown(earlier.text)}' in row {earlier.row} has a "
+        f"decimal {_NAMES[other]}; a file has one decimal sign, so correct it and declare decimal",
+        cell.row,
+        cell.column,
+    )
 
 
-def looks_numeric(text: str) -> bool:
-    """Whether a text is a number under one of the two decimal signs."""
-    bare = _bare(text)
-    return _is_number(bare, _POINT) or _is_number(bare, _COMMA)
+def _tidy(text: str) -> str:
+    return text.strip().replace("\N{MINUS SIGN}", "-")
 
 
-def _bare(text: str) -> str:
-    return text.strip().translate(_MINUS)
+def _shown(text: str) -> str:
+    return text if len(text) <= _LONGEST else f"{text[:_LONGEST]}…"
 
 
-def _is_number(text: str, pattern: re.Pattern[str]) -> bool:
-    return pattern.fullmatch(text) is not None and any(character.isdigit() for character in text)
+def _not_a_number(cell: Cell, sign: str = "") -> Unreadable:
+    text = _tidy(cell.text)
+    if sign and len(text) <= _LONGEST and any(pattern.fullmatch(text) for pattern in _OPEN.values()):
+        told = f"has a {_NAMES[_OTHER[sign]]}, but its decimal sign is the {_NAMES[sign]}"
+        return Unreadable(f"'{_shown(cell.text)}' {told}; correct the cell, or decimal", cell.row, cell.column)
+    return Unreadable(
+        f"'{_shown(cell.text)}' is not a number; correct it, or declare the word under not_detected or over_range",
+        cell.row,
+        cell.column,
+    )

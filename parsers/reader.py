@@ -1,4 +1,4 @@
-"""What every reader of a format is: a name, and a function from bytes to a table. Readers know no files and no clocks."""
+"""What every reader of a format is: a name, and a function from bytes to a table. Readers know no files, no clocks."""
 
 from __future__ import annotations
 
@@ -9,11 +9,6 @@ from spikeward.rules.records import Layout, Table
 
 class Reader(Protocol):
     """One format. A laboratory adds its own as an object under the entry-point group ``spikeward.readers``."""
-
-    @property
-    def name(self) -> str:
-        """The name under which a rule file asks for it."""
-        ...
 
     def read(self, content: bytes, layout: Layout) -> Table:
         """Read one file.

@@ -1,4 +1,4 @@
-"""Readers by the name of their format, found through the entry-point group ``spikeward.readers``."""
+"""Which reader goes by which name: the built-in ones, and those that installed packages bring along."""
 
 from __future__ import annotations
 
@@ -10,22 +10,32 @@ from spikeward.parsers.reader import Reader
 from spikeward.rules.records import Unreadable
 
 GROUP = "spikeward.readers"
-_BUILT_IN = {DELIMITED.name: DELIMITED}
+
+_BUILT_IN: dict[str, Reader] = {"delimited": DELIMITED}
 
 
-@lru_cache(maxsize=32)
-def reader_for(format_name: str) -> Reader:
-    """The reader of a format.
+def formats() -> tuple[str, ...]:
+    """The names of all readers that are installed, without loading any of them."""
+    return tuple(sorted({*_BUILT_IN, *(each.name for each in entry_points(group=GROUP))}))
+
+
+@lru_cache(maxsize=64)
+def reader_for(name: str) -> Reader:
+    """The reader of a format; a built-in name cannot be taken over by a package.
 
     Raises
     ------
-    Unreadable : nothing installed reads it
+    Unreadable : no reader goes by this name, or its package cannot be loaded
     """
-    if format_name in _BUILT_IN:
-        return _BUILT_IN[format_name]
-    for point in entry_points(group=GROUP):
-        if point.name == format_name:
-            reader: Reader = point.load()
-            return reader
-    known = ", ".join(sorted({*_BUILT_IN, *(point.name for point in entry_points(group=GROUP))}))
-    raise Unreadable(f"no reader for the format '{format_name}' is installed; correct 'format' (known: {known})")
+    if name in _BUILT_IN:
+        return _BUILT_IN[name]
+    found = sorted(entry_points(group=GROUP, name=name), key=lambda each: each.value)
+    if not found:
+        raise Unreadable(f"no reader is called '{name}'; installed are {', '.join(formats())}")
+    try:
+        loaded: Reader = found[0].load()
+    except Exception as error:  # a package may fail in any way while it is loaded
+        raise Unreadable(f"the reader '{name}' cannot be loaded ({type(error).__name__}); repair its package") from None
+    if not callable(getattr(loaded, "read", None)):
+        raise Unreadable(f"the reader '{name}' has no function read; repair its package")
+    return loaded

@@ -141,13 +141,17 @@ class Outcome:
 
 @dataclass(frozen=True, slots=True)
 class BatchOutcome:
-    """The outcomes of a batch in the order of their keys, and what holds for the batch as a whole."""
+    """The outcomes of a batch in the order of their keys, and what holds for the batch as a whole.
+
+    ``waiting_for`` is what the batch needs to close by itself; ``lacking`` the closing members among it.
+    """
 
     key: BatchKey
     closed: bool
     waiting_for: tuple[str, ...]
     outcomes: tuple[Outcome, ...]
     checks: tuple[Check, ...]
+    lacking: tuple[str, ...] = ()
 
 
 def worst(verdicts: list[str]) -> str:

@@ -170,9 +170,9 @@ PREPARATION = Block((
           "successive: standard added again and again to one vessel.", required=True, example="flasks"),
     Field("aliquot", Block((
         Field("volume", _VOLUME, "The same volume at every level.", example="10 mL"),
-        Field("levels", MapOf(_VOLUME, "a level", "0"), "A volume for each level.", example="{0: 10 mL, 1: 9.5 mL}",
-              hidden=True),
-    ), short="volume"), "The test solution that goes into each vessel.", WITH_ITS_DEFAULTS, example="10 mL"),
+        Field("levels", MapOf(_VOLUME, "a level", "0"), "A volume for each level.", example="{0: 10 mL, 1: 9.5 mL}"),
+    ), short="volume"),
+          "The test solution that goes into each vessel; {levels: {0: 10 mL, 1: 9.5 mL}} where it differs.", WITH_ITS_DEFAULTS, example="10 mL"),
     Field("final", Block((Field("volume", _VOLUME, "The volume.", required=True, example="25 mL"),), short="volume"),
           "The volume to which each vessel is made up.", example="25 mL"),
     Field("additions", Block((
@@ -243,6 +243,7 @@ RULE_FILE = Block((
 - role: sample
   from: solution
   match: '(?P<batch>[A-Z]{2}\d+)_(?P<sample>\d[A-Za-z0-9-]*)_A(?P<level>\d+)(?P<vessel>[a-c])?(_r(?P<reading>\d+))?'
+  # units: {addition: uL}                       # The units of groups that are quantities.
 """),
     Field("series", SERIES, "When a series is complete.", WITH_ITS_DEFAULTS),
     Field("standards", MapOf(STANDARD, "a standard's name", "Mix-7"),

@@ -1,0 +1,99 @@
+"""What a cell says besides plain text: a signal or the word in its place, and a quantity with its unit."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Sequence
+
+from spikeward.parsers.headings import folded, tidy
+from spikeward.parsers.numbers import Cell, Numbers
+from spikeward.rules.quantities import parse_quantity, unit_code
+from spikeward.rules.records import FAULTY, MEASURED, MISSING, NOT_DETECTED, OVER_RANGE, Unreadable
+
+QUANTITIES = ("mass", "dry_matter", "aliquot", "addition", "final", "dilution", "standard")
+"""The meanings of columns that describe how a solution was made."""
+
+_DIMENSIONS = {
+    "mass": ("mass",),
+    "dry_matter": ("fraction",),
+    "aliquot": ("volume", "mass"),
+    "addition": ("volume", "mass"),
+    "final": ("volume", "mass"),
+}
+_SUCH_AS = {"mass": "g", "dry_matter": "%", "aliquot": "mL", "addition": "mL", "final": "mL"}
+_PARTS = re.compile(
+    "([+-\N{MINUS SIGN}]?[0-9.,'\N{RIGHT SINGLE QUOTATION MARK}\\s]*(?:[eE][+-]?[0-9]+)?)(.*)", re.DOTALL
+)
+
+
+class Words:
+    """The words that stand in place of a signal, as declared; ``<``, ``>``, ``#`` and an empty cell need none."""
+
+    def __init__(self, not_detected: Sequence[str], over_range: Sequence[str]) -> None:
+        self._declared = {folded(word): NOT_DETECTED for word in not_detected}
+        self._declared |= {folded(word): OVER_RANGE for word in over_range}
+
+    def qualifier(self, text: str) -> str:
+        """What a signal cell is: measured (then it must be a number), or one of the qualifiers."""
+        shown = folded(text)
+        if shown in self._declared:
+            return self._declared[shown]
+        if not shown:
+            return MISSING
+        return {"<": NOT_DETECTED, "≤": NOT_DETECTED, ">": OVER_RANGE, "≥": OVER_RANGE, "#": FAULTY}.get(
+            shown[0], MEASURED
+        )
+
+
+def number_part(meaning: str, cell: Cell) -> Cell | None:
+    """The numeric part of a quantity's cell; None for an empty cell and for what is no number by its meaning."""
+    if not cell.text or meaning == "standard":
+        return None
+    number, unit = _parts(cell.text)
+    if meaning == "dilution" and (unit or not number):
+        return None
+    return Cell(number, cell.row, cell.column)
+
+
+def quantity_text(meaning: str, cell: Cell, unit: str, numbers: Numbers) -> str:
+    """A quantity in the one form that rules read, such as ``0.5012 g``; empty where nothing is given.
+
+    Parameters
+    ----------
+    unit : of the heading or of the row of units, or empty
+
+    Raises
+    ------
+    Unreadable : the cell holds no number, no unit, an unknown one, or one that measures something else
+    """
+    number = number_part(meaning, cell)
+    if number is None:
+        return tidy(cell.text)
+    if meaning == "dilution":
+        return numbers.plain(number)
+    own = _parts(cell.text)[1]
+    if own and unit and unit_code(own) != unit_code(unit):
+        raise Unreadable(f"'{cell.text}' and its heading ({unit}) name different units", cell.row, cell.column)
+    if not (own or unit):
+        raise Unreadable(
+            f"'{cell.text}' has no unit; write it in the heading, such as {cell.column} [{_SUCH_AS[meaning]}], or in "
+            "the cell",
+            cell.row,
+            cell.column,
+        )
+    try:
+        quantity = parse_quantity(f"{numbers.plain(number)} {own or unit}")
+    except ValueError as error:
+        raise Unreadable(str(error), cell.row, cell.column) from None
+    if quantity.dimension not in _DIMENSIONS[meaning]:
+        raise Unreadable(
+            f"'{cell.text}' is a {quantity.dimension}, not a {meaning.replace('_', ' ')}; correct the column or unit",
+            cell.row,
+            cell.column,
+        )
+    return str(quantity)
+
+
+def _parts(text: str) -> tuple[str, str]:
+    found = _PARTS.fullmatch(text.strip())
+    return (found[1].strip(), found[2].strip()) if found else ("", text.strip())
