@@ -40,8 +40,8 @@ def load_rules(text: str, file_name: str, packs: Mapping[str, str] | None = None
     checks, value = {}, None
     try:
         value = walker.walk(root, RULE_FILE, "")
-        if value is not None and value["checks"] is not None:
-            checks = checks_of(value["checks"], walker, shipped_packs() if packs is None else packs)
+        if value is not None:
+            checks = checks_of(value["checks"] or {}, walker, shipped_packs() if packs is None else packs)
             check_meaning(value, walker)
     except TooMany:
         value = None

@@ -82,7 +82,7 @@ def _pack_limit(node: Node, name: str, key: str) -> PackLimit:
 
 def checks_of(value: Mapping[str, Any], walker: Walker, packs: Mapping[str, str]) -> dict[str, Limits]:
     """The checks that are asked for: those of the pack, with what the rule file changes."""
-    used = value["use"]
+    used = value.get("use")
     name = used.removeprefix("pack:") if used else ""
     if name not in packs:
         if used:

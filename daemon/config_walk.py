@@ -21,12 +21,12 @@ class TooMany(Exception):
     """So many problems that more of them help nobody."""
 
 
-def near(word: str, known: Iterable[str]) -> str:
+def near(word: str, known: Iterable[str], cutoff: float = 0.6) -> str:
     """The known word that is nearest to what was written, or an empty text."""
     if len(word) > _LONGEST_WORD:
         return ""
     by_folded = {each.lower().replace("-", "_"): each for each in sorted(known, reverse=True)}
-    found = difflib.get_close_matches(word.lower().replace("-", "_"), by_folded, n=1, cutoff=0.6)
+    found = difflib.get_close_matches(word.lower().replace("-", "_"), by_folded, n=1, cutoff=cutoff)
     return by_folded[found[0]] if found else ""
 
 
@@ -149,13 +149,17 @@ class Walker:
 
     def _unknown(self, key: Node, path: str, known: tuple[str, ...], present: set[str]) -> str:
         """Report a key that is not known; the key that was meant, or an empty text."""
-        meant = near(key.text, set(known) - present)
+        homes = _homes(self._root, key.text)
+        # A key that is right elsewhere is more likely misplaced than misspelt.
+        meant = near(key.text, set(known) - present, cutoff=0.8 if homes else 0.6)
         if meant:
             hint = f"did you mean {meant}?"
-        elif (twin := near(key.text, known)) or not (homes := _homes(self._root, key.text)):
-            hint = f"{twin} stands here already" if twin else f"possible here: {one_of(known)}"
-        else:
+        elif homes:
             hint = f"it belongs under {one_of(tuple(homes))}"
+        elif twin := near(key.text, known):
+            hint = f"{twin} stands here already"
+        else:
+            hint = f"possible here: {one_of(known)}"
         self.at_node(key, path, "R012", f"the key '{key.text}' is not known", "", hint)
         return meant
 

@@ -9,7 +9,7 @@ from dataclasses import dataclass, field, replace
 from spikeward.daemon.closings import Closings
 from spikeward.daemon.holdings import Holdings
 from spikeward.rules.evaluate import Earlier, evaluate
-from spikeward.rules.in_force import State, in_force
+from spikeward.rules.in_force import Memory, State, in_force
 from spikeward.rules.outcomes import BatchOutcome
 from spikeward.rules.records import Batch, BatchKey, Decision
 from spikeward.rules.rulebook import Rulebook
@@ -36,6 +36,7 @@ class Solving:
     decisions: Callable[[str, str], tuple[Decision, ...]]
     earlier: dict[str, Holdings] = field(default_factory=dict)
     _last: dict[str, dict[BatchKey, Earlier]] = field(default_factory=dict)
+    _in_force: dict[str, Memory] = field(default_factory=dict)
 
     def every(self) -> set[BatchKey]:
         """All batches that any rules in use know of."""
@@ -79,6 +80,7 @@ class Solving:
 
     def _batches(self, holdings: Holdings, keys: set[BatchKey]) -> Iterable[Batch]:
         states = {key: State(bench=holdings.bench(key), decisions=self.decisions(key.root, key.folder)) for key in keys}
-        for batch in in_force(holdings.readings(keys), holdings.rules, states):
+        memory = self._in_force.setdefault(holdings.rules.digest, {})
+        for batch in in_force(holdings.readings(keys), holdings.rules, states, memory):
             closed = self.closings.covers(batch.key, batch.members)
             yield replace(batch, closed=closed, lapsed=self.closings.lapses_of(batch))

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from itertools import pairwise
 from typing import Any
 
 import yaml
@@ -158,7 +159,7 @@ class _Builder:
             self._check(event)
             self._enter(self._node(MAP if isinstance(event, yaml.MappingStartEvent) else LIST, event))
         elif isinstance(event, (yaml.MappingEndEvent, yaml.SequenceEndEvent)):
-            self._open.pop()
+            self._comma(self._open.pop())
             self._keys.pop()
             self._seen.pop()
 
@@ -208,6 +209,16 @@ class _Builder:
         self.problems.append(
             Problem("R005", self._file, key.line, key.column, key.text, found, hint="delete one of the two")
         )
+
+    def _comma(self, node: Node) -> None:
+        """Between braces a comma in a number begins a new key: {Cd: 10,02 mg/L} is Cd: 10 and an empty '02 mg/L'."""
+        for (_, number), (key, value) in pairwise(list(node.entries)):
+            if value.plain and value.kind == SCALAR and not value.text and key.text[:1].isdigit() and number.text[-1:].isdigit():
+                found = f"a comma in the number '{number.text},{key.text}'"
+                place = (self._file, number.line, number.column, "")
+                self.problems.append(Problem("R014", *place, found, hint="write the decimal sign as a point"))
+                node.entries.remove((key, value))
+                number.text = f"{number.text}.{key.text}"
 
     def _key(self, key: Node) -> Node:
         place = (self._file, key.line, key.column, "")

@@ -43,8 +43,14 @@ class _Found:
     warnings: list[str] = field(default_factory=list)
 
 
+Memory = dict[SeriesKey, tuple[tuple[Reading, ...], tuple[Decision, ...], Members]]
+
+
 def in_force(
-    readings: Iterable[Reading], rules: Rulebook, states: Mapping[BatchKey, State] | None = None
+    readings: Iterable[Reading],
+    rules: Rulebook,
+    states: Mapping[BatchKey, State] | None = None,
+    memory: Memory | None = None,
 ) -> tuple[Batch, ...]:
     """Group readings into batches and decide which of them count.
 
@@ -52,6 +58,8 @@ def in_force(
     ----------
     readings : of any number of files, in any order; the answer does not depend on it
     states : closings, lapses, bench entries and decisions by batch
+    memory : what this function decided before under the same rules, kept by the caller; it saves time and never changes
+        the answer
 
     Returns
     -------
@@ -64,7 +72,7 @@ def in_force(
     batches: dict[BatchKey, dict[SeriesKey, Members]] = defaultdict(dict)
     for key in sorted(by_series):
         state = (states or {}).get(key.batch_key, State())
-        members = _members(key, by_series[key], rules, state)
+        members = _remembered(key, tuple(by_series[key]), rules, state.decisions, memory)
         if key in twins:
             members = replace(members, warnings=members.warnings + tuple(sorted(twins[key])))
         batches[key.batch_key][key] = members
@@ -96,7 +104,23 @@ def _vessel_identity(reading: Reading) -> Identity:
     )  # fmt: skip
 
 
-def _members(key: SeriesKey, readings: list[Reading], rules: Rulebook, state: State) -> Members:
+def _remembered(
+    key: SeriesKey,
+    readings: tuple[Reading, ...],
+    rules: Rulebook,
+    decisions: tuple[Decision, ...],
+    memory: Memory | None,
+) -> Members:
+    known = memory.get(key) if memory is not None else None
+    if known is not None and known[:2] == (readings, decisions):
+        return known[2]
+    members = _members(key, readings, rules, decisions)
+    if memory is not None:
+        memory[key] = (readings, decisions, members)
+    return members
+
+
+def _members(key: SeriesKey, readings: Iterable[Reading], rules: Rulebook, decisions: Iterable[Decision]) -> Members:
     repeats = key.role not in SERIES_ROLES or rules.series.same_name == "reading"
     groups: dict[Identity, list[Reading]] = defaultdict(list)
     occurrence: dict[tuple[str, Identity], int] = defaultdict(int)
@@ -109,7 +133,7 @@ def _members(key: SeriesKey, readings: list[Reading], rules: Rulebook, state: St
             identity = (*identity, str(turn))
         groups[identity].append(reading)
     found = _Found()
-    preferred = {decision.target: decision for decision in state.decisions if decision.kind == "prefer"}
+    preferred = {decision.target: decision for decision in decisions if decision.kind == "prefer"}
     for identity in sorted(groups):
         _one(groups[identity], preferred, found)
     if not repeats:
@@ -184,8 +208,20 @@ def _refuse_met_again(found: _Found) -> None:
             )
 
 
+def _some_equal(by_series: Mapping[SeriesKey, list[Reading]]) -> bool:
+    """Whether any content came under two paths at all; it seldom does."""
+    paths: dict[str, str] = {}
+    return any(
+        reading.file_digest and paths.setdefault(reading.file_digest, reading.path) != reading.path
+        for readings in by_series.values()
+        for reading in readings
+    )
+
+
 def _equal_files(by_series: Mapping[SeriesKey, list[Reading]]) -> dict[SeriesKey, set[str]]:
     """Equal bytes under names that mean different vessels: all count, with a warning."""
+    if not _some_equal(by_series):
+        return {}
     seen: dict[tuple[object, ...], dict[tuple[object, ...], Reading]] = defaultdict(dict)
     for key, readings in by_series.items():
         for reading in readings:

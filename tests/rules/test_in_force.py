@@ -116,3 +116,17 @@ def test_the_order_of_arrival_changes_nothing(cells: list[tuple[str, float, str]
     shuffled = list(readings)
     rng.shuffle(shuffled)
     assert in_force(readings, book()) == in_force(shuffled, book())
+
+
+@given(
+    st.lists(
+        st.tuples(st.sampled_from("01"), st.sampled_from([0.1, 0.2]), st.sampled_from(["a.csv", "b.csv"])), max_size=8
+    ),
+    st.data(),
+)
+def test_memory_never_changes_the_answer(cells: list[tuple[str, float, str]], data: st.DataObject):
+    readings = [reading(signal, path, row, level=level) for row, (level, signal, path) in enumerate(cells)]
+    memory: dict = {}
+    for _ in range(3):
+        some = [each for each in readings if data.draw(st.booleans())]
+        assert in_force(some, book(), memory=memory) == in_force(some, book())
