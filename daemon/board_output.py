@@ -25,6 +25,7 @@ class BoardOutput:
     folder_of: Callable[[str, str], str]
     station: str
     _own_boards: set[Place] = field(default_factory=set)
+    _last: dict[BatchKey, tuple[BatchOutcome, list[Notice]]] = field(default_factory=dict)
 
     def publish(self, outcome: BatchOutcome, notices: Iterable[Noticed]) -> None:
         """Write board and table of one batch, with what a person should know of its folder."""
@@ -32,11 +33,14 @@ class BoardOutput:
         named, _ = stems(one.key for one in outcome.outcomes)
         links = {series: stem + SUMMARY for series, stem in named.items()}
         mine = [notice for root, folder, notice in notices if root == key.root and _concerns(folder, key.folder)]
+        if self._last.get(key) == (outcome, mine):
+            return
         stem = batch_stem(key)
         self.records.publish_files(
             self.folder_of(key.root, key.folder),
             {stem + BOARD: render_board(outcome, mine, links, self.station), stem + TABLE: render_csv(outcome)},
         )
+        self._last[key] = (outcome, mine)
 
     def publish_folders(self, notices: Iterable[Noticed], batches: Collection[BatchKey]) -> None:
         """A board of its own for each folder that has something to say and no batch to say it on."""

@@ -6,12 +6,11 @@ import difflib
 from collections.abc import Iterable, Iterator
 from typing import Any
 
-from spikeward.daemon.problems import ERROR, Problem
+from spikeward.daemon.problems import ERROR, MOST_PROBLEMS, Problem
 from spikeward.daemon.yaml_text import LIST, MAP, SCALAR, Node
 from spikeward.rules.schema_kinds import Scalar, one_of
 from spikeward.rules.schema_shapes import WITH_ITS_DEFAULTS, Block, Field, Limits, ListOf, MapOf, Shape, kind_of
 
-MOST_PROBLEMS = 100
 LONGEST_LIST = 500  # what follows compares entries with each other
 _LONGEST = 300  # characters of what was found
 _LONGEST_WORD = 40  # beyond, no suggestion is looked for
@@ -124,6 +123,7 @@ class Walker:
             values[field.name] = self.walk(value, field.shape, where)
         for field in shape.fields:
             if field.required and field.name not in given:
+                values[field.name] = None
                 where = f"{path}.{field.name}".lstrip(".")
                 hint = (
                     f"add {field.name}: {field.example}"

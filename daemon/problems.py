@@ -7,6 +7,9 @@ from dataclasses import dataclass
 
 ERROR, WARNING = "error", "warning"
 
+MOST_PROBLEMS = 100
+"""So many are told of one file; more of them help nobody."""
+
 CODES: dict[str, str] = {
     "R001": "the text is not YAML",
     "R002": "the file is too large, too deep, or not UTF-8",

@@ -110,7 +110,7 @@ def _content(path: str) -> tuple[bytes, Stamp]:
             raise Unreadable("it is no regular file and is never opened; take it away")
         if before.st_size > LARGEST:
             raise Unreadable(
-                f"it holds {before.st_size >> 20} MiB; files above {LARGEST >> 20} MiB are not read, so export less at once"
+                f"it holds {before.st_size >> 20} MiB; those above {LARGEST >> 20} MiB are not read; export less at once"
             )
         if not before.st_size:
             raise _NotYet("it is still empty")

@@ -10,7 +10,7 @@ from spikeward.daemon.disk import RealDisk
 from spikeward.daemon.names import shown
 from spikeward.daemon.station import Places, RuleFile, read_rule_file
 from spikeward.daemon.survey import survey
-from spikeward.daemon.workers import ReadJob, read_one
+from spikeward.daemon.reading import ReadJob, read_file
 from spikeward.rules.naming import GROUPS, Namer, Understood
 from spikeward.rules.records import Layout
 from spikeward.rules.rulebook import Rulebook, Watch
@@ -68,7 +68,7 @@ def _solutions(
     place: str, path: str, layout: Layout, watch: Watch, names: dict[tuple[str, str], None]
 ) -> Iterator[str]:
     """Collect the names in one file; a file that cannot be read says so."""
-    reply = read_one(ReadJob(place, (watch.folder, path, ""), layout))
+    reply = read_file(ReadJob(place, (watch.folder, path, ""), layout))
     if reply.sentence:
         yield f"  {shown(path)}: {reply.sentence}"
     for entry in reply.table.entries if reply.table else ():

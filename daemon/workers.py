@@ -7,9 +7,9 @@ import subprocess
 import sys
 import time
 from collections import deque
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable
 from contextlib import suppress
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from multiprocessing import Pipe
 from multiprocessing.connection import wait
 from types import TracebackType
@@ -21,8 +21,8 @@ __all__ = ["ReadJob", "ReadReply", "Readers"]
 BATCH = 32  # files that a worker takes at once
 SECONDS = 10.0  # for one file
 MEMORY = 1 << 30  # bytes above what a worker needs anyway
-_GRACE = 20.0  # s; beyond all its files' time a worker is ended from outside, whatever it did to its timer
-_SERVE = "import sys; from spikeward.daemon.reading import serve; serve(int(sys.argv[1]), float(sys.argv[2]), int(sys.argv[3]))"
+_GRACE = 20.0  # s; beyond the time of all its files a worker is ended from outside, whatever it did to its timer
+_SERVE = "import sys; from spikeward.daemon.reading import serve; serve({}, {}, {})"
 
 
 @dataclass(frozen=True, slots=True)
@@ -34,39 +34,195 @@ class _Task:
     blame: str = ""
 
 
-@dataclass(slots=True)
 class _Worker:
-    """One process, and the tasks that it has in hand until ``deadline``."""
+    """One process, and the tasks that it has in hand until ``deadline``.
 
-    seconds: float
-    memory: int
-    tasks: Sequence[_Task] = ()
-    deadline: float = 0.0
-    overdue: bool = False
-    process: subprocess.Popen[bytes] = field(init=False)
+    Raises
+    ------
+    OSError : the system gives no further process
+    """
 
-    def __post_init__(self) -> None:
+    def __init__(self, seconds: float, memory: int) -> None:
+        self.tasks: list[_Task] = []
+        self.deadline = 0.0
         self.connection, theirs = Pipe()
         with theirs:
-            arguments = (str(theirs.fileno()), str(self.seconds), str(self.memory))
+            served = theirs.fileno()
+            # -P keeps the present folder off the module path; a session of its own keeps Ctrl-C away.
+            command = [sys.executable, "-P", "-c", _SERVE.format(served, seconds, memory)]
+            nothing = subprocess.DEVNULL
             try:
-                # -P keeps the present folder off the module path; a session of its own keeps Ctrl-C away.
                 self.process = subprocess.Popen(
-                    [sys.executable, "-P", "-c", _SERVE, *arguments],
-                    stdin=subprocess.DEVNULL, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL,
-                    pass_fds=(theirs.fileno(),), start_new_session=True,
-                )  # fmt: skip
+                    command, stdin=nothing, stdout=nothing, stderr=nothing, pass_fds=(served,), start_new_session=True
+                )
             except OSError:
                 self.connection.close()
                 raise
 
-    def end(self) -> int | None:
-        """End the process; its return code, or None where even that takes too long (a hung disk)."""
+    def end(self, patience: float = 0.0) -> int | None:
+        """End the process, after ``patience`` seconds for one that is ending by itself.
+
+        Returns
+        -------
+        its return code; None where it cannot end now, because a disk does not answer
+        """
         self.connection.close()
         with suppress(subprocess.TimeoutExpired):
-            # One that lost its connection is on its way out by itself, with a code that tells why.
-            self.process.wait(0.2 if self.tasks and not self.overdue else 0)
+            self.process.wait(patience)
         self.process.kill()
         with suppress(subprocess.TimeoutExpired):
             self.process.wait(5.0)
         return self.process.returncode
+
+
+class Readers:
+    """Reader processes, spawned when they are needed and kept; with ``count`` 0 files are read in this process.
+
+    Parameters
+    ----------
+    seconds : for one file
+    memory : bytes that reading may take
+    monotonic : the daemon's clock, by which a worker that outlives its own timer is ended
+    """
+
+    def __init__(
+        self,
+        count: int = 1,
+        seconds: float = SECONDS,
+        memory: int = MEMORY,
+        monotonic: Callable[[], float] = time.monotonic,
+    ) -> None:
+        self.count = count
+        self._seconds = seconds
+        self._memory = memory
+        self._monotonic = monotonic
+        self._workers: list[_Worker] = []
+        self._queue: deque[_Task] = deque()
+        self._alone: deque[_Task] = deque()  # of a batch that failed: file by file
+        self._done: list[ReadReply] = []
+
+    def __enter__(self) -> Readers:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+    @property
+    def busy(self) -> bool:
+        """Whether files are waiting to be read, or being read."""
+        return bool(self._queue or self._alone or self._done or any(worker.tasks for worker in self._workers))
+
+    def start(self, jobs: Iterable[ReadJob]) -> None:
+        """Put files in line."""
+        self._queue += map(_Task, jobs)
+
+    def replies(self, timeout: float) -> list[ReadReply]:
+        """What was read since the last call, after at most ``timeout`` seconds of waiting for something."""
+        if self.count == 0:
+            self._done += [read_file(task.job) for task in self._queue]
+            self._queue.clear()
+        else:
+            self._hand_out()
+            self._collect(0.0 if self._done else timeout)
+            self._hand_out()
+        done, self._done = self._done, []
+        return done
+
+    def read_many(self, jobs: Iterable[ReadJob]) -> list[ReadReply]:
+        """Read files and wait for all of them; replies come in no particular order."""
+        self.start(jobs)
+        found: list[ReadReply] = []
+        while self.busy:
+            found += self.replies(1.0)
+        return found
+
+    def wait(self, seconds: float) -> None:
+        """Wait until a worker has answered or died, at most so long."""
+        wait([worker.connection for worker in self._workers if worker.tasks], seconds)
+
+    def close(self) -> None:
+        """End the processes; what they had in hand is forgotten."""
+        for worker in self._workers:
+            worker.end()
+        self._workers.clear()
+
+    def _hand_out(self) -> None:
+        while (self._queue or self._alone) and (worker := self._idle()) is not None:
+            if self._alone:
+                worker.tasks = [self._alone.popleft()]
+            else:
+                share = -(-len(self._queue) // self.count)
+                worker.tasks = [self._queue.popleft() for _ in range(min(BATCH, share))]
+            worker.deadline = self._monotonic() + self._seconds * len(worker.tasks) + _GRACE
+            try:
+                worker.connection.send([task.job for task in worker.tasks])
+            except OSError:
+                self._lost(worker, 1.0)
+
+    def _idle(self) -> _Worker | None:
+        for worker in self._workers:
+            if not worker.tasks:
+                return worker
+        if len(self._workers) >= self.count:
+            return None
+        try:
+            self._workers.append(_Worker(self._seconds, self._memory))
+        except OSError as error:
+            if not self._workers:
+                self._put_off(f"no reader process could be started ({error.strerror}); it is tried again")
+            return None
+        return self._workers[-1]
+
+    def _put_off(self, why: str) -> None:
+        """Answer that everything in line must come again later."""
+        self._done += [ReadReply(task.job.key, sentence=why, temporary=True) for task in (*self._alone, *self._queue)]
+        self._alone.clear()
+        self._queue.clear()
+
+    def _collect(self, timeout: float) -> None:
+        at_work = {worker.connection: worker for worker in self._workers if worker.tasks}
+        for ready in wait(list(at_work), timeout) if at_work else ():
+            worker = at_work[ready]  # type: ignore[index]
+            try:
+                replies = worker.connection.recv()
+            except Exception:  # the process is gone, or a reader wrote into the connection
+                self._lost(worker, 1.0)
+                continue
+            self._done += map(_blamed, worker.tasks, replies)
+            worker.tasks = []
+        now = self._monotonic()
+        for worker in [each for each in self._workers if each.tasks and now > each.deadline]:
+            self._lost(worker, 0.0)
+
+    def _lost(self, worker: _Worker, patience: float) -> None:
+        """A worker died. Of several files one is to blame, so each is tried alone; a single file twice.
+
+        The second try is for a process that was ended by somebody else. Then the file is only looked at, so that the
+        reply says which content it was.
+        """
+        self._workers.remove(worker)
+        code = worker.end(patience)
+        if len(worker.tasks) > 1:
+            self._alone += worker.tasks
+            return
+        for task in worker.tasks:
+            if task.blame:
+                self._done.append(ReadReply(task.job.key, sentence=task.blame, temporary=True))
+                continue
+            losses = task.losses + (2 if code == -signal.SIGALRM or not patience else 1)
+            blame = self._why(task.job, code if patience else -signal.SIGALRM) if losses > 1 else ""
+            job = task.job._replace(how=None) if blame else task.job
+            self._alone.append(_Task(job, losses, blame))
+
+    def _why(self, job: ReadJob, code: int | None) -> str:
+        how = f"the reader '{getattr(job.how, 'format', 'bench')}'"
+        if code == -signal.SIGALRM:
+            return f"{how} did not come to an end within {self._seconds:g} s; look at the file, or repair the reader"
+        told = f"by {signal.Signals(-code).name}" if code is not None and code < 0 else f"with code {code}"
+        return f"{how} ended its process on this file ({told}); look at the file, or repair the reader"
+
+
+def _blamed(task: _Task, reply: ReadReply) -> ReadReply:
+    return replace(reply, sentence=task.blame) if task.blame and not reply.sentence else reply

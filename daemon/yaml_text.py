@@ -8,12 +8,11 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field
-from itertools import pairwise
 from typing import Any
 
 import yaml
 
-from spikeward.daemon.problems import Problem, lines_of
+from spikeward.daemon.problems import MOST_PROBLEMS, Problem, lines_of
 
 LARGEST = 1 << 20  # bytes
 DEEPEST = 20
@@ -206,19 +205,26 @@ class _Builder:
             parent.entries.append((key, node))
             return
         found = f"the key '{key.text}' stands in line {self._seen[-1][key.text]} already"
-        self.problems.append(
-            Problem("R005", self._file, key.line, key.column, key.text, found, hint="delete one of the two")
-        )
+        self._note(Problem("R005", self._file, key.line, key.column, key.text, found, hint="delete one of the two"))
+
+    def _note(self, problem: Problem) -> None:
+        if len(self.problems) < MOST_PROBLEMS:
+            self.problems.append(problem)
 
     def _comma(self, node: Node) -> None:
         """Between braces a comma in a number begins a new key: {Cd: 10,02 mg/L} is Cd: 10 and an empty '02 mg/L'."""
-        for (_, number), (key, value) in pairwise(list(node.entries)):
-            if value.plain and value.kind == SCALAR and not value.text and key.text[:1].isdigit() and number.text[-1:].isdigit():
+        kept: list[tuple[Node, Node]] = []
+        for key, value in node.entries:
+            empty = value.kind == SCALAR and value.plain and not value.text
+            if empty and key.text[:1].isdigit() and kept and kept[-1][1].text[-1:].isdigit():
+                number = kept[-1][1]
                 found = f"a comma in the number '{number.text},{key.text}'"
-                place = (self._file, number.line, number.column, "")
-                self.problems.append(Problem("R014", *place, found, hint="write the decimal sign as a point"))
-                node.entries.remove((key, value))
+                place = (self._file, number.line, number.column, kept[-1][0].text)
+                self._note(Problem("R014", *place, found, hint="write the decimal sign as a point"))
                 number.text = f"{number.text}.{key.text}"
+            else:
+                kept.append((key, value))
+        node.entries = kept
 
     def _key(self, key: Node) -> Node:
         place = (self._file, key.line, key.column, "")

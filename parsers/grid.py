@@ -64,12 +64,10 @@ def grid_of(text: str, style: Style, wanted: Sequence[str]) -> Grid:
     ]
     if not any(line.strip() for _, line in lines):
         raise Unreadable("the file holds no text; export it again")
-    likely = _likely(lines, wanted)
-    found = [
-        (start, delimiter)
-        for delimiter in _delimiters(style)
-        if (start := _start(lines, likely, delimiter, style.quote, wanted)) is not None
-    ]
+    found = _starts(lines, _likely(lines, wanted), 1, style, wanted)
+    if not found:
+        broken = [position for position, (_, line) in enumerate(lines[:_PREAMBLE]) if line.count(style.quote) % 2]
+        found = _starts(lines, broken, _TALLEST, style, wanted)
     if not found:
         raise _no_headings(lines, style, wanted)
     start, delimiter = max(found, key=lambda each: _run(lines[each[0] :], each[1], style.quote))
@@ -77,16 +75,17 @@ def grid_of(text: str, style: Style, wanted: Sequence[str]) -> Grid:
     return Grid(tuple(heading(cell) for cell in rows[0].cells), rows)
 
 
-def _start(lines: Lines, likely: Sequence[int], delimiter: str, quote: str, wanted: Sequence[str]) -> int | None:
-    """The position of the row of headings; one whose cells hold line breaks may begin on an earlier line."""
-    for position in likely:
-        if not lacking(_headings(lines[position : position + 1], delimiter, quote), wanted):
-            return position
-    for position, (_, line) in enumerate(lines[:_PREAMBLE] if not likely else ()):
-        broken = line.count(quote) % 2 and _headings(lines[position : position + _TALLEST], delimiter, quote)
-        if broken and not lacking(broken, wanted):
-            return position
-    return None
+def _starts(
+    lines: Lines, likely: Sequence[int], height: int, style: Style, wanted: Sequence[str]
+) -> list[tuple[int, str]]:
+    """By delimiter, the first of the likely positions where a row of headings begins, at most ``height`` lines tall."""
+    found = []
+    for delimiter in _delimiters(style):
+        for position in likely:
+            if not lacking(_headings(lines[position : position + height], delimiter, style.quote), wanted):
+                found.append((position, delimiter))
+                break
+    return found
 
 
 def _likely(lines: Lines, wanted: Sequence[str]) -> list[int]:

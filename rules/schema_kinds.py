@@ -272,8 +272,11 @@ def character() -> Scalar:
     return Scalar("one character in quotes", convert, "R017", wrong="zzz")
 
 
-_QUIET = re2.Options()
-_QUIET.log_errors = False
+_LONGEST_PATTERN = 1000  # characters
+_FRUGAL = re2.Options()
+_FRUGAL.log_errors = False
+# An eighth of what the engine has when names are read: a pattern that is accepted here stays fast there.
+_FRUGAL.max_mem = 1 << 20
 
 _OTHER_ENGINES = (
     (r"\(\?<?[=!]", "looks ahead or behind, which patterns here cannot; write a special rule before the general one"),
@@ -286,8 +289,10 @@ def pattern() -> Scalar:
     """A pattern that must match a whole name, for the linear-time engine."""
 
     def convert(text: str) -> str:
+        if len(text) > _LONGEST_PATTERN:
+            raise ValueError(f"the pattern has more than {_LONGEST_PATTERN} characters")
         try:
-            re2.compile(text, _QUIET)
+            re2.compile(text, _FRUGAL)
         except re2.error as error:
             for construct, told in _OTHER_ENGINES:
                 if re.search(construct, text):

@@ -25,6 +25,8 @@ def problems_of(*edits: Edit) -> tuple[Problem, ...]:
     return load_rules(text, "rules.yaml")[1]
 
 
+READER_ENCODING = """encoding: auto                              # The character set (the default).
+    delimiter"""
 READER_LINE = "  - folder: inbox"
 SAMPLE_RULE = "  - role: sample\n"
 BEHIND = "  match: '(?P<batch>"
@@ -56,17 +58,30 @@ def second_preparation(text: str) -> Edit:
         ([("signal: Signal, ", "")], "R010", "readers.readings.columns", "signal"),
         ([("solution: Solution, ", "")], "R010", "readers.readings.columns", "solution"),
         ([("analyte: Element, ", "")], "R010", "readers.readings.columns", "analyte"),
-        ([("unit: Unit, ", "unit: Unit, signal_rsd: RSD, ")], "R010", "readers.readings.columns.signal_rsd", "readings"),
+        (
+            [("unit: Unit, ", "unit: Unit, signal_rsd: RSD, ")],
+            "R010",
+            "readers.readings.columns.signal_rsd",
+            "readings",
+        ),
         ([("# wide: ", "wide: ")], "R031", "readers.readings.wide", "delete one"),
         ([("Europe/Lisbon", "Europe/Lisbonn")], "R017", "readers.readings.time_zone", "did you mean Europe/Lisbon?"),
         ([("Europe/Lisbon", "Europe")], "R017", "readers.readings.time_zone", "time zone"),
         ([("Europe/Lisbon", "../etc/passwd")], "R017", "readers.readings.time_zone", "time zone"),
-        ([("encoding: auto", "encoding: utf-9")], "R017", "readers.readings.encoding", "character set"),
-        ([("encoding: auto", "encoding: base64")], "R017", "readers.readings.encoding", "character set"),
-        ([("# date_patterns: ['%Y-%m-%d %H:%M:%S']", "date_patterns: ['%Q']")], "R017",
-         "readers.readings.date_patterns[0]", "pattern of a date"),
-        ([("# date_patterns: ['%Y-%m-%d %H:%M:%S']", "date_patterns: [yyyy-mm-dd]")], "R017",
-         "readers.readings.date_patterns[0]", "pattern of a date"),
+        ([(READER_ENCODING, "encoding: utf-9\n    delimiter")], "R017", "readers.readings.encoding", "character set"),
+        ([(READER_ENCODING, "encoding: base64\n    delimiter")], "R017", "readers.readings.encoding", "character set"),
+        (
+            [("# date_patterns: ['%Y-%m-%d %H:%M:%S']", "date_patterns: ['%Q']")],
+            "R017",
+            "readers.readings.date_patterns[0]",
+            "pattern of a date",
+        ),
+        (
+            [("# date_patterns: ['%Y-%m-%d %H:%M:%S']", "date_patterns: [yyyy-mm-dd]")],
+            "R017",
+            "readers.readings.date_patterns[0]",
+            "pattern of a date",
+        ),
         # bench
         ([("{batch: Batch, sample: Sample}", "{batch: Batch}")], "R010", "bench.key", "sample"),
         ([("mass: Mass, ", "")], "R030", "preparations[0].sample.mass", "columns under bench"),
@@ -78,9 +93,18 @@ def second_preparation(text: str) -> Edit:
         ([("_A(?P<level>\\d+)(?P<vessel>", "_A\\d+(?P<vessel>")], "R022", "names[4].match", "the level"),
         ([("_(?P<sample>\\d[A-Za-z0-9-]*)_", "_\\d_")], "R022", "names[4].match", "the sample"),
         ([("(?P<vessel>[a-c])", "(?P<addition>\\d+)")], "R023", "names[4].match", "units: {addition: mL}"),
-        ([("(?P<vessel>[a-c])", "(?P<addition>\\d+)"), ("# units: {addition: uL}", "units: {addition: mg}")], "R023",
-         "names[4].units.addition", "a unit of volume"),
-        ([("# units: {addition: uL}", "units: {addition: uL}")], "R031", "names[4].units.addition", "no group addition"),
+        (
+            [("(?P<vessel>[a-c])", "(?P<addition>\\d+)"), ("# units: {addition: uL}", "units: {addition: mg}")],
+            "R023",
+            "names[4].units.addition",
+            "a unit of volume",
+        ),
+        (
+            [("# units: {addition: uL}", "units: {addition: uL}")],
+            "R031",
+            "names[4].units.addition",
+            "no group addition",
+        ),
         ([("(?P<vessel>[a-c])?", "(?=[a-c])")], "R020", "names[4].match", "looks ahead or behind"),
         ([("(?P<vessel>[a-c])?", "(?P<vessel>[a-c])(?P=vessel)")], "R020", "names[4].match", "refers back"),
         ([("(?P<vessel>[a-c])?", "(?P<vessel>[a-c]")], "R020", "names[4].match", "cannot be used"),
@@ -90,21 +114,36 @@ def second_preparation(text: str) -> Edit:
         ([("levels: [0, 1, 2, 3]", "levels: [0, 1, 2, 02]")], "R031", "series.expects.levels", "twice"),
         ([("[bracket, process_blank, reference]", "[check]")], "R030", "series.closes_with[0]", "role: check"),
         ([("role: background,   ", "role: reagent_blank,")], "R030", "blanks.background", "role: background"),
-        ([("role: process_blank,", "role: duplicate,")], "R030", "blanks.process", "role: process_blank"),
-        ([("role: bracket, ", "role: calibration,")], "R030", "brackets", "role: bracket"),
-        ([("role: reference, ", "role: duplicate, ")], "R030", "references", "role: reference"),
+        (
+            [("role: process_blank,", "role: duplicate,"), ("process_blank, reference]", "reference]")],
+            "R030",
+            "blanks.process",
+            "role: process_blank",
+        ),
+        ([("role: bracket, ", "role: calibration,"), ("[bracket, ", "[")], "R030", "brackets", "role: bracket"),
+        ([("role: reference, ", "role: duplicate, "), (", reference]", "]")], "R030", "references", "role: reference"),
         # standards
         ([("# content: 10 mg/L", "content: 10 mg/L")], "R031", "standards.Mix-7", "delete one"),
         ([("contents: {Cd: 10.02 mg/L, Pb: 50.1 mg/L}", "analyte: Cd")], "R010", "standards.Mix-7", "content"),
         ([("10.02 mg/L", "10.02 mg/kg")], "R015", "standards.Mix-7.contents.Cd", "mass per mass"),
-        ([("10.02 mg/L", "10,02 mg/L")], "R015", "standards.Mix-7.contents.Cd", "point"),
+        ([("10.02 mg/L", "10,02 mg/L")], "R014", "Cd", "point"),
+        (
+            [("{Cd: 10.02 mg/L, Pb: 50.1 mg/L}", "\n      Cd: 10,02 mg/L")],
+            "R015",
+            "standards.Mix-7.contents.Cd",
+            "point",
+        ),
         ([("10.02 mg/L", "10.02 ppm")], "R015", "standards.Mix-7.contents.Cd", "mg/L or mg/kg"),
         ([("10.02 mg/L", "0 mg/L")], "R015", "standards.Mix-7.contents.Cd", "zero"),
         ([("2027-03-31", "2027-02-30")], "R017", "standards.Mix-7.expires", "a date"),
         # preparations
         ([("standard: Mix-7", "standard: Mix-8")], "R030", "preparations[0].additions.standard", "did you mean Mix-7?"),
-        ([("standard: Mix-7 ", "# "), ("\npreparations:", "  X: {analyte: Cd, content: 1 mg/L}\n\npreparations:")], "R010",
-         "preparations[0].additions.standard", "Mix-7 or X"),
+        (
+            [("standard: Mix-7 ", "# "), ("\npreparations:", "  X: {analyte: Cd, content: 1 mg/L}\n\npreparations:")],
+            "R010",
+            "preparations[0].additions.standard",
+            "Mix-7 or X",
+        ),
         ([(LEVELS, "levels: {}")], "R010", "preparations[0].additions.levels", "addition"),
         ([(LEVELS, "levels: {0: 0 mL, 1: 0 mL}")], "R031", "preparations[0].additions.levels", "any standard"),
         ([(LEVELS, "levels: {1: 0.1 mL, 01: 0.2 mL}")], "R031", "preparations[0].additions.levels.01", "twice"),
@@ -119,18 +158,32 @@ def second_preparation(text: str) -> Edit:
         ([("# volume: 5 mL", "volume: 5 mL")], "R031", "preparations[0].sample", "mass and a volume"),
         ([("mass: bench", "# "), ("dry_matter: bench", "# ")], "R010", "preparations[0].sample", "add mass"),
         ([("digest: 50 mL", "# ")], "R010", "preparations[0].sample", "add digest"),
-        ([("mass: bench", "volume: 1 mL"), ("report_in: mg/kg", "# ")], "R031", "preparations[0].sample.dry_matter", "mass"),
+        (
+            [("mass: bench", "volume: 1 mL"), ("report_in: mg/kg", "# ")],
+            "R031",
+            "preparations[0].sample.dry_matter",
+            "mass",
+        ),
         ([("dry_matter: bench", "dry_matter: 120 %")], "R015", "preparations[0].sample.dry_matter", "whole"),
         ([("# dilution: 1 + 4", "dilution: 1:5")], "R015", "preparations[0].sample.dilution", "1 + 4"),
         ([("report_in: mg/kg", "report_in: mg/L")], "R015", "preparations[0].report_in", "mass per mass"),
         ([("report_in: mg/kg", "report_in: ppm")], "R015", "preparations[0].report_in", "mg/L or mg/kg"),
-        ([("10.02 mg/L", "1 mmol/L"), ("50.1 mg/L", "1 mmol/L"), ("report_in: mg/kg", "# ")], "R010",
-         "preparations[0].report_in", "mmol/kg"),
-        ([("{batch: 'MD\\d+'}", "{role: sample}")], "R030", "names[0].role", "process_blank"),
+        (
+            [("10.02 mg/L", "1 mmol/L"), ("50.1 mg/L", "1 mmol/L"), ("report_in: mg/kg", "# ")],
+            "R010",
+            "preparations[0].report_in",
+            "mmol/kg",
+        ),
+        ([("{batch: 'MD\\d+'}", "{role: 'process_blank|reference'}")], "R030", "names[4].role", "role sample"),
         ([("{batch: 'MD\\d+'}", "{batch: '(MD'}")], "R020", "preparations[0].for.batch", "cannot be used"),
         # contents that are known
         ([("Cd: 20 ug/L", "Cu: 20 ug/L")], "R030", "brackets.contents.Cu", "no standard holds 'Cu'"),
-        ([(MUD, MUD.replace("uncertainty", "uncertanty"))], "R030", "references.MUD-1.uncertanty", "did you mean uncertainty?"),
+        (
+            [(MUD, MUD.replace("uncertainty", "uncertanty"))],
+            "R030",
+            "references.MUD-1.uncertanty",
+            "did you mean uncertainty?",
+        ),
         ([(MUD, "MUD-1: {Cd: 2.40 mg/kg, uncertainty: 0.16 mg/kg}")], "R010", "references.MUD-1.uncertainty", "k: 2"),
         ([(MUD, "MUD-1: {Cd: 2.40 mg/kg, k: 2}")], "R010", "references.MUD-1.k", "delete k"),
         ([(MUD, "MUD-1: {k: 2, uncertainty: 5 %}")], "R010", "references.MUD-1", "no content"),
@@ -139,19 +192,34 @@ def second_preparation(text: str) -> Edit:
         # checks
         ([("pack:general", "pack:generall")], "R030", "checks.use", "did you mean pack:general?"),
         ([("correlation:", "corelation:")], "R012", "checks.corelation", "did you mean correlation?"),
-        ([("fail_below: 0.995", "fail_belw: 0.995")], "R012", "checks.correlation.fail_belw", "did you mean fail_below?"),
+        (
+            [("fail_below: 0.995", "fail_belw: 0.995")],
+            "R012",
+            "checks.correlation.fail_belw",
+            "did you mean fail_below?",
+        ),
         ([("fail_below: 0.995", "warn_outside: [1, 2]")], "R012", "checks.correlation.warn_outside", "fail_below"),
-        ([("fail_below: 0.995", "fail_below: 0,995")], "R014", "checks.correlation.fail_below", "point"),
+        ([("fail_below: 0.995", "fail_below: 0,995")], "R014", "fail_below", "point"),
         ([("[80 %, 120 %]", "[120 %, 80 %]")], "R031", "checks.reference.fail_outside", "not below"),
         ([("[80 %, 120 %]", "80 %")], "R011", "checks.reference.fail_outside", "two limits"),
         ([("[80 %, 120 %]", "[80 %]")], "R011", "checks.reference.fail_outside", "two limits"),
-        ([("correlation: {fail_below: 0.995}", "levels: {fail_below: 10 %}")], "R014", "checks.levels.fail_below", "whole"),
-        ([("correlation: {fail_below: 0.995}", "units: {fail_above: 1}")], "R012", "checks.units.fail_above", "only off"),
+        (
+            [("correlation: {fail_below: 0.995}", "levels: {fail_below: 10 %}")],
+            "R014",
+            "checks.levels.fail_below",
+            "whole",
+        ),
+        (
+            [("correlation: {fail_below: 0.995}", "units: {fail_above: 1}")],
+            "R012",
+            "checks.units.fail_above",
+            "only off",
+        ),
         # keys in the wrong place
         ([("language: en", "coverage: 95 %")], "R012", "coverage", "it belongs under report"),
         ([("coverage: 95 %", "coverage: 95")], "R014", "report.coverage", "between 0 and 100 %"),
     ],
-)  # fmt: skip
+)
 def test_refused_with_its_place_and_remedy(edits: list[Edit], code: str, path: str, says: str):
     problems = problems_of(*edits)
     errors = [problem for problem in problems if problem.severity == "error"]
@@ -166,16 +234,39 @@ def test_refused_with_its_place_and_remedy(edits: list[Edit], code: str, path: s
 @pytest.mark.parametrize(
     ("edits", "code", "path", "says"),
     [
-        ([("\nnames:", "  spare:\n    columns: {solution: S, analyte: E, signal: A}\n\nnames:")], "R041", "readers.spare", "delete it"),
-        ([(SAMPLE_RULE, "  - {role: sample, match: '(?P<batch>MD\\d+)_(?P<sample>X)_A(?P<level>\\d)'}\n"
-           "  - {role: duplicate, match: '(?P<batch>MD\\d+)_(?P<sample>X)_A(?P<level>\\d)'}\n" + SAMPLE_RULE)],
-         "R040", "names[5]", "go to the rule for role sample in line"),
-        ([("_BLK(?P<sample>\\d+)?", "_PB\\d_A(?P<sample>\\d+)")], "R040", "names[1]", "role process_blank in line"),
+        (
+            [("\n# What the names", "  spare:\n    columns: {solution: S, analyte: E, signal: A}\n\n# What the names")],
+            "R041",
+            "readers.spare",
+            "delete it",
+        ),
+        (
+            [
+                (
+                    SAMPLE_RULE,
+                    "  - {role: sample, match: '(?P<batch>MD\\d+)_(?P<sample>X)_A(?P<level>\\d)'}\n"
+                    "  - {role: duplicate, match: '(?P<batch>MD\\d+)_(?P<sample>X)_A(?P<level>\\d)'}\n" + SAMPLE_RULE,
+                )
+            ],
+            "R040",
+            "names[5]",
+            "go to the rule for role sample in line",
+        ),
+        (
+            [("_BLK(?P<sample>\\d+)?(_r(?P<reading>\\d+))?", "_PB\\d_A(?P<sample>\\d+)")],
+            "R040",
+            "names[1]",
+            "role process_blank in line",
+        ),
         ([("(?P<batch>[A-Z]{2}\\d+)_BLK", "BLK")], "R042", "names[1].match", "batch"),
-        ([second_preparation("for: {batch: 'MD\\d+', sample: '9'}, design: successive, aliquot: 5 mL")], "R040",
-         "preparations[1]", "put the special one first"),
+        (
+            [second_preparation("for: {batch: 'MD\\d+', sample: '9'}, design: successive, aliquot: 5 mL")],
+            "R040",
+            "preparations[1]",
+            "put the special one first",
+        ),
     ],
-)  # fmt: skip
+)
 def test_warned_of_and_still_read(edits: list[Edit], code: str, path: str, says: str):
     problems = problems_of(*edits)
     assert [(p.code, p.path, p.severity) for p in problems] == [(code, path, "warning")]
