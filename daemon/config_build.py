@@ -120,7 +120,8 @@ def _preparation(each: Values, standards: tuple[str, ...], line: int) -> Prepara
         standard=additions["standard"] or standards[0],
         level_0=each["level_0"],
         diluent=each["diluent"],
-        sample=SampleRule(**each["sample"]) if each["sample"] else None,
+        # Another unit of report is reached by a way back on which nothing was done.
+        sample=SampleRule(**each["sample"] or {}) if each["sample"] or each["report_in"] else None,
         report_in=each["report_in"],
         line=line,
     )

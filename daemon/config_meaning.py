@@ -15,6 +15,7 @@ from spikeward.daemon.config_names import check_names, groups_of
 from spikeward.daemon.config_preparations import check_preparations, result_dimensions
 from spikeward.daemon.config_walk import Walker, near
 from spikeward.daemon.problems import WARNING
+from spikeward.parsers.registry import formats
 from spikeward.rules.naming import number_of
 from spikeward.rules.records import SERIES_ROLES
 from spikeward.rules.schema_kinds import one_of
@@ -70,8 +71,9 @@ def _check_reader(reader: Values, path: str, value: Values, walker: Walker) -> N
     _check_encoding(reader["encoding"], f"{path}.encoding", walker)
     for number, pattern in enumerate(reader["date_patterns"]):
         _check_date_pattern(pattern, f"{path}.date_patterns[{number}]", walker)
+    _check_format(reader["format"], f"{path}.format", walker)
     columns, wide = reader["columns"], reader["wide"]
-    if reader["format"] not in ("delimited", "workbook"):
+    if reader["format"] != _DELIMITED:
         return  # other formats name their own fields
     if not columns.get("signal") and not wide:
         walker.at(f"{path}.columns", "R010", "no column of signals is named", "", "add signal: and its heading")
@@ -97,6 +99,17 @@ def _check_reader(reader: Values, path: str, value: Values, walker: Walker) -> N
     if "analyte" not in columns and not wide and "analyte" not in groups and len(_analytes(value)) != 1:
         hint = "add analyte: and its heading, or (?P<analyte>…) to the patterns under names"
         walker.at(f"{path}.columns", "R010", "nothing says the analyte, and the standards hold several", "", hint)
+
+
+_DELIMITED = "delimited"
+
+
+def _check_format(name: str, path: str, walker: Walker) -> None:
+    if name == _DELIMITED or name in (installed := formats()):  # looking for plug-ins takes a while
+        return
+    meant = near(name, installed)
+    hint = f"did you mean {meant}?" if meant else "install the package that reads it"
+    walker.at(path, "R030", f"no reader is called '{name}'", one_of(installed), hint)
 
 
 def _check_time_zone(name: str, path: str, walker: Walker) -> None:

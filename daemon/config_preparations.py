@@ -170,11 +170,7 @@ def _check_report_unit(each: Values, path: str, value: Values, walker: Walker) -
     if not walker.sound(*parts):
         return
     where, unit, found = f"{path}.report_in", each["report_in"], result_dimensions(each, value)
-    if each["sample"] is None or all(part is None for part in each["sample"].values()):
-        if unit:
-            hint = "add sample, with dilution: 1 where there is none"
-            walker.at(where, "R031", "without sample nothing leads to another unit", "", hint)
-    elif unit and found and found != {UNITS[unit][0]}:
+    if unit and found and found != {UNITS[unit][0]}:
         told = f"{unit} is a unit of {UNITS[unit][0]}; standard and sample lead to {one_of(tuple(sorted(found)))}"
         walker.at(where, "R015", told, "", "give mass and digest for a content per mass, or correct the unit")
     elif not unit and found == {"amount per mass"}:

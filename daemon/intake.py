@@ -9,10 +9,10 @@ from spikeward.daemon.claims import DECISIONS, Claim, Claims
 from spikeward.daemon.holdings import Content, Holdings, Place
 from spikeward.daemon.names import shown
 from spikeward.daemon.pages.facts import Notice
+from spikeward.daemon.reading import ReadJob, ReadReply
 from spikeward.daemon.settle import Settling, Stamp, Waited
 from spikeward.daemon.station import Places
 from spikeward.daemon.survey import Listing, Oddity, Presence, compare
-from spikeward.daemon.workers import ReadJob, ReadReply
 from spikeward.rules.records import BatchKey
 from spikeward.rules.rulebook import Rulebook, Watch
 

@@ -8,7 +8,7 @@ from spikeward.daemon.codec import decode_bench, decode_table, encode_bench, enc
 from spikeward.daemon.holdings import Content
 from spikeward.daemon.journal import FileRecord, Journal
 from spikeward.daemon.pipeline import Pipeline
-from spikeward.daemon.workers import ReadReply
+from spikeward.daemon.reading import ReadReply
 
 _TABLE, _BENCH, _UNREAD = "table", "bench", "unread"
 

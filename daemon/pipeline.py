@@ -25,11 +25,11 @@ from spikeward.daemon.names import unread_name
 from spikeward.daemon.output import Output
 from spikeward.daemon.pages.facts import Notice
 from spikeward.daemon.pages.flag import render_unread
+from spikeward.daemon.reading import ReadJob, ReadReply
 from spikeward.daemon.records import Records
 from spikeward.daemon.solving import Solved, Solving
 from spikeward.daemon.station import Clock, Places, rules_from
 from spikeward.daemon.survey import Listing
-from spikeward.daemon.workers import ReadJob, ReadReply
 from spikeward.rules.outcomes import CALCULATION_VERSION, BatchOutcome
 from spikeward.rules.records import BatchKey, SeriesKey
 from spikeward.rules.rulebook import Rulebook

@@ -104,19 +104,23 @@ def _stamp(found: os.stat_result) -> Stamp:
 def _content(path: str) -> tuple[bytes, Stamp]:
     """The bytes of a regular file that did not change meanwhile. A pipe is opened without waiting, and refused."""
     handle = os.open(path, os.O_RDONLY | os.O_NOFOLLOW | os.O_NONBLOCK | os.O_NOCTTY | os.O_CLOEXEC)
-    with open(handle, "rb") as file:
+    try:
         before = os.fstat(handle)
         if not stat.S_ISREG(before.st_mode):
             raise Unreadable("it is no regular file and is never opened; take it away")
         if before.st_size > LARGEST:
+            largest = f"{LARGEST >> 20} MiB"
             raise Unreadable(
-                f"it holds {before.st_size >> 20} MiB; those above {LARGEST >> 20} MiB are not read; export less at once"
+                f"it holds {before.st_size >> 20} MiB, and none above {largest} is read; export less at once"
             )
         if not before.st_size:
             raise _NotYet("it is still empty")
-        content = file.read(LARGEST + 1)
+        with open(handle, "rb", closefd=False) as file:
+            content = file.read(LARGEST + 1)
         if _stamp(os.fstat(handle)) != _stamp(before) or len(content) != before.st_size:
             raise _NotYet("it is still being written")
+    finally:
+        os.close(handle)
     return content, _stamp(before)
 
 

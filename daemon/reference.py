@@ -9,6 +9,8 @@ from pathlib import Path
 
 from spikeward.daemon.config_checks import PackLimit, read_pack, shipped_packs
 from spikeward.daemon.problems import CODES
+from spikeward.rules.naming import GROUPS
+from spikeward.rules.quantities import UNITS
 from spikeward.rules.schema import RULE_FILE
 from spikeward.rules.schema_kinds import Scalar
 from spikeward.rules.schema_shapes import WITH_ITS_DEFAULTS, Block, Field, Limits, ListOf, MapOf, Shape, kind_of
@@ -121,7 +123,7 @@ def reference_text() -> str:
             )
         elif isinstance(field.shape, Scalar):
             parts.append(f"\nExpected: {field.shape.expected}.\n")
-    return "".join((*parts, _checks_part(), _codes_part()))
+    return "".join((*parts, _patterns_part(), _units_part(), _checks_part(), _codes_part()))
 
 
 def _rows(shape: Shape, path: str) -> Iterator[str]:
@@ -139,6 +141,36 @@ def _rows(shape: Shape, path: str) -> Iterator[str]:
             yield from inner
         if shape.others is not None:
             yield from _rows(shape.others, path)
+
+
+_PATTERNS = """
+## Patterns
+
+A pattern must match the whole name. Write it in single quotes. Groups name what the parts mean, such as
+`(?P<sample>\\d+)`; `(?:…)` is a group without meaning. Possible are
+{groups}.
+
+Patterns run on an engine that never takes long, whatever the name. It knows no look-ahead, no look-behind and no
+reference back to a group. Instead of "a name that does not begin with QC", write a rule for names with QC above the
+general one: the first rule that takes a name wins.
+"""
+
+
+def _patterns_part() -> str:
+    return _PATTERNS.format(groups=textwrap.fill(", ".join(GROUPS), _WIDTH))
+
+
+def _units_part() -> str:
+    by_dimension: dict[str, list[str]] = {}
+    for code, (dimension, _) in UNITS.items():
+        by_dimension.setdefault(dimension, []).append(code)
+    rows = "".join(f"| {dimension} | {', '.join(codes)} |\n" for dimension, codes in by_dimension.items())
+    return (
+        "\n## Units\n\nCommon other spellings are understood (`µL`, `ml`, `mg L-1`, `mg·L⁻¹`, `mM`). "
+        "`ppm` and `ppb` are refused,\n"
+        "since they do not say whether they are per volume or per mass; so is a decimal comma.\n\n"
+        f"| measures | units |\n| --- | --- |\n{rows}"
+    )
 
 
 def _checks_part() -> str:

@@ -8,9 +8,9 @@ from spikeward.daemon.claims import Claims
 from spikeward.daemon.config_effective import effective
 from spikeward.daemon.disk import RealDisk
 from spikeward.daemon.names import shown
+from spikeward.daemon.reading import ReadJob, read_file
 from spikeward.daemon.station import Places, RuleFile, read_rule_file
 from spikeward.daemon.survey import survey
-from spikeward.daemon.reading import ReadJob, read_file
 from spikeward.rules.naming import GROUPS, Namer, Understood
 from spikeward.rules.records import Layout
 from spikeward.rules.rulebook import Rulebook, Watch

@@ -172,7 +172,9 @@ PREPARATION = Block((
         Field("volume", _VOLUME, "The same volume at every level.", example="10 mL"),
         Field("levels", MapOf(_VOLUME, "a level", "0"), "A volume for each level.", example="{0: 10 mL, 1: 9.5 mL}"),
     ), short="volume"),
-          "The test solution that goes into each vessel; {levels: {0: 10 mL, 1: 9.5 mL}} where it differs.", WITH_ITS_DEFAULTS, example="10 mL"),
+          "The test solution that goes into each vessel; {levels: {0: 10 mL, 1: 9.5 mL}} where it differs.",
+          WITH_ITS_DEFAULTS,
+          example="10 mL"),
     Field("final", Block((Field("volume", _VOLUME, "The volume.", required=True, example="25 mL"),), short="volume"),
           "The volume to which each vessel is made up.", example="25 mL"),
     Field("additions", Block((

@@ -14,7 +14,7 @@ from spikeward.daemon.reference import example_text, reference_text
 from spikeward.rules.checks.registry import REGISTRY
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Layout
-from spikeward.rules.rulebook import Rulebook, SeriesRule, Watch
+from spikeward.rules.rulebook import Rulebook, SampleRule, SeriesRule, Watch
 
 HOUSE = Path(__file__).resolve().parents[2]
 EXAMPLE = (HOUSE / "config.example.yaml").read_text(encoding="utf-8")
@@ -96,6 +96,16 @@ def test_levels_are_compared_as_numbers():
     (preparation,) = rules_of(text).preparations
     assert set(preparation.additions) == {"0", "1", "2", "3"}
     assert preparation.aliquot == {"": mL("10"), "3": mL("9")}
+
+
+def test_a_report_in_another_unit_needs_no_sample():
+    assert rules_of(FIRST).preparations[0].sample is None
+    (preparation,) = rules_of(FIRST + "  report_in: ug/L\n").preparations
+    assert preparation.sample == SampleRule()
+    assert preparation.report_in == "ug/L"
+    rules, problems = load_rules(FIRST + "  report_in: mg/kg\n", "rules.yaml")
+    assert rules is None
+    assert [problem.code for problem in problems] == ["R015"]
 
 
 def test_names_stay_as_they_are_written():

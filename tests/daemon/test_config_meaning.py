@@ -6,6 +6,7 @@ from pathlib import Path
 
 import pytest
 
+from spikeward.daemon import config_meaning
 from spikeward.daemon.config import load_rules
 from spikeward.daemon.config_folders import contains
 from spikeward.daemon.config_names import groups_of
@@ -82,6 +83,7 @@ def second_preparation(text: str) -> Edit:
             "readers.readings.date_patterns[0]",
             "pattern of a date",
         ),
+        ([("format: delimited", "format: delimitted")], "R030", "readers.readings.format", "did you mean delimited?"),
         # bench
         ([("{batch: Batch, sample: Sample}", "{batch: Batch}")], "R010", "bench.key", "sample"),
         ([("mass: Mass, ", "")], "R030", "preparations[0].sample.mass", "columns under bench"),
@@ -296,7 +298,8 @@ def test_a_file_name_can_say_what_the_columns_do_not():
     assert problems_of(("analyte: Element, ", ""), ("(?P<vessel>[a-c])", "(?P<analyte>Cd|Pb)")) == ()
 
 
-def test_other_formats_name_their_own_fields():
+def test_other_formats_name_their_own_fields(monkeypatch: pytest.MonkeyPatch):
+    monkeypatch.setattr(config_meaning, "formats", lambda: ("andi", "delimited"))
     assert problems_of(("format: delimited", "format: andi"), (COLUMNS, "{}")) == ()
 
 

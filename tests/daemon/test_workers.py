@@ -68,8 +68,8 @@ def plugin(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     (site / "wild_reader.py").write_text(PLUGIN)
     (site / "wild-1.0.dist-info" / "METADATA").write_text("Metadata-Version: 2.1\nName: wild\nVersion: 1.0\n")
     (site / "wild-1.0.dist-info" / "entry_points.txt").write_text(
-        "[spikeward.readers]\nwild = wild_reader:READER\nmissing = wild_reader:NOWHERE\nidle = wild_reader:READS_NOTHING\n"
-        "delimited = wild_reader:READER\n"
+        "[spikeward.readers]\nwild = wild_reader:READER\nmissing = wild_reader:NOWHERE\n"
+        "idle = wild_reader:READS_NOTHING\ndelimited = wild_reader:READER\n"
     )
     monkeypatch.setenv("PYTHONPATH", str(site))
     return tmp_path
@@ -183,9 +183,19 @@ def test_trouble_of_the_disk_is_temporary_and_told(tmp_path: Path, monkeypatch: 
 
 def test_a_file_that_changes_while_it_is_read_is_tried_again(tmp_path: Path, monkeypatch: pytest.MonkeyPatch):
     job = job_of(tmp_path, "x.csv", GOOD)
-    looks = iter([os.stat(job.path), os.stat(tmp_path)])
-    monkeypatch.setattr(reading.os, "fstat", lambda _: next(looks))
-    reply = read_file(job)
+    real, looks = os.fstat, []
+
+    def grows(handle: int) -> os.stat_result:
+        if looks:
+            with open(job.path, "ab") as file:
+                file.write(b"X1_A1,0.2\n")
+        looks.append(handle)
+        return real(handle)
+
+    with monkeypatch.context() as patched:
+        patched.setattr(reading.os, "fstat", grows)
+        reply = read_file(job)
+    assert len(looks) == 2
     assert reply.temporary
     assert "being written" in reply.sentence
 
@@ -203,7 +213,7 @@ def test_a_name_that_is_not_unicode_reaches_the_worker(tmp_path: Path):
 ODD = {
     "raises": "ValueError: no such thing",
     "leaves": "SystemExit",
-    "hangs": "did not come to an end within 0.5 s",
+    "hangs": "did not come to an end within 2 s",
     "eats": "more memory than a reader may have",
     "eats slowly": "more memory than a reader may have",
     "exits": "with code 7",
@@ -219,7 +229,7 @@ def test_a_reader_that_misbehaves_costs_its_file_only(plugin: Path):
     jobs = [wild(plugin, what) for what in ODD]
     jobs += [wild(plugin, "writes"), wild(plugin, "fine")]
     jobs += [job_of(plugin, f"{number}.csv", GOOD) for number in range(60)]
-    with Readers(2, seconds=0.5, memory=256 << 20) as readers:
+    with Readers(2, seconds=2.0, memory=96 << 20) as readers:
         found = by_name(readers.read_many(jobs))
     assert len(found) == len(jobs)
     for what, said in ODD.items():
