@@ -2,7 +2,7 @@
 
 It covers everything that can change a result: station and language (they stand in summaries), readers and which of them
 a watch uses, bench files, names, series, standards, preparations, blanks, brackets, references, ranges, the limits of
-every check with their sources, coverage and the decisions file. It does not cover where folders and the state lie, how
+every check with their sources, coverage and the decisions file, and the versions of readers from other packages. It does not cover where folders and the state lie, how
 changes are noticed, and in which line a rule stands.
 """
 
@@ -13,6 +13,7 @@ import json
 from dataclasses import fields, is_dataclass
 from typing import Any
 
+from spikeward.parsers.registry import origin
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.rulebook import Rulebook
 
@@ -24,6 +25,7 @@ def digest_of(rules: Rulebook) -> str:
     content = _plain(rules)
     # Which readers take a file, in which order, decides what is read; where the folder lies does not.
     content["watches"] = sorted({(watch.readers, watch.spans_folders) for watch in rules.watches})
+    content["origins"] = {layout.format: origin(layout.format) for layout in rules.layouts.values()}
     text = json.dumps(content, ensure_ascii=False, sort_keys=True, separators=(",", ":"))
     return hashlib.sha256(text.encode("utf-8")).hexdigest()
 

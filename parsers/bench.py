@@ -57,10 +57,10 @@ def read_bench(content: bytes, rule: BenchColumns, folder: str, path: str) -> tu
     """
     text = decode(content, rule.encoding).text
     grid = grid_of(text, Style(rule.delimiter), (*rule.key.values(), *rule.columns.values()))
-    rows = body_of(grid).rows
     head = grid.rows[0].number
     keys = {meaning: column(grid.headings, name, head) for meaning, name in rule.key.items()}
     columns = {meaning: column(grid.headings, name, head) for meaning, name in rule.columns.items()}
+    rows = body_of(grid).rows
     numbers = numbers_of(_numeric_cells(rows, columns), rule.decimal)
     entries = []
     for row in rows:

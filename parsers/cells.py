@@ -24,6 +24,7 @@ _SUCH_AS = {"mass": "g", "dry_matter": "%", "aliquot": "mL", "addition": "mL", "
 _PARTS = re.compile(
     "([+-\N{MINUS SIGN}]?[0-9.,'\N{RIGHT SINGLE QUOTATION MARK}\\s]*(?:[eE][+-]?[0-9]+)?)(.*)", re.DOTALL
 )
+_BY_SIGN = {"": MISSING, "<": NOT_DETECTED, "≤": NOT_DETECTED, ">": OVER_RANGE, "≥": OVER_RANGE, "#": FAULTY}
 
 
 class Words:
@@ -32,17 +33,16 @@ class Words:
     def __init__(self, not_detected: Sequence[str], over_range: Sequence[str]) -> None:
         self._declared = {folded(word): NOT_DETECTED for word in not_detected}
         self._declared |= {folded(word): OVER_RANGE for word in over_range}
+        self._known: dict[str, str] = {}
 
     def qualifier(self, text: str) -> str:
         """What a signal cell is: measured (then it must be a number), or one of the qualifiers."""
-        shown = folded(text)
-        if shown in self._declared:
-            return self._declared[shown]
-        if not shown:
-            return MISSING
-        return {"<": NOT_DETECTED, "≤": NOT_DETECTED, ">": OVER_RANGE, "≥": OVER_RANGE, "#": FAULTY}.get(
-            shown[0], MEASURED
-        )
+        if text not in self._known:
+            self._known[text] = self._qualifier(folded(text))
+        return self._known[text]
+
+    def _qualifier(self, shown: str) -> str:
+        return self._declared.get(shown) or _BY_SIGN.get(shown[:1], MEASURED)
 
 
 def number_part(meaning: str, cell: Cell) -> Cell | None:

@@ -21,7 +21,7 @@ _BRACKETED = re.compile(r"\[([^\[\]]*)\]|\(([^()]*)\)")
 
 def tidy(text: str) -> str:
     """A text with compatible characters folded and blanks collapsed; capitals are kept."""
-    return " ".join(unicodedata.normalize("NFKC", text).split())
+    return " ".join((text if text.isascii() else unicodedata.normalize("NFKC", text)).split())
 
 
 def folded(text: str) -> str:

@@ -19,6 +19,14 @@ def formats() -> tuple[str, ...]:
     return tuple(sorted({*_BUILT_IN, *(each.name for each in entry_points(group=GROUP))}))
 
 
+def origin(name: str) -> str:
+    """The package and version that a reader comes with; empty for a built-in one."""
+    if name in _BUILT_IN:
+        return ""
+    found = sorted(entry_points(group=GROUP, name=name), key=lambda each: each.value)
+    return f"{found[0].dist.name} {found[0].dist.version}" if found and found[0].dist else ""
+
+
 @lru_cache(maxsize=64)
 def reader_for(name: str) -> Reader:
     """The reader of a format; a built-in name cannot be taken over by a package.

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import replace
 from typing import NamedTuple
 
-from spikeward.parsers.body import Body, body_of
+from spikeward.parsers.body import body_of
 from spikeward.parsers.cells import QUANTITIES, Words, number_part, quantity_text
 from spikeward.parsers.dates import Moments
 from spikeward.parsers.grid import Grid, Row
@@ -43,29 +43,30 @@ def table_of(grid: Grid, layout: Layout, whole: bool | None, notes: Sequence[str
     ------
     Unreadable : a needed column or cell is missing, or cannot be read as what it should be
     """
-    body = body_of(grid, layout.ends_at, layout.unit_row)
-    reading = _Reading(grid, body, layout)
-    return Table(_with_units(reading.entries()), whole, (*notes, *body.notes))
+    reading = _Reading(grid, layout)
+    return Table(_with_units(reading.entries()), whole, (*notes, *reading.notes))
 
 
 class _Reading:
     """The columns of one file, found, and how its cells are read."""
 
-    def __init__(self, grid: Grid, body: Body, layout: Layout) -> None:
-        head = grid.rows[0].number
+    def __init__(self, grid: Grid, layout: Layout) -> None:
+        def found(name: str) -> Column:
+            return column(grid.headings, name, grid.rows[0].number)
+
         self._layout = layout
-        self._rows = body.rows
+        self._signals = [_Signal(found(name), *meaning) for name, meaning in layout.wide.items()]
         self._columns = {
-            meaning: column(grid.headings, name, head) for meaning, name in layout.columns.items() if not layout.wide
-            or meaning != "signal"
-        }  # fmt: skip
-        self._signals = [
-            _Signal(column(grid.headings, name, head), *meaning) for name, meaning in layout.wide.items()
-        ] or [_Signal(self._columns["signal"])]
-        self._units = {position: unit_text(cell) for position, cell in enumerate(body.units)}
+            meaning: found(name) for meaning, name in layout.columns.items() if meaning != "signal" or not self._signals
+        }
+        self._signals = self._signals or [_Signal(self._columns["signal"])]
+        self._given = [meaning for meaning in QUANTITIES if meaning in self._columns]
         self._words = Words(layout.not_detected, layout.over_range)
         self._moments = Moments(layout.time_zone, layout.date_patterns)
-        self._given = [meaning for meaning in QUANTITIES if meaning in self._columns]
+        body = body_of(grid, layout.ends_at, layout.unit_row)
+        self.notes = body.notes
+        self._rows = body.rows
+        self._units = {position: unit_text(cell) for position, cell in enumerate(body.units)}
         self._numbers: Numbers = numbers_of(self._numeric_cells(), layout.decimal)
 
     def entries(self) -> Iterator[Entry]:

@@ -41,7 +41,7 @@ class BenchRule:
 class NameRule:
     """One naming rule: the whole of ``source`` (solution, file or path) must match ``pattern``.
 
-    ``units`` gives the unit of a group that is a quantity, ``constants`` what the name leaves out (such as a batch).
+    ``units`` gives the unit of a group that is a quantity.
     """
 
     role: str

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 import shlex
+import tomllib
 from pathlib import Path
 
 import pytest
@@ -172,6 +173,18 @@ def test_links_lead_somewhere(page):
     for target in re.findall(r"\]\(([^)#]+)(?:#[^)]*)?\)", page.read_text(encoding="utf-8")):
         assert "://" not in target
         assert (page.parent / target).exists(), target
+
+
+def test_developers_are_told_of_every_dependency_and_of_no_file_that_is_gone():
+    text = (HOUSE / "DEVELOPERS.md").read_text(encoding="utf-8")
+    project = tomllib.loads((HOUSE / "pyproject.toml").read_text(encoding="utf-8"))["project"]
+    every = (*project["dependencies"], *project["optional-dependencies"]["test"])
+    needed = {re.split(r"[>=<]", each)[0] for each in every}
+    told = text.split("## Dependencies")[1].split("## ")[0]
+    assert {each for each in needed if not re.search(rf"\b{re.escape(each)}\b", told, re.IGNORECASE)} == set()
+    paths = re.findall(r"(?:rules|parsers|daemon|tests)/[a-z_/]+\.(?:py|yaml)", text)
+    assert len(paths) > 10
+    assert [path for path in paths if not (HOUSE / path).exists()] == []
 
 
 def test_the_readme_states_the_job_first():

@@ -1,7 +1,8 @@
 """Published series as files: the cases, a watch over their folders, and the page that compares them.
 
-``python -m tests.external.published`` writes the page ``daemon/guide/published.md`` anew. A case is a folder with a rule
-file, exports in a layout of its own, and ``published.yaml`` with the printed numbers, which the rule file does not know.
+``python -m tests.external.published`` writes the page ``daemon/guide/published.md`` anew. A case is a folder with a
+rule file, exports in a layout of its own, and ``published.yaml`` with the printed numbers, of which the rule file knows
+nothing.
 """
 
 from __future__ import annotations
@@ -30,7 +31,7 @@ from spikeward.rules.outcomes import FAIL, WAITING, WARN
 
 CASES = Path(__file__).parent / "cases"
 PAGE = Path(__file__).parents[2] / "daemon" / "guide" / "published.md"
-PATIENCE = 60.0  # s, for all of them together
+PATIENCE = 120.0  # s, for all of them together
 COVERAGE = 0.95
 
 Document = dict[str, Any]
@@ -101,7 +102,7 @@ def _case(folder: Path) -> Case:
         memory=told.get("memory", ""),
         unit=told["unit"],
         standard=Fraction(told["standard"]),
-        flasks=tuple(tuple(Fraction(each) for each in flask) for flask in told["flasks"]),
+        flasks=tuple((Fraction(v0), Fraction(v), Fraction(end), Fraction(s)) for v0, v, end, s in told["flasks"]),
         over=Fraction(in_sample["over"]) if in_sample else None,
         sample_unit=in_sample.get("unit", ""),
         printed=tuple(_printed(each) for each in told.get("printed", ())),
@@ -184,10 +185,14 @@ def through_files(chosen: Sequence[Case], work: Path) -> dict[str, Document]:
     for case in chosen:
         (work / case.name / "inbox").mkdir(parents=True)
         shutil.copy(case.folder / "rules.yaml", work / case.name)
-    stop = threading.Event()
+    stop, opened = threading.Event(), threading.Semaphore(0)
     with ThreadPoolExecutor(len(chosen)) as threads:
-        watchers = [threads.submit(_watch, work / case.name / "rules.yaml", stop) for case in chosen]
+        watchers = [threads.submit(_watch, work / case.name / "rules.yaml", stop, opened) for case in chosen]
         try:
+            for watcher in watchers:
+                watcher.add_done_callback(lambda _: opened.release())  # one that could not open is not waited for
+            for _ in chosen:
+                opened.acquire()
             for case in chosen:
                 for export in sorted((case.folder / "inbox").iterdir()):
                     shutil.copy(export, work / case.name / "inbox")
@@ -203,9 +208,11 @@ def through_files(chosen: Sequence[Case], work: Path) -> dict[str, Document]:
     return {case.name: _result(work / case.name / "inbox") for case in chosen}
 
 
-def _watch(rules: Path, stop: threading.Event) -> None:
-    with open_station(str(rules)) as opened, Readers(0) as readers:
-        Watching(opened, readers, time.monotonic).run(stop)
+def _watch(rules: Path, stop: threading.Event, opened: threading.Semaphore) -> None:
+    """One station; files are read in this process, since a process for each case would take most of the time."""
+    with open_station(str(rules)) as station, Readers(0) as readers:
+        opened.release()
+        Watching(station, readers, time.monotonic).run(stop)
 
 
 def _arrived(inbox: Path) -> bool:
@@ -242,9 +249,9 @@ half a unit of that digit. Where no answer is printed, ours is compared with the
 *From memory* means that the publication was not read again for this page.
 """
 _WRONG = """\
-## Printed, and not returned
+## Wrong answers that are not returned
 
-Answers that stand in print or in copies and rest on a mistake or a simplification.
+They stand in print or in copies, or follow from a formula in use, and rest on a mistake or a simplification.
 """
 _VERDICTS = """\
 ## Verdicts
@@ -257,16 +264,22 @@ small additions, a bent line or a strange point, and that is said of them.
 def page(chosen: Sequence[Case], documents: Mapping[str, Document]) -> str:
     """The page that compares print and result."""
     tables = [
-        (_HEAD, ("series", "source", "quantity", "published", "ours", "digits agreed"), _agreed),
-        (_WRONG, ("series", "quantity", "printed", "ours", "why it is not returned"), _not_returned),
-        (_VERDICTS, ("series", "verdict", "because of"), _verdict),
+        (_HEAD, ("series", "source", "quantity", "published", "ours", "digits agreed"), _agreed, 2),
+        (_WRONG, ("series", "quantity", "wrong answer", "ours", "what is wrong with it"), _not_returned, 1),
+        (_VERDICTS, ("series", "verdict", "because of these checks"), _verdict, 0),
     ]
     parts = []
-    for head, titles, rows_of in tables:
-        rows = [row for case in chosen for row in rows_of(case, documents[case.name])]
+    for head, titles, rows_of, columns in tables:
+        rows = [row for case in chosen for row in _once(rows_of(case, documents[case.name]), columns)]
         rule = ("---",) * len(titles)
         parts.append(f"{head}\n" + "".join(f"| {' | '.join(row)} |\n" for row in (titles, rule, *rows)))
     return "\n".join(parts)
+
+
+def _once(rows: Iterator[tuple[str, ...]], columns: int) -> Iterator[tuple[str, ...]]:
+    """The rows of one case, what its first columns say only in the first of them."""
+    for position, row in enumerate(rows):
+        yield row if position == 0 else ("",) * columns + row[columns:]
 
 
 def _agreed(case: Case, document: Document) -> Iterator[tuple[str, ...]]:
@@ -277,7 +290,8 @@ def _agreed(case: Case, document: Document) -> Iterator[tuple[str, ...]]:
         ours = number(result, "content")
         assert ours is not None
         agreed, digits = digits_agreed(Decimal(f"{exact:.12g}"), ours)
-        told = f"none; in fractions {exact:.12g} {case.unit}"
+        refuted = any(wrong.of.startswith("content") for wrong in case.wrong)
+        told = f"{'none that holds' if refuted else 'none'}; in fractions {exact:.12g} {case.unit}"
         yield case.title, source, "content", told, f"{ours:.12g}", f"{agreed} of {digits}"
     for printed in case.printed:
         ours = number(result, printed.of)
@@ -293,12 +307,12 @@ def _not_returned(case: Case, document: Document) -> Iterator[tuple[str, ...]]:
         ours = number(result, wrong.of)
         digits = len(wrong.value.as_tuple().digits) + 1
         shown = "no number" if ours is None else f"{ours:.{digits}g}"
-        yield case.title, _words(wrong.of), f"{wrong.value} {case.unit_of(wrong.of)}", shown, wrong.why
+        yield case.title, _words(wrong.of), f"{str(wrong.value).lower()} {case.unit_of(wrong.of)}", shown, wrong.why
 
 
 def _verdict(case: Case, document: Document) -> Iterator[tuple[str, ...]]:
     (result,) = document["results"]
-    checks = [check["name"] for check in result["checks"] if check["verdict"] in (WARN, FAIL)]
+    checks = [_words(check["name"]) for check in result["checks"] if check["verdict"] in (WARN, FAIL)]
     yield case.title, document["verdict"], ", ".join(checks)
 
 

@@ -1,7 +1,7 @@
 """Published series from an export in a watched folder to the numbers in ``result.json``.
 
-Sources stand in each case's folder. Tolerances against print: half a unit of the last printed digit, or what the case says
-where the publication rounded on its way.
+Sources stand in each case's folder. Tolerances against print: half a unit of the last printed digit, or what the case
+says where the publication rounded on its way.
 """
 
 from __future__ import annotations
@@ -10,9 +10,9 @@ import re
 from decimal import Decimal
 
 import pytest
-from tests.external.published import PAGE, Case, Document, cases, digits_agreed, number, page, recomputed, through_files
 
 from spikeward.rules.outcomes import FAIL, PASS
+from tests.external.published import PAGE, Case, Document, cases, digits_agreed, number, page, recomputed, through_files
 
 CHOSEN = cases()
 each_case = pytest.mark.parametrize("case", CHOSEN, ids=lambda case: case.name)
