@@ -2,8 +2,8 @@
 
 It covers everything that can change a result: station and language (they stand in summaries), readers and which of them
 a watch uses, bench files, names, series, standards, preparations, blanks, brackets, references, ranges, the limits of
-every check with their sources, coverage and the decisions file, and the versions of readers from other packages. It does not cover where folders and the state lie, how
-changes are noticed, and in which line a rule stands.
+every check with their sources, coverage and the decisions file, and the versions of readers from other packages. It
+does not cover where folders and the state lie, how changes are noticed, and in which line a rule stands.
 """
 
 from __future__ import annotations

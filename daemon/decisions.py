@@ -104,7 +104,8 @@ class DecisionBook:
         if self._digests.get(place) == digest:
             return None
         event = {
-            "event": "decisions", "root": place[0], "path": place[1], "digest": digest, "text": text, "at": self.clock(),
+            "event": "decisions", "root": place[0], "path": place[1], "digest": digest, "text": text,
+            "at": self.clock(),
         }  # fmt: skip
         self.ledger.append(event)
         self.take(event)

@@ -38,7 +38,7 @@ class Opened:
         """What the state folder has to say since the last call: a journal begun anew, a lock that was taken away."""
         told, self._told = self._told, len(self.journal.sentences)
         lost = [
-            f"The lock {shown(lock.path)} was taken away: a second daemon could start. Stop this one and start it again."
+            f"The lock {shown(lock.path)} was taken away: a second daemon could start. Start this one again."
             for lock in self.locks
             if lock.lost()
         ]

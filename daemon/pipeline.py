@@ -260,7 +260,7 @@ class Pipeline:
         return any(reading.digest == digest for reading in readings)
 
     def _tidy(self, folder: str, listing: Listing) -> None:
-        """Take away temporary files of a run that was cut short; nothing is being published while a listing is taken in."""
+        """Take away temporary files of a run that was cut short; nothing is being published meanwhile."""
         base = self.places.inputs(self.intake.roots[folder].watch)
         for path in listing.leftovers:
             with suppress(OSError):

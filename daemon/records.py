@@ -47,19 +47,35 @@ class Records:
         return withdraw_unread(self._disk, folder, file_name, self._known.get((folder, name)) or None)
 
     def _intend(self, folder: str, outputs: Mapping[str, bytes], names: list[str]) -> set[str] | None:
-        """Enter the new digests before anything is written; what was known before tells edits from our own bytes."""
-        before = set().union(*(self._known.get((folder, name), set()) for name in names))
+        """Enter the new digests before anything is written; what was known before tells edits from our own bytes.
+
+        Where nothing is known the journal was lost, and what stands there counts as ours: a run that is cut short in
+        the middle would otherwise know of half of its own files, and take the rest for edits.
+        """
+        before = {name: self._known.get((folder, name), set()) for name in names}
+        known = set().union(*before.values())
         new = digests(outputs)
+        if not known:
+            before = self._standing(folder, names)
+        if self._journal is not None and not known.issuperset(new.values()):
+            with self._journal.together():
+                for name, earlier in before.items():  # again, for a journal that was lost while this run goes on
+                    for digest in earlier:
+                        self._journal.intend_outputs(folder, {name: digest})
+                self._journal.intend_outputs(folder, new)
         for name, digest in new.items():
             self._known[folder, name].add(digest)
-        if self._journal is not None and not before.issuperset(new.values()):
-            self._journal.intend_outputs(folder, new)
-        return before | set(new.values()) if before else None
+        return known | set(new.values()) if known else None
+
+    def _standing(self, folder: str, names: list[str]) -> dict[str, set[str]]:
+        paths = {name: os.path.join(folder, name) for name in names}
+        present = {name: self._disk.read(path) for name, path in paths.items() if self._disk.exists(path)}
+        return {name: {digest} for name, digest in digests(present).items()}
 
     def _done(self, folder: str, published: Published) -> bool:
+        self.kept += [os.path.join(folder, new) for _, new in published.kept]
         for name, digest in published.files.items():
             self._known[folder, name] = {digest}
         if self._journal is not None and published.written:
             self._journal.record_outputs(folder, published.files)
-        self.kept += [os.path.join(folder, new) for _, new in published.kept]
         return bool(published.written)

@@ -31,11 +31,13 @@ def vet(config: str, short: bool) -> int:
         print(problem.line_text() if short else problem.block_text(rule_file.text))
     if rule_file.rules is None or rule_file.errors:
         count = len(rule_file.errors)
-        print(f"{rule_file.path}: {count} {'error' if count == 1 else 'errors'}; the rule file cannot be used as it is.")
+        print(f"{rule_file.path}: {count} {'error' if count == 1 else 'errors'}; it cannot be used as it is.")
         return 1
     if not short:
-        for line in (*_names(rule_file, rule_file.rules), "", "In force, with every default:", effective(rule_file.rules)):
+        for line in _names(rule_file, rule_file.rules):
             print(line)
+        print("\nIn force, with every default:")
+        print(effective(rule_file.rules))
     warnings = len(rule_file.problems)
     print(f"{rule_file.path}: usable" + (f", {warnings} warning{'s' if warnings > 1 else ''}." if warnings else "."))
     return 0

@@ -76,11 +76,12 @@ class _Walk:
 
     def _after_blank(self, position: int) -> int:
         """A blank row ends a part of the table unless a row of the table follows before the next headings."""
-        end = self._next_headings(position)
-        part = [row for row in self._all[position:end] if not row.blank]
-        if part and not any(self._fits(row) or self._is_end(row) for row in part):
-            return self._leave_out(position)
-        return position
+        while position < len(self._all) and self._all[position].blank:
+            position += 1
+        if position == len(self._all) or self._fits(self._all[position]):
+            return position
+        rest = self._all[position : self._next_headings(position)]
+        return position if any(self._fits(row) for row in rest if not row.blank) else self._leave_out(position)
 
     def _leave_out(self, position: int) -> int:
         end = self._next_headings(position)
@@ -97,9 +98,6 @@ class _Walk:
             if self._all[later].cells == self._head.cells:
                 return later
         return len(self._all)
-
-    def _is_end(self, row: Row) -> bool:
-        return bool(self._ends) and folded(row.cells[0]) in self._ends
 
     def _fits(self, row: Row) -> bool:
         return len(row.cells) >= self._least and not any(row.cells[len(self._head.cells) :])

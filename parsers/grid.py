@@ -13,7 +13,7 @@ from spikeward.rules.records import Unreadable
 
 DELIMITERS = (";", "\t", "|", ",")  # the comma last, since it may be a decimal sign too
 _PREAMBLE = 2000  # lines in which the headings are looked for
-_MOST_ROWS = 200_000
+_MOST_LINES = 200_000
 _NEAR = 200  # lines among which the nearest to a row of headings is looked for
 _TALLEST = 20  # lines of one row of headings
 _RUN = 200  # rows under the headings that tell delimiters apart
@@ -57,6 +57,8 @@ def grid_of(text: str, style: Style, wanted: Sequence[str]) -> Grid:
     ------
     Unreadable : no row holds the headings, a quote is not closed, or the file is longer than a table may be
     """
+    if max(text.count("\n"), text.count("\r")) > _MOST_LINES:
+        raise Unreadable(f"the file has more than {_MOST_LINES} lines; export less at once")
     lines = [
         (number, line)
         for number, line in enumerate(lines_of(text), start=1)
@@ -134,14 +136,10 @@ def _rows(lines: Lines, delimiter: str, quote: str) -> Iterator[Row]:
     texts = (text + "\n" for _, text in lines)
     reader = csv.reader(texts, delimiter=delimiter, quotechar=quote, skipinitialspace=True, strict=True)
     begun = 0
-    count = 0
     try:
         for cells in reader:
             yield Row(lines[begun][0], tuple(cell.strip() for cell in cells))
             begun = reader.line_num
-            count += 1
-            if count > _MOST_ROWS:
-                raise Unreadable(f"the table is longer than {_MOST_ROWS} rows; export in parts", lines[begun - 1][0])
     except csv.Error as error:
         raise _csv_error(error, lines[min(begun, len(lines) - 1)][0], quote) from None
 

@@ -30,9 +30,11 @@ def folded(text: str) -> str:
 
 
 def unit_text(text: str) -> str:
-    """A unit as it stands in a cell or heading, without brackets around it; both code points of µ become one."""
-    found = _BRACKETED.fullmatch(tidy(text))
-    return (found[1] or found[2] or "").strip() if found else tidy(text)
+    """A unit as it stands in a cell or heading, without brackets around it; its micro sign is that of keyboards."""
+    shown = tidy(text)
+    found = _BRACKETED.fullmatch(shown)
+    bare = (found[1] or found[2] or "").strip() if found else shown
+    return bare.replace("\N{GREEK SMALL LETTER MU}", "\N{MICRO SIGN}")
 
 
 class Heading(NamedTuple):

@@ -98,16 +98,15 @@ class _Reading:
         return Cell(row.cells[place.position], row.number, place.heading)
 
     def _text(self, row: Row, meaning: str, needed: bool = False) -> str:
-        if meaning not in self._columns:
-            return ""
-        cell = self._cell(row, meaning)
-        if needed and not cell.text:
+        place = self._columns.get(meaning)
+        text = row.cells[place.position] if place else ""
+        if needed and place and not text:
             raise Unreadable(
                 f"the {meaning} is missing; complete the export, or declare a line after the table under ends_at",
-                cell.row,
-                cell.column,
+                row.number,
+                place.heading,
             )
-        return cell.text
+        return text
 
     def _shared(self, row: Row) -> Entry:
         """What all signals of a row have in common."""
@@ -188,7 +187,7 @@ class _Reading:
     def _unit(self, row: Row, signal: _Signal, measured: bool) -> str:
         place, declared = signal.column, self._layout.unit
         said = self._text(row, "unit") or self._units.get(place.position, "")
-        unit = unit_text(said) or ("" if place.verbatim and declared else place.unit)
+        unit = unit_text(said or ("" if place.verbatim and declared else place.unit))
         if unit and declared and unit != unit_text(declared):
             raise Unreadable(
                 f"the signal is in {unit}, but its unit is declared as {declared}; correct one of them",

@@ -51,12 +51,33 @@ def render_board(
         "board.html.jinja",
         batch=batch,
         headline=headline(batch, rows),
-        urgent=sorted((row for row in rows if row.verdict != PASS), key=lambda row: attention(row.verdict)),
+        urgent=causes(row for row in rows if row.verdict != PASS),
         rows=rows,
         notices=sorted(notices, key=lambda notice: (notice.kind, notice.subject, notice.sentence, notice.since)),
         folder=folder or (_place(batch.key.root, batch.key.folder) if batch else ""),
         station=station,
     )
+
+
+@dataclass(slots=True)
+class Cause:
+    """One reason that needs a person, and every series that it is the reason for, each with its analytes."""
+
+    verdict: str
+    says: str
+    series: list[tuple[Row, list[str]]]
+
+
+def causes(rows: Iterable[Row]) -> list[Cause]:
+    """Rows that say the same stand together, the gravest first: forty results that fail with one bracket are one line."""
+    found: dict[tuple[str, str], Cause] = {}
+    for row in rows:
+        cause = found.setdefault((row.verdict, row.says), Cause(row.verdict, row.says, []))
+        if not cause.series or (cause.series[-1][0].role, cause.series[-1][0].sample) != (row.role, row.sample):
+            cause.series.append((row, []))
+        if row.name:
+            cause.series[-1][1].append(row.name)
+    return sorted(found.values(), key=lambda cause: attention(cause.verdict))
 
 
 def headline(batch: BatchOutcome | None, rows: Sequence[Row]) -> str:

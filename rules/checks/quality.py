@@ -26,6 +26,9 @@ def expanded_uncertainty(subject: Subject, limits: Limits) -> Check:
         why = estimate.reason if estimate is not None and estimate.reason else "there is no uncertainty"
         return not_evaluated(name, why.rstrip("."), "Four or more vessels show the scatter")
     wide = estimate.expanded_uncertainty
+    if wide == 0:
+        sentence = "All vessels lie on the line to the last digit; a scatter of zero is not a real one."
+        return plain(name, WARN, sentence, "Export signals with more digits, or measure more vessels", "theory")
     remedy = "Measure more vessels, or find what scatters"
     if estimate.content <= 0 or wide >= estimate.content:
         value, spread = rounded(estimate.content, wide)

@@ -7,6 +7,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
+
 from spikeward.rules.outcomes import Estimate, Point
 from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.records import BatchKey

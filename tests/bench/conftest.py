@@ -54,6 +54,11 @@ checks:
 """
 
 
+def rules_text(events: str = "native", settle: float = SETTLE) -> str:
+    """The rule file of all measurements."""
+    return _RULES.format(events=events, settle=settle)
+
+
 # ---- what is asked for -----------------------------------------------------------------------------------------------
 
 
@@ -143,17 +148,21 @@ class Series:
     def file_name(self, level: int) -> str:
         return f"{self.stem}_A{level}.csv"
 
-    def export(self, level: int) -> bytes:
-        """What the instrument writes for one vessel: a signal that grows by 0.4 per mg/L."""
+    def rows(self, level: int) -> list[list[str]]:
+        """Heading and two readings of one vessel; the signal grows by 0.4 per mg/L."""
         content = 0.2 + 0.001 * ((37 * self.batch + 11 * self.sample) % 200)
         signal = 0.4 * (content + 0.25 * level) + SCATTER[level] * 0.4
-        rows = ["Solution,Element,Line,Signal,Unit,Measured"]
+        found = [["Solution", "Element", "Line", "Signal", "Unit", "Measured"]]
         for reading in (1, 2):
             minute = 8 * (self.sample % 100) + 2 * level + reading
             at = f"2030-05-01 {minute // 60:02d}:{minute % 60:02d}:00"
             read = signal + (0.0002 if reading == 1 else -0.0002)
-            rows.append(f"{self.stem}_A{level}_r{reading},Cd,Cd 228.8,{read:.5f},A,{at}")
-        return ("\n".join(rows) + "\n").encode()
+            found.append([f"{self.stem}_A{level}_r{reading}", "Cd", "Cd 228.8", f"{read:.5f}", "A", at])
+        return found
+
+    def export(self, level: int) -> bytes:
+        """What the instrument writes for one vessel."""
+        return "".join(",".join(row) + "\n" for row in self.rows(level)).encode()
 
 
 def many(count: int, in_a_batch: int) -> list[Series]:
@@ -183,7 +192,7 @@ class Station:
 
     def set_rules(self, events: str = "native", settle: float = SETTLE) -> None:
         self.inbox.mkdir(parents=True, exist_ok=True)
-        (self.base / "rules.yaml").write_text(_RULES.format(events=events, settle=settle), encoding="utf-8")
+        (self.base / "rules.yaml").write_text(rules_text(events, settle), encoding="utf-8")
 
     def command(self, name: str) -> list[str]:
         return [sys.executable, "-c", _DRIVE, name, str(self.base / "rules.yaml")]
@@ -215,6 +224,25 @@ def until(true: object, process: subprocess.Popen[bytes], seconds: float, pause:
         assert process.poll() is None, "the daemon has ended"
         time.sleep(pause)
     return time.perf_counter() - began
+
+
+def write_durably(folder: str, name: str, data: bytes) -> None:
+    """Temporary name, flush, rename, folder flushed: what every output needs."""
+    beside = os.path.join(folder, "." + name)
+    handle = os.open(beside, os.O_WRONLY | os.O_CREAT | os.O_TRUNC)
+    os.write(handle, data)
+    os.fsync(handle)
+    os.close(handle)
+    os.rename(beside, os.path.join(folder, name))
+    handle = os.open(folder, os.O_RDONLY | os.O_DIRECTORY)
+    os.fsync(handle)
+    os.close(handle)
+
+
+def outputs_of(station: Station, series: Series) -> dict[str, bytes]:
+    """The three files that stand for a series that passed."""
+    names = (f"{series.stem}.result.json", f"{series.stem}.summary.html", f"{series.stem}.pass.flag")
+    return {name: (station.inbox / series.folder / name).read_bytes() for name in names}
 
 
 @pytest.fixture

@@ -10,7 +10,7 @@ from pathlib import Path
 
 import pytest
 
-SERIES = 300
+SERIES = 60
 IN_A_BATCH = 20
 IN_A_BLOCK = 50  # series, then as many turns of the floor: both see the same machine
 QUIET = 3.0  # s after which the daemon has nothing left to write
@@ -19,8 +19,9 @@ QUIET = 3.0  # s after which the daemon has nothing left to write
 class Floor:
     """What no daemon can do without: read, write three outputs durably, one ledger line, one transaction."""
 
-    def __init__(self, folder: Path) -> None:
+    def __init__(self, folder: Path, write_durably) -> None:
         folder.mkdir()
+        self.write_durably = write_durably
         self.folder = str(folder)
         self.journal = sqlite3.connect(folder / "journal.sqlite", isolation_level=None)
         self.journal.execute("pragma journal_mode = wal")
@@ -32,7 +33,7 @@ class Floor:
         began = time.perf_counter()
         digest = hashlib.sha256(source.read_bytes()).hexdigest()
         for name, data in outputs.items():
-            write_durably(self.folder, name, data)
+            self.write_durably(self.folder, name, data)
         os.write(self.ledger, b'{"event":"revision","digest":"' + digest.encode() + b'"}\n')
         os.fsync(self.ledger)
         self.journal.execute("begin immediate")
@@ -45,24 +46,12 @@ class Floor:
         self.journal.close()
 
 
-def write_durably(folder: str, name: str, data: bytes) -> None:
-    beside = os.path.join(folder, "." + name)
-    handle = os.open(beside, os.O_WRONLY | os.O_CREAT | os.O_TRUNC)
-    os.write(handle, data)
-    os.fsync(handle)
-    os.close(handle)
-    os.rename(beside, os.path.join(folder, name))
-    handle = os.open(folder, os.O_RDONLY | os.O_DIRECTORY)
-    os.fsync(handle)
-    os.close(handle)
-
-
 @pytest.mark.bench
 @pytest.mark.timeout(1200)
 @pytest.mark.parametrize("in_a_batch", [IN_A_BATCH, SERIES], ids=["batches of 20", "one batch of 300"])
 def test_last_file_to_flag(station, bench, table, tmp_path, in_a_batch):
     station.set_rules()
-    floor = Floor(tmp_path / "floor")
+    floor = Floor(tmp_path / "floor", bench.write_durably)
     latencies, floors = [], []
     every = bench.many(SERIES, in_a_batch)
     with station.watching() as daemon:
@@ -71,7 +60,7 @@ def test_last_file_to_flag(station, bench, table, tmp_path, in_a_batch):
             latencies += [deliver(station, bench, series, daemon) for series in block]
             time.sleep(QUIET)
             for series in block:
-                floors.append(floor.turn(station.path(series, 3), outputs_of(station, series)))
+                floors.append(floor.turn(station.path(series, 3), bench.outputs_of(station, series)))
     floor.close()
     assert len(latencies) == len(floors) == station.count(".pass.flag") == station.count(".flag") == SERIES
     name = f"last file to flag, batches of {in_a_batch}"
@@ -95,10 +84,3 @@ def deliver(station, bench, series, daemon) -> float:
 def put(path: Path, data: bytes) -> None:
     path.parent.mkdir(exist_ok=True)
     path.write_bytes(data)
-
-
-def outputs_of(station, series) -> dict[str, bytes]:
-    """The three files that stand for a series now."""
-    found = station.inbox.joinpath(series.folder)
-    names = (f"{series.stem}.result.json", f"{series.stem}.summary.html", f"{series.stem}.pass.flag")
-    return {name: (found / name).read_bytes() for name in names}

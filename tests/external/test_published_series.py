@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 import pytest
+
 from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
 from spikeward.rules.records import Reading, SeriesKey
 from spikeward.rules.solve.lines import solve_lines

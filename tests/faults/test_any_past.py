@@ -12,13 +12,13 @@ from typing import Any
 import pytest
 from disk_that_dies import Died
 from harness import Clock, Life, MortalDisk, Step, lives, soon, swept, with_the_same_past
-from hypothesis import HealthCheck, example, given, note, settings
+from hypothesis import HealthCheck, Phase, given, note, settings
 from hypothesis import strategies as st
 from processes import Station
 from small_night import CLOSING, RULES, SPANNING, batch, vessel
 
 FINAL = batch("N1", 2, "a", brackets=True) | batch("N2", 1, "b", brackets=True)
-STRICTER = CLOSING.replace("use: pack:general", "use: pack:general\n  rsd: {warn_above: 0.5 %}")
+STRICTER = CLOSING.replace("use: pack:general", "use: pack:general\n  span: {warn_outside: [1, 30]}")
 OTHER_WAIT = CLOSING.replace("settle: 1 s", "settle: 0.5 s")
 GOOD = (CLOSING, STRICTER, OTHER_WAIT)
 BAD = (CLOSING[:400], CLOSING.replace("aliquot: 5 mL", "aliquot: 5 parsecs"), "", CLOSING + "\nsurprise: yes\n")
@@ -140,7 +140,7 @@ def is_there(station: Station, path: str, content: bytes) -> bool:
 
 @pytest.mark.filterwarnings("ignore")
 @settings(max_examples=int(os.environ.get("SPIKEWARD_EXAMPLES", "60")), deadline=None,
-          suppress_health_check=[HealthCheck.too_slow, HealthCheck.filter_too_much])
+          suppress_health_check=[HealthCheck.too_slow], phases=[Phase.explicit, Phase.reuse, Phase.generate])
 @given(script=LIVES, rules=st.sampled_from(range(len(GOOD))), keep_copies=st.booleans())
 def test_any_past_ends_as_a_fresh_sweep_of_the_same_files(script: list[Any], rules: int, keep_copies: bool) -> None:
     ends_as_a_fresh_sweep(script, rules, keep_copies)

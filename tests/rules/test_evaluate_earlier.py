@@ -6,6 +6,7 @@ from types import ModuleType
 
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+
 from spikeward.rules.evaluate import Earlier, evaluate
 from spikeward.rules.rulebook import BlankRule, SeriesRule
 
