@@ -21,8 +21,8 @@ from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.ledger import EventLog
 from spikeward.daemon.names import shown
 from spikeward.daemon.pages.facts import Notice
+from spikeward.daemon.rule_file.yaml_text import Node, compose
 from spikeward.daemon.station import Clock
-from spikeward.daemon.yaml_text import Node, compose
 from spikeward.rules.records import Decision
 
 _LARGEST = 1 << 20

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from spikeward.rules.naming import Named, Namer, Source, name
 from spikeward.rules.records import BatchKey, BenchEntry, Layout, Reading, Table
@@ -36,7 +36,7 @@ class Holdings:
     contents: dict[Place, Content] = field(default_factory=dict)
     named: dict[Place, Named] = field(default_factory=dict)
     _places: dict[BatchKey, set[Place]] = field(default_factory=lambda: defaultdict(set))
-    _bench: set[Place] = field(default_factory=set)
+    _bench: dict[Place, tuple[BenchEntry, ...]] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         self.namer = Namer(self.rules.names)
@@ -46,7 +46,8 @@ class Holdings:
         touched = self.drop(place)
         self.contents[place] = content
         if content.bench:
-            self._bench.add(place)
+            folder = self.output_folder(place)  # the results' folder, which the reader of the file does not know
+            self._bench[place] = tuple(replace(entry, folder=folder) for entry in content.bench)
         if content.table is not None and content.layout is not None:
             root, path = place
             source = Source(root, path, self.output_folder(place), content.layout, content.file_digest)
@@ -61,7 +62,7 @@ class Holdings:
         """A path is gone, or is about to be replaced."""
         content = self.contents.pop(place, None)
         found = self.named.pop(place, None)
-        self._bench.discard(place)
+        self._bench.pop(place, None)
         touched = {reading.series.batch_key for reading in found.readings} if found else set()
         for key in touched:
             self._places[key].discard(place)
@@ -90,9 +91,9 @@ class Holdings:
         """The bench entries that apply to a batch: of its own folder and the folders above it."""
         entries = [
             entry
-            for place in self._bench
+            for place, found in self._bench.items()
             if place[0] == key.root
-            for entry in self.contents[place].bench
+            for entry in found
             if entry.folder in ("", key.folder) or key.folder.startswith(entry.folder + "/")
         ]
         return tuple(sorted(entries, key=lambda entry: (entry.path, entry.row, entry.level)))

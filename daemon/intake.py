@@ -178,7 +178,7 @@ class Intake:
         if reply.temporary or unfinished:
             before = self._troubles.get(place)
             pause = min(60.0, before.pause * 2) if before else 1.0
-            sentence = "waits for the end of the file" if unfinished else reply.sentence
+            sentence = f"waits for the end of the file; {_notes(reply)}" if unfinished else reply.sentence
             self._troubles[place] = _Trouble(sentence, self._now + pause, pause)
             return set()
         return self.hold(place, reply.stamp, claim_key, content_of(reply, claim))
@@ -220,6 +220,18 @@ class Intake:
             touched |= holdings.drop(place)
         return touched
 
+    def settles_in(self, folder: str) -> float | None:
+        """Seconds until a file of a watched folder can settle; those being read, or tried again later, are left aside."""
+        aside = {(root, path) for root, path, _ in self._inflight} | self._troubles.keys()
+        return self.roots[folder].settling.due_in(aside)
+
+    def due_in(self, folder: str, now: float) -> float | None:
+        """Seconds until a look at a watched folder is worth it: a file can settle, or is tried again."""
+        settles = self.settles_in(folder)
+        waits = [trouble.due - now for (root, _), trouble in self._troubles.items() if root == folder]
+        waits += [] if settles is None else [settles]
+        return max(0.0, min(waits)) if waits else None
+
     def waiting(self) -> list[Waited[Place]]:
         """All files that are being waited for, to be carried over a restart."""
         return [waited for root in self.roots.values() for waited in root.settling.waiting()]
@@ -247,6 +259,10 @@ class Intake:
         for (where, path), trouble in self._troubles.items():
             if where == folder:
                 yield Notice("cannot be read now", shown(path), f"{trouble.sentence}; tried again")
+
+
+def _notes(reply: ReadReply) -> str:
+    return "; ".join(reply.table.notes) if reply.table is not None else ""
 
 
 def content_of(reply: ReadReply, claim: Claim) -> Content:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Hashable, Iterable
+from collections.abc import Collection, Container, Hashable, Iterable
 from dataclasses import dataclass
 from typing import Generic, NamedTuple, TypeVar
 
@@ -63,9 +63,13 @@ class Settling(Generic[Place]):
         for place in [each for each in self._watched if each not in places]:
             del self._watched[place]
 
-    def due_in(self) -> float | None:
-        """Seconds until the next file can settle; None while none with content waits."""
-        left = [self._quiet - each.seconds for each in self._watched.values() if each.stamp.size > 0]
+    def due_in(self, without: Container[Place] = ()) -> float | None:
+        """Seconds until the next file can settle, those in ``without`` left aside; None while none with content waits."""
+        left = [
+            self._quiet - each.seconds
+            for place, each in self._watched.items()
+            if each.stamp.size > 0 and place not in without
+        ]
         return max(0.0, min(left)) if left else None
 
     def waiting(self) -> list[Waited[Place]]:

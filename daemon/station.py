@@ -8,8 +8,8 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 
-from spikeward.daemon.config import load_rules
-from spikeward.daemon.problems import Problem
+from spikeward.daemon.rule_file.load import load_rules
+from spikeward.daemon.rule_file.problems import Problem
 from spikeward.daemon.trouble import Trouble
 from spikeward.rules.rulebook import Rulebook, Watch
 

@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from spikeward.daemon.claims import Claims
-from spikeward.daemon.config_effective import effective
 from spikeward.daemon.disk import RealDisk
 from spikeward.daemon.names import shown
 from spikeward.daemon.reading import ReadJob, read_file
+from spikeward.daemon.rule_file.effective import effective
 from spikeward.daemon.station import Places, RuleFile, read_rule_file
 from spikeward.daemon.survey import survey
 from spikeward.rules.naming import GROUPS, Namer, Understood

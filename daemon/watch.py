@@ -106,7 +106,8 @@ class Watching:
     @property
     def busy(self) -> bool:
         """Whether anything is being read, waits to settle, or waits to be published."""
-        waiting = any(root.settling.due_in() is not None for root in self.pipeline.intake.roots.values())
+        intake = self.pipeline.intake
+        waiting = any(intake.settles_in(folder) is not None for folder in intake.roots)
         return waiting or self.readers.busy or bool(self.pipeline.touched) or self._boards_due is not None
 
     def run(self, stop: threading.Event) -> None:
@@ -222,8 +223,8 @@ class Watching:
         scan.not_before = now + took
         if not listing.start:
             scan.full_due = now + max(SCAN_EVERY[self._watches[folder].backend], SHARE_OF_TIME * took)
-        settles = root.settling.due_in()
-        scan.due = now + (_FAR if settles is None else settles + 0.001)
+        due = self.pipeline.intake.due_in(folder, now)
+        scan.due = now + (_FAR if due is None else due + 0.001)
         scan.hinted.update(os.path.dirname(waited.place[1]) for waited in root.settling.waiting())
 
     # ---- reading, solving, publishing --------------------------------------------------------------------------------

@@ -10,9 +10,9 @@ from pathlib import Path
 import pytest
 
 from spikeward.daemon.cli import build_parser, main
-from spikeward.daemon.config import load_rules
 from spikeward.daemon.decisions import read_decisions
 from spikeward.daemon.names import series_stem
+from spikeward.daemon.rule_file.load import load_rules
 from spikeward.daemon.survey import DEEPEST, MOST
 from spikeward.rules.outcomes import PASS
 from spikeward.rules.records import ROLES, SeriesKey

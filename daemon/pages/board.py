@@ -69,7 +69,7 @@ class Cause:
 
 
 def causes(rows: Iterable[Row]) -> list[Cause]:
-    """Rows that say the same stand together, the gravest first: forty results that fail with one bracket are one line."""
+    """Rows that say the same stand together, the gravest first: forty failures with one bracket are one line."""
     found: dict[tuple[str, str], Cause] = {}
     for row in rows:
         cause = found.setdefault((row.verdict, row.says), Cause(row.verdict, row.says, []))

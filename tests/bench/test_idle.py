@@ -8,6 +8,7 @@ import sys
 import time
 
 import pytest
+
 from spikeward.daemon.watch import SCAN_EVERY, SHARE_OF_TIME
 
 SERIES = 500  # of four vessels, a file each

@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 
 import pytest
+
 from spikeward.daemon.demo.night import night, play
 from spikeward.daemon.opening import open_station
 from spikeward.daemon.pages.result_json import render_result

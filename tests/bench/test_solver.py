@@ -8,7 +8,8 @@ from collections.abc import Callable
 
 import numpy as np
 import pytest
-from spikeward.daemon.config import load_rules
+
+from spikeward.daemon.rule_file.load import load_rules
 from spikeward.rules.evaluate import evaluate
 from spikeward.rules.preparation import prepare
 from spikeward.rules.records import Batch, BatchKey, Members, Reading, SeriesKey

@@ -10,10 +10,10 @@ from collections import Counter
 
 import pytest
 
-from spikeward.daemon.config import load_rules
 from spikeward.daemon.demo.mishaps import MISHAPS, REFUSED, TORN
 from spikeward.daemon.demo.night import Night, night, play
 from spikeward.daemon.demo.scenario import ANALYTES
+from spikeward.daemon.rule_file.load import load_rules
 from spikeward.rules.outcomes import FAIL, PASS, WARN
 
 BYTES_OF_SEED_7 = "b1f6cfec882f2dc4dc66ac86d8318c84fd2e3648bdd069c59a99b9a3f71d1f37"

@@ -5,17 +5,16 @@ from __future__ import annotations
 import os
 import shutil
 import tempfile
-from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 import pytest
 from disk_that_dies import Died
-from harness import Clock, Life, MortalDisk, Step, lives, soon, swept, with_the_same_past
+from harness import Clock, MortalDisk, Step, lives, soon, swept, with_the_same_past
 from hypothesis import HealthCheck, Phase, given, note, settings
 from hypothesis import strategies as st
 from processes import Station
-from small_night import CLOSING, RULES, SPANNING, batch, vessel
+from small_night import CLOSING, batch
 
 FINAL = batch("N1", 2, "a", brackets=True) | batch("N2", 1, "b", brackets=True)
 STRICTER = CLOSING.replace("use: pack:general", "use: pack:general\n  span: {warn_outside: [1, 30]}")

@@ -12,7 +12,7 @@ from typing import Any
 
 import yaml
 
-from spikeward.daemon.problems import MOST_PROBLEMS, Problem, lines_of
+from spikeward.daemon.rule_file.problems import MOST_PROBLEMS, Problem, lines_of
 
 LARGEST = 1 << 20  # bytes
 DEEPEST = 20

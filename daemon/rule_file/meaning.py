@@ -10,11 +10,11 @@ from zoneinfo import ZoneInfo, available_timezones
 
 import re2
 
-from spikeward.daemon.config_folders import check_decisions, check_folders
-from spikeward.daemon.config_names import check_names, groups_of
-from spikeward.daemon.config_preparations import check_preparations, result_dimensions
-from spikeward.daemon.config_walk import Walker, near
-from spikeward.daemon.problems import WARNING
+from spikeward.daemon.rule_file.folders import check_decisions, check_folders
+from spikeward.daemon.rule_file.names import check_names, groups_of
+from spikeward.daemon.rule_file.preparations import check_preparations, result_dimensions
+from spikeward.daemon.rule_file.problems import WARNING
+from spikeward.daemon.rule_file.walk import Walker, near
 from spikeward.parsers.registry import formats
 from spikeward.rules.naming import number_of
 from spikeward.rules.records import SERIES_ROLES

@@ -6,8 +6,8 @@ from collections.abc import Mapping
 from decimal import Decimal
 from typing import Any
 
-from spikeward.daemon.config_names import groups_of
-from spikeward.daemon.config_walk import Walker, near
+from spikeward.daemon.rule_file.names import groups_of
+from spikeward.daemon.rule_file.walk import Walker, near
 from spikeward.rules.naming import level_order, number_of
 from spikeward.rules.quantities import UNITS
 from spikeward.rules.schema_kinds import one_of

@@ -6,7 +6,8 @@ import posixpath
 from collections.abc import Mapping
 from typing import Any
 
-from spikeward.daemon.config_walk import Walker
+from spikeward.daemon.rule_file.walk import Walker
+from spikeward.parsers.headings import unit_text
 from spikeward.rules.naming import number_of
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Layout
@@ -60,7 +61,7 @@ def build(value: Values, checks: Mapping[str, Limits], walker: Walker) -> Rulebo
             analyte: Known(content) for analyte, content in ((value["brackets"] or {}).get("contents") or {}).items()
         },
         references={sample: _reference(each) for sample, each in value["references"].items()},
-        tops={name: Top(each["top"], each["unit"]) for name, each in value["range"].items()},
+        tops={name: Top(each["top"], unit_text(each["unit"])) for name, each in value["range"].items()},
         checks=dict(checks),
         coverage=value["report"]["coverage"],
         decisions=value["decisions"],

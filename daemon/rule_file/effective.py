@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from typing import Any
 
-from spikeward.daemon.config_checks import FROM_RULE_FILE
-from spikeward.daemon.config_walk import defaults
+from spikeward.daemon.rule_file.checks import FROM_RULE_FILE
+from spikeward.daemon.rule_file.walk import defaults
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Layout
 from spikeward.rules.rulebook import BenchRule, Known, NameRule, Preparation, Rulebook

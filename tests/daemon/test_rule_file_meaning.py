@@ -6,12 +6,12 @@ from pathlib import Path
 
 import pytest
 
-from spikeward.daemon import config_meaning
-from spikeward.daemon.config import load_rules
-from spikeward.daemon.config_folders import contains
-from spikeward.daemon.config_names import groups_of
-from spikeward.daemon.pattern_examples import examples
-from spikeward.daemon.problems import Problem
+from spikeward.daemon.rule_file import meaning
+from spikeward.daemon.rule_file.folders import contains
+from spikeward.daemon.rule_file.load import load_rules
+from spikeward.daemon.rule_file.names import groups_of
+from spikeward.daemon.rule_file.pattern_examples import examples
+from spikeward.daemon.rule_file.problems import Problem
 
 EXAMPLE = (Path(__file__).resolve().parents[2] / "config.example.yaml").read_text(encoding="utf-8")
 
@@ -299,7 +299,7 @@ def test_a_file_name_can_say_what_the_columns_do_not():
 
 
 def test_other_formats_name_their_own_fields(monkeypatch: pytest.MonkeyPatch):
-    monkeypatch.setattr(config_meaning, "formats", lambda: ("andi", "delimited"))
+    monkeypatch.setattr(meaning, "formats", lambda: ("andi", "delimited"))
     assert problems_of(("format: delimited", "format: andi"), (COLUMNS, "{}")) == ()
 
 

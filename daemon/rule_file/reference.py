@@ -1,4 +1,4 @@
-"""The example rule file and the reference page, written from the schema: ``python -m spikeward.daemon.reference``."""
+"""The example rule file and the reference page, written from the schema by ``python -m`` and this module's name."""
 
 from __future__ import annotations
 
@@ -7,8 +7,8 @@ import textwrap
 from collections.abc import Iterator
 from pathlib import Path
 
-from spikeward.daemon.config_checks import PackLimit, read_pack, shipped_packs
-from spikeward.daemon.problems import CODES
+from spikeward.daemon.rule_file.checks import PackLimit, read_pack, shipped_packs
+from spikeward.daemon.rule_file.problems import CODES
 from spikeward.rules.naming import GROUPS
 from spikeward.rules.quantities import UNITS
 from spikeward.rules.schema import RULE_FILE
@@ -99,7 +99,7 @@ def _default_text(field: Field) -> str:
 _PAGE = """\
 # The rule file, key by key
 
-This page is written from the schema by `python -m spikeward.daemon.reference`; do not edit it.
+This page is written from the schema by `python -m spikeward.daemon.rule_file.reference`; do not edit it.
 
 A rule file is YAML. Every quantity carries its unit, every text stays as it is written, and a key that is not known is
 an error. Tags, anchors, aliases, merge keys, tabs before keys, duplicate keys and several documents are refused.

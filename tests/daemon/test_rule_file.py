@@ -7,10 +7,10 @@ from pathlib import Path
 
 import pytest
 
-from spikeward.daemon.config import load_file, load_rules
-from spikeward.daemon.config_checks import FROM_RULE_FILE, PackBroken, read_pack, shipped_packs
-from spikeward.daemon.config_effective import effective
-from spikeward.daemon.reference import example_text, reference_text
+from spikeward.daemon.rule_file.checks import FROM_RULE_FILE, PackBroken, read_pack, shipped_packs
+from spikeward.daemon.rule_file.effective import effective
+from spikeward.daemon.rule_file.load import load_file, load_rules
+from spikeward.daemon.rule_file.reference import example_text, reference_text
 from spikeward.rules.checks.registry import REGISTRY
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Layout
@@ -55,7 +55,7 @@ def test_the_example_has_no_problem():
 
 
 def test_the_example_and_the_page_are_those_of_the_schema():
-    remedy = "run python -m spikeward.daemon.reference"
+    remedy = "run python -m spikeward.daemon.rule_file.reference"
     assert example_text() == EXAMPLE, remedy
     page = (HOUSE / "daemon" / "guide" / "reference.md").read_text(encoding="utf-8")
     assert reference_text() == page, remedy

@@ -8,9 +8,9 @@ from typing import Any
 
 import re2
 
-from spikeward.daemon.config_walk import Walker, near
-from spikeward.daemon.pattern_examples import examples
-from spikeward.daemon.problems import WARNING
+from spikeward.daemon.rule_file.pattern_examples import examples
+from spikeward.daemon.rule_file.problems import WARNING
+from spikeward.daemon.rule_file.walk import Walker, near
 from spikeward.rules.naming import GROUPS
 from spikeward.rules.quantities import UNITS
 from spikeward.rules.records import SERIES_ROLES

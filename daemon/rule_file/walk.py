@@ -6,8 +6,8 @@ import difflib
 from collections.abc import Iterable, Iterator
 from typing import Any
 
-from spikeward.daemon.problems import ERROR, MOST_PROBLEMS, Problem
-from spikeward.daemon.yaml_text import LIST, MAP, SCALAR, Node
+from spikeward.daemon.rule_file.problems import ERROR, MOST_PROBLEMS, Problem
+from spikeward.daemon.rule_file.yaml_text import LIST, MAP, SCALAR, Node
 from spikeward.rules.schema_kinds import Scalar, one_of
 from spikeward.rules.schema_shapes import WITH_ITS_DEFAULTS, Block, Field, Limits, ListOf, MapOf, Shape, kind_of
 

@@ -6,13 +6,13 @@ from collections.abc import Mapping
 from dataclasses import replace
 from pathlib import Path
 
-from spikeward.daemon.config_build import build
-from spikeward.daemon.config_checks import checks_of, shipped_packs
-from spikeward.daemon.config_digest import digest_of
-from spikeward.daemon.config_meaning import check_meaning
-from spikeward.daemon.config_walk import TooMany, Walker
-from spikeward.daemon.problems import ERROR, Problem
-from spikeward.daemon.yaml_text import LARGEST, compose
+from spikeward.daemon.rule_file.build import build
+from spikeward.daemon.rule_file.checks import checks_of, shipped_packs
+from spikeward.daemon.rule_file.digest import digest_of
+from spikeward.daemon.rule_file.meaning import check_meaning
+from spikeward.daemon.rule_file.problems import ERROR, Problem
+from spikeward.daemon.rule_file.walk import TooMany, Walker
+from spikeward.daemon.rule_file.yaml_text import LARGEST, compose
 from spikeward.rules.rulebook import Rulebook
 from spikeward.rules.schema import RULE_FILE
 

@@ -9,9 +9,9 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from spikeward.daemon.config import load_rules
-from spikeward.daemon.problems import CODES, Problem, lines_of
-from spikeward.daemon.yaml_text import Node, compose
+from spikeward.daemon.rule_file.load import load_rules
+from spikeward.daemon.rule_file.problems import CODES, Problem, lines_of
+from spikeward.daemon.rule_file.yaml_text import Node, compose
 from spikeward.rules.schema import RULE_FILE
 from spikeward.rules.schema_kinds import Scalar
 from spikeward.rules.schema_shapes import Block, Field, Limits, ListOf, MapOf, Shape

@@ -8,9 +8,9 @@ import pytest
 from hypothesis import example, given
 from hypothesis import strategies as st
 
-from spikeward.daemon.config import load_rules
-from spikeward.daemon.problems import CODES, lines_of
-from spikeward.daemon.yaml_text import LARGEST, Node, compose
+from spikeward.daemon.rule_file.load import load_rules
+from spikeward.daemon.rule_file.problems import CODES, lines_of
+from spikeward.daemon.rule_file.yaml_text import LARGEST, Node, compose
 
 
 def only_value(text: str) -> Node:

@@ -8,9 +8,9 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from spikeward.daemon.config_build import folder_of
-from spikeward.daemon.config_walk import Walker
 from spikeward.daemon.names import ignored, is_ours
+from spikeward.daemon.rule_file.build import folder_of
+from spikeward.daemon.rule_file.walk import Walker
 
 
 def contains(outer: str, inner: str) -> bool:

@@ -8,8 +8,8 @@ from functools import cache
 from importlib.resources import files
 from typing import Any
 
-from spikeward.daemon.config_walk import Walker, near
-from spikeward.daemon.yaml_text import LIST, MAP, SCALAR, Node, compose
+from spikeward.daemon.rule_file.walk import Walker, near
+from spikeward.daemon.rule_file.yaml_text import LIST, MAP, SCALAR, Node, compose
 from spikeward.rules.rulebook import Limits
 from spikeward.rules.schema_kinds import Scalar, limit, one_of
 
