@@ -35,6 +35,7 @@ class Root:
     settling: Settling[Place]
     presence: Presence = field(default_factory=Presence)
     away: str = ""
+    looked: bool = False  # whether it has been looked through since the start
     stamps: dict[str, Stamp] = field(default_factory=dict)
     unclaimed: set[str] = field(default_factory=set)
     oddities: list[Oddity] = field(default_factory=list)
@@ -99,6 +100,8 @@ class Intake:
 
     def claims(self, place: Place) -> list[Claim]:
         """Every way in which a file is to be read; none where nobody takes it."""
+        if place[0] not in self.roots:
+            return []
         watch = self.roots[place[0]].watch
         found = {claim.key: claim for _, claims in self._feed if (claim := claims.of(place[1], watch)) is not None}
         return list(found.values())
@@ -111,6 +114,7 @@ class Intake:
         if root.away:
             return Seen()
         if not listing.start:
+            root.looked = True
             root.oddities, root.unlisted = listing.oddities, listing.unlisted
             root.unclaimed.intersection_update(listing.files)
         changes = compare(listing, root.stamps)

@@ -41,6 +41,7 @@ def recall(pipeline: Pipeline, journal: Journal) -> None:
         sentence = record.payload if record.kind == _UNREAD else ""
         content = Content(record.sha256, table, bench, sentence, claim.layout)
         pipeline.touched |= pipeline.intake.hold(place, record.stamp, record.layout_digest, content)
+        pipeline.unsaid.add(place)
 
 
 def _text(content: Content) -> tuple[str, str]:

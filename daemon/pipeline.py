@@ -10,7 +10,7 @@ here may be lost and found again by a new look at the folders; what may not is i
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from contextlib import suppress
 from dataclasses import dataclass, field
 
@@ -49,6 +49,9 @@ class Pipeline:
     clock: Clock
     closings: Closings = field(default_factory=Closings)
     touched: set[BatchKey] = field(default_factory=set)
+    gone: set[Place] = field(default_factory=set)  # files that are gone, until the journal has forgotten them
+    unsaid: set[Place] = field(default_factory=set)  # files whose flag of an unread file may not be right yet
+    undecided: set[Place] = field(default_factory=set)  # decisions files that have settled, until they are adopted
     solved: dict[BatchKey, Solved] = field(default_factory=dict)
     rules_notice: Notice | None = None
     intake: Intake = field(init=False)
@@ -80,16 +83,36 @@ class Pipeline:
         seen = self.intake.see(folder, listing, now)
         for place in seen.gone:
             self.touched |= self.intake.gone(place)
-            self._withdraw_unread(place)
-        for place in seen.decisions:
-            self.touched |= self._adopt_decisions(place)
+        self.gone.update(seen.gone)
+        self.unsaid.update(seen.gone)
+        self.undecided.update(seen.decisions)
         return seen.jobs
 
     def take(self, replies: Iterable[ReadReply]) -> None:
-        """Files were read: their readings take their places, and what could not be read is said beside the file."""
+        """Files were read: their readings take their places."""
         for reply in replies:
             self.touched |= self.intake.take(reply)
-            self.say_unread((reply.key[0], reply.key[1]))
+            self.unsaid.add((reply.key[0], reply.key[1]))
+
+    def catch_up(self) -> None:
+        """Adopt decisions, and say beside each file whether it could be read.
+
+        Raises
+        ------
+        OSError : the disk does not take it now; a later call goes on where this one ended
+        """
+        for place in sorted(self.undecided):
+            self.touched |= self._adopt_decisions(place)
+            self.undecided.discard(place)
+        for place in sorted(self.unsaid):
+            self._say_unread(place)
+            self.unsaid.discard(place)
+
+    def ready(self) -> set[BatchKey]:
+        """The touched batches whose folder has been looked through: what an earlier run remembers waits for that."""
+        roots = self.intake.roots
+        self.touched = {key for key in self.touched if key.root in roots}
+        return {key for key in self.touched if roots[key.root].looked}
 
     def solve(self, keys: Iterable[BatchKey]) -> list[Solved]:
         """Evaluate some batches, and record the closings that now follow from what is in force."""
@@ -145,12 +168,17 @@ class Pipeline:
             self.closings.take(event)
             self.touched.add(one.batch.key)
 
-    def time_is_up(self, one: Solved) -> None:
-        """Nothing of a batch has arrived for the stated time: incomplete series lapse, and the batch may close."""
+    def time_is_up(self, one: Solved, idle: Callable[[BatchKey | SeriesKey], float]) -> None:
+        """Incomplete series of which nothing has arrived for the stated time lapse, and a quiet batch may close.
+
+        ``idle`` gives the seconds for which nothing of a batch or series has arrived.
+        """
+        longest = one.rules.series.lapses_after
         waiting = [outcome.key for outcome in one.outcome.outcomes if outcome.incomplete]
-        if waiting:
-            self.lapse(one, waiting)
-        elif not closing_roles(one.rules):
+        over = [key for key in waiting if idle(key) >= longest]
+        if over:
+            self.lapse(one, over)
+        elif not waiting and not closing_roles(one.rules) and idle(one.batch.key) >= longest:
             self.close([one])
             self.touched.add(one.batch.key)
 
@@ -179,6 +207,7 @@ class Pipeline:
     def adopt(self, rules: Rulebook, text: str) -> None:
         """A good edit of the rule file: it applies to every batch that is not closed."""
         self.texts.keep(rules.digest, text)
+        self.unsaid.update(self.solving.present.unread())
         self.rules = rules
         earlier = dict(self.solving.earlier)
         old = self.solving.present
@@ -268,14 +297,18 @@ class Pipeline:
 
     def _adopt_decisions(self, place: Place) -> set[BatchKey]:
         root, path = place
+        if root not in self.intake.roots:
+            return set()
         where = self.decisions.see(place, f"{self.places.inputs(self.intake.roots[root].watch)}/{path}")
         if where is None:
             return set()
         return {key for key in self.solving.every() if key.root == root and _below(key.folder, where)}
 
-    def say_unread(self, place: Place) -> None:
+    def _say_unread(self, place: Place) -> None:
         """Leave or take away the flag that says why a file cannot be read."""
         root, path = place
+        if root not in self.intake.roots:
+            return
         content = self.solving.present.contents.get(place)
         folder = self._folder_of(root, self.solving.present.output_folder(place))
         name = path.rsplit("/", 1)[-1]
@@ -283,11 +316,6 @@ class Pipeline:
             self.records.publish_files(folder, {unread_name(name): render_unread(path, content.sentence)})
         else:
             self.records.withdraw_unread(folder, name)
-
-    def _withdraw_unread(self, place: Place) -> None:
-        root, path = place
-        folder = self._folder_of(root, self.solving.present.output_folder(place))
-        self.records.withdraw_unread(folder, path.rsplit("/", 1)[-1])
 
 
 _KEPT = "somebody had edited this file; the edit was kept aside under this name"

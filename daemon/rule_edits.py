@@ -10,6 +10,7 @@ from spikeward.daemon.station import RuleFile, read_rule_file
 from spikeward.daemon.trouble import Trouble
 
 LOOK_EVERY = 1.0  # s
+PAUSE = 10.0  # s until rules that the disk refused to keep are tried again
 
 
 class RuleEdits:
@@ -39,12 +40,18 @@ class RuleEdits:
             return False
         if edited.text == self._text:
             return False
-        self._text = edited.text
         if edited.rules is None or edited.errors:
+            self._text = edited.text
             self._refuse("; ".join(problem.line_text() for problem in edited.errors))
             return False
+        try:
+            self._pipeline.adopt(edited.rules, edited.text)
+        except OSError as error:
+            self._stamp, self._due = None, now + PAUSE
+            self._refuse(f"It cannot be kept now ({error.strerror or error}); tried again in {PAUSE:.0f} s")
+            return False
+        self._text = edited.text
         self._pipeline.rules_notice = None
-        self._pipeline.adopt(edited.rules, edited.text)
         self._log.info("rules", note="a new version of the rule file is in force", digest=edited.rules.digest)
         for remedy in self._pipeline.remedies():
             self._log.info("rules", note=remedy)

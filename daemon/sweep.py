@@ -78,6 +78,7 @@ def sweep(
     portions = [jobs[start : start + _PORTION] for start in range(0, len(jobs), _PORTION)]
     for portion in bar(portions, len(jobs)):
         pipeline.take(sorted(readers.read_many(portion), key=lambda reply: reply.key))
+    pipeline.catch_up()
     if again is not None:
         pipeline.reopen(again or None)
     solved = pipeline.solve(pipeline.solving.every())

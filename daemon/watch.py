@@ -7,9 +7,10 @@ import signal
 import threading
 import time
 from collections.abc import Callable, Iterator
-from concurrent.futures import Future, ThreadPoolExecutor
+from concurrent.futures import Future
 from contextlib import contextmanager, suppress
 from dataclasses import dataclass, field
+from typing import TypeVar
 
 from spikeward.daemon.events import NATIVE, POLL, Hints, RootWatch
 from spikeward.daemon.idle import Idle
@@ -20,8 +21,10 @@ from spikeward.daemon.mounts import read_mounts
 from spikeward.daemon.opening import Opened, open_station
 from spikeward.daemon.pipeline import Pipeline
 from spikeward.daemon.rule_edits import RuleEdits
+from spikeward.daemon.solving import Solved
 from spikeward.daemon.survey import Listing, survey
 from spikeward.daemon.workers import Readers
+from spikeward.rules.records import SeriesKey
 
 SCAN_EVERY = {POLL: 1.0, NATIVE: 15.0}  # s between looks at everything: the longest that a lost event makes a file late
 SHARE_OF_TIME = 50  # a look that takes long is repeated the more seldom: at most 1/50 of the time goes to looking
@@ -38,6 +41,23 @@ def watch_command(config: str, workers: int, json_log: bool) -> int:
     with open_station(config, json_log=json_log) as opened, Readers(workers) as readers, stopping(stop):
         Watching(opened, readers, time.monotonic).run(stop)
     return 0
+
+
+Answer = TypeVar("Answer")
+
+
+def in_background(work: Callable[..., Answer], *arguments: object) -> Future[Answer]:
+    """Do one thing in a thread that keeps nobody from ending: a share may hang for ever."""
+    future: Future[Answer] = Future()
+
+    def run() -> None:
+        try:
+            future.set_result(work(*arguments))
+        except BaseException as error:
+            future.set_exception(error)
+
+    threading.Thread(target=run, daemon=True).start()
+    return future
 
 
 @contextmanager
@@ -77,9 +97,9 @@ class Watching:
     hints: Hints = field(default_factory=Hints)
     _scans: dict[str, _Scan] = field(default_factory=dict)
     _watches: dict[str, RootWatch] = field(default_factory=dict)
-    _threads: dict[str, ThreadPoolExecutor] = field(default_factory=dict)
     _boards_due: float | None = None
     _health_due: float = 0.0
+    _time_due: float = 0.0
     _disk_wait: float = 0.0
     _idle: Idle = field(init=False)
     _edits: RuleEdits = field(init=False)
@@ -108,7 +128,7 @@ class Watching:
         """Whether anything is being read, waits to settle, or waits to be published."""
         intake = self.pipeline.intake
         waiting = any(intake.settles_in(folder) is not None for folder in intake.roots)
-        return waiting or self.readers.busy or bool(self.pipeline.touched) or self._boards_due is not None
+        return waiting or self.readers.busy or bool(self.pipeline.ready()) or self._boards_due is not None
 
     def run(self, stop: threading.Event) -> None:
         """Go on until ``stop`` is set; then finish what is in hand."""
@@ -158,13 +178,11 @@ class Watching:
         roots = self.pipeline.intake.roots
         for folder in [each for each in self._scans if each not in roots]:
             self._watches.pop(folder).stop()
-            self._threads.pop(folder).shutdown(wait=False, cancel_futures=True)
             del self._scans[folder]
         for folder, root in roots.items():
             if folder not in self._scans:
                 path = self.pipeline.places.inputs(root.watch)
                 self._scans[folder] = _Scan()
-                self._threads[folder] = ThreadPoolExecutor(1, thread_name_prefix=f"survey {folder}")
                 self._watches[folder] = RootWatch(folder, path, root.watch.events, self.hints, read_mounts())
                 self.log.info("folder", note=self._watches[folder].start())
 
@@ -207,7 +225,7 @@ class Watching:
         scan.hinted.clear()
         scan.began = now
         path = self.pipeline.places.inputs(root.watch)
-        scan.under_way = self._threads[folder].submit(survey, self.pipeline.disk, path, start)
+        scan.under_way = in_background(survey, self.pipeline.disk, path, start)
         scan.under_way.add_done_callback(lambda _: self.hints.wake.set())
 
     def _end_look(self, folder: str, scan: _Scan, now: float) -> None:
@@ -230,6 +248,9 @@ class Watching:
     # ---- reading, solving, publishing --------------------------------------------------------------------------------
 
     def _read(self) -> None:
+        if self.pipeline.gone:
+            self.journal.forget(self.pipeline.gone)
+            self.pipeline.gone.clear()
         replies = self.readers.replies(0.0)
         if not replies:
             return
@@ -240,11 +261,16 @@ class Watching:
                 self.log.warning("unread", file=reply.key[1], note=reply.sentence)
 
     def _publish(self, now: float) -> None:
-        touched = set(self.pipeline.touched)
+        self.pipeline.catch_up()
+        touched = self.pipeline.ready()
         if not touched:
             return
-        self._idle.arrived(touched, now)
-        written = self.pipeline.publish(self.pipeline.solve(touched))
+        self._idle.go_on(now)
+        solved = self.pipeline.solve(touched)
+        self._idle.arrived(touched)
+        for one in solved:
+            self._idle.arrived(changed_members(self.pipeline.solved.get(one.batch.key), one))
+        written = self.pipeline.publish(solved)
         self.pipeline.touched -= touched
         for key in written:
             outcome = self.pipeline.output.outcome(key)
@@ -254,10 +280,12 @@ class Watching:
     def _let_time_decide(self, now: float) -> None:
         """Series that waited long enough lapse; batches without closing members close."""
         self._idle.go_on(now, counting=not any(root.away for root in self.pipeline.intake.roots.values()))
+        if now < self._time_due:
+            return
+        self._time_due = now + _TICK
         for one in list(self.pipeline.solved.values()):
-            if one.outcome.closed or self._idle.of(one.batch.key) < one.rules.series.lapses_after:
-                continue
-            self.pipeline.time_is_up(one)
+            if not one.outcome.closed:
+                self.pipeline.time_is_up(one, self._idle.of)
 
     def _finish(self) -> None:
         """Publish what is in hand, and remember what would make the next start slower."""
@@ -268,6 +296,14 @@ class Watching:
             self.journal.record_waiting(self.pipeline.intake.waiting())
         for watch in self._watches.values():
             watch.stop()
-        for thread in self._threads.values():
-            thread.shutdown(wait=False, cancel_futures=True)
         self.log.info("stopped")
+
+
+def changed_members(before: Solved | None, after: Solved) -> list[SeriesKey]:
+    """The series of a batch in which other readings are in force than before."""
+    known = before.batch.members if before is not None else {}
+    return [
+        key
+        for key, members in after.batch.members.items()
+        if key not in known or known[key].readings != members.readings
+    ]

@@ -61,22 +61,13 @@ class _Wake(threading.Event):
         return self.is_set()
 
 
-class _AtOnce:
-    """An executor that does the work while it is handed in."""
-
-    def __init__(self, workers: int = 1, thread_name_prefix: str = "") -> None:
-        pass
-
-    def submit(self, work: Callable[..., Any], *arguments: Any) -> Future[Any]:
-        future: Future[Any] = Future()
-        try:
-            future.set_result(work(*arguments))
-        except Exception as error:
-            future.set_exception(error)
-        return future
-
-    def shutdown(self, wait: bool = True, cancel_futures: bool = False) -> None:
-        """Nothing is under way."""
+def _at_once(work: Callable[..., Any], *arguments: Any) -> Future[Any]:
+    future: Future[Any] = Future()
+    try:
+        future.set_result(work(*arguments))
+    except Exception as error:
+        future.set_exception(error)
+    return future
 
 
 @dataclass
@@ -162,7 +153,7 @@ class Life:
         """Live through the steps, then end as after SIGTERM. A ``MortalDisk`` may end it earlier, with ``Died``."""
         with (
             open_station(os.path.join(self.home, "rules.yaml"), disk=self.disk) as self.opened,
-            mock.patch.object(watch_module, "ThreadPoolExecutor", _AtOnce),
+            mock.patch.object(watch_module, "in_background", _at_once),
             Readers(0) as readers,
         ):
             hints = Hints()

@@ -112,7 +112,8 @@ def test_a_reader_that_knows_the_end_waits_for_it(tmp_path: Path, clock: Clock) 
 
     station.put("run.csv", whole[:-30])
     lives(str(station.home), clock, look)
-    assert told == ["cannot be read now: run.csv: waits for the end of the file; tried again"]
+    assert len(told) == 1
+    assert told[0].startswith("cannot be read now: run.csv: waits for the end of the file")
     assert flags(station) == ["N1_01.warn.flag"]
     assert len(history(station, "N1_01")) == 1
 
@@ -336,9 +337,7 @@ def test_the_same_readings_in_two_files_count_once_and_the_other_is_named(
 
 
 def test_equal_bytes_that_mean_different_vessels_both_count_with_a_warning(tmp_path: Path, clock: Clock) -> None:
-    rules = RULES.replace("{role: sample, match:", "{role: sample, from: file, match:").replace(
-        "(?P<vessel>[a-z])?'", "\\.csv'"
-    )
+    rules = RULES.replace("{role: sample, match:", "{role: sample, from: file, match:")
     station = Station(tmp_path / "home", rules)
     files = series("N1", 1)
     files["N1_01_A3.csv"] = files["N1_01_A2.csv"]
