@@ -12,9 +12,9 @@ import signal
 import subprocess
 import sys
 import time
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
-from dataclasses import asdict, dataclass, field
+from dataclasses import asdict, dataclass
 from pathlib import Path
 from types import ModuleType
 
@@ -175,7 +175,6 @@ class Station:
     """A rule file with its watched folder, and the daemon that runs on it as a process of its own."""
 
     base: Path
-    running: list[subprocess.Popen[bytes]] = field(default_factory=list)
 
     @property
     def inbox(self) -> Path:
@@ -203,7 +202,6 @@ class Station:
         log = self.base / "watch.log"
         with log.open("wb") as told:
             process = subprocess.Popen(self.command("watch"), stderr=told, stdout=told)
-        self.running.append(process)
         try:
             until(lambda: b"looked through on a timer" in log.read_bytes(), process, seconds=30.0)
             yield process
@@ -215,9 +213,8 @@ class Station:
                 process.wait()
 
 
-def until(true: object, process: subprocess.Popen[bytes], seconds: float, pause: float = 0.0005) -> float:
+def until(true: Callable[[], bool], process: subprocess.Popen[bytes], seconds: float, pause: float = 0.0005) -> float:
     """Wait until something holds; the seconds that it took."""
-    assert callable(true)
     began = time.perf_counter()
     while not true():
         assert time.perf_counter() - began < seconds, "it does not come"

@@ -26,7 +26,8 @@ def test_solver(bench, table, count):
     rules, problems = load_rules(bench.rules_text(), "rules.yaml")
     assert rules is not None, problems
     batches = batches_of(bench, count)
-    lines = [line for batch in batches for key in sorted(batch.members) for line in prepare(batch.members[key], batch, rules)]
+    members = [(batch, batch.members[key]) for batch in batches for key in sorted(batch.members)]
+    lines = [line for batch, each in members for line in prepare(each, batch, rules)]
     assert len(lines) == count
     x = np.array([[vessel.added / vessel.aliquot_ml for vessel in line.vessels] for line in lines]).T.copy()
     y = np.array([[mean(vessel) for vessel in line.vessels] for line in lines]).T.copy()
