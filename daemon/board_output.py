@@ -19,12 +19,11 @@ Noticed = tuple[str, str, Notice]  # root, output folder, notice
 
 @dataclass(slots=True)
 class BoardOutput:
-    """Writes boards; a folder that once had a board of its own keeps it current."""
+    """Writes boards; what would come out as before is not written again."""
 
     records: Records
     folder_of: Callable[[str, str], str]
     station: str
-    _own_boards: set[Place] = field(default_factory=set)
     _last: dict[BatchKey, tuple[BatchOutcome, list[Notice]]] = field(default_factory=dict)
 
     def publish(self, outcome: BatchOutcome, notices: Iterable[Noticed]) -> None:
@@ -42,17 +41,24 @@ class BoardOutput:
         )
         self._last[key] = (outcome, mine)
 
-    def publish_folders(self, notices: Iterable[Noticed], batches: Collection[BatchKey]) -> None:
-        """A board of its own for each folder that has something to say and no batch to say it on."""
+    def publish_folders(
+        self, notices: Iterable[Noticed], batches: Collection[BatchKey], places: Collection[Place]
+    ) -> None:
+        """A board of its own for each folder that has something to say and no batch to say it on.
+
+        ``places`` are the folders in which such a board may stand from earlier; it goes when nothing is left to say.
+        """
         with_batch = {(key.root, key.folder) for key in batches}
-        found: dict[Place, list[Notice]] = {place: [] for place in self._own_boards - with_batch}
+        found: dict[Place, list[Notice]] = {}
         for root, folder, notice in notices:
             if not any(where == root and _concerns(folder, below) for where, below in with_batch):
                 found.setdefault((root, folder), []).append(notice)
         for (root, folder), mine in sorted(found.items(), key=lambda item: item[0]):
-            self._own_boards.add((root, folder))
             board = render_board(None, mine, {}, self.station, folder or root)
             self.records.publish_files(self.folder_of(root, folder), {"folder" + BOARD: board})
+        nameless = {(key.root, key.folder) for key in batches if not key.batch}
+        for root, folder in sorted(set(places) - set(found) - nameless):
+            self.records.withdraw_file(self.folder_of(root, folder), "folder" + BOARD)
 
 
 def _concerns(noticed: str, folder: str) -> bool:

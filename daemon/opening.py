@@ -65,6 +65,9 @@ def open_station(config: str, json_log: bool = False, disk: Disk | None = None) 
             identity = Identity(os.getpid(), socket.gethostname(), " ".join(sys.argv[:2]), wall_clock())
             lock = acquire(f"{state}/lock", identity, f"the state folder {shown(state)}")
             stack.callback(lock.release)
+            for watch in rules.watches:
+                if watch.output:
+                    disk.mkdirs(places.outputs(watch))
             folders = {places.inputs(watch) for watch in rules.watches} | {places.outputs(w) for w in rules.watches}
             held, warnings = acquire_stations(folders, identity)
             for each in held:

@@ -22,6 +22,7 @@ from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.intake import Intake
 from spikeward.daemon.ledger import EventLog, RuleTexts
 from spikeward.daemon.names import unread_name
+from spikeward.daemon.orphans import Orphans
 from spikeward.daemon.output import Output
 from spikeward.daemon.pages.facts import Notice
 from spikeward.daemon.pages.flag import render_unread
@@ -134,10 +135,28 @@ class Pipeline:
         written: list[SeriesKey] = []
         for one in solved:
             self.touched.add(one.batch.key)
-            written += self.output.publish(one.outcome, check_all)
+            if self._stands(one):
+                written += self.output.publish(one.outcome, check_all)
             self.solved[one.batch.key] = one
             self.touched.discard(one.batch.key)
         return written
+
+    def _stands(self, one: Solved) -> bool:
+        """A batch that closed under another calculation keeps what was published then, until it is solved again."""
+        closing = self.closings.closed.get(one.batch.key)
+        return not one.outcome.closed or closing is None or closing.calculation_version == CALCULATION_VERSION
+
+    def withdraw_orphans(self) -> list[str]:
+        """Take back what stands beside the data for series and batches that the present rules do not know."""
+        every = self.solving.every()
+        self.solved = {key: one for key, one in self.solved.items() if key in every}
+        series = {outcome.key for one in self.solved.values() for outcome in one.outcome.outcomes}
+        orphans = Orphans(self.disk, self.ledger, self._folder_of, self._is_present, self.clock)
+        return orphans.withdraw(self._output_places(), series, self.solved)
+
+    def _output_places(self) -> set[tuple[str, str]]:
+        """Every root and output folder below it in which something was read."""
+        return {(place[0], each.output_folder(place)) for each in self._holdings() for place in each.contents}
 
     def publish_boards(self, keys: Iterable[BatchKey]) -> None:
         """Write boards and tables of batches; slower than flags, so a running daemon does it when there is time."""
@@ -145,13 +164,16 @@ class Pipeline:
         for key in sorted(set(keys)):
             if key in self.solved:
                 self.boards.publish(self.solved[key].outcome, notices)
-        self.boards.publish_folders(notices, self.solving.every())
+        self.boards.publish_folders(notices, self.solving.every(), self._output_places())
 
     # ---- what time decides, entered as data --------------------------------------------------------------------------
 
     def _closes(self, one: Solved) -> bool:
-        """With closing members a batch closes by itself once nothing is missing; without, time decides."""
-        return bool(closing_roles(one.rules)) and not one.outcome.waiting_for
+        """With closing members a batch closes by itself once nothing is missing; without, time decides.
+
+        A batch of which only blanks or brackets are named has nothing to close yet.
+        """
+        return bool(one.outcome.outcomes and closing_roles(one.rules)) and not one.outcome.waiting_for
 
     def close(self, solved: Iterable[Solved]) -> None:
         """Record closings under the rules that apply to each batch."""
@@ -283,7 +305,8 @@ class Pipeline:
         return f"{base}/{folder}" if folder else base
 
     def _is_present(self, key: SeriesKey, path: str, digest: str) -> bool:
-        if (key.root, path) in self.intake.files:
+        content = self.solving.present.contents.get((key.root, path))
+        if content is not None and not content.sentence:
             return True
         readings = (reading for holdings in self._holdings() for reading in holdings.readings([key.batch_key]))
         return any(reading.digest == digest for reading in readings)

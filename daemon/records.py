@@ -41,6 +41,13 @@ class Records:
         self._disk.mkdirs(folder)
         return self._done(folder, publish_files(self._disk, folder, outputs, known))
 
+    def withdraw_file(self, folder: str, name: str) -> None:
+        """Take away a file that has nothing left to say, if it is there."""
+        path = os.path.join(folder, name)
+        if self._disk.exists(path):
+            self._disk.remove(path)
+            self._disk.sync_folder(folder)
+
     def withdraw_unread(self, folder: str, file_name: str) -> bool:
         """Take away the flag of a file that can be read after all."""
         name = unread_name(file_name)

@@ -25,7 +25,7 @@ class RuleEdits:
         self._due = 0.0
 
     def look(self, now: float) -> bool:
-        """Whether new rules are in force since this look."""
+        """Whether a version of the rule file was adopted or refused at this look."""
         if now < self._due:
             return False
         self._due = now + LOOK_EVERY
@@ -37,13 +37,13 @@ class RuleEdits:
             edited = read_rule_file(self._path)
         except Trouble as trouble:
             self._refuse(str(trouble))
-            return False
+            return True
         if edited.text == self._text:
             return False
         if edited.rules is None or edited.errors:
             self._text = edited.text
             self._refuse("; ".join(problem.line_text() for problem in edited.errors))
-            return False
+            return True
         try:
             self._pipeline.adopt(edited.rules, edited.text)
         except OSError as error:

@@ -6,10 +6,12 @@ import sys
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
+from spikeward.daemon.names import shown
 from spikeward.daemon.opening import open_station
 from spikeward.daemon.pipeline import Pipeline
 from spikeward.daemon.solving import Solved
 from spikeward.daemon.survey import survey
+from spikeward.daemon.trouble import Trouble
 from spikeward.daemon.workers import Readers, ReadJob
 from spikeward.rules.outcomes import PASS
 from spikeward.rules.series import closing_roles
@@ -80,13 +82,14 @@ def sweep(
         pipeline.take(sorted(readers.read_many(portion), key=lambda reply: reply.key))
     pipeline.catch_up()
     if again is not None:
-        pipeline.reopen(again or None)
+        _again(pipeline, again)
     solved = pipeline.solve(pipeline.solving.every())
-    due = [one for one in solved if not one.outcome.closed and (close or _is_over(one))]
+    due = [one for one in solved if one.outcome.outcomes and not one.outcome.closed and (close or _is_over(one))]
     if due:
         pipeline.close(due)
         solved = pipeline.solve(pipeline.solving.every())
     pipeline.publish(solved, check_all=True)
+    pipeline.withdraw_orphans()
     pipeline.publish_boards(one.batch.key for one in solved)
     return solved
 
@@ -102,6 +105,14 @@ def two_looks(pipeline: Pipeline, pauses: Pauses) -> list[ReadJob]:
         for folder, root in list(pipeline.intake.roots.items()):
             jobs += pipeline.see(folder, survey(pipeline.disk, pipeline.places.inputs(root.watch)), now)
     return jobs
+
+
+def _again(pipeline: Pipeline, batch: str) -> None:
+    closed = sorted({key.batch for key in pipeline.closings.closed})
+    if batch and batch not in closed:
+        told = ", ".join(shown(each) for each in closed if each) or "none"
+        raise Trouble(f"--again {shown(batch)}: no closed batch is called so; closed are: {told}")
+    pipeline.reopen(batch or None)
 
 
 def _is_over(one: Solved) -> bool:

@@ -100,6 +100,7 @@ class Watching:
     _boards_due: float | None = None
     _health_due: float = 0.0
     _time_due: float = 0.0
+    _rules_changed: bool = False
     _disk_wait: float = 0.0
     _idle: Idle = field(init=False)
     _edits: RuleEdits = field(init=False)
@@ -139,7 +140,7 @@ class Watching:
         try:
             while not stop.is_set():
                 self.step()
-                if self.readers.busy:
+                if self.readers.busy and self.monotonic() >= self._disk_wait:
                     self.readers.wait(min(self._pause(), 0.02))
                 else:
                     self.hints.wake.wait(self._pause())
@@ -158,6 +159,9 @@ class Watching:
             self._publish(now)
             self._let_time_decide(now)
             if self._boards_due is not None and now >= self._boards_due and not self.readers.busy:
+                if self._rules_changed:
+                    self.pipeline.withdraw_orphans()
+                    self._rules_changed = False
                 self.pipeline.publish_boards(self.pipeline.solved)
                 self._boards_due = None
         except OSError as error:
@@ -191,6 +195,7 @@ class Watching:
         if self._edits.look(now):
             self._follow_watches()
             self._boards_due = now
+            self._rules_changed = True
             for scan in self._scans.values():
                 scan.full_due = now
         if now < self._health_due:

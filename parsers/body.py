@@ -105,12 +105,13 @@ class _Walk:
     def _fitting(self, row: Row) -> Row:
         width = len(self._head.cells)
         if not self._fits(row):
-            lost = self._head.cells[len(row.cells)] if len(row.cells) < width else f"{width + 1}"
+            cells = f"{len(row.cells)} cell{'' if len(row.cells) == 1 else 's'}"
+            # No column is named: a line after the table belongs to none, and where a torn row lost cells is not known.
             raise Unreadable(
-                f"the row has {len(row.cells)} cells where the headings have {width}; the file may be torn, or a "
-                "delimiter stands inside a cell. A line after the table is declared under ends_at",
+                f"the row has {cells} where the headings have {width}, and its first cell is '{_short(row.cells[0])}'; the file "
+                "may be torn, or a delimiter stands inside a cell. If the table ends here, add the whole first cell "
+                "under ends_at",
                 row.number,
-                lost or f"{len(row.cells) + 1}",
             )
         if row.cells[0] in self._columns and frozenset(row.cells) == self._columns:
             raise Unreadable(
@@ -120,5 +121,8 @@ class _Walk:
 
 
 def _shown(row: Row) -> str:
-    text = " ".join(cell for cell in row.cells if cell)
+    return _short(" ".join(cell for cell in row.cells if cell))
+
+
+def _short(text: str) -> str:
     return text if len(text) <= 60 else f"{text[:60]}…"

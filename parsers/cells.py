@@ -13,6 +13,11 @@ from spikeward.rules.records import FAULTY, MEASURED, MISSING, NOT_DETECTED, OVE
 QUANTITIES = ("mass", "dry_matter", "aliquot", "addition", "final", "dilution", "standard")
 """The meanings of columns that describe how a solution was made."""
 
+IDENTITIES = ("reading",)
+"""The meanings of columns whose text tells rows of one solution apart."""
+
+_TEXTS = ("standard", *IDENTITIES)
+
 _DIMENSIONS = {
     "mass": ("mass",),
     "dry_matter": ("fraction",),
@@ -47,7 +52,7 @@ class Words:
 
 def number_part(meaning: str, cell: Cell) -> Cell | None:
     """The numeric part of a quantity's cell; None for an empty cell and for what is no number by its meaning."""
-    if not cell.text or meaning == "standard":
+    if not cell.text or meaning in _TEXTS:
         return None
     number, unit = _parts(cell.text)
     if meaning == "dilution" and (unit or not number):

@@ -3,25 +3,25 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import replace
 from typing import NamedTuple
 
 from spikeward.parsers.body import body_of
-from spikeward.parsers.cells import QUANTITIES, Words, number_part, quantity_text
+from spikeward.parsers.cells import IDENTITIES, QUANTITIES, Words, number_part, quantity_text
 from spikeward.parsers.dates import Moments
 from spikeward.parsers.grid import Grid, Row
 from spikeward.parsers.headings import Column, column, unit_text
 from spikeward.parsers.numbers import Cell, Numbers, numbers_of
-from spikeward.rules.records import MEASURED, Entry, Layout, Table, Unreadable
+from spikeward.rules.records import MEASURED, Entry, Layout, Table, Unreadable, WideColumn
 
 
 class _Signal(NamedTuple):
-    """A column of signals, and the analyte and line that its heading stands for (empty in a long table)."""
+    """A column of signals, what its heading stands for (nothing in a long table), and the columns of its scatter."""
 
     column: Column
-    analyte: str = ""
-    line: str = ""
+    holds: WideColumn
+    scatter: Mapping[str, Column]  # by signal_sd, signal_rsd, readings
 
 
 def wanted_headings(layout: Layout) -> tuple[str, ...]:
@@ -33,7 +33,17 @@ def wanted_headings(layout: Layout) -> tuple[str, ...]:
     """
     if not layout.wide and "signal" not in layout.columns:
         raise Unreadable("the rule file does not say which column holds the signal; declare columns: signal, or wide")
-    return layout.header_contains or (*layout.columns.values(), *layout.wide)
+    own = [heading for meant in layout.wide.values() for heading in _scatter(meant).values()]
+    return layout.header_contains or (*layout.columns.values(), *layout.wide, *own)
+
+
+_SCATTER = ("signal_sd", "signal_rsd", "readings")
+_LONG = WideColumn("")
+
+
+def _scatter(meant: WideColumn) -> dict[str, str]:
+    """The headings that a wide column declares for its own scatter."""
+    return {meaning: heading for meaning in _SCATTER if (heading := getattr(meant, meaning))}
 
 
 def table_of(grid: Grid, layout: Layout, whole: bool | None, notes: Sequence[str]) -> Table:
@@ -55,12 +65,15 @@ class _Reading:
             return column(grid.headings, name, grid.rows[0].number)
 
         self._layout = layout
-        self._signals = [_Signal(found(name), *meaning) for name, meaning in layout.wide.items()]
         self._columns = {
-            meaning: found(name) for meaning, name in layout.columns.items() if meaning != "signal" or not self._signals
+            meaning: found(name) for meaning, name in layout.columns.items() if meaning != "signal" or not layout.wide
         }
-        self._signals = self._signals or [_Signal(self._columns["signal"])]
-        self._given = [meaning for meaning in QUANTITIES if meaning in self._columns]
+        common = {meaning: place for meaning, place in self._columns.items() if meaning in _SCATTER}
+        self._signals = [
+            _Signal(found(name), meant, {**common, **{each: found(own) for each, own in _scatter(meant).items()}})
+            for name, meant in layout.wide.items()
+        ] or [_Signal(self._columns["signal"], _LONG, common)]
+        self._given = [meaning for meaning in (*QUANTITIES, *IDENTITIES) if meaning in self._columns]
         self._words = Words(layout.not_detected, layout.over_range)
         self._moments = Moments(layout.time_zone, layout.date_patterns)
         body = body_of(grid, layout.ends_at, layout.unit_row)
@@ -78,13 +91,18 @@ class _Reading:
 
     def _numeric_cells(self) -> Iterator[Cell]:
         """Every cell that must be a number, by which the decimal sign of the file is decided."""
-        spread = [self._columns[each] for each in ("signal_sd", "signal_rsd") if each in self._columns]
+        spread = {
+            place.position: place
+            for signal in self._signals
+            for meaning, place in signal.scatter.items()
+            if meaning != "readings"
+        }
         for row in self._rows:
             for signal in self._signals:
                 text = row.cells[signal.column.position]
                 if self._words.qualifier(text) == MEASURED:
                     yield Cell(text, row.number, signal.column.heading)
-            for each in spread:
+            for each in spread.values():
                 text = _without_percent(row.cells[each.position])
                 if text and self._words.qualifier(text) == MEASURED:
                     yield Cell(text, row.number, each.heading)
@@ -146,18 +164,17 @@ class _Reading:
         text = row.cells[signal.column.position]
         qualifier = self._words.qualifier(text)
         value = self._numbers.value(Cell(text, row.number, signal.column.heading)) if qualifier == MEASURED else None
-        readings = self._text(row, "readings")
         return Entry(
             row=row.number,
             solution=shared.solution,
-            analyte=signal.analyte or shared.analyte,
-            line=signal.line or shared.line,
+            analyte=signal.holds.analyte or shared.analyte,
+            line=signal.holds.line or shared.line,
             unit=self._unit(row, signal, measured=value is not None),
             signal=value,
             text=text,
             qualifier=qualifier,
-            readings=self._count(row) if readings and value is not None else 1,
-            sd=self._sd(row, value) if value is not None else None,
+            readings=self._count(row, signal) if value is not None else 1,
+            sd=self._sd(row, signal, value) if value is not None else None,
             measured_at=shared.measured_at,
             processed_at=shared.processed_at,
             order=shared.order,
@@ -165,19 +182,23 @@ class _Reading:
             digest=_digest(row, signal.column.heading),
         )
 
-    def _count(self, row: Row) -> int:
-        cell = self._cell(row, "readings")
+    def _count(self, row: Row, signal: _Signal) -> int:
+        place = signal.scatter.get("readings")
+        if place is None or not row.cells[place.position]:
+            return 1
+        cell = Cell(row.cells[place.position], row.number, place.heading)
         count = self._numbers.count(cell)
         if count < 1:
             raise Unreadable("a signal is the mean of at least one reading", cell.row, cell.column)
         return count
 
-    def _sd(self, row: Row, value: float) -> float | None:
+    def _sd(self, row: Row, signal: _Signal, value: float) -> float | None:
         """The standard deviation of the single readings, from its own column or from the relative one in percent."""
         for meaning, factor in (("signal_sd", 1.0), ("signal_rsd", abs(value) / 100.0)):
-            text = _without_percent(self._text(row, meaning))
-            if text and self._words.qualifier(text) == MEASURED:
-                cell = Cell(text, row.number, self._columns[meaning].heading)
+            place = signal.scatter.get(meaning)
+            text = _without_percent(row.cells[place.position]) if place else ""
+            if place and text and self._words.qualifier(text) == MEASURED:
+                cell = Cell(text, row.number, place.heading)
                 sd = self._numbers.value(cell)
                 if sd < 0:
                     raise Unreadable(f"'{text}' is below nought, which no standard deviation is", cell.row, cell.column)

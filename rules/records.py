@@ -45,13 +45,24 @@ class Unreadable(Exception):
 
 
 @dataclass(frozen=True, slots=True)
+class WideColumn:
+    """What a column of signals holds where each analyte has one, and the headings of its own scatter (empty: none)."""
+
+    analyte: str
+    line: str = ""
+    signal_sd: str = ""
+    signal_rsd: str = ""
+    readings: str = ""
+
+
+@dataclass(frozen=True, slots=True)
 class Layout:
     """How one instrument writes its exports: a reader's options as the rule file declares them.
 
     Names follow the W3C vocabulary for tabular data (CSVW) where it has them. ``columns`` maps what a column means
-    (solution, analyte, line, signal, signal_sd, signal_rsd, readings, unit, measured_at, processed_at, order, or a
-    quantity: mass, dry_matter, aliquot, addition, final, dilution, standard) to its heading. ``wide`` maps headings of
-    signal columns to (analyte, line) where each analyte has a column of its own.
+    (solution, analyte, line, signal, signal_sd, signal_rsd, readings, reading, unit, measured_at, processed_at, order,
+    or a quantity: mass, dry_matter, aliquot, addition, final, dilution, standard) to its heading. ``wide`` maps
+    headings of signal columns to what they hold, where each analyte has a column of its own.
     """
 
     name: str
@@ -64,7 +75,7 @@ class Layout:
     decimal: str = "auto"  # auto, point or comma
     header_contains: tuple[str, ...] = ()
     columns: Mapping[str, str] = field(default_factory=dict)
-    wide: Mapping[str, tuple[str, str]] = field(default_factory=dict)
+    wide: Mapping[str, WideColumn] = field(default_factory=dict)
     unit: str = ""  # of signals, where the file does not say it
     unit_row: bool = False  # the row under the headings holds units
     ends_at: tuple[str, ...] = ()  # the table ends at a row whose first cell is one of these
@@ -80,8 +91,9 @@ class Layout:
 class Entry:
     """One signal cell of an export, before its solution's name is understood.
 
-    ``values`` holds further declared columns as (meaning, quantity text such as ``0.5012 g``). ``digest`` is a hex
-    SHA-256 over the cell texts of the row and the heading of the signal's column.
+    ``values`` holds further declared columns as (meaning, quantity text such as ``0.5012 g``); a ``reading`` among them
+    is the number of a repeated row. ``digest`` is a hex SHA-256 over the cell texts of the row and the heading of the
+    signal's column.
     """
 
     row: int

@@ -17,7 +17,8 @@ from spikeward.parsers.registry import origin
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.rulebook import Rulebook
 
-_LEFT_OUT = {"digest", "state", "watches", "line"}
+# What cannot change a result, by the record that holds it: a field of the same name elsewhere may well change one.
+_LEFT_OUT = {"Rulebook": {"digest", "state", "watches"}, "NameRule": {"line"}, "Preparation": {"line"}}
 
 
 def digest_of(rules: Rulebook) -> str:
@@ -34,7 +35,8 @@ def _plain(value: Any) -> Any:
     if isinstance(value, Quantity):
         return str(value)
     if is_dataclass(value) and not isinstance(value, type):
-        return {each.name: _plain(getattr(value, each.name)) for each in fields(value) if each.name not in _LEFT_OUT}
+        left_out = _LEFT_OUT.get(type(value).__name__, set())
+        return {each.name: _plain(getattr(value, each.name)) for each in fields(value) if each.name not in left_out}
     if isinstance(value, dict):
         return {key: _plain(each) for key, each in value.items()}
     if isinstance(value, (tuple, list)):
