@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from collections.abc import Iterable, Mapping
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass, field, replace
 
 from spikeward.rules.naming import Named, Namer, Source, name
@@ -97,6 +97,15 @@ class Holdings:
             if entry.folder in ("", key.folder) or key.folder.startswith(entry.folder + "/")
         ]
         return tuple(sorted(entries, key=lambda entry: (entry.path, entry.row, entry.level)))
+
+    def idle_bench(self, lacking: Mapping[BatchKey, Collection[str]]) -> list[tuple[BatchKey, BenchEntry]]:
+        """Bench entries that reach no series, of batches in which a series still lacks something from the bench."""
+        found = []
+        for key, samples in lacking.items():
+            for entry in self.bench(key):
+                if entry.batch in ("", key.batch) and entry.sample not in samples:
+                    found.append((key, entry))
+        return found
 
     def output_folder(self, place: Place) -> str:
         """Where results of a file's series go, below the output root of its watched folder."""

@@ -55,7 +55,7 @@ def open_station(config: str, json_log: bool = False, disk: Disk | None = None) 
     """
     rule_file = read_rule_file(config)
     rules = usable(rule_file)
-    places = Places(rule_file.path.absolute().parent)
+    places = Places(rule_file.path.absolute().parent, config)
     log = Log(sys.stderr, wall_clock, as_json=json_log)
     disk = disk or RealDisk()
     state = str(places.state(rules))

@@ -269,6 +269,7 @@ class Pipeline:
             notes = sorted({note for members in one.batch.members.values() for note in members.notes})
             found += [(key.root, key.folder, Notice("duplicate", key.batch, note)) for note in notes]
         found += [(key.root, key.folder, notice) for key, notice in self.output.held.items()]
+        found += self._idle_bench()
         found += [
             (root, "", Notice("kept aside", os.path.basename(path), _KEPT))
             for path in self.records.kept
@@ -277,6 +278,17 @@ class Pipeline:
         if self.rules_notice is not None:
             found += [(root, "", self.rules_notice) for root in self.intake.roots]
         return found
+
+    def _idle_bench(self) -> list[tuple[str, str, Notice]]:
+        lacking = {
+            one.batch.key: {key.sample for key in one.batch.members}
+            for one in self.solved.values()
+            if any("from the bench file" in what for outcome in one.outcome.outcomes for what in outcome.waiting_for)
+        }
+        return [
+            (key.root, key.folder, Notice("bench", f"{entry.path} row {entry.row}", _NO_SERIES.format(entry.sample)))
+            for key, entry in self.solving.present.idle_bench(lacking)
+        ]
 
     def needs_a_person(self) -> list[str]:
         """One line for everything that is neither a result nor in order."""
@@ -296,7 +308,8 @@ class Pipeline:
             return []
         told = ", ".join(other[:5]) + (f" and {len(other) - 5} more" if len(other) > 5 else "")
         return [
-            f"closed under earlier rules: {told}; to solve again under the present ones: spikeward sweep CONFIG --again"
+            f"closed under earlier rules: {told}; to solve again under the present ones: "
+            f"spikeward sweep {self.places.rule_file} --again"
         ]
 
     def _folder_of(self, root: str, folder: str) -> str:
@@ -341,6 +354,7 @@ class Pipeline:
             self.records.withdraw_unread(folder, name)
 
 
+_NO_SERIES = "no series has the sample '{}', while others wait for the bench file; compare how the names are written"
 _KEPT = "somebody had edited this file; the edit was kept aside under this name"
 
 

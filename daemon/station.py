@@ -72,6 +72,7 @@ class Places:
     """Where things lie: relative folders of the rule file are beside it."""
 
     base: Path
+    rule_file: str = "CONFIG"  # as the person named it, for remedies
 
     def inputs(self, watch: Watch) -> str:
         """The watched folder."""

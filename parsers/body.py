@@ -108,7 +108,7 @@ class _Walk:
             cells = f"{len(row.cells)} cell{'' if len(row.cells) == 1 else 's'}"
             # No column is named: a line after the table belongs to none, and where a torn row lost cells is not known.
             raise Unreadable(
-                f"the row has {cells} where the headings have {width}, and its first cell is '{_short(row.cells[0])}'; the file "
+                f"the row has {cells} where the headings have {width}, and its first cell is {_first(row)}; the file "
                 "may be torn, or a delimiter stands inside a cell. If the table ends here, add the whole first cell "
                 "under ends_at",
                 row.number,
@@ -122,6 +122,10 @@ class _Walk:
 
 def _shown(row: Row) -> str:
     return _short(" ".join(cell for cell in row.cells if cell))
+
+
+def _first(row: Row) -> str:
+    return f"'{_short(row.cells[0])}'" if row.cells and row.cells[0] else "empty"
 
 
 def _short(text: str) -> str:

@@ -136,16 +136,14 @@ def _reading(entry: Entry, source: Source, understood: Understood, only_analyte:
         for group in QUANTITY_GROUPS
         if group in groups
     ]
-    columns = dict(entry.values)
-    repeat = groups.get("reading", columns.pop("reading", ""))
-    values += [(meaning, text, "column") for meaning, text in columns.items()]
+    values += [(meaning, text, "column") for meaning, text in entry.values if meaning != "reading"]
     key = SeriesKey(source.root, source.folder, groups.get("batch", ""), rule.role, groups.get("sample", ""))
     reading = Reading(
         series=key,
         level=level,
         vessel=groups.get("vessel", ""),
         injection=number_of(groups.get("injection", "")),
-        reading=number_of(repeat),
+        reading=number_of(groups.get("reading", dict(entry.values).get("reading", ""))),
         solution=entry.solution or source.path,
         analyte=analyte,
         line=groups.get("line", entry.line),

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from decimal import Decimal
 
 import re2
@@ -29,12 +29,21 @@ def prepare(members: Members, batch: Batch, rules: Rulebook) -> tuple[PreparedLi
     by_line: dict[tuple[str, str], list[Reading]] = defaultdict(list)
     for reading in members.readings:
         by_line[reading.analyte, reading.line].append(reading)
-    sources = sources_of(members, batch)
+    preparations = [preparation_for(members.key, analyte, rules) for analyte in sorted({name for name, _ in by_line})]
+    sources = sources_of(members, batch, _bench_is_meant(members.key, preparations))
     excluded = {decision.target: decision.words for decision in batch.decisions if decision.kind == "exclude"}
     return tuple(
         _line(members.key, analyte, line, by_line[analyte, line], sources, excluded, rules)
         for analyte, line in sorted(by_line)
     )
+
+
+def _bench_is_meant(key: SeriesKey, preparations: Iterable[Preparation | None]) -> bool:
+    """A bench file names samples: process blank 1 is not sample 1, unless its preparation asks for the bench file."""
+    if key.role != "process_blank":
+        return True
+    blocks = [each.sample for each in preparations if each is not None and each.sample is not None]
+    return any("bench" in (block.mass, block.volume, block.digest, block.dry_matter, block.dilution) for block in blocks)
 
 
 def preparation_for(key: SeriesKey, analyte: str, rules: Rulebook) -> Preparation | None:

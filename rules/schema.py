@@ -17,7 +17,7 @@ CONTENT = ("mass per volume", "amount per volume")
 SAMPLE_CONTENT = (*CONTENT, "mass per mass", "amount per mass")
 
 COLUMNS = (
-    "solution", "analyte", "line", "signal", "signal_sd", "signal_rsd", "readings", "unit", "measured_at",
+    "solution", "analyte", "line", "signal", "signal_sd", "signal_rsd", "readings", "reading", "unit", "measured_at",
     "processed_at", "order", *QUANTITY_GROUPS,
 )  # fmt: skip
 """What a column of an export can mean."""
@@ -25,6 +25,7 @@ COLUMNS = (
 _VOLUME = kind.quantity("volume", example="10 mL")
 _CONTENT = kind.quantity(*CONTENT, example="10 mg/L")
 _TEXTS = ListOf(kind.text(), single=True)
+_HEADING = kind.text("a heading")
 _ENCODING = "auto, utf-8, utf-16, cp1252 or another name of a character set"
 
 WATCH = Block((
@@ -76,7 +77,8 @@ READER = Block((
     Field("header_contains", _TEXTS, "The table starts at the first row that holds these.", (),
           example="[Solution, Signal]"),
     Field("columns", MapOf(kind.text("a heading"), "a meaning", keys=COLUMNS),
-          "What each column means. signal holds single readings, or means with signal_rsd or signal_sd and readings. "
+          "What each column means. signal holds single readings, or means with signal_rsd or signal_sd and readings, "
+          "the count behind a mean. reading is the number of a repeated row. "
           "Without measured_at or order, checks of order are not evaluated. processed_at decides between two exports "
           "of one reading. A quantity may stand in a column too.",
           example="{solution: Solution, analyte: Element, line: Line, signal: Signal, unit: Unit, "
@@ -84,13 +86,17 @@ READER = Block((
     Field("wide", MapOf(Block((
         Field("analyte", kind.text("an analyte"), "The analyte.", required=True, example="Cd"),
         Field("line", kind.text("a line"), "Its line or isotope.", "", example="Cd 214.4"),
+        Field("signal_sd", _HEADING, "The column of its standard deviation.", "", example="Cd 214 SD"),
+        Field("signal_rsd", _HEADING, "The column of its relative standard deviation.", "", example="Cd 214 RSD"),
+        Field("readings", _HEADING, "The column of the count behind its mean.", "", example="Cd 214 n"),
     ), short="analyte"), "the heading of a signal column"),
-          "Where each analyte has a column of its own: its heading, and the analyte.",
-          example="{Cd 214 (A): {analyte: Cd, line: Cd 214.4}, Pb (A): Pb}", hidden=True),
+          "Where each analyte has a column of its own: its heading, and the analyte, with the columns of its own "
+          "scatter if there are any.",
+          example="{Cd 214 (A): {analyte: Cd, line: Cd 214.4, signal_sd: Cd 214 SD}, Pb (A): Pb}", hidden=True),
     Field("unit", kind.text(may_be_empty=True), "The unit of signals, where the file does not say it.", "",
           example="A", hidden=True),
     Field("unit_row", kind.switch(), "Whether the row under the headings holds units.", "no", example="no"),
-    Field("ends_at", _TEXTS, "The table ends at a row whose first cell is one of these.", (),
+    Field("ends_at", _TEXTS, "The table ends at a row whose first cell, the whole of it, is one of these.", (),
           example="[Mean, RSD]", hidden=True),
     Field("time_zone", kind.text("a time zone such as Europe/Lisbon"),
           "The zone of times that name none.", "", example="Europe/Lisbon"),
@@ -166,7 +172,7 @@ PREPARATION = Block((
           "Which series it applies to, as patterns that match the whole word. Left out: all. The first one that "
           "applies counts.", example=r"{batch: 'MD\d+'}"),
     Field("design", kind.word("single", "flasks", "successive"),
-          "single: one unspiked and one spiked vessel. flasks: every level made up to the same final volume. "
+          "single: one level without and one with an addition. flasks: every level made up to the same final volume. "
           "successive: standard added again and again to one vessel.", required=True, example="flasks"),
     Field("aliquot", Block((
         Field("volume", _VOLUME, "The same volume at every level.", example="10 mL"),
@@ -187,7 +193,7 @@ PREPARATION = Block((
               "The volume of standard by level.", example="{0: 0 mL, 1: 0.25 mL, 2: 0.5 mL, 3: 0.75 mL}"),
     )), "The standard additions.", WITH_ITS_DEFAULTS),
     Field("level_0", kind.word("as the others", "undiluted"),
-          "undiluted: level 0 was read on the test solution as it is.", "as the others", example="as the others"),
+          "undiluted: the level without addition was read on the test solution as it is.", "as the others", example="as the others"),
     Field("diluent", kind.quantity("volume", example="50 mL"), "A buffer or solvent that every vessel holds.",
           example="50 mL", hidden=True),
     Field("sample", SAMPLE,

@@ -69,11 +69,11 @@ def _value_of(meaning: str, text: str) -> Quantity | str:
     return Quantity(value.in_unit(base).normalize(), base) if base else value
 
 
-def sources_of(members: Members, batch: Batch) -> Sources:
-    """Everything that bench file, columns and names say about one series."""
+def sources_of(members: Members, batch: Batch, with_bench: bool = True) -> Sources:
+    """Everything that bench file, columns and names say about one series; the bench file only where it is meant."""
     given: dict[tuple[str, str], list[tuple[str, str]]] = defaultdict(list)
     key = members.key
-    for entry in batch.bench:
+    for entry in batch.bench if with_bench else ():
         if entry.sample == key.sample and entry.batch in ("", key.batch):
             for meaning, text in entry.values:
                 given[meaning, entry.level].append((text, f"{entry.path} row {entry.row}"))

@@ -10,7 +10,7 @@ from spikeward.daemon.rule_file.walk import Walker
 from spikeward.parsers.headings import unit_text
 from spikeward.rules.naming import number_of
 from spikeward.rules.quantities import Quantity
-from spikeward.rules.records import Layout
+from spikeward.rules.records import Layout, WideColumn
 from spikeward.rules.rulebook import (
     BenchRule,
     BlankRule,
@@ -97,7 +97,7 @@ _TUPLES = ("files", "header_contains", "ends_at", "date_patterns", "already", "n
 
 def _layout(name: str, each: Values) -> Layout:
     values: dict[str, Any] = {key: tuple(part) if key in _TUPLES else part for key, part in each.items()}
-    values["wide"] = {heading: (meant["analyte"], meant["line"]) for heading, meant in each["wide"].items()}
+    values["wide"] = {heading: WideColumn(**meant) for heading, meant in each["wide"].items()}
     return Layout(name=name, **values)
 
 

@@ -9,7 +9,7 @@ from importlib.resources import files
 from typing import Any
 
 from spikeward.daemon.rule_file.walk import Walker, near
-from spikeward.daemon.rule_file.yaml_text import LIST, MAP, SCALAR, Node, compose
+from spikeward.daemon.rule_file.yaml_text import KINDS, LIST, MAP, SCALAR, Node, compose
 from spikeward.rules.rulebook import Limits
 from spikeward.rules.schema_kinds import Scalar, limit, one_of
 
@@ -118,7 +118,7 @@ def _change(found: dict[str, Limits], check: str, node: Node, pack: Pack, walker
         found.pop(check, None)
         return
     if node.kind != MAP:
-        what = "there is no value" if node.kind == SCALAR and not node.text else f"a {node.kind}"
+        what = "there is no value" if node.kind == SCALAR and not node.text else KINDS[node.kind]
         walker.at_node(node, path, "R011", what, "a map of limits such as {warn_above: 10 %}, or off")
         return
     values, sources = dict(found[check].values), dict(found[check].sources)
@@ -154,7 +154,7 @@ def _pair(node: Node, path: str, walker: Walker) -> tuple[float, float] | None:
     if node.kind == SCALAR and node.text in ("none", "null", "~"):
         return None
     if node.kind != LIST or len(node.items) != 2:
-        what = "there is no value" if node.kind == SCALAR and not node.text else f"a {node.kind}"
+        what = "there is no value" if node.kind == SCALAR and not node.text else KINDS[node.kind]
         found = f"a list of {len(node.items)}" if node.kind == LIST else what
         walker.at_node(node, path, "R011", found, expected)
         return None

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
+from dataclasses import fields
 from typing import Any
 
 from spikeward.daemon.rule_file.checks import FROM_RULE_FILE
 from spikeward.daemon.rule_file.walk import defaults
 from spikeward.rules.quantities import Quantity
-from spikeward.rules.records import Layout
+from spikeward.rules.records import Layout, WideColumn
 from spikeward.rules.rulebook import BenchRule, Known, NameRule, Preparation, Rulebook
 from spikeward.rules.schema import BENCH, NAME, PREPARATION, READER, RULE_FILE, WATCH
 
@@ -162,6 +163,9 @@ def _text(value: Any) -> str:
         return str(value)
     if isinstance(value, Mapping):
         return "{" + ", ".join(f"{_text(key)}: {_text(each)}" for key, each in value.items()) + "}"
+    if isinstance(value, WideColumn):
+        parts = {each.name: getattr(value, each.name) for each in fields(value)}
+        return _text({key: part for key, part in parts.items() if part})
     if isinstance(value, tuple):
         return "[" + ", ".join(_text(each) for each in value) + "]"
     text = str(value)

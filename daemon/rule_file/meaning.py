@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import codecs
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from datetime import datetime
 from typing import Any
 from zoneinfo import ZoneInfo, available_timezones
@@ -12,8 +12,8 @@ import re2
 
 from spikeward.daemon.rule_file.folders import check_decisions, check_folders
 from spikeward.daemon.rule_file.names import check_names, groups_of
-from spikeward.daemon.rule_file.preparations import check_preparations, result_dimensions
-from spikeward.daemon.rule_file.problems import WARNING
+from spikeward.daemon.rule_file.preparations import check_preparations, result_dimensions, told_elsewhere
+from spikeward.daemon.rule_file.problems import ERROR, WARNING
 from spikeward.daemon.rule_file.walk import Walker, near
 from spikeward.parsers.registry import formats
 from spikeward.rules.naming import number_of
@@ -85,10 +85,7 @@ def _check_reader(reader: Values, path: str, value: Values, walker: Walker) -> N
             "",
             "delete one of the two",
         )
-    for spread in ("signal_rsd", "signal_sd"):
-        if spread in columns and "readings" not in columns:
-            told = f"{spread} is the scatter of single readings, whose number is not given"
-            walker.at(f"{path}.columns.{spread}", "R010", told, "", "add readings: and its heading")
+    _check_scatter(columns, wide, path, walker)
     if not walker.sound("names", "standards"):
         return
     sources = {rule["from"] for rule in value["names"] or () if rule}
@@ -99,6 +96,31 @@ def _check_reader(reader: Values, path: str, value: Values, walker: Walker) -> N
     if "analyte" not in columns and not wide and "analyte" not in groups and len(_analytes(value)) != 1:
         hint = "add analyte: and its heading, or (?P<analyte>…) to the patterns under names"
         walker.at(f"{path}.columns", "R010", "nothing says the analyte, and the standards hold several", "", hint)
+
+
+_SCATTER = ("signal_rsd", "signal_sd")
+_REPEATED_ROWS = "for repeated rows use reading: for their number, or series: same_name: reading"
+
+
+def _check_scatter(columns: Values, wide: Values, path: str, walker: Walker) -> None:
+    """A scatter without the count behind it, the other way about, and one scatter for several analytes."""
+    places = {f"{path}.columns": columns, **{f"{path}.wide.{heading}": own for heading, own in wide.items()}}
+    scattered = {where: any(each.get(spread) for spread in _SCATTER) for where, each in places.items()}
+    for where, each in places.items():
+        for spread in _SCATTER:
+            if each.get(spread) and not (each.get("readings") or columns.get("readings")):
+                told = f"{spread} is the scatter of single readings, whose number is not given"
+                walker.at(f"{where}.{spread}", "R010", told, "", "add readings: and its heading")
+        # A common count goes with the scatter of any column, an own count with its own or a common one.
+        used = any(scattered.values()) if each is columns else scattered[where] or scattered[f"{path}.columns"]
+        if each.get("readings") and not used:
+            told = "readings is the count behind a mean, and no column holds the scatter of the mean"
+            walker.at(f"{where}.readings", "R031", told, "", f"add signal_sd or signal_rsd; {_REPEATED_ROWS}")
+    for spread in _SCATTER:
+        if spread in columns and len(wide) > 1:
+            told = f"one column of {spread} for {len(wide)} columns of signals"
+            hint = f"write {spread} beside each analyte under wide, such as {{analyte: Cd, {spread}: Cd SD}}"
+            walker.at(f"{path}.columns.{spread}", "R031", told, "", hint)
 
 
 _DELIMITED = "delimited"
@@ -209,11 +231,31 @@ def _check_levels(value: Values, walker: Walker) -> None:
     for level in dict.fromkeys(expected):
         if expected.count(level) > 1:
             walker.at(path, "R031", f"level {level} stands there twice", "", "delete one of the two")
-    made = [{number_of(level) for level in each["additions"]["levels"]} for each in value["preparations"] or ()]
-    for level in expected:
-        if made and all(made) and not any(level in levels | {"0"} for levels in made):
-            told = f"level {level} is expected, and no preparation says its addition"
-            walker.at(path, "R031", told, "", "add it under additions: levels, or delete it here")
+    if "addition" in set.union(*told_elsewhere(value).values()):
+        return
+    made = [_levels_of(each) for each in value["preparations"] or ()]
+    for number, levels in enumerate(made):
+        lacking = [level for level in dict.fromkeys(expected) if level not in levels]
+        if not levels or not lacking:
+            continue
+        # Where another preparation makes them all, series of this one wait in vain, but not every series.
+        partly = any(set(expected) <= other for other in made)
+        where = walker.at_line(f"preparations[{number}].additions.levels")
+        told = f"{_these(lacking)} expected, and the preparation in line {where} says no addition for that"
+        hint = "add it under additions: levels, or delete it here; left out, each preparation says its own levels"
+        walker.at(path, "R043" if partly else "R031", told, "", hint, WARNING if partly else ERROR)
+
+
+def _levels_of(preparation: Values) -> set[str]:
+    """The levels that a preparation makes; one named 0 is without addition where no other is declared so."""
+    volumes = {number_of(level): volume for level, volume in preparation["additions"]["levels"].items()}
+    return set(volumes) | (set() if any(not each.value for each in volumes.values()) or not volumes else {"0"})
+
+
+def _these(levels: Sequence[str]) -> str:
+    if len(levels) == 1:
+        return f"level {levels[0]} is"
+    return f"levels {', '.join(levels[:-1])} and {levels[-1]} are"
 
 
 def _check_roles(value: Values, walker: Walker) -> None:
@@ -229,7 +271,7 @@ def _check_roles(value: Values, walker: Walker) -> None:
     blanks = value["blanks"] or {}
     asked += [("blanks.background", ("background",))] if blanks.get("background") else []
     asked += [("blanks.process", ("process_blank",))] if blanks.get("process") else []
-    asked += [("brackets", ("bracket",))] if value["brackets"] else []
+    asked += [("brackets", ("bracket",))] if value["brackets"] and walker.sound("brackets") else []
     asked += [("references", ("reference", "check"))] if value["references"] else []
     for path, roles in asked:
         if not named & set(roles):

@@ -100,9 +100,21 @@ def _check_design(each: Values, path: str, additions: Values, known: set[str], w
     if design == "successive" and each["final"]:
         hint = "delete final; aliquot, diluent and additions say the volume"
         walker.at(f"{path}.final", "R031", "successive additions have no common final volume", "", hint)
-    if design == "single" and additions and len({"0", *additions}) != 2:
-        hint = "give level 0 and one level with an addition, or say design: flasks"
-        walker.at(f"{path}.additions.levels", "R031", "a single addition has two levels", "", hint)
+    if design == "single" and additions:
+        _check_single(additions, f"{path}.additions.levels", walker)
+
+
+def _check_single(additions: Values, path: str, walker: Walker) -> None:
+    """Two levels of any names: one without addition, which may be left out where it is named 0, and one with."""
+    without = [level for level, volume in additions.items() if not volume.value]
+    added = len(additions) - len(without)
+    if len(without) == 1 and added == 1 or not without and added == 1 and "0" not in additions:
+        return
+    if not added:
+        return  # said already: no level adds any standard
+    hint = "give one level 0 mL and one an addition"
+    told = "a single addition has two levels, one without and one with an addition"
+    walker.at(path, "R031", told, "", hint if len(additions) < 3 else f"{hint}, or say design: flasks")
 
 
 def _check_fit(each: Values, path: str, additions: Values, aliquots: Values, walker: Walker) -> None:
@@ -114,7 +126,7 @@ def _check_fit(each: Values, path: str, additions: Values, aliquots: Values, wal
         if each["additions"]["deliveries"] == "each":
             volume = before = before + volume
         aliquot = aliquots.get(level, aliquots.get(""))
-        if aliquot is None:
+        if aliquot is None or (each["level_0"] == "undiluted" and not volume):
             continue
         mixed = aliquot.in_unit("mL") + diluent + volume
         if mixed > final:

@@ -34,6 +34,7 @@ CODES: dict[str, str] = {
     "R040": "a rule can never be reached, or takes what a later one is meant for",
     "R041": "something is declared and never used",
     "R042": "some rules name a batch and others do not",
+    "R043": "a series waits for levels that its preparation does not make",
 }
 """Every code and what it stands for; R04x are warnings."""
 

@@ -200,7 +200,7 @@ def _codes_part() -> str:
 
 def main() -> int:
     """Write both files into the source tree that this module belongs to."""
-    root = Path(__file__).resolve().parents[1]
+    root = Path(__file__).resolve().parents[2]
     (root / "config.example.yaml").write_text(example_text(), encoding="utf-8", newline="\n")
     (root / "daemon" / "guide" / "reference.md").write_text(reference_text(), encoding="utf-8", newline="\n")
     return 0

@@ -7,7 +7,7 @@ from collections.abc import Iterable, Iterator
 from typing import Any
 
 from spikeward.daemon.rule_file.problems import ERROR, MOST_PROBLEMS, Problem
-from spikeward.daemon.rule_file.yaml_text import LIST, MAP, SCALAR, Node
+from spikeward.daemon.rule_file.yaml_text import KINDS, LIST, MAP, SCALAR, Node
 from spikeward.rules.schema_kinds import Scalar, one_of
 from spikeward.rules.schema_shapes import WITH_ITS_DEFAULTS, Block, Field, Limits, ListOf, MapOf, Shape, kind_of
 
@@ -63,7 +63,7 @@ class Walker:
     def _scalar(self, node: Node, shape: Scalar, path: str) -> Any:
         if node.kind != SCALAR:
             hint = f"put it in single quotes if it begins with {'{' if node.kind == MAP else '['}"
-            self.at_node(node, path, "R011", f"a {node.kind}", shape.expected, hint)
+            self.at_node(node, path, "R011", KINDS[node.kind], shape.expected, hint)
             return None
         if not node.text and not shape.may_be_empty:
             self.at_node(node, path, "R013", "the value is empty", shape.expected)
@@ -82,7 +82,7 @@ class Walker:
             return [self.walk(item, shape.item, f"{path}[{number}]") for number, item in enumerate(node.items)]
         if shape.single:
             return [self.walk(node, shape.item, path)]
-        self.at_node(node, path, "R011", f"a {node.kind}", "a list", "begin each entry with '- '")
+        self.at_node(node, path, "R011", KINDS[node.kind], "a list", "begin each entry with '- '")
         return [self.walk(node, shape.item, path)] if node.kind == MAP else None
 
     def _map(self, node: Node, shape: MapOf, path: str) -> dict[str, Any] | None:
@@ -90,7 +90,7 @@ class Walker:
             node = Node(MAP, node.line, node.column, entries=[(item, item) for item in node.items])
         if node.kind != MAP:
             hint = f"write {shape.example or shape.keys[0] if shape.keys else shape.example or 'name'}: …"
-            self.at_node(node, path, "R011", f"a {node.kind}", kind_of(shape), hint)
+            self.at_node(node, path, "R011", KINDS[node.kind], kind_of(shape), hint)
             return None
         self._not_too_long(node, len(node.entries), path)
         values: dict[str, Any] = {}
@@ -112,17 +112,24 @@ class Walker:
             field = next(field for field in shape.fields if field.name == shape.short)
             return {**defaults(shape), shape.short: self.walk(node, field.shape, path)}
         if node.kind != MAP:
-            self.at_node(node, path, "R011", f"a {node.kind}", kind_of(shape), "write key: value, one key a line")
+            self.at_node(node, path, "R011", KINDS[node.kind], kind_of(shape), "write key: value, one key a line")
             return None
         values = defaults(shape)
         given: set[str] = set()
+        outer = len(self.problems)
         for field, key, value in self._entries(node, shape, path):
             where = f"{path}.{field.name}".lstrip(".")
             given.add(field.name)
             self.keys[where] = key
             values[field.name] = self.walk(value, field.shape, where)
+        # A key that was told to stand one level deeper is no key that is missing besides.
+        deeper = _deeper(shape, given)
+        strayed = any(problem.code == "R012" for problem in self.problems[outer:])
         for field in shape.fields:
             if field.required and field.name not in given:
+                if strayed and field.name == deeper:
+                    values[field.name] = None
+                    continue
                 values[field.name] = None
                 where = f"{path}.{field.name}".lstrip(".")
                 hint = (

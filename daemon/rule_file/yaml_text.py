@@ -19,6 +19,9 @@ DEEPEST = 20
 
 SCALAR, LIST, MAP = "scalar", "list", "map"
 
+KINDS = {SCALAR: "a single value", LIST: "a list", MAP: "a map"}
+"""What a node is, in a sentence."""
+
 # What the parser says -> what it means for a person.
 _TOLD = (
     ("unknown escape", "a backslash inside double quotes", "put patterns in single quotes, such as '(?P<sample>\\d+)'"),
@@ -229,7 +232,7 @@ class _Builder:
     def _key(self, key: Node) -> Node:
         place = (self._file, key.line, key.column, "")
         if key.kind != SCALAR:
-            raise _Refused(Problem("R011", *place, f"a {key.kind} as a key", hint="put the key in single quotes"))
+            raise _Refused(Problem("R011", *place, f"{KINDS[key.kind]} as a key", hint="put the key in single quotes"))
         if key.text == "<<" and key.plain:
             raise _Refused(Problem("R003", *place, "a merge key (<<)", hint="write the keys out"))
         return key

@@ -179,3 +179,15 @@ def test_a_standard_of_another_name_comes_from_a_column():
 def test_series_without_a_preparation_say_so():
     prepared = line(replace(FLASKS, applies={"batch": "X.*"}), THREE)
     assert "no preparation in the rule file applies" in prepared.problems[0]
+
+
+def test_a_bench_entry_of_a_sample_does_not_reach_the_process_blank_of_the_same_number():
+    blank = SeriesKey("inbox", "", "N1", "process_blank", "7")
+    readings = [replace(each, series=blank) for each in THREE]
+    diluted = replace(FLASKS, sample=SampleRule(dilution=q("2")))
+    for rule, factor in ((diluted, 2.0), (replace(diluted, sample=SampleRule(dilution="bench")), 10.0)):
+        (batch,) = in_force(readings, book(rule))
+        batch = replace(batch, bench=(entry(("dilution", "1 + 9")),))
+        (prepared,) = prepare(batch.members[blank], batch, book(rule))
+        assert prepared.way_back is not None
+        assert prepared.way_back.factor == factor
