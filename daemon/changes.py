@@ -5,6 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from typing import Any
 
+from spikeward.daemon.pages.numbers import value_shown
+from spikeward.rules.outcomes import Estimate
+from spikeward.rules.words import line_words
+
 
 def quoted(result: Mapping[str, Any]) -> Iterator[tuple[str, str, str]]:
     """Every reading that a result quotes, as (path, row and text for people, digest)."""
@@ -42,11 +46,20 @@ def _contents(before: Mapping[str, Any], after: Mapping[str, Any]) -> Iterator[s
     known = {(result["analyte"], result["line"]): result for result in before.get("results", [])}
     for result in after["results"]:
         earlier = known.get((result["analyte"], result["line"]))
-        if earlier is not None and _shown(earlier) != _shown(result):
-            name = result["line"] or result["analyte"]
-            yield f"{name}: {_shown(earlier)} became {_shown(result)}"
+        if earlier is None or _best(earlier) == _best(result):
+            continue
+        name, then, now = line_words(result["analyte"], result["line"]), _shown(earlier), _shown(result)
+        yield f"{name}: {now} changed, but in no digit that is shown" if then == now else f"{name}: {then} became {now}"
+
+
+def _best(result: Mapping[str, Any]) -> tuple[Any, ...]:
+    """The content in the sample where it is known, else in the test solution, with what is shown beside it."""
+    best = result.get("in_sample") or result
+    return best.get("content"), best.get("unit"), best.get("expanded_uncertainty"), best.get("basis", "")
 
 
 def _shown(result: Mapping[str, Any]) -> str:
-    best = result.get("in_sample") or result
-    return "no number" if best.get("content") is None else f"{best['content']} {best['unit']}"
+    content, unit, spread, basis = _best(result)
+    if content is None:
+        return "no number"
+    return f"{value_shown(Estimate(content, unit, expanded_uncertainty=spread))} {basis}".rstrip()

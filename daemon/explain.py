@@ -22,6 +22,7 @@ from spikeward.daemon.trouble import Trouble
 from spikeward.daemon.workers import Readers
 from spikeward.rules.outcomes import Check, Outcome
 from spikeward.rules.records import Reading
+from spikeward.rules.words import line_words
 
 
 @dataclass(slots=True)
@@ -126,7 +127,7 @@ def _reading(reading: Reading) -> str:
         if value := getattr(reading, word):
             where.append(f"{word} {value}")
     signal = reading.qualifier or f"{reading.text} {reading.unit}".strip()
-    return f"'{shown(reading.solution)}' is {', '.join(where)}: {reading.line or reading.analyte} {signal}"
+    return f"'{shown(reading.solution)}' is {', '.join(where)}: {line_words(reading.analyte, reading.line)} {signal}"
 
 
 def _series(subject: str, pipeline: Pipeline, solved: list[Solved]) -> Iterator[str]:
@@ -156,10 +157,10 @@ def _outcome(one: Solved, outcome: Outcome) -> Iterator[str]:
         yield f"  level {vessel.level}{vessel.vessel}: {volumes}{excluded}"
         for reading in vessel.readings:
             signal = reading.qualifier or f"{reading.text} {reading.unit}".strip()
-            yield f"    {shown(reading.path)} row {reading.row}: {reading.line or reading.analyte} {signal}"
+            yield f"    {shown(reading.path)} row {reading.row}: {line_words(reading.analyte, reading.line)} {signal}"
     yield from (f"  {_check(check)}" for check in outcome.checks)
     for result in outcome.results:
-        yield f"  {result.line or result.analyte}: {result.verdict}: {result.sentence}"
+        yield f"  {line_words(result.analyte, result.line)}: {result.verdict}: {result.sentence}"
         yield from (f"    {_check(check)}" for check in result.checks)
     yield from (f"  {note}" for note in outcome.notes)
     yield from (f"  {note}" for note in one.batch.members[outcome.key].notes)

@@ -102,7 +102,7 @@ class Output:
         for event in events:
             self.take(event)
         written = [sheaf.outcome.key for sheaf in sheaves if self._write(sheaf)]
-        self._outcomes.update((outcome.key, outcome) for outcome in changed)
+        self._outcomes.update((outcome.key, outcome) for outcome in changed if outcome.key not in self.held)
         return written
 
     def _sheaf(self, outcome: Outcome, stem: str) -> _Sheaf | None:
@@ -120,6 +120,13 @@ class Output:
                 revision = self._revision(outcome, digest, before, json.loads(result))
         self.held.pop(key, None)
         return _Sheaf(outcome, folder, stem, result, digest, revision)
+
+    def released(self) -> set[SeriesKey]:
+        """The series that were held back, and whose result a person has deleted: they are solved from what is there."""
+        return {key for key in self.held if not self.disk.exists(self._result_of(key))}
+
+    def _result_of(self, key: SeriesKey) -> str:
+        return os.path.join(self.folder_of(key.root, key.folder), series_stem(key) + RESULT)
 
     def _write(self, sheaf: _Sheaf) -> bool:
         outcome = sheaf.outcome

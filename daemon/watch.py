@@ -207,6 +207,7 @@ class Watching:
         for sentence in self.opened.new_sentences():
             self.log.warning("state", note=sentence)
         with suppress(OSError):
+            self.pipeline.touched |= {key.batch_key for key in self.pipeline.output.released()}
             self.journal.record_waiting(self.pipeline.intake.waiting())
             self.journal.record_idle(self._idle.seconds())
 

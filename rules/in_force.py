@@ -9,6 +9,7 @@ from collections import defaultdict
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 
+from spikeward.rules.conflicts import Dispute, conflict_sentences
 from spikeward.rules.naming import level_order
 from spikeward.rules.records import (
     SERIES_ROLES,
@@ -38,7 +39,7 @@ class State:
 @dataclass(slots=True)
 class _Found:
     kept: list[Reading] = field(default_factory=list)
-    conflicts: list[str] = field(default_factory=list)
+    disputes: list[Dispute] = field(default_factory=list)
     notes: list[str] = field(default_factory=list)
     warnings: list[str] = field(default_factory=list)
 
@@ -142,7 +143,7 @@ def _members(key: SeriesKey, readings: Iterable[Reading], rules: Rulebook, decis
     return Members(
         key,
         tuple(found.kept),
-        tuple(dict.fromkeys(sorted(found.conflicts))),
+        conflict_sentences(found.disputes, found.kept, repeats),
         tuple(dict.fromkeys(found.notes)),
         tuple(dict.fromkeys(sorted(found.warnings))),
     )
@@ -172,11 +173,10 @@ def _one(candidates: list[Reading], preferred: Mapping[str, Decision], found: _F
         return
     chosen = _chosen(rivals, candidates, preferred)
     if chosen is None:
-        places = " and ".join(f"{_place(r)} ({r.text} {r.unit})".replace(" )", ")") for r in rivals)
-        found.conflicts.append(
-            f"{rivals[0].solution}, {rivals[0].line or rivals[0].analyte}: {places} disagree about one reading; "
-            "remove the wrong file, declare the column of the processing time, or say prefer in the decisions file"
-        )
+        # in one file every row counts as one time more, whatever it says; between files an equal copy is no rival
+        if len({reading.path for reading in rivals}) == 1:
+            rivals = [reading for reading in candidates if reading.path == rivals[0].path]
+        found.disputes.append(Dispute(tuple(rivals), False))
         found.kept.append(rivals[0])
         return
     found.kept.append(chosen)
@@ -197,15 +197,10 @@ def _chosen(rivals: list[Reading], candidates: list[Reading], preferred: Mapping
 
 
 def _refuse_met_again(found: _Found) -> None:
-    met: dict[Identity, Reading] = {}
-    for reading in sorted(found.kept, key=canonical):
-        first = met.setdefault(_vessel_identity(reading), reading)
-        if first is not reading:
-            found.conflicts.append(
-                f"{reading.solution}, {reading.line or reading.analyte}: the same vessel is met again "
-                f"({_place(first)} and {_place(reading)}); exclude one in the decisions file, "
-                "or say same_name: reading under series if these are repeated readings"
-            )
+    met: dict[Identity, list[Reading]] = defaultdict(list)
+    for reading in sorted(found.kept, key=lambda r: (r.path, r.row)):
+        met[_vessel_identity(reading)].append(reading)
+    found.disputes += [Dispute(tuple(readings), True) for readings in met.values() if len(readings) > 1]
 
 
 def _some_equal(by_series: Mapping[SeriesKey, list[Reading]]) -> bool:

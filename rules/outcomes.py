@@ -44,6 +44,7 @@ class Estimate:
     interval: tuple[float, float] | None = None
     coverage: float = 0.95
     reason: str = ""
+    effective_degrees_of_freedom: int | None = None  # of the coverage factor, by Welch and Satterthwaite
 
 
 @dataclass(frozen=True, slots=True)

@@ -15,6 +15,7 @@ from spikeward.rules.records import Batch, Members, Reading, SeriesKey
 from spikeward.rules.rulebook import Preparation, Rulebook, Standard
 from spikeward.rules.sources import Findings, Sources, sources_of
 from spikeward.rules.way_back import way_back
+from spikeward.rules.words import line_words
 
 Volumes = dict[str, float]
 
@@ -70,7 +71,7 @@ def _line(
     for reading in readings:
         if reading.unit != signal_unit:
             findings.fails(
-                f"signals of {line or analyte} come in {signal_unit} and in {reading.unit} "
+                f"signals of {line_words(analyte, line)} come in {signal_unit} and in {reading.unit} "
                 f"({reading.path} row {reading.row}); export one series in one unit"
             )
     if preparation is None:
@@ -205,7 +206,7 @@ def _volumes(
     final = told if isinstance(told, Quantity) else preparation.final
     diluent = preparation.diluent.in_unit("mL") if preparation.diluent else Decimal(0)
     mixed = v0 + diluent + addition
-    if preparation.level_0 == "undiluted" and level_order(level) == level_order("0"):
+    if preparation.level_0 == "undiluted" and not addition:
         volume = v0
     elif preparation.design == "successive" or final is None:
         volume = mixed

@@ -9,15 +9,17 @@ from spikeward.rules.checks.brackets import around
 from spikeward.rules.checks.quality import blank_lacking
 from spikeward.rules.checks.registry import BATCH, REGISTRY, check_line
 from spikeward.rules.checks.series import completeness, conflicts
-from spikeward.rules.checks.subject import Context, Subject, line_words
+from spikeward.rules.checks.subject import Context, Subject
 from spikeward.rules.digests import inputs_digest
 from spikeward.rules.naming import level_order
-from spikeward.rules.outcomes import Check, Outcome, Result, VesselReport, worst
+from spikeward.rules.outcomes import PASS, WAITING, Check, Outcome, Result, VesselReport, worst
 from spikeward.rules.prepared import PreparedLine, PreparedVessel
 from spikeward.rules.records import Members, Reading
 from spikeward.rules.sentences import headline, result_sentence
 from spikeward.rules.solve.solved import Solved
+from spikeward.rules.solve.transform import vessel_name
 from spikeward.rules.verdicts import published
+from spikeward.rules.words import line_words, listed
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,6 +52,8 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
     subjects = [Subject(line, context) for line in solved]
     results = tuple(_result(subject, checks, standing) for subject in subjects)
     so_far = worst([check.verdict for check in (*checks, *(c for result in results for c in result.checks))])
+    if so_far == PASS and not standing.settled and not all(result.reported for result in results):
+        so_far = WAITING  # nothing has failed yet, but there is no number that could pass
     verdict = published(so_far, standing.settled)
     entered = _entered(subjects)
     told = [check for result in results for check in result.checks if _from_batch(check)]
@@ -60,7 +64,9 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
         final=standing.settled,
         waiting_for=standing.waiting_for,
         design=", ".join(dict.fromkeys(line.design for line in lines if line.design)),
-        sentence=headline(members.key, verdict, so_far, standing.settled, checks, results, standing.waiting_for),
+        sentence=headline(
+            members.key, verdict, so_far, standing.settled, checks, results, standing.waiting_for, _excluded(lines)
+        ),
         results=results,
         checks=checks,
         vessels=_vessels(members, lines),
@@ -101,7 +107,7 @@ def _result(subject: Subject, common: Sequence[Check], standing: Standing) -> Re
         intercept_uncertainty=solved.intercept_uncertainty,
         residual_sd=solved.residual_sd,
         correlation=solved.correlation,
-        degrees_of_freedom=solved.degrees_of_freedom,
+        degrees_of_freedom=solved.degrees_of_freedom if solved.slope is not None else 0,
         points=solved.points,
         checks=checks,
         background=_subtracted_background(solved),
@@ -116,7 +122,7 @@ def _withheld(subject: Subject, standing: Standing) -> str:
     if subject.solved.no_number:
         return subject.solved.no_number
     if standing.incomplete:
-        return f"the series is not complete; it lacks {', '.join(standing.missing)}"
+        return f"the series is not complete; it lacks {listed(standing.missing)}"
     return blank_lacking(subject)
 
 
@@ -161,6 +167,11 @@ def _vessel(
     return VesselReport(
         level, name, vessel.aliquot_ml, vessel.addition_ml, vessel.final_ml, standard, tuple(readings), vessel.excluded
     )
+
+
+def _excluded(lines: Sequence[PreparedLine]) -> tuple[str, ...]:
+    found = (vessel_name(vessel.level, vessel.vessel) for line in lines for vessel in line.vessels if vessel.excluded)
+    return tuple(dict.fromkeys(found))
 
 
 def _notes(members: Members, solved: Sequence[Solved]) -> tuple[str, ...]:

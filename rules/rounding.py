@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from decimal import ROUND_HALF_EVEN, Context, Decimal
 
 _EXACT = Context(prec=1100, rounding=ROUND_HALF_EVEN)  # wide enough for every digit of every float
 _PLAIN_FROM, _PLAIN_TO = -5, 7  # powers of ten of the leading digit that are still written in plain digits
+
+_TOLD_APART_BY = 15  # significant digits; what agrees in so many is equal
 
 
 def rounded(value: float, uncertainty: float) -> tuple[str, str]:
@@ -56,6 +59,19 @@ def figure(value: float, digits: int = 3) -> str:
 def percent(fraction: float, digits: int = 2) -> str:
     """A fraction in per cent, such as ``4.1 %``."""
     return f"{figure(fraction * 100, digits)} %"
+
+
+def percent_apart(fraction: float, limits: Iterable[float], digits: int = 2) -> str:
+    """A fraction in per cent with more digits where it would otherwise look equal to a limit that it is not.
+
+    Parameters
+    ----------
+    limits : as they stand beside it, in per cent to three significant figures
+    """
+    others = {percent(limit, 3) for limit in limits if limit != fraction}
+    while percent(fraction, digits) in others and digits < _TOLD_APART_BY:
+        digits += 1
+    return percent(fraction, digits)
 
 
 def _rounded_at(number: Decimal, place: int) -> Decimal:

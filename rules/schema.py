@@ -92,7 +92,8 @@ READER = Block((
     ), short="analyte"), "the heading of a signal column"),
           "Where each analyte has a column of its own: its heading, and the analyte, with the columns of its own "
           "scatter if there are any.",
-          example="{Cd 214 (A): {analyte: Cd, line: Cd 214.4, signal_sd: Cd 214 SD}, Pb (A): Pb}", hidden=True),
+          example="{Cd 214 (A): {analyte: Cd, line: Cd 214.4, signal_sd: Cd SD, readings: N}, "
+                  "Pb (A): {analyte: Pb, signal_rsd: Pb RSD, readings: N}}", hidden=True),
     Field("unit", kind.text(may_be_empty=True), "The unit of signals, where the file does not say it.", "",
           example="A", hidden=True),
     Field("unit_row", kind.switch(), "Whether the row under the headings holds units.", "no", example="no"),

@@ -5,13 +5,19 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from spikeward.rules.checks.registry import REGISTRY
-from spikeward.rules.checks.subject import line_words
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, WAITING, WARN, Check, Estimate, Result
 from spikeward.rules.records import SeriesKey
 from spikeward.rules.rounding import figure, percent, rounded
 from spikeward.rules.solve.solved import Solved
+from spikeward.rules.uncertainty.fieller import t_quantile
+from spikeward.rules.words import counted, freedom, line_words, listed, unit_words
 
 _SHOWN_AT_MOST = 3  # a headline names so many troubles and counts the rest
+_WIDE_K = 3.0  # from here on a coverage factor needs a word: people expect 2
+
+# What explains other failures of its line stands before them in a headline: what the vessels hold, then a vessel that
+# lies off the line, then what the line says as a whole.
+_EXPLAINS_FIRST = ("preparation", "units", "linear_top", "standard", "residual", "studentised")
 
 
 def series_name(key: SeriesKey) -> str:
@@ -22,7 +28,7 @@ def series_name(key: SeriesKey) -> str:
 
 def estimate_words(estimate: Estimate, basis: str = "") -> str:
     """A content with expanded uncertainty and unit, rounded for a report."""
-    unit = f"{estimate.unit} {basis}".strip()
+    unit = f"{unit_words(estimate.unit)} {basis}".strip()
     if estimate.expanded_uncertainty is None:
         return f"{figure(estimate.content)} {unit}, uncertainty not known"
     value, spread = rounded(estimate.content, estimate.expanded_uncertainty)
@@ -43,29 +49,40 @@ def result_sentence(result: Result, solved: Solved) -> str:
     if result.reported is None:
         name, why = line_words(result.analyte, result.line), result.no_number.rstrip(".")
         return f"{name}: no number, because {_uncapital(why)}."
-    text = f"{short_result(result)} ({'; '.join(_details(result))})."
+    text = f"{short_result(result)} ({'; '.join(_details(result, solved))})."
     holds = interval_holds(result, solved)
     missing = not_shown([result])
     return " ".join(part for part in (text, holds, missing) if part)
 
 
-def _details(result: Result) -> list[str]:
+def _details(result: Result, solved: Solved) -> list[str]:
     estimate, parts = result.reported, []
     if estimate is not None and estimate.expanded_uncertainty is not None:
-        k = f", k {figure(estimate.coverage_factor, 2)}" if estimate.coverage_factor else ""
-        parts.append(f"{percent(estimate.coverage, 3)}{k}")
+        parts.append(f"{percent(estimate.coverage, 3)}{_coverage_factor(estimate, solved)}")
     elif estimate is not None and estimate.reason:
         parts.append(estimate.reason.rstrip("."))
     vessels = sum(not point.excluded for point in result.points)
-    freedom = result.degrees_of_freedom
-    parts.append(f"{vessels} vessels, {freedom} {'degree' if freedom == 1 else 'degrees'} of freedom")
-    if excluded := sum(bool(point.excluded) for point in result.points):
+    parts.append(f"{counted(vessels, 'vessel')}, {freedom(result.degrees_of_freedom)}")
+    if excluded := sum(bool(vessel.excluded) for vessel in solved.prepared.vessels):
         parts.append(f"{excluded} excluded by decision")
     if result.blank is not None and result.reported is not None:
-        parts.append(f"process blank {figure(result.blank, 2)} {result.reported.unit} subtracted")
+        parts.append(f"process blank {figure(result.blank, 2)} {unit_words(result.reported.unit)} subtracted")
     if result.background is not None:
         parts.append(f"background {figure(result.background, 2)} {result.signal_unit}".rstrip() + " subtracted")
     return parts
+
+
+def _coverage_factor(estimate: Estimate, solved: Solved) -> str:
+    """The coverage factor, and why where it is far from the 2 that people expect."""
+    k, left = estimate.coverage_factor, solved.effective_degrees_of_freedom
+    if not k:
+        return ""
+    told = f", k {figure(k, 2)}"
+    if k <= _WIDE_K:
+        return told
+    if left > 0 and t_quantile(left, estimate.coverage) > _WIDE_K:
+        return f"{told}, because {freedom(left)} {'remains' if left == 1 else 'remain'}"
+    return f"{told}, because the slope is not known well"
 
 
 def interval_holds(result: Result, solved: Solved) -> str:
@@ -105,20 +122,36 @@ def headline(
     checks: Sequence[Check],
     results: Sequence[Result],
     waiting_for: Sequence[str],
+    excluded: Sequence[str] = (),
 ) -> str:
     """The first words about a series.
 
     Parameters
     ----------
     checks : of the series as a whole; those of results stand in ``results``
+    excluded : the vessels that a decision leaves out
     """
+    told = _headline(key, verdict, so_far, final, checks, results, waiting_for)
+    return f"{told} Excluded by decision: {listed(excluded)}." if excluded else told
+
+
+def _headline(
+    key: SeriesKey,
+    verdict: str,
+    so_far: str,
+    final: bool,
+    checks: Sequence[Check],
+    results: Sequence[Result],
+    waiting_for: Sequence[str],
+) -> str:
     name = series_name(key)
     if verdict == FAIL:
         word = "DO NOT REPORT" if key.role in ("sample", "duplicate", "spiked_sample") else "FAIL"
         return f"{word}{'' if final else ' (so far)'}. {name}{_failures(checks, results)}"
     if verdict == WAITING:
         worries = f" {_troubles(checks, results, WARN)}" if so_far == WARN else ""
-        return f"WAITING. {name}: so far {so_far}; waits for {', '.join(waiting_for)}.{worries}"
+        stands = f"so far {so_far}; " if so_far != WAITING else ""
+        return f"WAITING. {name}: {stands}waits for {listed(waiting_for)}.{worries}"
     worries = f" {_troubles(checks, results, WARN)}" if verdict == WARN else ""
     return f"{verdict.upper()}. {name} {_results(results)}{worries}"
 
@@ -140,7 +173,7 @@ def _failures(checks: Sequence[Check], results: Sequence[Result]) -> str:
     said: dict[str, list[str]] = {}
     good, count = [], 0
     for result in results:
-        failing = [check for check in result.checks if check.verdict == FAIL]
+        failing = sorted((check for check in result.checks if check.verdict == FAIL), key=_explains)
         name = line_words(result.analyte, result.line)
         count += max(0, len(failing) - 1)
         if failing:
@@ -150,6 +183,10 @@ def _failures(checks: Sequence[Check], results: Sequence[Result]) -> str:
     told = [f"{', '.join(names)}: {text}" for text, names in said.items()]
     stands = f" Not touched by this: {', '.join(good)}." if good else ""
     return f" {' '.join(told[:_SHOWN_AT_MOST])}{_more(count + max(0, len(told) - _SHOWN_AT_MOST))}{stands}"
+
+
+def _explains(check: Check) -> int:
+    return _EXPLAINS_FIRST.index(check.name) if check.name in _EXPLAINS_FIRST else len(_EXPLAINS_FIRST)
 
 
 def _more(count: int) -> str:

@@ -10,6 +10,7 @@ from spikeward.rules.preparation import preparation_for
 from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.records import PLAIN_ROLES, SERIES_ROLES, Batch, Members, SeriesKey
 from spikeward.rules.rulebook import Rulebook
+from spikeward.rules.words import line_words
 
 
 def closing_roles(rules: Rulebook) -> tuple[str, ...]:
@@ -38,7 +39,7 @@ def missing_members(members: Members, lines: Sequence[PreparedLine], rules: Rule
             if found < rules.series.readings:
                 needed = rules.series.readings - found
                 noun = "reading" if needed == 1 else "readings"
-                lacking.append(f"{needed} more {noun} of {line or analyte} at level {level}{vessel}")
+                lacking.append(f"{needed} more {noun} of {line_words(analyte, line)} at level {level}{vessel}")
     for line_ in lines:
         lacking += line_.missing
     return tuple(dict.fromkeys(lacking))

@@ -8,6 +8,7 @@ from spikeward.rules.prepared import WayBack
 from spikeward.rules.quantities import UNITS, Quantity
 from spikeward.rules.rulebook import Preparation
 from spikeward.rules.sources import Findings, Sources
+from spikeward.rules.words import listed, unit_words
 
 _BASE = {"mass": "g", "volume": "mL", "digest": "mL", "dry_matter": "1", "dilution": "1"}
 
@@ -37,8 +38,8 @@ def way_back(preparation: Preparation, sources: Sources, unit: str, findings: Fi
     report_in = preparation.report_in or (unit if UNITS[unit][0] == dimension else "mg/kg")
     if UNITS[report_in][0] != dimension:
         findings.fails(
-            f"report_in: {report_in} cannot be reached from {unit}; the sample block leads to {dimension} "
-            "(give mass and digest for a content per mass)"
+            f"report_in asks for {unit_words(report_in)}, {_KINDS[UNITS[report_in][0]]}, but from a standard in "
+            f"{unit_words(unit)} the sample block leads to {_KINDS[dimension]} ({_gives(numbers)}); {_mend(dimension)}"
         )
         return None
     mass = numbers.get("mass")
@@ -55,6 +56,26 @@ def way_back(preparation: Preparation, sources: Sources, unit: str, findings: Fi
 
 
 _ABSENT = object()
+_KINDS = {
+    "mass per volume": "a mass per volume", "mass per mass": "a mass per mass",
+    "amount per volume": "an amount per volume", "amount per mass": "an amount per mass",
+}  # fmt: skip
+_SUCH = {
+    "mass per volume": "a unit such as mg/L", "mass per mass": "a unit such as mg/kg",
+    "amount per volume": "a unit such as mmol/L", "amount per mass": "a unit such as mmol/kg",
+}  # fmt: skip
+
+
+def _gives(numbers: dict[str, Decimal]) -> str:
+    """Which of the sample block's quantities decide whether a content is per volume or per mass."""
+    given = [name for name in ("mass", "volume", "digest") if name in numbers]
+    return f"it gives {listed(given)}" if given else "it gives neither mass nor digest"
+
+
+def _mend(dimension: str) -> str:
+    if dimension.endswith("volume"):
+        return f"report in {_SUCH[dimension]}, or give mass and digest for a content per mass"
+    return f"report in {_SUCH[dimension]}, or take the mass out for a content per volume"
 
 
 def _needed(preparation: Preparation, sources: Sources, name: str, findings: Findings) -> object:

@@ -12,6 +12,7 @@ from spikeward.daemon.pages.numbers import coverage_shown, interval_shown, value
 from spikeward.daemon.pages.template import attention, page
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WAITING, WARN, BatchOutcome, Check, Outcome, Result
 from spikeward.rules.records import SeriesKey
+from spikeward.rules.words import counted
 
 _REPORTED = ("sample", "duplicate", "spiked sample")
 
@@ -28,6 +29,7 @@ class Row:
     how: str  # coverage and interval, or why there is no number
     says: str
     link: str
+    excluded: str = ""  # that a decision leaves vessels out
 
 
 def render_board(
@@ -103,12 +105,22 @@ def _trouble(rows: Sequence[Row]) -> str:
 
 
 def _control(checks: Iterable[Check]) -> str:
-    words_for = {FAIL: "out of control", WARN: "to look at", NOT_EVALUATED: "not evaluated", PASS: "in control"}
-    named = [
-        (words, [check.name.replace("_", " ") for check in checks if check.verdict == verdict])
-        for verdict, words in words_for.items()
-    ]
-    return "".join(f"; {words}: {', '.join(dict.fromkeys(names))}" for words, names in named if names)
+    words_for = {FAIL: "", WARN: "to look at", NOT_EVALUATED: "not evaluated", PASS: "in control"}
+    by_name: dict[str, list[str]] = {}
+    for check in checks:
+        by_name.setdefault(check.name.replace("_", " "), []).append(check.verdict)
+    parts = []
+    for verdict, words in words_for.items():
+        # each name once, at the gravest of its verdicts: what fails somewhere is not in control elsewhere
+        names = [name for name, found in by_name.items() if min(found, key=list(words_for).index) == verdict]
+        told = [f"{name}: {_failing(by_name[name])}" if verdict == FAIL else name for name in names]
+        parts += [f"; {words}: {', '.join(told)}"] if told and verdict != FAIL else [f"; {one}" for one in told]
+    return "".join(parts)
+
+
+def _failing(verdicts: Sequence[str]) -> str:
+    count = verdicts.count(FAIL)
+    return f"{count} {'fails' if count == 1 else 'fail'}"
 
 
 def _rows(outcome: Outcome, links: Mapping[SeriesKey, str]) -> list[Row]:
@@ -120,9 +132,19 @@ def _rows(outcome: Outcome, links: Mapping[SeriesKey, str]) -> list[Row]:
     if not outcome.results:
         return [Row(outcome.verdict, role, sample, "", "no result yet", "", outcome.sentence, link)]
     return [
-        Row(result.verdict, role, sample, result_name(result), *_value(result), _says(outcome, result), link)
+        Row(
+            result.verdict, role, sample, result_name(result), *_value(result), _says(outcome, result), link,
+            _excluded(outcome, result),
+        )
         for result in outcome.results
-    ]
+    ]  # fmt: skip
+
+
+def _excluded(outcome: Outcome, result: Result) -> str:
+    """How many vessels of a result a decision leaves out, in words; a vessel without a signal is no point."""
+    vessels = {(point.level, point.vessel) for point in result.points if point.excluded}
+    vessels |= {(vessel.level, vessel.vessel) for vessel in outcome.vessels if vessel.excluded}
+    return f"{counted(len(vessels), 'vessel')} excluded" if vessels else ""
 
 
 def _value(result: Result) -> tuple[str, str]:

@@ -13,9 +13,10 @@ from dataclasses import dataclass
 from markupsafe import Markup
 
 from spikeward.daemon.pages.axis import Axis, axis_over
-from spikeward.daemon.pages.numbers import interval_shown, shown, unit_shown, value_shown
+from spikeward.daemon.pages.numbers import interval_shown, shown, value_shown
 from spikeward.daemon.pages.text import visible
 from spikeward.rules.outcomes import Point, Result
+from spikeward.rules.words import unit_words
 
 _WIDTH, _HEIGHT = 440, 330
 _RIGHT, _TOP, _BOTTOM = 428, 16, 272
@@ -117,7 +118,7 @@ def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
     yield Markup('<path class="axis" d="M{0:.1f} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>').format(
         frame.left, frame.up(0.0), _RIGHT, frame.across(0.0), _TOP, _BOTTOM
     )
-    added, middle = frame.x.titled(f"{_analyte(result)} added", unit_shown(result.content_unit)), frame.along(0.5)
+    added, middle = frame.x.titled(f"{_analyte(result)} added", unit_words(result.content_unit)), frame.along(0.5)
     yield Markup('<text class="name" x="{0:.1f}" y="{1}">{2}</text>').format(middle, _HEIGHT - 12, added)
     signal = frame.y.titled("Signal corrected for volume", visible(result.signal_unit))
     yield Markup('<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>').format(

@@ -7,6 +7,7 @@ from collections.abc import Iterable, Iterator
 from spikeward.daemon.pages.numbers import coverage_shown, value_shown
 from spikeward.daemon.pages.text import one_line
 from spikeward.rules.outcomes import FAIL, WARN, Check, Outcome, Result
+from spikeward.rules.words import line_words
 
 Line = tuple[str, str]
 
@@ -33,7 +34,7 @@ def render_flag(outcome: Outcome, result_digest: str) -> bytes:
     lines += [("missing", what) for what in outcome.waiting_for]
     lines += _reasons("", outcome.checks)
     for result in outcome.results:
-        lines += _reasons(result.line or result.analyte, result.checks)
+        lines += _reasons(result_name(result), result.checks)
     lines += [
         ("result_digest", result_digest),
         ("inputs_digest", outcome.inputs_digest),
@@ -56,9 +57,7 @@ def render_unread(path: str, sentence: str) -> bytes:
 
 def result_name(result: Result) -> str:
     """The analyte, with its line where it has one and the line does not already name it."""
-    if not result.line:
-        return result.analyte
-    return result.line if result.analyte in result.line else f"{result.analyte} {result.line}"
+    return line_words(result.analyte, result.line)
 
 
 def _result(result: Result) -> str:
@@ -78,7 +77,7 @@ def _reasons(name: str, checks: Iterable[Check]) -> Iterator[Line]:
     for check in checks:
         if check.verdict in (FAIL, WARN):
             about = f"{check.verdict}, {f'{name}, ' if name else ''}{check.name}"
-            yield "reason", f"{about}: {told(check)}"
+            yield "reason", f"{about}: {told(check)}{f' Source: {check.source}.' if check.source else ''}"
 
 
 def _lines(lines: Iterable[Line]) -> bytes:

@@ -6,8 +6,8 @@ import math
 import re
 
 from spikeward.rules.outcomes import Estimate
-from spikeward.rules.quantities import UNITS
 from spikeward.rules.rounding import figure, percent, rounded
+from spikeward.rules.words import unit_words
 
 MINUS = "\N{MINUS SIGN}"
 NOTHING = "\N{EN DASH}"
@@ -50,16 +50,9 @@ def shown_percent(fraction: float) -> str:
     return typeset(percent(fraction))
 
 
-def unit_shown(code: str) -> str:
-    """A unit as people write it: micro by its own letter, nothing for a plain number."""
-    if code == "1":
-        return ""
-    return f"µ{code[1:]}" if code.startswith("u") and code in UNITS else code
-
-
 def with_unit(number: str, unit: str) -> str:
     """A number's text and its unit."""
-    return f"{number} {unit_shown(unit)}".rstrip()
+    return f"{number} {unit_words(unit)}".rstrip()
 
 
 def value_shown(estimate: Estimate) -> str:

@@ -4,15 +4,19 @@ from __future__ import annotations
 
 import base64
 import hashlib
+import math
 from functools import cache
 from importlib.resources import files
 
 from jinja2 import Environment, FunctionLoader, StrictUndefined
 from markupsafe import Markup
 
-from spikeward.daemon.pages.numbers import coverage_shown, interval_shown, shown, unit_shown, value_shown, with_unit
+from spikeward.daemon.pages.numbers import coverage_shown, interval_shown, shown, typeset, value_shown, with_unit
 from spikeward.daemon.pages.text import visible
+from spikeward.rules.checks.registry import REGISTRY
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WAITING, WARN, Check
+from spikeward.rules.rounding import percent
+from spikeward.rules.words import line_words, unit_words
 
 _ATTENTION = {FAIL: 0, WARN: 1, WAITING: 2, NOT_EVALUATED: 3, PASS: 4}
 
@@ -54,7 +58,12 @@ def _capital(text: str) -> str:
 
 
 def _observed(check: Check) -> str:
-    return with_unit(shown(check.observed), check.unit) if check.observed is not None else ""
+    if check.observed is None:
+        return ""
+    registered = REGISTRY.get(check.name)
+    if registered is not None and registered.in_percent and check.unit == "1" and math.isfinite(check.observed):
+        return typeset(percent(check.observed, 3))
+    return with_unit(shown(check.observed), check.unit)
 
 
 @cache
@@ -80,7 +89,8 @@ def _environment() -> Environment:
         "says": _says,
         "observed": _observed,
         "shown": shown,
-        "unit": unit_shown,
+        "unit": unit_words,
+        "line": line_words,
         "value": value_shown,
         "interval": interval_shown,
         "coverage": coverage_shown,

@@ -75,9 +75,7 @@ def folder_of(text: str) -> str:
 
 
 def _line(walker: Walker, path: str) -> int:
-    # A single entry may stand without brackets; its place is then that of the list.
-    node = walker.places.get(path) or walker.places[path.partition("[")[0]]
-    return node.line
+    return walker.places[path].line
 
 
 def _watch(each: Values, readers: tuple[str, ...]) -> Watch:

@@ -240,7 +240,7 @@ def _check_levels(value: Values, walker: Walker) -> None:
             continue
         # Where another preparation makes them all, series of this one wait in vain, but not every series.
         partly = any(set(expected) <= other for other in made)
-        where = walker.at_line(f"preparations[{number}].additions.levels")
+        where = walker.line_of(f"preparations[{number}].additions.levels")
         told = f"{_these(lacking)} expected, and the preparation in line {where} says no addition for that"
         hint = "add it under additions: levels, or delete it here; left out, each preparation says its own levels"
         walker.at(path, "R043" if partly else "R031", told, "", hint, WARNING if partly else ERROR)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import difflib
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from typing import Any
 
 from spikeward.daemon.rule_file.problems import ERROR, MOST_PROBLEMS, Problem
@@ -81,9 +81,9 @@ class Walker:
             self._not_too_long(node, len(node.items), path)
             return [self.walk(item, shape.item, f"{path}[{number}]") for number, item in enumerate(node.items)]
         if shape.single:
-            return [self.walk(node, shape.item, path)]
+            return [self.walk(node, shape.item, f"{path}[0]")]
         self.at_node(node, path, "R011", KINDS[node.kind], "a list", "begin each entry with '- '")
-        return [self.walk(node, shape.item, path)] if node.kind == MAP else None
+        return [self.walk(node, shape.item, f"{path}[0]")] if node.kind == MAP else None
 
     def _map(self, node: Node, shape: MapOf, path: str) -> dict[str, Any] | None:
         if shape.listed and node.kind == LIST:
@@ -123,14 +123,12 @@ class Walker:
             self.keys[where] = key
             values[field.name] = self.walk(value, field.shape, where)
         # A key that was told to stand one level deeper is no key that is missing besides.
-        deeper = _deeper(shape, given)
         strayed = any(problem.code == "R012" for problem in self.problems[outer:])
         for field in shape.fields:
             if field.required and field.name not in given:
-                if strayed and field.name == deeper:
-                    values[field.name] = None
-                    continue
                 values[field.name] = None
+                if strayed and field.name == _deeper(shape):
+                    continue
                 where = f"{path}.{field.name}".lstrip(".")
                 hint = (
                     f"add {field.name}: {field.example}"
@@ -150,11 +148,11 @@ class Walker:
                 yield fields[name], key, value
             elif shape.others is not None:
                 yield Field(name, shape.others.item, ""), key, value
-            elif meant := self._unknown(key, f"{path}.{name}".lstrip("."), tuple(fields), present):
+            elif meant := self._unknown(key, f"{path}.{name}".lstrip("."), tuple(fields), present, _deeper(shape)):
                 present.add(meant)
                 yield fields[meant], key, value
 
-    def _unknown(self, key: Node, path: str, known: tuple[str, ...], present: set[str]) -> str:
+    def _unknown(self, key: Node, path: str, known: tuple[str, ...], present: set[str], deeper: str = "") -> str:
         """Report a key that is not known; the key that was meant, or an empty text."""
         homes = _homes(self._root, key.text)
         # A key that is right elsewhere is more likely misplaced than misspelt.
@@ -163,6 +161,8 @@ class Walker:
             hint = f"did you mean {meant}?"
         elif homes:
             hint = f"it belongs under {one_of(tuple(homes))}"
+        elif deeper and deeper not in present:
+            hint = f"write it one level deeper: {deeper}: {{{key.text}: …}}"
         elif twin := near(key.text, known):
             hint = f"{twin} stands here already"
         else:
@@ -200,11 +200,16 @@ class Walker:
         key: bool = False,
     ) -> None:
         """Report a problem at the value of a path (or at its key), or at the nearest part of the file around it."""
-        places = self.keys if key else self.places
-        where = path
-        while where and where not in places:
-            where = where[: max(where.rfind("."), where.rfind("["), 0)]
-        self.at_node(places.get(where) or self.places[""], path, code, found, expected, hint, severity)
+        self.at_node(self._nearest(path, self.keys if key else self.places), path, code, found, expected, hint, severity)
+
+    def line_of(self, path: str) -> int:
+        """The line of a path, or of the nearest part of the file around it."""
+        return self._nearest(path, self.places).line
+
+    def _nearest(self, path: str, places: Mapping[str, Node]) -> Node:
+        while path and path not in places:
+            path = path[: max(path.rfind("."), path.rfind("["), 0)]
+        return places.get(path) or self.places[""]
 
 
 def defaults(block: Block) -> dict[str, Any]:
@@ -221,6 +226,13 @@ def _default(field: Field) -> Any:
     if isinstance(shape, Scalar) and isinstance(default, str):
         return shape.convert(default) if default else default
     return {} if isinstance(shape, MapOf) else None
+
+
+def _deeper(block: Block) -> str:
+    """The only key of a block that holds free names, which are easily written one level too high; else nothing."""
+    field = block.fields[0]
+    free = len(block.fields) == 1 and isinstance(field.shape, MapOf) and not field.shape.keys
+    return field.name if free else ""
 
 
 def _homes(block: Block, name: str, path: str = "") -> list[str]:

@@ -6,7 +6,7 @@ what a person reads in the file is what the file means.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -208,7 +208,13 @@ class _Builder:
             parent.entries.append((key, node))
             return
         found = f"the key '{key.text}' stands in line {self._seen[-1][key.text]} already"
-        self._note(Problem("R005", self._file, key.line, key.column, key.text, found, hint="delete one of the two"))
+        path = self._path_of(self._open[:-1], key)
+        self._note(Problem("R005", self._file, key.line, key.column, path, found, hint="delete one of the two"))
+
+    def _path_of(self, around: Sequence[Node], key: Node) -> str:
+        """The path of a key whose map is the newest part of the nodes around it."""
+        parts = [f"[{len(node.items) - 1}]" if node.kind == LIST else f".{node.entries[-1][0].text}" for node in around]
+        return "".join((*parts, f".{key.text}")).lstrip(".")
 
     def _note(self, problem: Problem) -> None:
         if len(self.problems) < MOST_PROBLEMS:
@@ -222,7 +228,7 @@ class _Builder:
             if empty and key.text[:1].isdigit() and kept and kept[-1][1].text[-1:].isdigit():
                 number = kept[-1][1]
                 found = f"a comma in the number '{number.text},{key.text}'"
-                place = (self._file, number.line, number.column, kept[-1][0].text)
+                place = (self._file, number.line, number.column, self._path_of(self._open, kept[-1][0]))
                 self._note(Problem("R014", *place, found, hint="write the decimal sign as a point"))
                 number.text = f"{number.text}.{key.text}"
             else:

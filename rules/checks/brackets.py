@@ -4,11 +4,22 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
-from spikeward.rules.checks.subject import Bracket, LineKey, Subject, as_percent, graded, not_evaluated, number, plain
+from spikeward.rules.checks.subject import (
+    Bracket,
+    LineKey,
+    Subject,
+    as_percent,
+    graded,
+    near_limits,
+    not_evaluated,
+    number,
+    plain,
+    source_of,
+)
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check
 from spikeward.rules.records import Reading
-from spikeward.rules.rounding import percent
 from spikeward.rules.rulebook import Limits
 from spikeward.rules.solve.solved import Background
 from spikeward.rules.solve.transform import mean_of, unusable
@@ -111,14 +122,15 @@ def drift(near: Sequence[Bracket], every: Sequence[Bracket], limits: Limits) -> 
     first = every[0].sensitivity or math.nan
     drifts = [((one.sensitivity or 0.0) / first - 1, one.solution) for one in near]
     worst, solution = max(drifts, key=lambda drift: (abs(drift[0]), drift[1]))
-    signed = f"{'+' if worst >= 0 else ''}{percent(worst)}"
+    signed = f"{'+' if worst >= 0 else '-'}{near_limits(abs(worst), limits)}"
     told = f"The sensitivity of bracket {solution} is {signed} from the first bracket"
     if worst == 0:
         told = f"The brackets around this series read like the first, {every[0].solution}"
-    return graded(
+    check = graded(
         "brackets", abs(worst), limits, told,
         f"Measure again what lies between bracket {solution} and its good neighbours", show=as_percent,
     )  # fmt: skip
+    return replace(check, observed=worst)
 
 
 def _one_sided(sides: Sequence[bool], limits: Limits) -> Check | None:
@@ -134,7 +146,7 @@ def _one_sided(sides: Sequence[bool], limits: Limits) -> Check | None:
         return None
     return Check(
         "brackets", verdict, f"No bracket was measured {_side_lacking(sides)} this series.", float(sum(sides)), "sides",
-        "a bracket on both sides", limits.sources.get(named, ""),
+        "a bracket on both sides", source_of(limits, named, "brackets"),
         "Measure the series again between two brackets",
     )  # fmt: skip
 

@@ -8,11 +8,12 @@ from dataclasses import dataclass
 
 from scipy import special
 
-from spikeward.rules.checks.line import fitted_points
-from spikeward.rules.checks.subject import Subject, not_evaluated, number
+from spikeward.rules.checks.line import fitted_points, no_line
+from spikeward.rules.checks.subject import Subject, not_evaluated, number, source_of
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check
-from spikeward.rules.rounding import figure, percent
+from spikeward.rules.rounding import figure, percent, percent_apart
 from spikeward.rules.rulebook import Limits
+from spikeward.rules.words import counted, freedom
 
 _DUST = 2.0**-40  # residuals below this share of the signal are rounding, not curvature
 
@@ -85,12 +86,14 @@ def _zero_near(a: float, b: float, c: float, guess: float) -> float | None:
 
 def curvature(subject: Subject, limits: Limits) -> Check:
     """Mandel's F test for curvature, and how far a parabola would move the content."""
+    if no_line(subject):
+        return not_evaluated("curvature", "there is no line")
     points = fitted_points(subject)
     needed = int(number(limits, "needs_vessels") or 4)
-    freedom = subject.solved.degrees_of_freedom
+    left = subject.solved.degrees_of_freedom
     if len(points) < needed:
         return not_evaluated(
-            "curvature", f"{len(points)} vessels leave {freedom} degrees of freedom, too few to show curvature",
+            "curvature", f"{counted(len(points), 'vessel')} leave {freedom(left)}, too few to show curvature",
             f"{needed} or more vessels give it power",
         )  # fmt: skip
     found = mandel([point.x for point in points], [point.y for point in points])
@@ -98,10 +101,10 @@ def curvature(subject: Subject, limits: Limits) -> Check:
         return not_evaluated("curvature", "fewer than three different additions cannot show a curve", "More levels")
     if found.exact:
         return Check("curvature", PASS, "The points lie on the straight line to the last digit.", 0.0, "1")
-    return _judged(found, limits, freedom)
+    return _judged(found, limits, left - 1)
 
 
-def _judged(found: Mandel, limits: Limits, freedom: int) -> Check:
+def _judged(found: Mandel, limits: Limits, left: int) -> Check:
     warn_p, far = number(limits, "warn_p"), number(limits, "fail_change")
     change = None
     if found.by_parabola is not None and found.by_line:
@@ -112,15 +115,15 @@ def _judged(found: Mandel, limits: Limits, freedom: int) -> Check:
         verdict = FAIL if far is not None and (change is None or change > far) else WARN
     moved = "a parabola never reaches zero signal"
     if change is not None:
-        moved = f"a parabola moves the content {percent(change)}"
+        moved = f"a parabola moves the content {percent_apart(change, [] if far is None else [far])}"
     told = f"warns below p {figure(warn_p)}" if warn_p is not None else ""
     if far is not None:
         told += f"; fails if the content then moves more than {percent(far)}"
     name = "Curvature is significant" if significant else "Curvature is not significant"
     sentence = f"{name}: Mandel's F is {figure(found.f) if math.isfinite(found.f) else 'beyond all bounds'}"
-    sentence += f", p {figure(found.p, 2)}, with {freedom - 1} degrees of freedom left; {moved} ({told})."
+    sentence += f", p {figure(found.p, 2)}, with {freedom(left)} left; {moved} ({told})."
     return Check(
         "curvature", verdict, sentence, found.f if math.isfinite(found.f) else None, "1", told,
-        limits.sources.get("fail_change" if verdict == FAIL else "warn_p", ""),
+        source_of(limits, "fail_change" if verdict == FAIL else "warn_p", "curvature"),
         "" if verdict == PASS else "Dilute the test solution, or use smaller additions, and measure the series again",
     )  # fmt: skip

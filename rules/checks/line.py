@@ -7,11 +7,22 @@ from collections.abc import Callable
 
 from scipy import special
 
-from spikeward.rules.checks.subject import Subject, as_percent, capital, graded, not_evaluated, number, plain
+from spikeward.rules.checks.subject import (
+    Subject,
+    as_percent,
+    capital,
+    graded,
+    near_limits,
+    not_evaluated,
+    number,
+    plain,
+    source_of,
+)
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check, Estimate, Point
 from spikeward.rules.rounding import figure, percent
 from spikeward.rules.rulebook import Limits
-from spikeward.rules.solve.transform import vessel_name
+from spikeward.rules.solve.transform import unusable, vessel_name, why_unusable
+from spikeward.rules.words import counted
 
 
 def fitted_points(subject: Subject) -> tuple[Point, ...]:
@@ -36,11 +47,27 @@ def near_zero(subject: Subject) -> str:
     return ""
 
 
+def no_line(subject: Subject) -> bool:
+    """Whether no line was drawn, so that nothing can be said about it."""
+    return subject.solved.slope is None
+
+
+def unread_vessel(subject: Subject) -> bool:
+    """Whether there is no number because a vessel that counts has no measured signal."""
+    kept = [vessel for vessel in subject.solved.prepared.vessels if not vessel.excluded and vessel.readings]
+    without = [reading for vessel in kept if (reading := unusable(vessel.readings)) is not None]
+    return any(subject.solved.no_number.endswith(why_unusable(reading)) for reading in without)
+
+
 def solved(subject: Subject, limits: Limits) -> Check:
     """Whether the line gives a number at all."""
     if subject.solved.no_number:
         remedy = "Look at the vessels of this series; repeat it if nothing explains them"
         reason = subject.solved.no_number.rstrip(".")
+        if unread_vessel(subject):
+            # the vessel's own advice, so that no other stands beside it
+            reason, _, advice = reason.rpartition(": ")
+            remedy = capital(advice)
         sentence = f"There is no number: {reason}." if ": " not in reason else f"There is no number. {capital(reason)}."
         return plain("solved", FAIL, sentence, remedy, "theory")
     return plain("solved", PASS, "The line gives a content.")
@@ -48,12 +75,17 @@ def solved(subject: Subject, limits: Limits) -> Check:
 
 def levels(subject: Subject, limits: Limits) -> Check:
     """Vessels that carry the line; below what the design needs it fails whatever the rules say."""
+    if unread_vessel(subject):
+        return not_evaluated("levels", "there is no line")
     points = fitted_points(subject)
     additions = len({point.x for point in points})
-    told = f"{len(points)} vessels with {additions} different additions carry the line"
+    told = f"{counted(len(points), 'vessel')} with {counted(additions, 'different addition')} carry the line"
     single = subject.solved.prepared.design == "single"
     needed = 2 if single else 3
-    remedy = "Measure the missing levels" if single else "Measure the missing levels, or declare the design single"
+    remedy = "Measure the missing levels"
+    if not single and len(points) == additions == 2 and min(point.x for point in points) == 0:
+        # Only such a pair is a single addition, as the rule file understands it.
+        remedy += ", or declare the design single"
     if len(points) < needed:
         told = f"{told}; the design needs at least {needed}."
         return Check("levels", FAIL, told, float(len(points)), "vessels", f"at least {needed}", "the design", remedy)
@@ -69,15 +101,18 @@ def response(subject: Subject, limits: Limits) -> Check:
     if slope is not None and slope <= 0:
         return plain("response", FAIL, "The signal does not rise with the additions.", remedy, "theory")
     if g is None or slope is None:
-        reason = "the scatter about the line is not known" if slope is not None else "there is no line"
-        return not_evaluated("response", reason, "Four or more vessels show the scatter")
+        if no_line(subject):
+            return not_evaluated("response", "there is no line")
+        return not_evaluated(
+            "response", "the scatter about the line is not known", "Four or more vessels show the scatter"
+        )
     unbounded = number(limits, "fail_above")
     sentence = f"The slope is known to ± {percent(math.sqrt(g))} (g {figure(g, 2)})"
     if unbounded is not None and g >= unbounded:
         told = f"fails from g {figure(unbounded)}"
         return Check(
             "response", FAIL, f"{sentence}: it does not differ from zero ({told}).", g, "1", told,
-            limits.sources.get("fail_above", ""), remedy,
+            source_of(limits, "fail_above", "response"), remedy,
         )  # fmt: skip
     return graded("response", g, limits, sentence, remedy)
 
@@ -85,6 +120,8 @@ def response(subject: Subject, limits: Limits) -> Check:
 def correlation(subject: Subject, limits: Limits) -> Check:
     """The correlation coefficient, where a method demands one; it is no proof of a straight line."""
     r = subject.solved.correlation
+    if no_line(subject):
+        return not_evaluated("correlation", "there is no line")
     if r is None or subject.solved.degrees_of_freedom < 1:
         return not_evaluated("correlation", "two points always lie on a line", "Measure more levels")
     show = f"r is {r:.5f} over {len(fitted_points(subject))} vessels"
@@ -99,6 +136,8 @@ def residual(subject: Subject, limits: Limits) -> Check:
     is not taken for a slip.
     """
     points = [point for point in fitted_points(subject) if point.fitted is not None]
+    if no_line(subject):
+        return not_evaluated("residual", "there is no line")
     if subject.solved.degrees_of_freedom < 1 or not points:
         return not_evaluated("residual", "no degree of freedom is left for residuals", "Measure more levels")
     floor = (number(limits, "floor") or 0.0) * max(abs(_fitted(point)) for point in points)
@@ -111,7 +150,7 @@ def residual(subject: Subject, limits: Limits) -> Check:
     against = "its fitted signal"
     if floor > abs(_fitted(points[sizes.index(largest)])):
         against = f"{percent(number(limits, 'floor') or 0.0)} of the largest fitted signal"
-    sentence = f"The largest residual, of {where}, is {percent(largest)} of {against}"
+    sentence = f"The largest residual, of {where}, is {near_limits(largest, limits)} of {against}"
     remedy = f"Look for a pipetting slip, first in {where}; prepare and measure it again"
     return graded("residual", largest, limits, sentence, remedy, show=as_percent)
 
@@ -122,6 +161,8 @@ def studentised(subject: Subject, limits: Limits) -> Check:
     With n vessels it cannot exceed sqrt(n - 2). Critical value by Bonferroni's bound (Cook and Weisberg, Residuals and
     Influence in Regression, 1982, 2.2.2): t sqrt((n-2)/(n-3+t²)) with t at p/(2n) and n-3 degrees of freedom.
     """
+    if no_line(subject):
+        return not_evaluated("studentised", "there is no line")
     points = [point for point in fitted_points(subject) if point.fitted is not None]
     s, x_mean, sxx = subject.solved.residual_sd, subject.solved.x_mean, subject.solved.sxx
     n, needed = len(points), int(number(limits, "needs_vessels") or 5)
@@ -158,7 +199,7 @@ def _significance(
     broken = [limit for limit in at if observed > values[limit]]
     told = "; ".join(f"{limit[:4]}s above {values[limit]:.3f}" for limit in sorted(at, reverse=True))
     verdict = PASS if not broken else FAIL if broken[0] == "fail_p" else WARN
-    source = limits.sources.get(broken[0] if broken else "warn_p", "")
+    source = source_of(limits, broken[0] if broken else "warn_p", name)
     return Check(
         name, verdict, f"{sentence} ({told}).", observed, "1", told, source, "" if verdict == PASS else remedy
     )
@@ -183,7 +224,7 @@ def matrix_spread(subject: Subject, limits: Limits) -> Check:
     if len(shares) < 2:
         return not_evaluated("matrix_spread", "fewer than two vessels are known")
     spread = max(shares) / min(shares) - 1
-    sentence = f"The share of test solution differs by {percent(spread)} between vessels"
+    sentence = f"The share of test solution differs by {near_limits(spread, limits)} between vessels"
     if spread == 0:
         sentence = "Every vessel holds the same share of test solution"
     return graded(

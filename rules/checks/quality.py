@@ -5,10 +5,13 @@ from __future__ import annotations
 from dataclasses import replace
 
 from spikeward.rules.checks.line import fitted_points, near_zero
-from spikeward.rules.checks.subject import Subject, as_percent, graded, not_evaluated, number, plain
+from spikeward.rules.checks.subject import Subject, as_percent, graded, near_limits, not_evaluated, number, plain
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check, Estimate
-from spikeward.rules.rounding import percent, rounded
+from spikeward.rules.rounding import rounded
 from spikeward.rules.rulebook import Limits
+from spikeward.rules.words import unit_words
+
+_BLANKS = "the rule file; key blanks"
 
 
 def reported(subject: Subject) -> Estimate | None:
@@ -32,11 +35,12 @@ def expanded_uncertainty(subject: Subject, limits: Limits) -> Check:
     remedy = "Measure more vessels, or find what scatters"
     if estimate.content <= 0 or wide >= estimate.content:
         value, spread = rounded(estimate.content, wide)
-        sentence = f"The content, {value} ± {spread} {estimate.unit}, cannot be told from zero."
+        sentence = f"The content, {value} ± {spread} {unit_words(estimate.unit)}, cannot be told from zero."
         return plain(name, WARN, sentence, "Take it for not detected, or concentrate the test solution", "theory")
+    share = wide / estimate.content
     check = graded(
-        name, wide / estimate.content, limits,
-        f"The expanded uncertainty is {percent(wide / estimate.content)} of the content", remedy, show=as_percent,
+        name, share, limits, f"The expanded uncertainty is {near_limits(share, limits)} of the content", remedy,
+        show=as_percent,
     )  # fmt: skip
     needed = number(limits, "fails_from_vessels")
     if check.verdict == FAIL and needed is not None and count < needed:
@@ -53,12 +57,12 @@ def blank(subject: Subject, limits: Limits) -> Check:
     if lacking := blank_lacking(subject):
         if subject.context.batch.closed:
             sentence = f"{lacking[:1].upper()}{lacking[1:]}, though the rules subtract it."
-            return plain("blank", FAIL, sentence, "Measure it, or take it out of the rules", "the rule file")
+            return plain("blank", FAIL, sentence, "Measure it, or take it out of the rules", _BLANKS)
         return not_evaluated("blank", f"{lacking}; it is still expected")
     solved = subject.solved
     if solved.background is not None and solved.background.problem:
         sentence = f"The background is not known: {solved.background.problem}."
-        return plain("blank", FAIL, sentence, "Measure the background again", "the rule file")
+        return plain("blank", FAIL, sentence, "Measure the background again", _BLANKS)
     if subject.role == "process_blank":
         return plain("blank", PASS, "This series is a blank itself.")
     if not asked.process or solved.blank is None:
@@ -81,7 +85,7 @@ def _share(subject: Subject, limits: Limits, amount: float) -> Check:
         return plain("blank", WARN, sentence, "Take it for not detected, or look where the blank comes from", "theory")
     share = abs(amount) / estimate.content
     return graded(
-        "blank", share, limits, f"The process blank is {percent(share)} of the result",
+        "blank", share, limits, f"The process blank is {near_limits(share, limits)} of the result",
         "Find what brings the analyte in: reagents, vessels, air; prepare the sample again", show=as_percent,
     )  # fmt: skip
 

@@ -7,11 +7,12 @@ from dataclasses import replace
 
 from scipy import special
 
-from spikeward.rules.checks.subject import Subject, as_percent, graded, not_evaluated, number
+from spikeward.rules.checks.subject import Subject, as_percent, graded, near_limits, not_evaluated, number, source_of
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, SEVERITY, WARN, Check
 from spikeward.rules.rounding import percent
 from spikeward.rules.rulebook import Known, Limits
 from spikeward.rules.solve.solved import Solved
+from spikeward.rules.words import unit_words
 
 _WORDS = {"reference": "reference", "check": "check sample"}
 
@@ -48,7 +49,8 @@ def _none_measured(subject: Subject, name: str, role: str) -> Check:
     if not subject.context.batch.closed:
         return not_evaluated(name, f"{told}; it is still expected")
     sentence = f"{told[:1].upper()}{told[1:]}, though the rules close a batch with one."
-    return Check(name, WARN, sentence, source="the rule file", remedy=f"Measure a {_WORDS[role]} with the batch")
+    remedy = f"Measure a {_WORDS[role]} with the batch"
+    return Check(name, WARN, sentence, source="the rule file; key series: closes_with", remedy=remedy)
 
 
 def recovery(solved: Solved, subject: Subject, limits: Limits, name: str) -> Check:
@@ -71,23 +73,26 @@ def recovery(solved: Solved, subject: Subject, limits: Limits, name: str) -> Che
     try:
         content = known.content.to(estimate.unit)
     except ValueError:
-        why = f"{told} is declared in {known.content.unit} and found in {estimate.unit}"
+        why = f"{told} is declared in {unit_words(known.content.unit)} and found in {unit_words(estimate.unit)}"
         return Check(
-            name, FAIL, f"No recovery: {why}.", source="the rule file",
+            name, FAIL, f"No recovery: {why}.", source="the rule file; key references",
             remedy="Give both in one kind of unit, under references or report_in",
         )  # fmt: skip
     found = estimate.content / content
     remedy = f"Find the cause before reporting; repeat {told} and the samples of the batch"
-    check = graded(
-        name, found, limits, f"{told[:1].upper()}{told[1:]}: {percent(found, 3)} of {known.content} {analyte} found",
-        remedy, show=as_percent,
-    )  # fmt: skip
+    share = near_limits(found, limits, 3)
+    sentence = f"{told[:1].upper()}{told[1:]}: {share} of {_declared(known)} {analyte} found"
+    check = graded(name, found, limits, sentence, remedy, show=as_percent)
     check = _by_distance(check, solved, known, limits, remedy)
     own = key == subject.solved.prepared.key
     if not own and (key, subject.line_key) in subject.context.failed and check.verdict != FAIL:
         sentence = f"{check.sentence[:-1]}; the {told} failed its own checks."
         return replace(check, verdict=WARN, sentence=sentence, remedy=f"Look at the summary of {told}")
     return check
+
+
+def _declared(known: Known) -> str:
+    return f"{known.content.value:f} {unit_words(known.content.unit)}"
 
 
 def _reason(solved: Solved) -> str:
@@ -116,7 +121,7 @@ def _by_distance(check: Check, solved: Solved, known: Known, limits: Limits, rem
                 f"chance allows {t:.1f} at {percent(p)}."
             )
             return Check(
-                check.name, verdict, sentence, check.observed, check.unit, check.limit, limits.sources.get(limit, ""),
-                remedy,
+                check.name, verdict, sentence, check.observed, check.unit, check.limit,
+                source_of(limits, limit, check.name), remedy,
             )  # fmt: skip
     return check

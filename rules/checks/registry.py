@@ -17,7 +17,7 @@ class Registered:
 
     ``certain_early``: what it finds on some levels cannot be undone by those still missing. ``not_shown``: what a
     reader should know is not shown where the check is not evaluated. ``always``: made whether the rules name it or not.
-    ``not_for``: roles of which it makes no sense.
+    ``not_for``: roles of which it makes no sense. ``in_percent``: people read what it observes in per cent.
     """
 
     name: str
@@ -28,6 +28,7 @@ class Registered:
     not_shown: str = ""
     always: bool = False
     not_for: tuple[str, ...] = ()
+    in_percent: bool = False
 
 
 REGISTRY: dict[str, Registered] = {
@@ -39,26 +40,40 @@ REGISTRY: dict[str, Registered] = {
         ),
         Registered("solved", line.solved, RESULT, "the line gives a number", always=True),
         Registered("units", signal.units, RESULT, "all signals come in one unit", certain_early=True),
-        Registered("linear_top", signal.linear_top, RESULT, "no signal is above the straight part", certain_early=True),
+        Registered(
+            "linear_top", signal.linear_top, RESULT, "no signal is above the straight part", certain_early=True,
+            in_percent=True,
+        ),
         Registered("standard", quality.standard, RESULT, "the standard was in date", certain_early=True),
         Registered("levels", line.levels, RESULT, "enough vessels carry the line", always=True),
         Registered("response", line.response, RESULT, "the signal answers to the additions"),
         Registered("correlation", line.correlation, RESULT, "r reaches what the method demands"),
         Registered("curvature", curvature.curvature, RESULT, "the response is straight", not_shown="linearity"),
-        Registered("residual", line.residual, RESULT, "no vessel lies far off the line"),
+        Registered("residual", line.residual, RESULT, "no vessel lies far off the line", in_percent=True),
         Registered("studentised", line.studentised, RESULT, "no vessel lies off the line by more than chance"),
-        Registered("precision", signal.precision, RESULT, "readings of one vessel repeat"),
+        Registered("precision", signal.precision, RESULT, "readings of one vessel repeat", in_percent=True),
         Registered("span", line.span, RESULT, "the additions suit the content"),
-        Registered("matrix_spread", line.matrix_spread, RESULT, "every vessel holds the same matrix"),
-        Registered("expanded_uncertainty", quality.expanded_uncertainty, RESULT, "the result is known well enough"),
-        Registered("blank", quality.blank, RESULT, "blanks came and are small beside the result", always=True),
-        Registered("brackets", brackets.brackets, BATCH, "the sensitivity held on both sides", not_shown="drift"),
         Registered(
-            "reference", reference.reference, BATCH, "the reference is recovered",
-            not_shown="trueness", not_for=("process_blank",),
+            "matrix_spread", line.matrix_spread, RESULT, "every vessel holds the same matrix", in_percent=True,
         ),
         Registered(
-            "check_sample", reference.check_sample, BATCH, "the check sample is recovered", not_for=("process_blank",)
+            "expanded_uncertainty", quality.expanded_uncertainty, RESULT, "the result is known well enough",
+            in_percent=True,
+        ),
+        Registered(
+            "blank", quality.blank, RESULT, "blanks came and are small beside the result", always=True, in_percent=True,
+        ),
+        Registered(
+            "brackets", brackets.brackets, BATCH, "the sensitivity held on both sides",
+            not_shown="drift", in_percent=True,
+        ),
+        Registered(
+            "reference", reference.reference, BATCH, "the reference is recovered",
+            not_shown="trueness", not_for=("process_blank",), in_percent=True,
+        ),
+        Registered(
+            "check_sample", reference.check_sample, BATCH, "the check sample is recovered", not_for=("process_blank",),
+            in_percent=True,
         ),
     )  # fmt: skip
 }

@@ -8,6 +8,9 @@ from spikeward.rules.checks.subject import Subject, capital, not_evaluated, plai
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check
 from spikeward.rules.records import Members
 from spikeward.rules.rulebook import Limits, Rulebook
+from spikeward.rules.words import listed
+
+_IN_FORCE = "the readings in force"
 
 
 def completeness(members: Members, missing: Sequence[str], over: bool, rules: Rulebook) -> Check:
@@ -22,7 +25,7 @@ def completeness(members: Members, missing: Sequence[str], over: bool, rules: Ru
     -----
     An analyte that lacks more than it can do without fails by its own checks; the others stand.
     """
-    told = ", ".join(missing) or "every reading"
+    told = listed(missing) or "every reading"
     if not missing and members.readings:
         return plain("completeness", PASS, "Every level and every reading is there.")
     if not over:
@@ -36,7 +39,7 @@ def completeness(members: Members, missing: Sequence[str], over: bool, rules: Ru
 def conflicts(members: Members) -> tuple[Check, ...]:
     """Contradictions between sources, which fail the series, and doubts, which warn; a pass where there are none."""
     return (
-        *_one_each("conflict", members.conflicts, FAIL, "No source contradicts another.", "Decide which one is right"),
+        *_contradictions(members.conflicts),
         *_one_each("identity", members.warnings, WARN, "The origin of every reading is clear.", "Look at these files"),
     )
 
@@ -48,17 +51,28 @@ def preparation(subject: Subject, limits: Limits) -> Check:
         told = " ".join(_sentence(problem) for problem in prepared.problems)
         return plain("preparation", FAIL, told, "Correct the rule file or the bench entries", "what the design needs")
     if prepared.missing and prepared.key in subject.context.waiting:
-        return not_evaluated("preparation", f"still expected: {', '.join(prepared.missing)}")
+        return not_evaluated("preparation", f"still expected: {listed(prepared.missing)}")
     if prepared.missing:
-        told = f"Without {', '.join(prepared.missing)} there is no result of {subject.name}."
+        told = f"Without {listed(prepared.missing)} there is no result of {subject.name}."
         return plain("preparation", FAIL, told, "Enter it; late entries are still read", "what the design needs")
     return plain("preparation", PASS, "Volumes, standard and the way back to the sample are known.")
+
+
+def _contradictions(sentences: Sequence[str]) -> tuple[Check, ...]:
+    """Each says after its last semicolon what to do about it."""
+    if not sentences:
+        return (plain("conflict", PASS, "No source contradicts another."),)
+    parts = [text.rpartition("; ") for text in sentences]
+    return tuple(
+        plain("conflict", FAIL, _sentence(what or do), capital(do) if what else "Decide which one is right", _IN_FORCE)
+        for what, _, do in parts
+    )
 
 
 def _one_each(name: str, sentences: Sequence[str], verdict: str, good: str, remedy: str) -> tuple[Check, ...]:
     if not sentences:
         return (plain(name, PASS, good),)
-    return tuple(plain(name, verdict, _sentence(text), remedy, "the readings in force") for text in sentences)
+    return tuple(plain(name, verdict, _sentence(text), remedy, _IN_FORCE) for text in sentences)
 
 
 def _sentence(text: str) -> str:

@@ -4,13 +4,23 @@ from __future__ import annotations
 
 import math
 
-from spikeward.rules.checks.subject import Subject, as_percent, capital, graded, not_evaluated, number, plain
+from spikeward.rules.checks.subject import (
+    Subject,
+    as_percent,
+    capital,
+    graded,
+    near_limits,
+    not_evaluated,
+    number,
+    plain,
+)
 from spikeward.rules.outcomes import FAIL, PASS, Check
 from spikeward.rules.prepared import PreparedVessel
 from spikeward.rules.records import OVER_RANGE, Reading
-from spikeward.rules.rounding import figure, percent
+from spikeward.rules.rounding import figure
 from spikeward.rules.rulebook import Limits, Top
 from spikeward.rules.solve.transform import VesselSignal, unusable, vessel_name, vessel_signal
+from spikeward.rules.words import freedom
 
 
 def units(subject: Subject, limits: Limits) -> Check:
@@ -44,7 +54,8 @@ def linear_top(subject: Subject, limits: Limits) -> Check:
         return plain("linear_top", FAIL, sentence, "Declare the top in the unit of the export, under range")
     where = next(vessel for vessel, r in _read(subject) if r.signal == largest)
     placed = f"{capital(where)} reads {figure(largest)} {top.unit}"
-    sentence = f"{placed}, {as_percent(largest / top.signal)} of the linear top {figure(top.signal)} {top.unit}"
+    share = near_limits(largest / top.signal, limits, 3)
+    sentence = f"{placed}, {share} of the linear top {figure(top.signal)} {top.unit}"
     if any("blank" in reading.already for reading in subject.readings):
         sentence += ", after the export had taken its blank off"
     return graded("linear_top", largest / top.signal, limits, sentence, remedy, show=as_percent)
@@ -65,9 +76,9 @@ def precision(subject: Subject, limits: Limits) -> Check:
     floor = (number(limits, "floor") or 0.0) * max(abs(vessel.mean) for vessel in _usable(subject))
     scaled = [((vessel.sd or 0.0) / size if size else 0.0, vessel.readings - 1)
               for vessel in vessels for size in [max(abs(vessel.mean), floor)]]  # fmt: skip
-    freedom = sum(n for _, n in scaled)
-    pooled = math.sqrt(math.fsum(n * s * s for s, n in scaled) / freedom)
-    sentence = f"Readings of one vessel repeat to {percent(pooled)} ({freedom} degrees of freedom)"
+    within = sum(n for _, n in scaled)
+    pooled = math.sqrt(math.fsum(n * s * s for s, n in scaled) / within)
+    sentence = f"Readings of one vessel repeat to {near_limits(pooled, limits)} ({freedom(within)})"
     return graded(
         "precision", pooled, limits, sentence, "Look at the nebuliser, the furnace or the contacts; read again",
         show=as_percent,

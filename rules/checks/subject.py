@@ -7,9 +7,10 @@ from dataclasses import dataclass, field
 
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WARN, Check
 from spikeward.rules.records import Batch, Reading, SeriesKey
-from spikeward.rules.rounding import figure, percent
+from spikeward.rules.rounding import figure, percent, percent_apart
 from spikeward.rules.rulebook import Limits, Rulebook
 from spikeward.rules.solve.solved import Background, Solved
+from spikeward.rules.words import line_words
 
 LineKey = tuple[str, str]  # analyte, line
 
@@ -76,11 +77,6 @@ class Subject:
         return tuple(r for vessel in self.solved.prepared.vessels if not vessel.excluded for r in vessel.readings)
 
 
-def line_words(analyte: str, line: str) -> str:
-    """An analyte and its spectral line as people say them: the line alone where it names the analyte."""
-    return (line if analyte in line else f"{analyte} {line}") if line else analyte
-
-
 def capital(text: str) -> str:
     """A sentence with a capital letter, unless it begins with a file's or a solution's name."""
     return text[:1].upper() + text[1:] if text.split(" ", 1)[0].isalpha() else text
@@ -120,6 +116,21 @@ def plain(name: str, verdict: str, sentence: str, remedy: str = "", source: str 
     return Check(name, verdict, sentence, source=source, remedy="" if verdict == PASS else remedy)
 
 
+def near_limits(value: float, limits: Limits, digits: int = 2) -> str:
+    """A fraction in per cent, told apart from the limits that it is held against."""
+    bounds: list[float] = []
+    for name in _WORDS:
+        bound = limits.values.get(name)
+        if bound is not None:
+            bounds += bound if isinstance(bound, tuple) else (bound,)
+    return percent_apart(value, bounds, digits)
+
+
+def source_of(limits: Limits, limit: str, check: str) -> str:
+    """Where a limit comes from, and under which key of the rule file it is changed."""
+    return "; ".join(part for part in (limits.sources.get(limit, ""), f"key checks: {check}") if part)
+
+
 def as_percent(value: float) -> str:
     """A fraction as limits show it."""
     return percent(value, 3)
@@ -150,7 +161,7 @@ def graded(
     if not asked:
         return not_evaluated(name, f"the rules ask for no limit; {_lower_first(sentence)}", "", observed, unit)
     verdict = PASS if not broken else FAIL if broken[0].startswith("fail") else WARN
-    source = limits.sources.get(broken[0] if broken else asked[0], "")
+    source = source_of(limits, broken[0] if broken else asked[0], name)
     told = "; ".join(f"{_WORDS[limit]} {_shown(limits, limit, show)}" for limit in sorted(asked, reverse=True))
     return Check(
         name, verdict, f"{sentence} ({told}).", observed, unit, told, source, "" if verdict == PASS else remedy

@@ -13,7 +13,9 @@ from spikeward.rules.solve.transform import mean_of, place_of, unusable, vessel_
 def background_of(readings: Sequence[Reading]) -> Background | None:
     """The mean background of a batch for one analyte on one line: the mean over vessels of their mean readings.
 
-    A vessel is known by its vessel name or, where names give none, by its solution. A reading below detection or over
+    A vessel is known by the sample and vessel that its name gives, and only where the naming rule gives neither by its
+    solution's name: ``BLK1_r1`` and ``BLK1_r2`` are readings of one vessel, not two (type A evaluation of a mean, JCGM
+    100:2008, 4.2.3: the observations must be independent). A reading below detection or over
     range makes the background unknown (leaving it out would shift the mean); one that is missing or faulty is left out.
 
     Parameters
@@ -33,6 +35,12 @@ def background_of(readings: Sequence[Reading]) -> Background | None:
                 readings,
                 f"the background is in {unit or 'no unit'} in one place and in {reading.unit or 'no unit'} in another "
                 f"({place_of(reading)}): export it in one unit",
+            )
+        if "blank" in reading.already:
+            return _unknown(
+                readings,
+                f"the export says that the blank was taken off the background {reading.solution} ({place_of(reading)}) "
+                "already and it was not taken off this series: export all solutions in the same way",
             )
         if reading.qualifier in (NOT_DETECTED, OVER_RANGE):
             return _unknown(readings, f"the background {reading.solution} ({place_of(reading)}) {_censored(reading)}")
@@ -57,7 +65,9 @@ def _unknown(readings: Sequence[Reading], problem: str) -> Background:
 def _mean(readings: Sequence[Reading], kept: Sequence[Reading], left_out: Sequence[Reading]) -> Background:
     vessels: dict[tuple[str, str], list[Reading]] = {}
     for reading in kept:
-        vessels.setdefault((reading.series.sample, reading.vessel or reading.solution), []).append(reading)
+        named = bool(reading.series.sample or reading.vessel)
+        place = (reading.series.sample, reading.vessel) if named else ("", reading.solution)
+        vessels.setdefault(place, []).append(reading)
     means = [vessel_signal(vessel).mean for vessel in vessels.values()]
     n = len(means)
     notes = [f"the background {r.solution} ({place_of(r)}) holds no number and was left out" for r in left_out]

@@ -24,6 +24,7 @@ class Fit:
     """One series of ``Fits``: the same names as plain numbers."""
 
     vessels: float
+    weight: float
     dof: float
     slope: float
     slope_uncertainty: float
@@ -49,11 +50,13 @@ class Fits:
 
     Contents in the unit of x, ``slope`` in y per x, ``covariance`` in y squared per x. ``dof`` is vessels - 2, and the
     uncertainties are not a number where it is not positive. ``background_effect`` is the change of ``content`` per unit
-    by which the background of all vessels rises. ``spread`` is the root of ``sxx``. ``exact``: residuals are
-    rounding only. ``flat``: y does not change with x beyond rounding. ``one_x``: all x are equal.
+    by which the background of all vessels rises. ``weight`` is the sum of weights, means and sums of squares are
+    weighted, and ``residual_sd`` is of y in a vessel of weight 1. ``spread`` is the root of ``sxx``. ``exact``: residuals
+    are rounding only. ``flat``: y does not change with x beyond rounding. ``one_x``: all x are equal.
     """
 
     vessels: Floats
+    weight: Floats
     dof: Floats
     slope: Floats
     slope_uncertainty: Floats
@@ -84,14 +87,14 @@ def fit_lines(x: Floats, y: Floats, w: Floats, shift: Floats) -> Fits:
     ----------
     x : contents added, shape (vessels, series)
     y : volume-corrected signals, same shape
-    w : 1 for a vessel that is fitted, 0 for padding
+    w : weight of a vessel that is fitted, in inverse proportion to the variance of its y; 0 for padding
     shift : dy/dB with its sign turned, by which y falls when the background rises; final volume over aliquot
 
     Notes
     -----
-    u(C0) = (s/|b|) sqrt(1/n + ybar²/(b² Sxx)) with C0 = a/b: the covariance of intercept and slope is in it, and no
+    u(C0) = (s/|b|) sqrt(1/Sw + ybar²/(b² Sxx)) with C0 = a/b: the covariance of intercept and slope is in it, and no
     term for a separate reading of the unknown (Miller and Miller, Statistics and Chemometrics for Analytical
-    Chemistry, chapter 5; Bruce and Gill, J. Chem. Educ. 76 (1999) 805).
+    Chemistry, chapter 5, with the weighted line there; Bruce and Gill, J. Chem. Educ. 76 (1999) 805).
     """
     with np.errstate(all="ignore"):  # what overflows or has no value is recognised by its result
         x_power, y_power = _power_of_two(x), _power_of_two(y)
@@ -110,31 +113,32 @@ def _power_of_two(rows: Floats) -> NDArray[np.int32]:
 def _scaled(
     x: Floats, y: Floats, w: Floats, shift: Floats, x_power: NDArray[np.int32], y_power: NDArray[np.int32]
 ) -> Fits:
-    n = _total(w)
-    x_mean, y_mean, shift_mean = _total(w * x) / n, _total(w * y) / n, _total(w * shift) / n
-    dx, dy = w * (x - x_mean), w * (y - y_mean)
-    sxx, sxy, syy = _total(dx * dx), _total(dx * dy), _total(dy * dy)
+    n, sw = _total(np.where(w > 0.0, 1.0, 0.0)), _total(w)
+    x_mean, y_mean, shift_mean = _total(w * x) / sw, _total(w * y) / sw, _total(w * shift) / sw
+    dx, dy = x - x_mean, y - y_mean
+    sxx, sxy, syy = _total(w * dx * dx), _total(w * dx * dy), _total(w * dy * dy)
     slope = sxy / sxx
     residuals = dy - slope * dx
     dof = n - 2.0
-    s = np.sqrt(_total(residuals * residuals) / np.where(dof > 0, dof, np.nan))
+    s = np.sqrt(_total(w * residuals * residuals) / np.where(dof > 0, dof, np.nan))
     exact = s <= DUST
     s = np.where(exact, 0.0, s)
     intercept = y_mean - slope * x_mean
     content = intercept / slope
     y_over_slope = y_mean / slope
-    shift_slope = _total(dx * shift) / sxx
+    shift_slope = _total(w * dx * shift) / sxx
     effect = -((shift_mean - shift_slope * x_mean) - content * shift_slope) / slope
     spread = np.sqrt(sxx)
     u_slope = s / spread
-    step = spread / np.sqrt(n)
+    step = spread / np.sqrt(sw)
     return Fits(
         vessels=n,
+        weight=sw,
         dof=dof,
         slope=np.ldexp(slope, y_power - x_power),
         slope_uncertainty=np.ldexp(u_slope, y_power - x_power),
         intercept=np.ldexp(intercept, y_power),
-        intercept_uncertainty=np.ldexp(s * np.sqrt(1.0 / n + x_mean * x_mean / sxx), y_power),
+        intercept_uncertainty=np.ldexp(s * np.sqrt(1.0 / sw + x_mean * x_mean / sxx), y_power),
         covariance=np.ldexp(-x_mean * u_slope * u_slope, 2 * y_power - x_power),
         residual_sd=np.ldexp(s, y_power),
         correlation=np.maximum(-1.0, np.minimum(1.0, sxy / (spread * np.sqrt(syy)))),
@@ -142,7 +146,7 @@ def _scaled(
         sxx=np.ldexp(sxx, 2 * x_power),
         spread=np.ldexp(spread, x_power),
         content=np.ldexp(content, x_power),
-        fit_uncertainty=np.ldexp(s / np.abs(slope) * np.sqrt(1.0 / n + y_over_slope * y_over_slope / sxx), x_power),
+        fit_uncertainty=np.ldexp(s / np.abs(slope) * np.sqrt(1.0 / sw + y_over_slope * y_over_slope / sxx), x_power),
         background_effect=np.ldexp(effect, x_power - y_power),
         exact=exact,
         flat=np.abs(slope) * step <= DUST,

@@ -13,8 +13,16 @@ from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.records import BatchKey
 from spikeward.rules.solve.line import Fit, Fits, fit_lines
 from spikeward.rules.solve.solved import Background, Solved
-from spikeward.rules.solve.transform import Transformed, transform
-from spikeward.rules.solve.verdict import EXACT_FIT, NEGATIVE, ONE_ADDITION, OUT_OF_RANGE, insignificant, unsolvable
+from spikeward.rules.solve.transform import Transformed, transform, weights_of
+from spikeward.rules.solve.verdict import (
+    EXACT_FIT,
+    NEGATIVE,
+    NEGATIVE_AS_READ,
+    ONE_ADDITION,
+    OUT_OF_RANGE,
+    insignificant,
+    unsolvable,
+)
 from spikeward.rules.uncertainty.fieller import g_value, half_widths, t_quantile
 from spikeward.rules.uncertainty.interval import Component, FitPart, is_finite, printed
 
@@ -49,8 +57,9 @@ def _fit(transformed: Sequence[Transformed]) -> Fits:
     deepest = max((len(one.rows) for one in transformed), default=0)
     packed = np.zeros((4, max(deepest, 1), len(transformed)))
     for column, one in enumerate(transformed):
+        weights = weights_of(one.rows)
         for row, (x, y, shift, _) in enumerate(one.rows):
-            packed[:, row, column] = (x, y, 1.0, shift)
+            packed[:, row, column] = (x, y, weights[row], shift)
     return fit_lines(*packed)
 
 
@@ -73,6 +82,7 @@ def _solved(line: PreparedLine, transformed: Transformed, fit: Fit, coverage: fl
     refused = unsolvable(rows, (fit.slope, fit.intercept, fit.content), fit.flat, fit.one_x)
     if refused:
         return replace(bare, no_number=refused)
+    least = min(row[2] for row in rows)  # a weight of 1 belongs to it, and here to V = V0
     g = g_value(t_quantile(dof, coverage), fit.slope, fit.slope_uncertainty) if dof > 0 else None
     drawn = replace(
         bare,
@@ -82,17 +92,17 @@ def _solved(line: PreparedLine, transformed: Transformed, fit: Fit, coverage: fl
         intercept=fit.intercept,
         intercept_uncertainty=_known(fit.intercept_uncertainty),
         covariance=_known(fit.covariance),
-        residual_sd=_known(fit.residual_sd),
+        residual_sd=_known(fit.residual_sd / least),
         correlation=_known(fit.correlation),
         g=_known(g),
         x_mean=fit.x_mean,
-        sxx=fit.sxx,
+        sxx=_known(fit.sxx / (least * least)),
     )
     refused = insignificant(fit.slope, g)
     if refused:
         return replace(drawn, no_number=refused)
     if fit.content < 0.0:
-        drawn = replace(drawn, notes=(*drawn.notes, NEGATIVE))
+        drawn = replace(drawn, notes=(*drawn.notes, NEGATIVE if drawn.subtracted else NEGATIVE_AS_READ))
     number = _without_scatter(drawn, fit, coverage) if g is None else _with_interval(drawn, fit, g, coverage)
     within = is_finite(number.content) and is_finite(number.in_sample)
     return number if within else replace(drawn, no_number=OUT_OF_RANGE)
@@ -119,7 +129,7 @@ def _without_scatter(drawn: Solved, fit: Fit, coverage: float) -> Solved:
 
 def _with_interval(drawn: Solved, fit: Fit, g: float, coverage: float) -> Solved:
     line, back = drawn.prepared, drawn.prepared.way_back
-    halves = half_widths(fit.content, fit.x_mean, fit.spread, drawn.degrees_of_freedom + 2, g)
+    halves = half_widths(fit.content, fit.x_mean, fit.spread, fit.weight, g)
     part = FitPart(fit.content, fit.fit_uncertainty, halves, drawn.degrees_of_freedom)
     rest = background_component(drawn.background, fit.background_effect)
     reason = EXACT_FIT if fit.exact else ""

@@ -32,6 +32,8 @@ class Background:
 class Solved:
     """One line after the fit. Without a number ``no_number`` says why, and ``content`` and ``in_sample`` are None.
 
+    The line is fitted with weights (V0/V)², for noise that is constant in the signal; ``correlation``, ``x_mean`` and
+    ``sxx`` are weighted so, and ``residual_sd`` is that of a vessel of weight 1: in signal, at V = V0.
     ``slope`` is in signal per content, ``intercept`` and ``residual_sd`` in signal, ``x_mean`` in content, ``sxx`` in
     content squared, ``covariance`` (of intercept and slope) in signal squared per content. They stay where the line
     could be fitted even if it gives no number. ``g`` is t² u(slope)² / slope² at the coverage asked for.
@@ -39,7 +41,8 @@ class Solved:
     ``fit_uncertainty`` its standard uncertainty; ``background_effect`` is the change of the content per unit of
     background signal. ``effective_degrees_of_freedom`` belong to ``in_sample``, or to ``content`` where that is None.
     ``points`` stand in the order of the vessels; an excluded vessel without a measured signal has none.
-    ``background`` is what was subtracted; ``blank`` is in the unit of ``in_sample``.
+    ``background`` is what was subtracted; ``blank`` is in the unit of ``in_sample``, the mean
+    of ``blanks`` process blanks.
     """
 
     prepared: PreparedLine
@@ -64,6 +67,17 @@ class Solved:
     effective_degrees_of_freedom: int = 0
     background: Background | None = None
     blank: float | None = None
+    blanks: int = 0
     blank_note: str = ""
     preparation: str = ""
     notes: tuple[str, ...] = ()
+
+    @property
+    def net_by_export(self) -> bool:
+        """Whether the export says that it took the blank off its signals."""
+        return any("blank" in r.already for v in self.prepared.vessels if not v.excluded for r in v.readings)
+
+    @property
+    def subtracted(self) -> bool:
+        """Whether anything was taken off: a background here or in the export, or a process blank."""
+        return self.net_by_export or self.background is not None or self.blank is not None

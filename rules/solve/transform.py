@@ -40,7 +40,8 @@ class VesselSignal:
 class Transformed:
     """One line ready for the fit: the points of all vessels, and ``rows`` of those that are fitted.
 
-    A row is (x, y, shift, signal): ``shift`` is dy/dB, by which y falls when the background rises by one.
+    A row is (x, y, shift, signal): ``shift`` is V/V0, by which y falls when the background rises by one and by which
+    the noise of the signal is larger in y.
     """
 
     points: tuple[Point, ...]
@@ -49,6 +50,22 @@ class Transformed:
     problem: str = ""
     notes: tuple[str, ...] = ()
     blank_note: str = ""
+
+
+def weights_of(rows: Sequence[tuple[float, float, float, float]]) -> tuple[float, ...]:
+    """The weights of the rows of one line, the largest of them 1.
+
+    The noise of signals is taken as constant, so u(y) = u(S) V / V0 and w is in proportion to (V0 / V)²: equal weights
+    wherever every vessel holds the same share of test solution. (Weights by the inverse variance: Miller and Miller,
+    Statistics and Chemometrics for Analytical Chemistry, chapter 5.)
+
+    Returns
+    -------
+    a weight of zero where volumes are too far apart to be calculated with
+    """
+    least = min((row[2] for row in rows), default=1.0)
+    ratios = [least / row[2] if row[2] > 0.0 else 0.0 for row in rows]
+    return tuple(ratio * ratio for ratio in ratios)
 
 
 def vessel_signal(readings: Sequence[Reading]) -> VesselSignal:

@@ -5,6 +5,8 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
+from spikeward.rules.solve.transform import weights_of
+
 ONE_ADDITION = (
     "one addition leaves no degree of freedom: the scatter is not known, so no uncertainty follows from these readings"
 )
@@ -12,6 +14,7 @@ EXACT_FIT = (
     "every point lies exactly on the line: the readings show no scatter, and an uncertainty of zero is not a real one"
 )
 NEGATIVE = "the content is below zero: look for a blank or background that was subtracted too high"
+NEGATIVE_AS_READ = "the content is below zero though nothing was subtracted: look at the zero of the instrument"
 OUT_OF_RANGE = "the result is too large or too small to be calculated with: look for a wrong unit"
 
 Row = tuple[float, float, float, float]
@@ -33,6 +36,8 @@ def unsolvable(rows: Sequence[Row], fitted: tuple[float, float, float], flat: bo
         return "a volume, an addition or a signal is not a number: look at the preparation of this series"
     if any(math.isinf(value) for row in rows for value in row):
         return "a volume, an addition or a signal is too large to be calculated with: look for a wrong unit"
+    if not all(weight > 0.0 for weight in weights_of(rows)):
+        return OUT_OF_RANGE
     if all(row[0] == 0.0 for row in rows):
         return "no vessel received an addition: without one the response is not known"
     if one_x:

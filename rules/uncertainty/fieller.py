@@ -37,7 +37,7 @@ def g_value(t: float, slope: float, slope_uncertainty: float) -> float:
     return ratio * ratio
 
 
-def half_widths(content: float, x_mean: float, spread: float, vessels: int, g: float) -> tuple[float, float]:
+def half_widths(content: float, x_mean: float, spread: float, weight: float, g: float) -> tuple[float, float]:
     """The lower and the upper half of Fieller's interval around intercept over slope.
 
     The ends are the roots C of (a - b C)² = t² (u_a² - 2 C u_ab + C² u_b²), written so that nothing cancels.
@@ -45,9 +45,9 @@ def half_widths(content: float, x_mean: float, spread: float, vessels: int, g: f
     Parameters
     ----------
     content : a/b
-    x_mean : mean of the added contents
-    spread : sqrt(Sxx), in the unit of content
-    vessels : number of points on the line
+    x_mean : weighted mean of the added contents
+    spread : sqrt(Sxx), weighted, in the unit of content
+    weight : sum of the weights, with equal weights of one the number of vessels
     g : below 1, see ``g_value``
 
     Returns
@@ -62,6 +62,6 @@ def half_widths(content: float, x_mean: float, spread: float, vessels: int, g: f
         raise ValueError("the interval has no end: the slope does not differ from zero")
     reach = math.sqrt(g) / (1.0 - g)
     middle = content + x_mean
-    half = reach * math.hypot(math.sqrt((1.0 - g) / vessels) * spread, middle)
+    half = reach * math.hypot(math.sqrt((1.0 - g) / weight) * spread, middle)
     offset = reach * math.sqrt(g) * middle
     return half - offset, half + offset

@@ -93,6 +93,7 @@ def printed(fit: FitPart, rest: Sequence[Component], unit: str, coverage: float,
             interval=(fit.content - lower, fit.content + upper),
             coverage=coverage,
             reason=reason,
+            effective_degrees_of_freedom=nu,
         ),
         nu,
     )

@@ -11,7 +11,7 @@ import pytest
 
 from spikeward.daemon.watch import SCAN_EVERY, SHARE_OF_TIME
 
-SERIES = 500  # of four vessels, a file each
+SERIES = 5000  # of four vessels, a file each
 IN_A_BATCH = 50
 SECONDS = 30.0
 QUIET = 5.0

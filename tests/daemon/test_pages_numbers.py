@@ -17,11 +17,11 @@ from spikeward.daemon.pages.numbers import (
     machine,
     shown,
     twelve_digits,
-    unit_shown,
     value_shown,
 )
 from spikeward.daemon.pages.text import encodable, one_line, visible
 from spikeward.rules.outcomes import Estimate
+from spikeward.rules.words import unit_words
 
 finite = st.floats(allow_nan=False, allow_infinity=False)
 any_text = st.text(st.characters(codec=None, categories=None))
@@ -54,7 +54,7 @@ def test_coverage_or_the_reason_stands_beside_a_result():
 
 
 def test_units_as_people_write_them():
-    assert [unit_shown(code) for code in ("ug/L", "1", "umol/L", "mg/kg", "units")] == [
+    assert [unit_words(code) for code in ("ug/L", "1", "umol/L", "mg/kg", "units")] == [
         "µg/L", "", "µmol/L", "mg/kg", "units",
     ]  # fmt: skip
 

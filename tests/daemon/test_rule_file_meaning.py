@@ -128,7 +128,7 @@ def second_preparation(text: str) -> Edit:
         ([("# content: 10 mg/L", "content: 10 mg/L")], "R031", "standards.Mix-7", "delete one"),
         ([("contents: {Cd: 10.02 mg/L, Pb: 50.1 mg/L}", "analyte: Cd")], "R010", "standards.Mix-7", "content"),
         ([("10.02 mg/L", "10.02 mg/kg")], "R015", "standards.Mix-7.contents.Cd", "mass per mass"),
-        ([("10.02 mg/L", "10,02 mg/L")], "R014", "Cd", "point"),
+        ([("10.02 mg/L", "10,02 mg/L")], "R014", "standards.Mix-7.contents.Cd", "point"),
         (
             [("{Cd: 10.02 mg/L, Pb: 50.1 mg/L}", "\n      Cd: 10,02 mg/L")],
             "R015",
@@ -201,7 +201,7 @@ def second_preparation(text: str) -> Edit:
             "did you mean fail_below?",
         ),
         ([("fail_below: 0.995", "warn_outside: [1, 2]")], "R012", "checks.correlation.warn_outside", "fail_below"),
-        ([("fail_below: 0.995", "fail_below: 0,995")], "R014", "fail_below", "point"),
+        ([("fail_below: 0.995", "fail_below: 0,995")], "R014", "checks.correlation.fail_below", "point"),
         ([("[80 %, 120 %]", "[120 %, 80 %]")], "R031", "checks.reference.fail_outside", "not below"),
         ([("[80 %, 120 %]", "80 %")], "R011", "checks.reference.fail_outside", "two limits"),
         ([("[80 %, 120 %]", "[80 %]")], "R011", "checks.reference.fail_outside", "two limits"),

@@ -110,7 +110,7 @@ def test_a_caret_stands_below_the_place():
     text = "a: 1\nb: {c: 1, c: 2}\n"
     _, problems = compose(text, "rules.yaml")
     place, line, caret = problems[0].block_text(text).split("\n")
-    assert place.startswith("rules.yaml:2:11: c: R005 ")
+    assert place.startswith("rules.yaml:2:11: b.c: R005 ")
     assert line[caret.index("^") :].startswith("c: 2}")
 
 

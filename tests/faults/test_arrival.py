@@ -524,3 +524,26 @@ def test_a_late_file_makes_no_revision_while_a_source_is_missing(station: Statio
     station.equals(fresh(tmp_path, RULES, series("N1", 1)))
 
 
+
+
+def test_a_result_that_a_person_deletes_is_solved_from_what_is_there(
+    station: Station, clock: Clock, tmp_path: Path
+) -> None:
+    """What the board says to do about a missing source helps while the daemon runs, too."""
+    station.put_all(series("N1", 1) | {"N1_01_A2 too.csv": vessel("N1", 1, 2, slip=1.02)})
+
+    def take_away(life: Life) -> None:
+        assert flags(station) == ["N1_01.fail.flag"]
+        (station.data / "N1_01_A2 too.csv").unlink()
+
+    def delete_results(life: Life) -> None:
+        assert any("source missing" in notice for notice in life.notices())
+        for path in station.out.glob("N1_01.*"):
+            path.unlink()
+        clock.sleep(60.0)
+
+    life = lives(str(station.home), clock, take_away, delete_results)
+    assert life.notices() == []
+    assert flags(station) == ["N1_01.warn.flag"]
+    swept(str(station.home), clock)
+    station.equals(fresh(tmp_path, RULES, series("N1", 1)))

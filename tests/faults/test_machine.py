@@ -68,7 +68,7 @@ def test_a_full_disk_makes_it_late_and_nothing_else(
         station.put("a/odd too.csv", UNREADABLE)
         station.put("a/decisions.yaml", DECISION)
         (station.data / "a/odd.csv").unlink()
-        (station.home / "rules.yaml").write_text(CLOSING.replace("settle: 1 s", "settle: 0.9 s"))
+        (station.home / "rules.yaml").write_text(CLOSING.replace("settle: 1 s", "settle: 0.5 s"))
 
     def room_again(life: Life) -> None:
         assert disk.refused

@@ -50,7 +50,7 @@ def test_levels_are_compared_as_numbers_and_a_batch_may_be_absent():
         ("Batch;Sample;Mass;DM;Dilution\nMD1;7;0,5 g;92;\n", "such as DM [%]", 2, "DM"),
         ("Batch;Sample;Mass;DM;Dilution\nMD1;;0,5 g;;\n", "the sample is missing", 2, "Sample"),
         ("Batch;Sample;Mass;DM\nMD1;7;0,5 g;\n", "lacks 'Dilution'", 1, None),
-        ("Batch;Sample;Mass;DM;Dilution\nMD1;7;0,5 g\n", "3 cells where the headings have 5", 2, "DM"),
+        ("Batch;Sample;Mass;DM;Dilution\nMD1;7;0,5 g\n", "3 cells where the headings have 5", 2, None),
         ("Batch;Sample;Mass [g];DM;Dilution\nMD1;7;1,234;;\n", "declare decimal", 2, "Mass [g]"),
         ("Batch;Sample;Mass [g];DM;Dilution\n", "followed by no rows", 1, None),
     ],

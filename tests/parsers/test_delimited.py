@@ -21,6 +21,7 @@ from spikeward.rules.records import (
     Layout,
     Table,
     Unreadable,
+    WideColumn,
 )
 
 LONG = Layout(
@@ -170,7 +171,7 @@ def test_a_wide_table_has_a_column_for_each_analyte():
     layout = Layout(
         "wide",
         columns={"solution": "Name", "order": "No"},
-        wide={"Cd 214 (A)": ("Cd", "Cd 214.4"), "Pb": ("Pb", "")},
+        wide={"Cd 214 (A)": WideColumn("Cd", "Cd 214.4"), "Pb": WideColumn("Pb")},
         not_detected=("n.d.",),
     )
     entries = read("No;Name;Pb [A];Cd 214 (A)\n7;X1;n.d.;0.5\n8;X2;0.25;0.7\n", layout).entries
@@ -276,9 +277,9 @@ def test_headings_may_be_declared_apart_from_the_columns():
         (HEAD.replace("Line", "Signal [A]") + ROW, "lacks 'Line'", 1, None),
         (HEAD.replace("Measured", "Measured,Signal") + ROW, "stands over columns 4 and 7", 1, "Signal"),
         (HEAD + ROW + "X,Cd,Cd 214.4,A,2026-03-04,\n", "'A' is not a number", 3, "Signal"),
-        (HEAD + ROW + "X,Cd,0.5,A,2026-03-04\n", "5 cells where the headings have 6", 3, "Measured"),
-        (HEAD + ROW + "X,Cd,Cd 214,4,0.5,A,2026-03-04\n", "7 cells where the headings have 6", 3, "7"),
-        (HEAD + ROW + "X,Cd", "the file may be torn", 3, "Line"),
+        (HEAD + ROW + "X,Cd,0.5,A,2026-03-04\n", "5 cells where the headings have 6", 3, None),
+        (HEAD + ROW + "X,Cd,Cd 214,4,0.5,A,2026-03-04\n", "7 cells where the headings have 6", 3, None),
+        (HEAD + ROW + "X,Cd", "the file may be torn", 3, None),
         (HEAD + ROW + '"X,Cd,Cd 214.4,0.5,A,2026-03-04\n' + ROW, "opened in this row and never closed", 3, None),
         (HEAD + ROW + '"X"1,Cd,Cd 214.4,0.5,A,2026-03-04\n', "must be doubled", 3, None),
         (HEAD, "followed by no rows", 1, None),
@@ -390,7 +391,7 @@ def test_a_cell_without_end_is_refused():
 LAYOUTS = [
     LONG, SMALL, MEANS, replace(SMALL, unit_row=True, ends_at=("Mean",)), replace(SMALL, end_marker="End"),
     replace(SMALL, columns={**SMALL.columns, "mass": "Mass", "dilution": "Dilution"}, comment_prefix="#"),
-    Layout("wide", wide={"Signal": ("Cd", ""), "Mean": ("Pb", "x")}, unit="A"),
+    Layout("wide", wide={"Signal": WideColumn("Cd"), "Mean": WideColumn("Pb", "x", signal_rsd="RSD")}, unit="A"),
 ]  # fmt: skip
 PIECES = st.sampled_from([
     "Solution", "Signal", "Mean", "RSD", "N", "Mass", "Mass [g]", "Dilution", "Element", "Line", "Unit", "Measured",

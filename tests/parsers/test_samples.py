@@ -6,7 +6,7 @@ from pathlib import Path
 import pytest
 
 from spikeward.parsers.delimited import READER
-from spikeward.rules.records import Layout, Unreadable
+from spikeward.rules.records import Layout, Unreadable, WideColumn
 
 SAMPLES = Path(__file__).parent / "samples"
 CASES = [
@@ -19,7 +19,7 @@ CASES = [
 def layout_of(options: dict) -> Layout:
     made = {name: tuple(value) if isinstance(value, list) else value for name, value in options.items()}
     if "wide" in made:
-        made["wide"] = {heading: tuple(meaning) for heading, meaning in made["wide"].items()}
+        made["wide"] = {heading: WideColumn(*meaning) for heading, meaning in made["wide"].items()}
     return Layout("sample", **made)
 
 

@@ -9,11 +9,11 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from spikeward.rules.checks.subject import line_words
 from spikeward.rules.outcomes import Estimate
 from spikeward.rules.records import SeriesKey
 from spikeward.rules.rounding import figure, percent, rounded
 from spikeward.rules.sentences import estimate_words, series_name
+from spikeward.rules.words import line_words
 
 
 @pytest.mark.parametrize(
