@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 import argparse
+import os
 import sys
 from collections.abc import Sequence
 from importlib.metadata import version
+from io import TextIOWrapper
 
+from spikeward.daemon.names import shown
 from spikeward.daemon.trouble import Trouble
 
 _EPILOG = """examples:
@@ -144,16 +147,38 @@ def main(arguments: Sequence[str] | None = None) -> int:
     -------
     the exit code: 0 all is well, 1 something needs a person or still waits, 2 it could not run
     """
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")  # a terminal that lacks a sign still gets the sentence
     options = build_parser().parse_args(arguments)
     try:
-        return _run(options)
+        code = _run(options)
+        sys.stdout.flush()
     except Trouble as trouble:
-        print(f"spikeward: {trouble}", file=sys.stderr)
-        return 2
+        return _give_up(str(trouble))
     except KeyboardInterrupt:
         return 2
     except BrokenPipeError:
-        return 2
+        return _nobody_listens()
+    except OSError as error:
+        where = f"{shown(str(error.filename))}: " if error.filename is not None else ""
+        return _give_up(f"{where}{error.strerror or error}; what was published stands, run it again once mended")
+    return code
+
+
+def _give_up(sentence: str) -> int:
+    try:
+        print(f"spikeward: {sentence}", file=sys.stderr)
+        sys.stdout.flush()
+    except OSError:
+        return _nobody_listens()
+    return 2
+
+
+def _nobody_listens() -> int:
+    """Output cannot be written (a closed pipe, a full disk): nothing more is said, not even at the end."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    return 2
 
 
 def _run(options: argparse.Namespace) -> int:

@@ -82,6 +82,11 @@ def batch_stem(key: BatchKey) -> str:
     return _limited(_led(_escaped(key.batch, _UNSAFE_PART)), (key.batch,))
 
 
+def batch_words(key: BatchKey) -> str:
+    """A batch as a sentence names it: by its own name, else by its folder."""
+    return shown(key.batch or key.folder or key.root)
+
+
 def stems(keys: Iterable[SeriesKey]) -> tuple[dict[SeriesKey, str], set[SeriesKey]]:
     """The stem of each series, and the series whose files a folder could not tell apart.
 

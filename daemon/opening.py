@@ -86,7 +86,8 @@ def open_station(config: str, json_log: bool = False, disk: Disk | None = None) 
         except (Locked, LedgerDamaged, JournalRefused, JournalUnavailable) as refused:
             raise Trouble(str(refused)) from None
         except OSError as error:
-            raise Trouble(f"{error.filename or state}: {error.strerror}; the state folder must be writable") from None
+            said = f"{shown(str(error.filename or state))}: {error.strerror}"
+            raise Trouble(f"{said}; state, watched and output folders must be folders that can be written") from None
         sentences = [*warnings, *journal.sentences, *ledger.sentences]
         for sentence in sentences:
             log.warning("opened", note=sentence)

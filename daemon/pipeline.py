@@ -21,7 +21,7 @@ from spikeward.daemon.disk import Disk
 from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.intake import Intake
 from spikeward.daemon.ledger import EventLog, RuleTexts
-from spikeward.daemon.names import unread_name
+from spikeward.daemon.names import batch_words, unread_name
 from spikeward.daemon.orphans import Orphans
 from spikeward.daemon.output import Output
 from spikeward.daemon.pages.facts import Notice
@@ -300,7 +300,7 @@ class Pipeline:
     def remedies(self) -> list[str]:
         """How to solve closed batches again that stand under other rules than the present ones."""
         other = sorted(
-            key.batch or key.folder or key.root
+            batch_words(key)
             for key, closing in self.closings.closed.items()
             if closing.rules_digest != self.rules.digest or closing.calculation_version != CALCULATION_VERSION
         )

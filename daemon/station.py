@@ -3,13 +3,16 @@
 from __future__ import annotations
 
 import os
+import stat
 from collections.abc import Callable
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 
+from spikeward.daemon.names import shown
 from spikeward.daemon.rule_file.load import load_rules
 from spikeward.daemon.rule_file.problems import Problem
+from spikeward.daemon.rule_file.yaml_text import LARGEST
 from spikeward.daemon.trouble import Trouble
 from spikeward.rules.rulebook import Rulebook, Watch
 
@@ -36,15 +39,20 @@ def read_rule_file(path: str | Path) -> RuleFile:
     ------
     Trouble : the file cannot be opened or is not text
     """
-    place = Path(path)
-    if not place.is_file():
-        raise Trouble(f"{path}: there is no such rule file; give the path of a YAML file")
+    place, name = Path(path), shown(str(path))
     try:
-        text = place.read_bytes().decode("utf-8")
+        if not stat.S_ISREG(place.stat().st_mode):
+            raise Trouble(f"{name}: this is not a file; give the path of a YAML file")
+        with place.open("rb") as file:
+            text = file.read(LARGEST + 1).decode("utf-8")
+    except FileNotFoundError:
+        raise Trouble(f"{name}: there is no such rule file; give the path of a YAML file") from None
     except UnicodeDecodeError as error:
-        raise Trouble(f"{path}: byte {error.start + 1} is not UTF-8; save the rule file as UTF-8") from None
+        raise Trouble(f"{name}: byte {error.start + 1} is not UTF-8; save the rule file as UTF-8") from None
     except OSError as error:
-        raise Trouble(f"{path}: {error.strerror}; make the rule file readable") from None
+        raise Trouble(f"{name}: {error.strerror}; give the path of a rule file that can be read") from None
+    except ValueError as error:
+        raise Trouble(f"{name}: {error}; give the path of a YAML file") from None
     rules, problems = load_rules(text, place.name)
     return RuleFile(place, text, rules, problems)
 

@@ -6,7 +6,7 @@ import sys
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
-from spikeward.daemon.names import shown
+from spikeward.daemon.names import batch_words, shown
 from spikeward.daemon.opening import open_station
 from spikeward.daemon.pipeline import Pipeline
 from spikeward.daemon.solving import Solved
@@ -137,7 +137,7 @@ def report(pipeline: Pipeline, solved: Sequence[Solved]) -> list[str]:
             f"{counts[verdict]} {verdict}" for verdict in ("fail", "waiting", "warn", "pass") if verdict in counts
         )
         state = "closed" if one.outcome.closed else "open"
-        lines.append(f"batch {one.batch.key.batch or one.batch.key.folder or one.batch.key.root}: {told} ({state})")
+        lines.append(f"batch {batch_words(one.batch.key)}: {told or 'no series yet'} ({state})")
     lines += pipeline.needs_a_person()
     lines += pipeline.remedies()
     return lines

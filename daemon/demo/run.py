@@ -30,6 +30,8 @@ def demo(folder: str, pace: float, seed: int) -> int:
     Trouble : the folder is not empty, or cannot be made
     """
     home = Path(folder)
+    if not folder:
+        raise Trouble("the demo needs a folder; give the name of a new one")
     if home.exists() and (not home.is_dir() or any(home.iterdir())):
         raise Trouble(f"{folder} is not an empty folder; give the name of a new one")
     invented = night(seed)
