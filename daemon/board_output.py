@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Collection, Iterable
+from contextlib import AbstractContextManager
 from dataclasses import dataclass, field
 
 from spikeward.daemon.names import BOARD, SUMMARY, TABLE, batch_stem, stems
@@ -35,11 +36,11 @@ class BoardOutput:
         if self._last.get(key) == (outcome, mine):
             return
         stem = batch_stem(key)
-        self.records.publish_files(
-            self.folder_of(key.root, key.folder),
-            {stem + BOARD: render_board(outcome, mine, links, self.station), stem + TABLE: render_csv(outcome)},
-        )
-        self._last[key] = (outcome, mine)
+        files = {stem + BOARD: render_board(outcome, mine, links, self.station), stem + TABLE: render_csv(outcome)}
+        self._last.pop(key, None)
+        with self.records.refusals.apart(key, key.root, key.folder):
+            self.records.publish_files(self.folder_of(key.root, key.folder), files)
+            self._last[key] = (outcome, mine)
 
     def publish_folders(
         self, notices: Iterable[Noticed], batches: Collection[BatchKey], places: Collection[Place]
@@ -48,6 +49,7 @@ class BoardOutput:
 
         ``places`` are the folders in which such a board may stand from earlier; it goes when nothing is left to say.
         """
+        self.records.refusals.forget(lambda key: isinstance(key, tuple) and key[0] == "board")
         with_batch = {(key.root, key.folder) for key in batches}
         found: dict[Place, list[Notice]] = {}
         for root, folder, notice in notices:
@@ -55,10 +57,15 @@ class BoardOutput:
                 found.setdefault((root, folder), []).append(notice)
         for (root, folder), mine in sorted(found.items(), key=lambda item: item[0]):
             board = render_board(None, mine, {}, self.station, folder or root)
-            self.records.publish_files(self.folder_of(root, folder), {"folder" + BOARD: board})
+            with self._apart(root, folder):
+                self.records.publish_files(self.folder_of(root, folder), {"folder" + BOARD: board})
         nameless = {(key.root, key.folder) for key in batches if not key.batch}
         for root, folder in sorted(set(places) - set(found) - nameless):
-            self.records.withdraw_file(self.folder_of(root, folder), "folder" + BOARD)
+            with self._apart(root, folder):
+                self.records.withdraw_file(self.folder_of(root, folder), "folder" + BOARD)
+
+    def _apart(self, root: str, folder: str) -> AbstractContextManager[None]:
+        return self.records.refusals.apart(("board", root, folder), root, folder)
 
 
 def _concerns(noticed: str, folder: str) -> bool:

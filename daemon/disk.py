@@ -13,6 +13,12 @@ from typing import NamedTuple, Protocol
 
 FILE, FOLDER, LINK, OTHER = "file", "folder", "link", "other"
 TEMPORARY = ".spikeward-tmp-"
+_OF_ONE_NAME = frozenset(
+    {
+        errno.EACCES, errno.EBUSY, errno.EEXIST, errno.EINVAL, errno.EISDIR, errno.ELOOP, errno.ENAMETOOLONG,
+        errno.ENOENT, errno.ENOTDIR, errno.ENOTEMPTY, errno.ENXIO, errno.EPERM, errno.ETXTBSY,
+    }
+)  # fmt: skip
 
 
 class Listed(NamedTuple):
@@ -23,6 +29,11 @@ class Listed(NamedTuple):
     size: int
     mtime_ns: int
     inode: int
+
+
+def concerns_one_name(error: OSError) -> bool:
+    """Whether a refusal is about the one file or folder it names, not about the whole disk, a share or the journal."""
+    return error.errno in _OF_ONE_NAME
 
 
 def temporary(path: str) -> str:
@@ -125,9 +136,13 @@ class RealDisk(Disk):
     def read(self, path: str, at_most: int | None = None) -> bytes:
         """See ``Disk``; never waits for a FIFO's other end."""
         handle = os.open(path, os.O_RDONLY | os.O_NOFOLLOW | os.O_NONBLOCK | os.O_CLOEXEC)
+        mode = os.fstat(handle).st_mode
+        if not stat.S_ISREG(mode):  # asked before it is wrapped, which would lose the path
+            os.close(handle)
+            if stat.S_ISDIR(mode):
+                raise OSError(errno.EISDIR, os.strerror(errno.EISDIR), path)
+            raise OSError(errno.EINVAL, "not a regular file", path)
         with open(handle, "rb") as file:
-            if not stat.S_ISREG(os.fstat(handle).st_mode):
-                raise OSError(errno.EINVAL, "not a regular file", path)
             data = file.read() if at_most is None else file.read(at_most + 1)
         if at_most is not None and len(data) > at_most:
             raise OSError(errno.EFBIG, os.strerror(errno.EFBIG), path)

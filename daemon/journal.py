@@ -6,6 +6,7 @@ Delete the journal and nothing but time is lost. So a damaged one is set aside a
 from __future__ import annotations
 
 import contextlib
+import math
 import os
 import sqlite3
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
@@ -37,6 +38,8 @@ MIGRATIONS: tuple[str, ...] = (
 _LOST = (sqlite3.SQLITE_CORRUPT, sqlite3.SQLITE_NOTADB)
 _MOVED = 1032  # SQLITE_READONLY_DBMOVED: the file was deleted or renamed while it was open
 _BUSY_S = 5.0
+_BRIEF_S = 0.5  # after the end was asked for
+_ENDINGS = ("", "-wal", "-shm", "-journal")  # of the files that belong together
 
 Answer = TypeVar("Answer")
 
@@ -57,7 +60,8 @@ class JournalUnavailable(OSError):
         self.strerror = f"the journal cannot be used now ({reason})"
 
     def __str__(self) -> str:
-        return f"{self.filename}: {self.strerror}. Work waits and goes on by itself."
+        remedy = "see that its folder can be written to, has room, and that no other program holds it; then start again"
+        return f"{self.filename}: {self.strerror}; {remedy}"
 
 
 class FileRecord(NamedTuple):
@@ -87,6 +91,12 @@ class Journal:
         self._depth = 0
         self._connection = self._open_or_rebuild()
 
+    def hurry(self) -> None:
+        """From now on another program that locks the journal is waited for only briefly: the end was asked for."""
+        self._busy_s = min(self._busy_s, _BRIEF_S)
+        with contextlib.suppress(sqlite3.Error):
+            self._connection.execute(f"pragma busy_timeout = {self._busy_s * 1000:.0f}")
+
     def close(self) -> None:
         """Fold the log into the journal and close it."""
         with contextlib.suppress(sqlite3.Error):
@@ -112,11 +122,7 @@ class Journal:
 
     def load_files(self) -> list[FileRecord]:
         """Every file that was read, in the order of root and path."""
-        rows = self._run(lambda db: db.execute("select * from files order by root, path").fetchall())
-        return [
-            FileRecord(os.fsdecode(row[0]), os.fsdecode(row[1]), _stamp(row[2:5]), row[5], row[6], row[7], row[8])
-            for row in rows
-        ]
+        return self._load("select * from files order by root, path", _file_record)
 
     def record_files(self, records: Iterable[FileRecord]) -> None:
         """Remember files as read, in place of what was known of the same paths; they are no longer waited for."""
@@ -134,8 +140,7 @@ class Journal:
 
     def load_waiting(self) -> list[Waited[tuple[str, str]]]:
         """The files that were being waited for, as ``Settling`` takes them."""
-        rows = self._run(lambda db: db.execute("select * from waiting order by root, path").fetchall())
-        return [Waited((os.fsdecode(row[0]), os.fsdecode(row[1])), _stamp(row[2:5]), row[5]) for row in rows]
+        return self._load("select * from waiting order by root, path", _waited)
 
     def record_waiting(self, waiting: Iterable[Waited[tuple[str, str]]]) -> None:
         """Remember these files, and only these, as being waited for."""
@@ -146,7 +151,7 @@ class Journal:
 
     def load_idle(self) -> dict[str, float]:
         """Seconds for which nothing has arrived, by the key's text."""
-        return dict(self._run(lambda db: db.execute("select key, seconds from idle").fetchall()))
+        return dict(self._load("select key, seconds from idle", _quiet))
 
     def record_idle(self, idle: Mapping[str, float]) -> None:
         """Remember these times, and only these."""
@@ -157,8 +162,8 @@ class Journal:
     def load_outputs(self) -> dict[tuple[str, str], set[str]]:
         """Digests of what may stand under each output (folder, name) by our own hand."""
         found: dict[tuple[str, str], set[str]] = {}
-        for folder, name, sha256 in self._run(lambda db: db.execute("select * from outputs").fetchall()):
-            found.setdefault((os.fsdecode(folder), name), set()).add(sha256)
+        for folder, name, sha256 in self._load("select * from outputs", _output):
+            found.setdefault((folder, name), set()).add(sha256)
         return found
 
     def intend_outputs(self, folder: str, files: Mapping[str, str]) -> None:
@@ -172,6 +177,14 @@ class Journal:
         with self.together():
             self._many("delete from outputs where folder = ? and name = ? and sha256 <> ?", rows)
             self._many("insert or ignore into outputs values (?, ?, ?)", rows)
+
+    def _load(self, query: str, meaning: Callable[[Sequence[Any]], Answer]) -> list[Answer]:
+        """What the rows of a query mean; a journal with a row that means nothing is no better than a damaged one."""
+        try:
+            return [meaning(row) for row in self._run(lambda db: db.execute(query).fetchall())]
+        except (TypeError, ValueError):
+            self._rebuild("holds something that no journal holds")
+            return []
 
     def _many(self, statement: str, rows: Sequence[Sequence[Any]]) -> None:
         def work(db: sqlite3.Connection) -> None:
@@ -189,7 +202,7 @@ class Journal:
         try:
             return work(self._connection)
         except sqlite3.DatabaseError as error:
-            if not _is_lost(error):
+            if not _is_lost(error) and " columns but " not in str(error):
                 raise JournalUnavailable(self._path, str(error)) from error
             self._rebuild(f"is damaged ({error})")
         try:
@@ -206,6 +219,8 @@ class Journal:
             raise JournalUnavailable(self._path, str(error)) from error
 
     def _open_or_rebuild(self) -> sqlite3.Connection:
+        if os.path.isdir(self._path):
+            self._set_aside("is a folder and no file")
         try:
             return self._open()
         except sqlite3.DatabaseError as error:
@@ -218,11 +233,11 @@ class Journal:
             raise JournalUnavailable(self._path, str(error)) from error
 
     def _open(self) -> sqlite3.Connection:
-        stands = os.path.exists(self._path) and os.path.getsize(self._path) > 0
         db = sqlite3.connect(self._path, timeout=self._busy_s, isolation_level=None)
         try:
             _check(db)
-            if stands and not _version(db):
+            stands = os.path.getsize(self._path) > 0  # after the check, which takes back what was never finished
+            if _version(db) < 0 or (stands and not _version(db)):
                 raise _lost("what is left of it is no journal")
             self._migrate(db)
             db.execute("pragma journal_mode = wal")
@@ -253,6 +268,10 @@ class Journal:
         """Begin anew; whatever transaction was open begins anew with it, without what was recorded in it so far."""
         with contextlib.suppress(sqlite3.Error):
             self._connection.close()
+        try:
+            os.makedirs(os.path.dirname(self._path) or ".", exist_ok=True)
+        except OSError as error:
+            raise JournalUnavailable(self._path, str(error)) from error
         self._set_aside(why)
         self._connection = self._open_or_rebuild()
         if self._depth:
@@ -260,11 +279,11 @@ class Journal:
 
     def _set_aside(self, why: str) -> None:
         number = 1
-        while os.path.exists(f"{self._path}.damaged-{number}"):
+        while os.path.lexists(f"{self._path}.damaged-{number}"):
             number += 1
         aside = f"{self._path}.damaged-{number}"
         try:
-            for ending in ("", "-wal", "-shm"):
+            for ending in _ENDINGS:
                 with contextlib.suppress(FileNotFoundError):
                     os.replace(self._path + ending, aside + ending)
         except OSError as error:
@@ -305,5 +324,31 @@ def _numbers(stamp: Stamp) -> tuple[int, str, str]:
     return stamp.size, str(stamp.mtime_ns), str(stamp.inode)
 
 
+def _file_record(row: Sequence[Any]) -> FileRecord:
+    _must_be(row, bytes, bytes, int, str, str, str, str, str, str)
+    return FileRecord(os.fsdecode(row[0]), os.fsdecode(row[1]), _stamp(row[2:5]), row[5], row[6], row[7], row[8])
+
+
+def _waited(row: Sequence[Any]) -> Waited[tuple[str, str]]:
+    _must_be(row, bytes, bytes, int, str, str, float)
+    return Waited((os.fsdecode(row[0]), os.fsdecode(row[1])), _stamp(row[2:5]), row[5])
+
+
+def _quiet(row: Sequence[Any]) -> tuple[str, float]:
+    _must_be(row, str, float)
+    return row[0], row[1]
+
+
+def _output(row: Sequence[Any]) -> tuple[str, str, str]:
+    _must_be(row, bytes, str, str)
+    return os.fsdecode(row[0]), row[1], row[2]
+
+
 def _stamp(row: Sequence[Any]) -> Stamp:
     return Stamp(row[0], int(row[1]), int(row[2]))
+
+
+def _must_be(row: Sequence[Any], *types: type) -> None:
+    """Columns take values of any type, whatever they were declared as; times are finite."""
+    if tuple(map(type, row)) != types or not all(math.isfinite(each) for each in row if type(each) is float):
+        raise TypeError

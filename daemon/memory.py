@@ -4,11 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
+from spikeward.daemon.claims import Claim
 from spikeward.daemon.codec import decode_bench, decode_table, encode_bench, encode_table
 from spikeward.daemon.holdings import Content
 from spikeward.daemon.journal import FileRecord, Journal
 from spikeward.daemon.pipeline import Pipeline
-from spikeward.daemon.reading import ReadReply
+from spikeward.daemon.reading import ReadReply, is_sound
 
 _TABLE, _BENCH, _UNREAD = "table", "bench", "unread"
 
@@ -36,12 +37,23 @@ def recall(pipeline: Pipeline, journal: Journal) -> None:
         claim = next((each for each in pipeline.intake.claims(place) if each.key == record.layout_digest), None)
         if claim is None:
             continue
-        table = decode_table(record.payload) if record.kind == _TABLE else None
-        bench = decode_bench(record.payload) if record.kind == _BENCH else ()
-        sentence = record.payload if record.kind == _UNREAD else ""
-        content = Content(record.sha256, table, bench, sentence, claim.layout)
+        content = _content(record, claim)
+        if content is None:
+            continue
         pipeline.touched |= pipeline.intake.hold(place, record.stamp, record.layout_digest, content)
         pipeline.unsaid.add(place)
+
+
+def _content(record: FileRecord, claim: Claim) -> Content | None:
+    """What was read then; None where the record makes no sense, so that the file is read again."""
+    try:
+        table = decode_table(record.payload) if record.kind == _TABLE else None
+        bench = decode_bench(record.payload) if record.kind == _BENCH else ()
+    except (ValueError, TypeError, IndexError, RecursionError):
+        return None
+    if record.kind not in (_TABLE, _BENCH, _UNREAD) or (table is not None and not is_sound(table)):
+        return None
+    return Content(record.sha256, table, bench, record.payload if record.kind == _UNREAD else "", claim.layout)
 
 
 def _text(content: Content) -> tuple[str, str]:

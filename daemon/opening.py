@@ -11,7 +11,7 @@ from dataclasses import dataclass, field
 
 from spikeward.daemon.disk import Disk, RealDisk
 from spikeward.daemon.journal import Journal, JournalRefused, JournalUnavailable
-from spikeward.daemon.ledger import Ledger, LedgerDamaged, RuleTexts
+from spikeward.daemon.ledger import Ledger, LedgerDamaged, RuleTexts, history_lost
 from spikeward.daemon.lock import Held, Identity, Locked, acquire, acquire_stations
 from spikeward.daemon.log import Log
 from spikeward.daemon.mounts import network_kind, read_mounts
@@ -29,20 +29,26 @@ class Opened:
     rule_file: RuleFile
     pipeline: Pipeline
     journal: Journal
+    ledger: Ledger
     log: Log
     locks: tuple[Held, ...]
     sentences: list[str] = field(default_factory=list)  # what a person should know of the opening
-    _told: int = 0
+    _told: int = field(init=False)
+    _told_of_ledger: int = field(init=False)
+
+    def __post_init__(self) -> None:
+        self._told, self._told_of_ledger = len(self.journal.sentences), len(self.ledger.sentences)
 
     def new_sentences(self) -> list[str]:
         """What the state folder has to say since the last call: a journal begun anew, a lock that was taken away."""
         told, self._told = self._told, len(self.journal.sentences)
+        told_of_ledger, self._told_of_ledger = self._told_of_ledger, len(self.ledger.sentences)
         lost = [
             f"The lock {shown(lock.path)} was taken away: a second daemon could start. Start this one again."
             for lock in self.locks
             if lock.lost()
         ]
-        return self.journal.sentences[told:] + lost
+        return self.journal.sentences[told:] + self.ledger.sentences[told_of_ledger:] + lost
 
 
 @contextmanager
@@ -80,6 +86,7 @@ def open_station(config: str, json_log: bool = False, disk: Disk | None = None) 
             journal = Journal(f"{state}/journal.sqlite")
             stack.callback(journal.close)
             ledger = Ledger(disk, f"{state}/ledger.jsonl")
+            warnings += history_lost(disk, f"{state}/ledger.jsonl", {places.outputs(watch) for watch in rules.watches})
             texts = RuleTexts(disk, f"{state}/rules")
             texts.keep(rules.digest, rule_file.text)
             pipeline = Pipeline(places, rules, disk, ledger, texts, Records(disk, journal), wall_clock)
@@ -91,4 +98,4 @@ def open_station(config: str, json_log: bool = False, disk: Disk | None = None) 
         sentences = [*warnings, *journal.sentences, *ledger.sentences]
         for sentence in sentences:
             log.warning("opened", note=sentence)
-        yield Opened(rule_file, pipeline, journal, log, (lock, *held), sentences, len(journal.sentences))
+        yield Opened(rule_file, pipeline, journal, ledger, log, (lock, *held), sentences)

@@ -10,7 +10,8 @@ from dataclasses import dataclass, field, replace
 from typing import Any
 
 from spikeward.daemon.changes import quoted, what_changed
-from spikeward.daemon.disk import Disk
+from spikeward.daemon.disk import FILE, Disk
+from spikeward.daemon.earlier import earlier_result
 from spikeward.daemon.ledger import EventLog
 from spikeward.daemon.names import RESULT, SUMMARY, series_stem, shown, stems
 from spikeward.daemon.pages.facts import Notice, Revision
@@ -80,13 +81,16 @@ class Output:
     def publish(self, batch: BatchOutcome, check_all: bool = False) -> list[SeriesKey]:
         """Publish what changed in a batch; with ``check_all`` also restore what a person deleted or edited.
 
+        A series of which one file cannot be read or written is kept back and stands in the refusals of ``records``;
+        a later call with the same batch publishes it.
+
         Returns
         -------
         the series whose files were written
 
         Raises
         ------
-        OSError : the disk does not take it now; a later call with the same batch finishes what was begun
+        OSError : the disk does not take anything now; a later call with the same batch finishes what was begun
         """
         named, clashing = stems(outcome.key for outcome in batch.outcomes)
         changed = []
@@ -95,15 +99,33 @@ class Output:
                 outcome = _clash(outcome, [other for other in clashing if other != outcome.key])
             if check_all or self._outcomes.get(outcome.key) != outcome:
                 changed.append(outcome)
-        sheaves = [sheaf for outcome in changed if (sheaf := self._sheaf(outcome, named[outcome.key])) is not None]
+        for outcome in changed:
+            self._outcomes.pop(outcome.key, None)  # until it is published whole
+        sheaves = self._sheaves(changed, named)
         events = [sheaf.revision for sheaf in sheaves if sheaf.revision is not None]
         if events:
             self.ledger.append(*events)
         for event in events:
             self.take(event)
-        written = [sheaf.outcome.key for sheaf in sheaves if self._write(sheaf)]
-        self._outcomes.update((outcome.key, outcome) for outcome in changed if outcome.key not in self.held)
-        return written
+        self._forget_refusals(batch)
+        return [sheaf.outcome.key for sheaf in sheaves if self._write(sheaf)]
+
+    def _sheaves(self, changed: Iterable[Outcome], named: Mapping[SeriesKey, str]) -> list[_Sheaf]:
+        sheaves = []
+        for outcome in changed:
+            key = outcome.key
+            with self.records.refusals.apart(key, key.root, key.folder):
+                sheaf = self._sheaf(outcome, named[key])
+                if sheaf is not None:
+                    sheaves.append(sheaf)
+        return sheaves
+
+    def _forget_refusals(self, batch: BatchOutcome) -> None:
+        """Those of series that the batch no longer has."""
+        keys = {outcome.key for outcome in batch.outcomes}
+        self.records.refusals.forget(
+            lambda key: isinstance(key, SeriesKey) and key.batch_key == batch.key and key not in keys
+        )
 
     def _sheaf(self, outcome: Outcome, stem: str) -> _Sheaf | None:
         """What is to be written for a series; None while a quoted source is missing."""
@@ -133,26 +155,22 @@ class Output:
         history = tuple(self.history.get(outcome.key, ()))
         files = {RESULT: sheaf.result, SUMMARY: render_summary(outcome, history, self.station)}
         flag = render_flag(outcome, sheaf.digest)
-        return self.records.publish(sheaf.folder, sheaf.stem, files, flag, outcome.verdict)
+        key, written = outcome.key, False
+        with self.records.refusals.apart(key, key.root, key.folder):
+            written = self.records.publish(sheaf.folder, sheaf.stem, files, flag, outcome.verdict)
+            self._outcomes[key] = outcome
+        return written
 
     def _standing(self, path: str) -> dict[str, Any] | None:
-        """The result that stands beside the data, None where there is none that can be read."""
-        if not self.disk.exists(path):
-            return None
-        try:
-            found = json.loads(self.disk.read(path))
-        except ValueError:
-            return None
-        return found if isinstance(found, dict) else None
+        """The result that stands beside the data, None where there is none of ours."""
+        found = self.disk.look(path)
+        return earlier_result(self.disk.read(path)) if found is not None and found.kind == FILE else None
 
     def _sources_there(self, key: SeriesKey, before: Mapping[str, Any] | None) -> bool:
         """Deleting raw data never retracts a result: while a quoted source is missing nothing is published."""
         if before is None:
             return True
-        try:
-            missing = sorted({path for path, _, digest in quoted(before) if not self.present(key, path, digest)})
-        except (KeyError, TypeError):
-            return True  # a person's edit, not a result of ours
+        missing = sorted({path for path, _, digest in quoted(before) if not self.present(key, path, digest)})
         if missing:
             names = ", ".join(shown(path) for path in missing)
             self.held[key] = Notice(

@@ -10,7 +10,7 @@ here may be lost and found again by a new look at the folders; what may not is i
 from __future__ import annotations
 
 import os
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Iterator
 from contextlib import suppress
 from dataclasses import dataclass, field
 
@@ -22,12 +22,14 @@ from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.intake import Intake
 from spikeward.daemon.ledger import EventLog, RuleTexts
 from spikeward.daemon.names import batch_words, unread_name
+from spikeward.daemon.notices import FEW, MANY, summed
 from spikeward.daemon.orphans import Orphans
 from spikeward.daemon.output import Output
 from spikeward.daemon.pages.facts import Notice
 from spikeward.daemon.pages.flag import render_unread
 from spikeward.daemon.reading import ReadJob, ReadReply
 from spikeward.daemon.records import Records
+from spikeward.daemon.refusals import Again
 from spikeward.daemon.solving import Solved, Solving
 from spikeward.daemon.station import Clock, Places, rules_from
 from spikeward.daemon.survey import Listing
@@ -55,6 +57,8 @@ class Pipeline:
     undecided: set[Place] = field(default_factory=set)  # decisions files that have settled, until they are adopted
     solved: dict[BatchKey, Solved] = field(default_factory=dict)
     rules_notice: Notice | None = None
+    _board_due: set[BatchKey] = field(default_factory=set)
+    _noticed: list[tuple[str, str, Notice]] = field(default_factory=list)
     intake: Intake = field(init=False)
     solving: Solving = field(init=False)
     decisions: DecisionBook = field(init=False)
@@ -126,11 +130,11 @@ class Pipeline:
         return sorted(solved, key=lambda one: one.batch.key)
 
     def publish(self, solved: Iterable[Solved], check_all: bool = False) -> list[SeriesKey]:
-        """Write what changed: results, summaries and flags, then the batch's board and table.
+        """Write what changed: results, summaries and flags; a series that is refused stands in the refusals.
 
         Raises
         ------
-        OSError : the disk does not take it now; the batches stay touched and a later call finishes
+        OSError : the disk does not take anything now; the batches stay touched and a later call finishes
         """
         written: list[SeriesKey] = []
         for one in solved:
@@ -138,6 +142,7 @@ class Pipeline:
             if self._stands(one):
                 written += self.output.publish(one.outcome, check_all)
             self.solved[one.batch.key] = one
+            self._board_due.add(one.batch.key)
             self.touched.discard(one.batch.key)
         return written
 
@@ -151,20 +156,38 @@ class Pipeline:
         every = self.solving.every()
         self.solved = {key: one for key, one in self.solved.items() if key in every}
         series = {outcome.key for one in self.solved.values() for outcome in one.outcome.outcomes}
-        orphans = Orphans(self.disk, self.ledger, self._folder_of, self._is_present, self.clock)
+        orphans = Orphans(self.disk, self.ledger, self._folder_of, self._is_present, self.clock, self.records.refusals)
         return orphans.withdraw(self._output_places(), series, self.solved)
 
     def _output_places(self) -> set[tuple[str, str]]:
         """Every root and output folder below it in which something was read."""
         return {(place[0], each.output_folder(place)) for each in self._holdings() for place in each.contents}
 
-    def publish_boards(self, keys: Iterable[BatchKey]) -> None:
-        """Write boards and tables of batches; slower than flags, so a running daemon does it when there is time."""
-        notices = self.notices()
-        for key in sorted(set(keys)):
-            if key in self.solved:
-                self.boards.publish(self.solved[key].outcome, notices)
-        self.boards.publish_folders(notices, self.solving.every(), self._output_places())
+    def publish_boards(self) -> None:
+        """Write the boards and tables of all batches."""
+        for _ in self.board_work(everything=True):
+            pass
+
+    def board_work(self, everything: bool = False) -> Iterator[BatchKey]:
+        """Write boards and tables where something changed, one batch a step: a running daemon does other work between."""
+        for _ in range(2):  # a board that is refused stands on the others
+            notices = self.notices()
+            due = set(self.solved) if everything or notices != self._noticed else self._board_due & set(self.solved)
+            self._noticed, self._board_due = notices, set()
+            for key in sorted(due):
+                if key in self.solved:
+                    self.boards.publish(self.solved[key].outcome, notices)
+                yield key
+            self.boards.publish_folders(notices, self.solving.every(), self._output_places())
+            if self.notices() == notices:
+                break
+
+    def try_again(self) -> Again:
+        """What was refused is due once more; nothing new has arrived for it."""
+        again = self.records.refusals.again(self.intake.roots, self.solving.every())
+        self.unsaid |= again.files
+        self._board_due |= again.boards
+        return again
 
     # ---- what time decides, entered as data --------------------------------------------------------------------------
 
@@ -256,8 +279,11 @@ class Pipeline:
     # ---- small answers -----------------------------------------------------------------------------------------------
 
     def notices(self) -> list[tuple[str, str, Notice]]:
-        """What a person should know besides results, as (root, output folder, notice)."""
-        found = self.intake.notices() + self.decisions.notices(self.solving.present)
+        """What a person should know besides results, as (root, output folder, notice); many of one kind summed up."""
+        return summed(self.intake.notices(), FEW) + summed(self._notices(), MANY)
+
+    def _notices(self) -> list[tuple[str, str, Notice]]:
+        found = self.decisions.notices(self.solving.present) + list(self.records.refusals.standing.values())
         for place, named in self.solving.present.named.items():
             folder = self.solving.present.output_folder(place)
             found += [(place[0], folder, Notice("unnamed", place[1], sentence)) for sentence in named.unnamed]
@@ -293,8 +319,11 @@ class Pipeline:
     def needs_a_person(self) -> list[str]:
         """One line for everything that is neither a result nor in order."""
         quiet = ("duplicate", "no reader")
+        every = dict.fromkeys(("", "", notice) for _, _, notice in self.intake.notices() + self._notices())
         return [
-            f"{each.kind}: {each.subject}: {each.sentence}" for _, _, each in self.notices() if each.kind not in quiet
+            f"{each.kind}: {each.subject}: {each.sentence}"
+            for _, _, each in summed(every, FEW)
+            if each.kind not in quiet
         ]
 
     def remedies(self) -> list[str]:
@@ -348,14 +377,15 @@ class Pipeline:
         content = self.solving.present.contents.get(place)
         folder = self._folder_of(root, self.solving.present.output_folder(place))
         name = path.rsplit("/", 1)[-1]
-        if content is not None and content.sentence:
-            self.records.publish_files(folder, {unread_name(name): render_unread(path, content.sentence)})
-        else:
-            self.records.withdraw_unread(folder, name)
+        with self.records.refusals.apart(("unread", root, path), root, self.solving.present.output_folder(place)):
+            if content is not None and content.sentence:
+                self.records.publish_files(folder, {unread_name(name): render_unread(path, content.sentence)})
+            else:
+                self.records.withdraw_unread(folder, name)
 
 
 _NO_SERIES = "no series has the sample '{}', while others wait for the bench file; compare how the names are written"
-_KEPT = "somebody had edited this file; the edit was kept aside under this name"
+_KEPT = "somebody had edited or replaced this file; the edit was kept aside under this name"
 
 
 def _below(folder: str, where: str) -> bool:

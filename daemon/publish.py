@@ -2,17 +2,19 @@
 
 ``known`` holds the SHA-256 digests of everything that was published, or was about to be, under the names in question.
 Bytes on the disk that are neither known nor the new ones are a person's edit and are kept aside. Without ``known``
-(the journal was lost) nobody can tell, and the file is replaced.
+(the journal was lost) nobody can tell, and the file is replaced. What is no regular file (a folder, a link, a pipe) is
+never ours: it is kept aside by its name alone, without being opened or followed.
 """
 
 from __future__ import annotations
 
 import hashlib
+import itertools
 import os
 from collections.abc import Collection, Mapping
 from dataclasses import dataclass
 
-from spikeward.daemon.disk import Disk
+from spikeward.daemon.disk import FILE, Disk
 from spikeward.daemon.names import VERDICTS, flag_name, unread_name
 
 
@@ -62,20 +64,22 @@ def publish_files(
     return work.done()
 
 
-def withdraw_unread(disk: Disk, folder: str, file_name: str, known: Collection[str] | None = None) -> bool:
-    """The file can be read after all, or is gone; whether there was a flag to take away."""
+def withdraw_unread(disk: Disk, folder: str, file_name: str, known: Collection[str] | None = None) -> Published | None:
+    """The file can be read after all, or is gone; None where there was no flag to take away."""
     work = _Work(disk, folder, known)
-    present = disk.exists(os.path.join(folder, unread_name(file_name)))
-    if present:
-        work.drop(unread_name(file_name))
-        work.sync()
-    return present
+    name = unread_name(file_name)
+    if not disk.exists(os.path.join(folder, name)):
+        return None
+    if work.stands(name):
+        work.drop(name)
+    work.sync()
+    return work.done()
 
 
 def _raise_flag(work: _Work, stem: str, flag: bytes, verdict: str) -> None:
     """Old content overwritten, then the file renamed: a listing never shows none or two."""
     target = flag_name(stem, verdict)
-    standing = [name for name in (flag_name(stem, each) for each in VERDICTS) if work.present(name)]
+    standing = [name for name in (flag_name(stem, each) for each in VERDICTS) if work.stands(name)]
     carrier = target if target in standing or not standing else standing[0]
     work.put(carrier, flag)
     for name in standing:
@@ -101,13 +105,21 @@ class _Work:
         self._kept: list[tuple[str, str]] = []
         self._unsynced = False
 
-    def present(self, name: str) -> bool:
-        return self._disk.exists(self._path(name))
+    def stands(self, name: str) -> bool:
+        """Whether a regular file has the name; anything else that has it is renamed."""
+        found = self._disk.look(self._path(name))
+        if found is not None and found.kind != FILE:
+            aside = self._free(name)
+            self._disk.rename(self._path(name), self._path(aside))
+            self._kept.append((name, aside))
+            self._unsynced = True
+            return False
+        return found is not None
 
     def put(self, name: str, data: bytes) -> None:
         """Bytes that stand there already are not written again."""
         self.files[name] = _digest(data)
-        if self.present(name):
+        if self.stands(name):
             standing = self._disk.read(self._path(name))
             if standing == data:
                 return
@@ -138,13 +150,20 @@ class _Work:
         """Copy a person's edit aside; a copy, so that the name itself is never without a file."""
         if self._known is None or _digest(standing) in self._known:
             return
-        number = 1
-        while self.present(f"{name}.kept-{number}"):
-            if self._disk.read(self._path(f"{name}.kept-{number}")) == standing:
+        for number in itertools.count(1):
+            aside = self._path(f"{name}.kept-{number}")
+            found = self._disk.look(aside)
+            if found is None:
+                self._disk.write_atomic(aside, standing)
+                self._kept.append((name, f"{name}.kept-{number}"))
+                return
+            if found.kind == FILE and self._disk.read(aside) == standing:
                 return  # kept by a run that was cut short
-            number += 1
-        self._disk.write_atomic(self._path(f"{name}.kept-{number}"), standing)
-        self._kept.append((name, f"{name}.kept-{number}"))
+
+    def _free(self, name: str) -> str:
+        """The first name for keeping something aside that nothing has."""
+        names = (f"{name}.kept-{number}" for number in itertools.count(1))
+        return next(aside for aside in names if not self._disk.exists(self._path(aside)))
 
     def _path(self, name: str) -> str:
         return os.path.join(self._folder, name)

@@ -9,7 +9,8 @@ import os
 import resource
 import signal
 import stat
-from contextlib import suppress
+from collections.abc import Callable, Iterator
+from contextlib import AbstractContextManager, contextmanager, nullcontext, suppress
 from dataclasses import dataclass
 from multiprocessing.connection import Connection
 from operator import attrgetter
@@ -54,8 +55,11 @@ class _NotYet(Exception):
     """The file cannot be read now; the message says why."""
 
 
-def read_file(job: ReadJob) -> ReadReply:
-    """Open, hash and read one file; whatever the file, the disk or a reader does wrong becomes a sentence."""
+def read_file(job: ReadJob, limited: Callable[[], AbstractContextManager[None]] = nullcontext) -> ReadReply:
+    """Open, hash and read one file; whatever the file, the disk or a reader does wrong becomes a sentence.
+
+    Only what a reader does with the bytes is ``limited``: it is not to blame for a slow share.
+    """
     try:
         content, stamp = _content(job.path)
     except Unreadable as refused:
@@ -70,9 +74,10 @@ def read_file(job: ReadJob) -> ReadReply:
         return _refused(job, _TOO_MUCH)
     digest = hashlib.sha256(content).hexdigest()
     try:
-        if isinstance(job.how, BenchRule):
-            return ReadReply(job.key, digest, stamp, bench=_bench(content, job.how, job.key[1]))
-        return ReadReply(job.key, digest, stamp, table=_table(content, job.how) if job.how else None)
+        with limited():
+            if isinstance(job.how, BenchRule):
+                return ReadReply(job.key, digest, stamp, bench=_bench(content, job.how, job.key[1]))
+            return ReadReply(job.key, digest, stamp, table=_table(content, job.how) if job.how else None)
     except Unreadable as refused:
         said = str(refused)
     except MemoryError:
@@ -130,7 +135,7 @@ def _bench(content: bytes, rule: BenchRule, path: str) -> tuple[BenchEntry, ...]
 
 def _table(content: bytes, layout: Layout) -> Table:
     table = reader_for(layout.format).read(content, layout)
-    if not _is_sound(table):
+    if not is_sound(table):
         raise Unreadable(f"the reader '{layout.format}' gave back something that is no table; repair the reader")
     return table
 
@@ -140,7 +145,7 @@ _texts = attrgetter(
 )  # fmt: skip
 
 
-def _is_sound(table: object) -> bool:
+def is_sound(table: object) -> bool:
     """Whether a reader gave back what it must; nothing else may leave the process."""
     return type(table) is Table and type(table.entries) is tuple and all(map(_is_sound_entry, table.entries))
 
@@ -158,26 +163,44 @@ def _is_sound_entry(entry: object) -> bool:
     )
 
 
-def serve(descriptor: int, seconds: float, memory: int) -> None:
-    """Read batches of files until the other end of the connection is closed.
+_TIMERS = {signal.ITIMER_PROF: signal.SIGPROF, signal.ITIMER_REAL: signal.SIGALRM}
+
+
+def serve(descriptor: int, seconds: float, patience: float, memory: int) -> None:
+    """Read files, each answered at once, until the other end of the connection is closed.
 
     Parameters
     ----------
     descriptor : of the connection, inherited
-    seconds : for one file; the timer's default action ends the process, even if the daemon is gone
+    seconds : of the processor, for one file
+    patience : seconds of the clock, for one file; both timers end the process even if the daemon is gone
     memory : bytes of address space beyond what is there after all imports
     """
-    signal.signal(signal.SIGALRM, signal.SIG_DFL)
+    for number in _TIMERS.values():
+        signal.signal(number, signal.SIG_DFL)
     signal.pthread_sigmask(signal.SIG_SETMASK, [])
     _limit(memory)
+    myself = os.getpid()
+
+    @contextmanager
+    def limited() -> Iterator[None]:
+        signal.setitimer(signal.ITIMER_PROF, seconds)
+        signal.setitimer(signal.ITIMER_REAL, patience)
+        try:
+            yield
+        finally:
+            for timer in _TIMERS:
+                signal.setitimer(timer, 0)
+
     with Connection(descriptor) as connection, suppress(EOFError, OSError):
         while True:
-            replies = []
             for job in connection.recv():
-                signal.setitimer(signal.ITIMER_REAL, seconds)
-                replies.append(read_file(job))
-                signal.setitimer(signal.ITIMER_REAL, 0)
-            connection.send(replies)
+                reply = read_file(job, limited)
+                if os.getpid() != myself:
+                    os._exit(0)  # a copy of this process that a reader made and forgot
+                connection.send(reply)
+    if os.getpgrp() == myself:
+        os.killpg(myself, signal.SIGKILL)  # what readers started and left running ends with this process
 
 
 def _limit(memory: int) -> None:

@@ -6,16 +6,17 @@ import os
 from collections import defaultdict
 from collections.abc import Mapping
 
-from spikeward.daemon.disk import Disk
+from spikeward.daemon.disk import FILE, Disk
 from spikeward.daemon.journal import Journal
 from spikeward.daemon.names import VERDICTS, flag_name, unread_name
 from spikeward.daemon.publish import Published, digests, publish, publish_files, withdraw_unread
+from spikeward.daemon.refusals import Refusals
 
 
 class Records:
     """Digests of everything that was published, in memory and (where there is one) in the journal.
 
-    ``kept`` collects the edits that were kept aside, as absolute paths.
+    ``kept`` collects the edits that were kept aside, as absolute paths; ``refusals`` what could not be written.
     """
 
     def __init__(self, disk: Disk, journal: Journal | None) -> None:
@@ -23,6 +24,7 @@ class Records:
         self._journal = journal
         self._known: dict[tuple[str, str], set[str]] = defaultdict(set)
         self.kept: list[str] = []
+        self.refusals = Refusals()
         if journal is not None:
             for place, found in journal.load_outputs().items():
                 self._known[place] |= found
@@ -42,16 +44,20 @@ class Records:
         return self._done(folder, publish_files(self._disk, folder, outputs, known))
 
     def withdraw_file(self, folder: str, name: str) -> None:
-        """Take away a file that has nothing left to say, if it is there."""
+        """Take away a file that has nothing left to say, if it is there; what is no file is not ours."""
         path = os.path.join(folder, name)
-        if self._disk.exists(path):
+        found = self._disk.look(path)
+        if found is not None and found.kind == FILE:
             self._disk.remove(path)
             self._disk.sync_folder(folder)
 
     def withdraw_unread(self, folder: str, file_name: str) -> bool:
         """Take away the flag of a file that can be read after all."""
         name = unread_name(file_name)
-        return withdraw_unread(self._disk, folder, file_name, self._known.get((folder, name)) or None)
+        done = withdraw_unread(self._disk, folder, file_name, self._known.get((folder, name)) or None)
+        if done is not None:
+            self._note_kept(folder, done)
+        return done is not None
 
     def _intend(self, folder: str, outputs: Mapping[str, bytes], names: list[str]) -> set[str] | None:
         """Enter the new digests before anything is written; what was known before tells edits from our own bytes.
@@ -76,13 +82,17 @@ class Records:
 
     def _standing(self, folder: str, names: list[str]) -> dict[str, set[str]]:
         paths = {name: os.path.join(folder, name) for name in names}
-        present = {name: self._disk.read(path) for name, path in paths.items() if self._disk.exists(path)}
+        found = {name: self._disk.look(path) for name, path in paths.items()}
+        present = {name: self._disk.read(paths[name]) for name, each in found.items() if each and each.kind == FILE}
         return {name: {digest} for name, digest in digests(present).items()}
 
     def _done(self, folder: str, published: Published) -> bool:
-        self.kept += [os.path.join(folder, new) for _, new in published.kept]
+        self._note_kept(folder, published)
         for name, digest in published.files.items():
             self._known[folder, name] = {digest}
         if self._journal is not None and published.written:
             self._journal.record_outputs(folder, published.files)
         return bool(published.written)
+
+    def _note_kept(self, folder: str, published: Published) -> None:
+        self.kept += [os.path.join(folder, new) for _, new in published.kept]

@@ -90,7 +90,7 @@ def sweep(
         solved = pipeline.solve(pipeline.solving.every())
     pipeline.publish(solved, check_all=True)
     pipeline.withdraw_orphans()
-    pipeline.publish_boards(one.batch.key for one in solved)
+    pipeline.publish_boards()
     return solved
 
 

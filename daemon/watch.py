@@ -15,6 +15,7 @@ from typing import TypeVar
 from spikeward.daemon.events import NATIVE, POLL, Hints, RootWatch
 from spikeward.daemon.idle import Idle
 from spikeward.daemon.journal import Journal
+from spikeward.daemon.lock import Locked
 from spikeward.daemon.log import Log
 from spikeward.daemon.memory import recall, remember
 from spikeward.daemon.mounts import read_mounts
@@ -23,8 +24,9 @@ from spikeward.daemon.pipeline import Pipeline
 from spikeward.daemon.rule_edits import RuleEdits
 from spikeward.daemon.solving import Solved
 from spikeward.daemon.survey import Listing, survey
+from spikeward.daemon.trouble import Trouble
 from spikeward.daemon.workers import Readers
-from spikeward.rules.records import SeriesKey
+from spikeward.rules.records import BatchKey, SeriesKey
 
 SCAN_EVERY = {POLL: 1.0, NATIVE: 15.0}  # s between looks at everything: the longest that a lost event makes a file late
 SHARE_OF_TIME = 50  # a look that takes long is repeated the more seldom: at most 1/50 of the time goes to looking
@@ -38,7 +40,11 @@ _TICK = 0.5  # s, the longest sleep: signals, rule edits and replies are looked 
 def watch_command(config: str, workers: int, json_log: bool) -> int:
     """Run `watch` from the command line until a signal ends it; the exit code."""
     stop = threading.Event()
-    with open_station(config, json_log=json_log) as opened, Readers(workers) as readers, stopping(stop):
+    with (
+        open_station(config, json_log=json_log) as opened,
+        Readers(workers) as readers,
+        stopping(stop, opened.journal.hurry),
+    ):
         Watching(opened, readers, time.monotonic).run(stop)
     return 0
 
@@ -61,11 +67,12 @@ def in_background(work: Callable[..., Answer], *arguments: object) -> Future[Ans
 
 
 @contextmanager
-def stopping(stop: threading.Event) -> Iterator[None]:
-    """SIGTERM, SIGINT and SIGHUP ask for an end; the series in hand is finished first."""
+def stopping(stop: threading.Event, hurry: Callable[[], None]) -> Iterator[None]:
+    """SIGTERM, SIGINT and SIGHUP ask for an end; the series in hand is finished first, and ``hurry`` is called."""
 
     def ask(number: int, frame: object) -> None:
         stop.set()
+        hurry()
 
     before = {number: signal.signal(number, ask) for number in (signal.SIGTERM, signal.SIGINT, signal.SIGHUP)}
     try:
@@ -82,8 +89,7 @@ class _Scan:
     full_due: float = 0.0
     due: float = 0.0  # of the hinted folders, and of files that settle
     hinted: set[str] = field(default_factory=set)
-    under_way: Future[Listing] | None = None
-    began: float = 0.0
+    under_way: Future[tuple[Listing, float]] | None = None
     not_before: float = 0.0
 
 
@@ -101,7 +107,9 @@ class Watching:
     _health_due: float = 0.0
     _time_due: float = 0.0
     _rules_changed: bool = False
+    _board_work: Iterator[BatchKey] | None = None
     _disk_wait: float = 0.0
+    _again_due: float = 0.0
     _idle: Idle = field(init=False)
     _edits: RuleEdits = field(init=False)
 
@@ -144,11 +152,19 @@ class Watching:
                     self.readers.wait(min(self._pause(), 0.02))
                 else:
                     self.hints.wake.wait(self._pause())
-        finally:
+        except Trouble:
+            self._end()  # another daemon works here now: nothing more is published
+            raise
+        except BaseException:
             self._finish()
+            raise
+        self._finish()
 
     def step(self) -> None:
-        """One turn: look, read, solve, publish, close. What the disk refuses is tried again after a pause."""
+        """One turn: look, read, solve, publish, close. What the disk refuses is tried again after a pause.
+
+        A refusal of one name keeps back only what it belongs to; the work pauses for what concerns the whole disk.
+        """
         now = self.monotonic()
         self._mind(now)
         self._look(now)
@@ -159,11 +175,8 @@ class Watching:
             self._publish(now)
             self._let_time_decide(now)
             if self._boards_due is not None and now >= self._boards_due and not self.readers.busy:
-                if self._rules_changed:
-                    self.pipeline.withdraw_orphans()
-                    self._rules_changed = False
-                self.pipeline.publish_boards(self.pipeline.solved)
-                self._boards_due = None
+                self._write_a_board()
+            self._tell_refusals()
         except OSError as error:
             self._disk_wait = now + DISK_PAUSE
             said = f"{error.strerror or error}; tried again in {DISK_PAUSE:.0f} s"
@@ -171,7 +184,7 @@ class Watching:
 
     def _pause(self) -> float:
         now = self.monotonic()
-        waits = [_TICK]
+        waits = [0.0 if self._board_work is not None else _TICK]
         waits += [min(scan.due, scan.full_due) - now for scan in self._scans.values() if scan.under_way is None]
         return max(0.001, min(waits))
 
@@ -204,12 +217,25 @@ class Watching:
         for watch in self._watches.values():
             if said := watch.check():
                 self.log.warning("events", note=said)
+        self._keep_locks()
         for sentence in self.opened.new_sentences():
             self.log.warning("state", note=sentence)
         with suppress(OSError):
             self.pipeline.touched |= {key.batch_key for key in self.pipeline.output.released()}
             self.journal.record_waiting(self.pipeline.intake.waiting())
             self.journal.record_idle(self._idle.seconds())
+
+    def _keep_locks(self) -> None:
+        """A lock that somebody took away is taken again, before a second daemon can have it."""
+        for lock in self.opened.locks:
+            try:
+                if lock.lost():
+                    lock.take_again()
+                    self.log.warning("state", file=lock.path, note="the lock was taken away, and was taken again")
+            except Locked as other:
+                raise Trouble(f"The lock {lock.path} was taken away meanwhile. {other}") from None
+            except OSError:
+                continue  # said with the sentences of the state folder
 
     def _look(self, now: float) -> None:
         for folder, below in self.hints.take().items():
@@ -229,26 +255,30 @@ class Watching:
         root = self.pipeline.intake.roots[folder]
         start = "" if now >= scan.full_due or len(scan.hinted) != 1 else next(iter(scan.hinted))
         scan.hinted.clear()
-        scan.began = now
         path = self.pipeline.places.inputs(root.watch)
-        scan.under_way = in_background(survey, self.pipeline.disk, path, start)
+        scan.under_way = in_background(self._timed_survey, path, start)
         scan.under_way.add_done_callback(lambda _: self.hints.wake.set())
+
+    def _timed_survey(self, path: str, start: str) -> tuple[Listing, float]:
+        """A listing and the seconds that it took, in the thread that lists."""
+        began = self.monotonic()
+        return survey(self.pipeline.disk, path, start), self.monotonic() - began
 
     def _end_look(self, folder: str, scan: _Scan, now: float) -> None:
         assert scan.under_way is not None
-        listing, scan.under_way = scan.under_way.result(), None
+        (listing, took), scan.under_way = scan.under_way.result(), None
         root = self.pipeline.intake.roots[folder]
         was_away = root.away
         self.readers.start(self.pipeline.see(folder, listing, now))
         if root.away != was_away:
             self.log.warning("share", folder=folder, note=root.away or "back")
             self._boards_due = now
-        took = now - scan.began
         scan.not_before = now + took
         if not listing.start:
             scan.full_due = now + max(SCAN_EVERY[self._watches[folder].backend], SHARE_OF_TIME * took)
         due = self.pipeline.intake.due_in(folder, now)
-        scan.due = now + (_FAR if due is None else due + 0.001)
+        # What was hinted at while the look was under way is looked at at once.
+        scan.due = now if scan.hinted else now + (_FAR if due is None else due + 0.001)
         scan.hinted.update(os.path.dirname(waited.place[1]) for waited in root.settling.waiting())
 
     # ---- reading, solving, publishing --------------------------------------------------------------------------------
@@ -267,13 +297,15 @@ class Watching:
                 self.log.warning("unread", file=reply.key[1], note=reply.sentence)
 
     def _publish(self, now: float) -> None:
+        again = self._try_again(now) - self.pipeline.touched
+        self.pipeline.touched |= again
         self.pipeline.catch_up()
         touched = self.pipeline.ready()
         if not touched:
             return
         self._idle.go_on(now)
         solved = self.pipeline.solve(touched)
-        self._idle.arrived(touched)
+        self._idle.arrived(touched - again)
         for one in solved:
             self._idle.arrived(changed_members(self.pipeline.solved.get(one.batch.key), one))
         written = self.pipeline.publish(solved)
@@ -282,6 +314,32 @@ class Watching:
             outcome = self.pipeline.output.outcome(key)
             self.log.info("published", batch=key.batch, sample=key.sample, role=key.role, verdict=outcome.verdict)
         self._boards_due = now + BOARDS_WITHIN if self._boards_due is None else self._boards_due
+
+    def _try_again(self, now: float) -> set[BatchKey]:
+        """What one name refused is tried again after a pause, which is no arrival of anything."""
+        if not self.pipeline.records.refusals.standing:
+            self._again_due = now + DISK_PAUSE
+        if now < self._again_due:
+            return set()
+        self._again_due = now + DISK_PAUSE
+        self._boards_due = now
+        again = self.pipeline.try_again()
+        self._rules_changed |= again.orphans
+        return again.series
+
+    def _tell_refusals(self) -> None:
+        for notice in self.pipeline.records.refusals.fresh():
+            self.log.error("not written", file=notice.subject, note=notice.sentence)
+
+    def _write_a_board(self) -> None:
+        """One board a turn: flags do not wait for boards."""
+        if self._board_work is None:
+            if self._rules_changed:
+                self.pipeline.withdraw_orphans()
+                self._rules_changed = False
+            self._board_work = self.pipeline.board_work()
+        if next(self._board_work, None) is None:
+            self._board_work, self._boards_due = None, None
 
     def _let_time_decide(self, now: float) -> None:
         """Series that waited long enough lapse; batches without closing members close."""
@@ -297,9 +355,12 @@ class Watching:
         """Publish what is in hand, and remember what would make the next start slower."""
         with suppress(OSError):
             self._publish(self.monotonic())
-            self.pipeline.publish_boards(self.pipeline.solved)
+            self.pipeline.publish_boards()
             self.journal.record_idle(self._idle.seconds())
             self.journal.record_waiting(self.pipeline.intake.waiting())
+        self._end()
+
+    def _end(self) -> None:
         for watch in self._watches.values():
             watch.stop()
         self.log.info("stopped")

@@ -27,7 +27,7 @@ _DIMENSIONS = {
 }
 _SUCH_AS = {"mass": "g", "dry_matter": "%", "aliquot": "mL", "addition": "mL", "final": "mL"}
 _PARTS = re.compile(
-    "([+-\N{MINUS SIGN}]?[0-9.,'\N{RIGHT SINGLE QUOTATION MARK}\\s]*(?:[eE][+-]?[0-9]+)?)(.*)", re.DOTALL
+    "([+\\-\N{MINUS SIGN}]?[0-9.,'\N{RIGHT SINGLE QUOTATION MARK}\\s]*(?:[eE][+-]?[0-9]+)?)(.*)", re.DOTALL
 )
 _BY_SIGN = {"": MISSING, "<": NOT_DETECTED, "≤": NOT_DETECTED, ">": OVER_RANGE, "≥": OVER_RANGE, "#": FAULTY}
 
@@ -57,7 +57,7 @@ def number_part(meaning: str, cell: Cell) -> Cell | None:
     number, unit = _parts(cell.text)
     if meaning == "dilution" and (unit or not number):
         return None
-    return Cell(number, cell.row, cell.column)
+    return Cell(number or cell.text, cell.row, cell.column)
 
 
 def quantity_text(meaning: str, cell: Cell, unit: str, numbers: Numbers) -> str:

@@ -42,7 +42,7 @@ def reader_for(name: str) -> Reader:
         raise Unreadable(f"no reader is called '{name}'; installed are {', '.join(formats())}")
     try:
         loaded: Reader = found[0].load()
-    except Exception as error:  # a package may fail in any way while it is loaded
+    except (Exception, SystemExit) as error:  # a package may fail in any way while it is loaded
         raise Unreadable(f"the reader '{name}' cannot be loaded ({type(error).__name__}); repair its package") from None
     if not callable(getattr(loaded, "read", None)):
         raise Unreadable(f"the reader '{name}' has no function read; repair its package")

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from collections import defaultdict
 from collections.abc import Iterable, Mapping
 from decimal import Decimal
+from itertools import pairwise
 
 import re2
 
@@ -18,6 +20,8 @@ from spikeward.rules.way_back import way_back
 from spikeward.rules.words import line_words
 
 Volumes = dict[str, float]
+
+_CONTRACTS = Decimal("1.02")
 
 
 def prepare(members: Members, batch: Batch, rules: Rulebook) -> tuple[PreparedLine, ...]:
@@ -171,19 +175,39 @@ def _additions(
             delivered[level] = Decimal(0)
         else:
             delivered[level] = None
+    known = set(levels)
     if preparation.deliveries == "each":
+        unknown = _level_between(declared, preparation)
+        if unknown is not None:
+            findings.lacks(f"the addition of level {unknown}, which every later vessel holds")
+            known = {level for level in levels if level_order(level) < level_order(unknown)}
+            delivered |= {level: None for level in declared if level not in known}
         total: Decimal | None = Decimal(0)
         for level in declared:
             step = delivered[level]
             total = None if total is None or step is None else total + step
             delivered[level] = total
     for level in levels:
-        if delivered[level] is None:
+        if delivered[level] is None and level in known:
             findings.fails(
                 f"no addition is known for level {level}; declare it under additions: levels, "
                 "or give it in the bench file, a column or the name"
             )
     return delivered
+
+
+def _level_between(levels: list[str], preparation: Preparation) -> str | None:
+    """The first level between others that is neither measured nor declared, so that its delivery is not known.
+
+    Where the rule file declares every level that was measured, its list is taken as it is. Levels may count in steps,
+    such as 0, 10, 20.
+    """
+    numbers = [int(level) for level in levels if level.isascii() and level.isdigit()]
+    if set(levels) <= set(preparation.additions) or len(numbers) < 2:
+        return None
+    steps = [after - before for before, after in pairwise(numbers)]
+    least = math.gcd(*steps)
+    return next((str(before + least) for before, step in zip(numbers, steps, strict=False) if step > least), None)
 
 
 def _volumes(
@@ -208,11 +232,12 @@ def _volumes(
     mixed = v0 + diluent + addition
     if preparation.level_0 == "undiluted" and not addition:
         volume = v0
-    elif preparation.design == "successive" or final is None:
+    elif final is None:
         volume = mixed
     else:
         volume = final.in_unit("mL")
-        if mixed > volume:
+        # What was mixed in one vessel and then measured may be a little less than the sum of its parts.
+        if mixed > volume * (_CONTRACTS if preparation.design == "successive" else 1):
             findings.fails(
                 f"level {level}: aliquot and additions ({mixed.normalize():f} mL) do not fit into the final volume "
                 f"({volume.normalize():f} mL); correct the volumes"

@@ -92,8 +92,8 @@ READER = Block((
     ), short="analyte"), "the heading of a signal column"),
           "Where each analyte has a column of its own: its heading, and the analyte, with the columns of its own "
           "scatter if there are any.",
-          example="{Cd 214 (A): {analyte: Cd, line: Cd 214.4, signal_sd: Cd SD, readings: N}, "
-                  "Pb (A): {analyte: Pb, signal_rsd: Pb RSD, readings: N}}", hidden=True),
+          example="{Cd 214 (A): {analyte: Cd, line: Cd 214.4, signal_sd: Cd SD, signal_rsd: Cd RSD, readings: N}, "
+                  "Pb (A): Pb}", hidden=True),
     Field("unit", kind.text(may_be_empty=True), "The unit of signals, where the file does not say it.", "",
           example="A", hidden=True),
     Field("unit_row", kind.switch(), "Whether the row under the headings holds units.", "no", example="no"),
@@ -194,7 +194,8 @@ PREPARATION = Block((
               "The volume of standard by level.", example="{0: 0 mL, 1: 0.25 mL, 2: 0.5 mL, 3: 0.75 mL}"),
     )), "The standard additions.", WITH_ITS_DEFAULTS),
     Field("level_0", kind.word("as the others", "undiluted"),
-          "undiluted: the level without addition was read on the test solution as it is.", "as the others", example="as the others"),
+          "undiluted: the level without addition was read on the test solution as it is.", "as the others",
+          example="as the others"),
     Field("diluent", kind.quantity("volume", example="50 mL"), "A buffer or solvent that every vessel holds.",
           example="50 mL", hidden=True),
     Field("sample", SAMPLE,

@@ -82,4 +82,5 @@ def kind_of(shape: Shape) -> str:
     if isinstance(shape, Limits):
         return "a map of limits such as {warn_above: 10 %}, or off"
     keys = ", ".join(field.name for field in shape.fields)
-    return f"a map with the keys {keys}" + (f" and {shape.others.called}" if shape.others else "")
+    alone = "".join(f"{kind_of(field.shape)}, or " for field in shape.fields if field.name == shape.short)
+    return f"{alone}a map with the keys {keys}" + (f" and {shape.others.called}" if shape.others else "")

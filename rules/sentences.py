@@ -29,7 +29,7 @@ def series_name(key: SeriesKey) -> str:
 def estimate_words(estimate: Estimate, basis: str = "") -> str:
     """A content with expanded uncertainty and unit, rounded for a report."""
     unit = f"{unit_words(estimate.unit)} {basis}".strip()
-    if estimate.expanded_uncertainty is None:
+    if not estimate.expanded_uncertainty:  # a scatter of zero is not a real one
         return f"{figure(estimate.content)} {unit}, uncertainty not known"
     value, spread = rounded(estimate.content, estimate.expanded_uncertainty)
     return f"{value} ± {spread} {unit}"
@@ -56,13 +56,14 @@ def result_sentence(result: Result, solved: Solved) -> str:
 
 
 def _details(result: Result, solved: Solved) -> list[str]:
-    estimate, parts = result.reported, []
-    if estimate is not None and estimate.expanded_uncertainty is not None:
+    estimate, parts, left = result.reported, [], freedom(result.degrees_of_freedom)
+    if estimate is not None and estimate.expanded_uncertainty:
         parts.append(f"{percent(estimate.coverage, 3)}{_coverage_factor(estimate, solved)}")
     elif estimate is not None and estimate.reason:
         parts.append(estimate.reason.rstrip("."))
     vessels = sum(not point.excluded for point in result.points)
-    parts.append(f"{counted(vessels, 'vessel')}, {freedom(result.degrees_of_freedom)}")
+    told = any(f" {left}" in part for part in parts)  # the coverage factor has said it already
+    parts.append(counted(vessels, "vessel") if told else f"{counted(vessels, 'vessel')}, {left}")
     if excluded := sum(bool(vessel.excluded) for vessel in solved.prepared.vessels):
         parts.append(f"{excluded} excluded by decision")
     if result.blank is not None and result.reported is not None:
@@ -74,12 +75,12 @@ def _details(result: Result, solved: Solved) -> list[str]:
 
 def _coverage_factor(estimate: Estimate, solved: Solved) -> str:
     """The coverage factor, and why where it is far from the 2 that people expect."""
-    k, left = estimate.coverage_factor, solved.effective_degrees_of_freedom
+    k, left = estimate.coverage_factor, estimate.effective_degrees_of_freedom or 0
     if not k:
         return ""
     told = f", k {figure(k, 2)}"
     if k <= _WIDE_K:
-        return told
+        return f"{told} with {freedom(left)}" if left != solved.degrees_of_freedom else told
     if left > 0 and t_quantile(left, estimate.coverage) > _WIDE_K:
         return f"{told}, because {freedom(left)} {'remains' if left == 1 else 'remain'}"
     return f"{told}, because the slope is not known well"
@@ -87,7 +88,7 @@ def _coverage_factor(estimate: Estimate, solved: Solved) -> str:
 
 def interval_holds(result: Result, solved: Solved) -> str:
     """What the interval contains and what it leaves out."""
-    if result.reported is None or result.reported.expanded_uncertainty is None:
+    if result.reported is None or not result.reported.expanded_uncertainty:
         return ""
     parts = ["the scatter about the line"]
     if solved.background is not None and solved.background.standard_uncertainty is not None:
@@ -95,7 +96,12 @@ def interval_holds(result: Result, solved: Solved) -> str:
     if result.blank is not None and "not known" not in solved.blank_note:
         parts.append("the process blank")
     told = parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}"
-    return f"The interval holds {told}; standard, volumes and mass are not in it."
+    lacking = ["standard", "volumes", "mass"]
+    if solved.background is not None and solved.background.standard_uncertainty is None:
+        lacking.insert(0, "the background, which was read once")
+    if result.blank is not None and solved.blanks == 1:
+        lacking.insert(0, "how blanks vary between preparations, which one process blank does not show")
+    return f"The interval holds {told}; {', '.join(lacking[:-1])} and {lacking[-1]} are not in it."
 
 
 def not_shown(results: Sequence[Result]) -> str:

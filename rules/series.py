@@ -8,7 +8,7 @@ from collections.abc import Mapping, Sequence
 from spikeward.rules.naming import level_order
 from spikeward.rules.preparation import preparation_for
 from spikeward.rules.prepared import PreparedLine
-from spikeward.rules.records import PLAIN_ROLES, SERIES_ROLES, Batch, Members, SeriesKey
+from spikeward.rules.records import PLAIN_ROLES, SERIES_ROLES, Batch, Members, Reading, SeriesKey
 from spikeward.rules.rulebook import Rulebook
 from spikeward.rules.words import line_words
 
@@ -80,6 +80,17 @@ def closing_missing(batch: Batch, rules: Rulebook, complete: frozenset[SeriesKey
     return tuple(lacking)
 
 
+def one_sequence(readings: Sequence[Reading]) -> bool:
+    """Whether readings can be put in the order in which they were measured.
+
+    By acquisition times wherever all have one; a declared order counts from one again in every file, so it compares
+    readings of one file only.
+    """
+    if all(reading.measured_at for reading in readings):
+        return True
+    return all(reading.order is not None for reading in readings) and len({reading.path for reading in readings}) == 1
+
+
 def _closing_bracket(members: Mapping[SeriesKey, Members]) -> list[str]:
     """One bracket later than every vessel; without times or order any bracket will do, the order is not known."""
     brackets = [reading for key, found in members.items() if key.role == "bracket" for reading in found.readings]
@@ -90,9 +101,9 @@ def _closing_bracket(members: Mapping[SeriesKey, Members]) -> list[str]:
         for key, found in members.items()
         if key.role not in PLAIN_ROLES
         for reading in found.readings
-        if reading.measured_at or reading.order is not None
+        if one_sequence([*brackets, reading])
     ]
-    last = max((reading.when for reading in brackets), default=("", -1))
+    last = max(reading.when for reading in brackets)
     if others and max(reading.when for reading in others) > last:
         return ["a closing bracket later than every vessel"]
     return []

@@ -147,7 +147,7 @@ def test_first_steps_can_be_taken(tmp_path, monkeypatch, capsys):
             continue
         assert main(arguments) == 0, (line, capsys.readouterr())
         ran.append(arguments[0])
-    assert ran == ["vet", "sweep", "explain"]
+    assert ran == ["vet", "vet", "sweep", "explain"]
     present = {path.name for path in (tmp_path / "inbox").iterdir()}
     promised = set(re.findall(r"`(N1[\w.]+\.(?:html|json|csv|flag))`", page.read_text(encoding="utf-8")))
     assert len(promised) == 5
@@ -166,6 +166,21 @@ def test_the_example_of_a_flag_reads_like_one(tmp_path, monkeypatch, capsys):
     real = [line.split(":")[0] for line in (tmp_path / "inbox" / "N1_07.waiting.flag").read_text().splitlines()]
     told = [line.split(":")[0] for line in blocks(GUIDE / "flags.md", "text")[0].splitlines()]
     assert list(dict.fromkeys(key for key in real if key in told)) == told
+
+
+def test_the_number_in_the_example_of_a_flag_is_that_of_first_steps(tmp_path, monkeypatch, capsys):
+    steps, example = GUIDE / "first-steps.md", blocks(GUIDE / "flags.md", "text")[0]
+    (tmp_path / "inbox").mkdir()
+    bracket = "  - {role: bracket, match: '(?P<batch>N\\d+)_BR(?P<sample>\\d+)'}\nseries: {closes_with: [bracket]}\n"
+    rules = blocks(steps, "yaml")[0].replace("standards:\n", f"{bracket}standards:\n")
+    (tmp_path / "rules.yaml").write_text(rules, encoding="utf-8")
+    (tmp_path / "inbox" / "run.csv").write_text(blocks(steps, "csv")[0], encoding="utf-8")
+    monkeypatch.chdir(tmp_path)
+    assert main(["sweep", "rules.yaml"]) == 1
+    real = (tmp_path / "inbox" / "N1_07.waiting.flag").read_text(encoding="utf-8").splitlines()
+    told = [line for line in example.splitlines() if not line.endswith("…")]
+    assert any(line.startswith("result: waiting, Cd, ") for line in told)
+    assert [line for line in told if line not in real] == []
 
 
 @pytest.mark.parametrize("page", PAGES, ids=lambda page: page.name)

@@ -63,7 +63,7 @@ def _watch(home: Path, invented: Night, pace: float, readers: Readers) -> None:
         play(invented, home / "inbox", pace, lambda seconds: stop.wait(seconds))
         delivered.set()
 
-    with open_station(str(home / "rules.yaml")) as opened, stopping(stop):
+    with open_station(str(home / "rules.yaml")) as opened, stopping(stop, opened.journal.hurry):
         watching = Watching(opened, readers, time.monotonic)
         player = threading.Thread(target=deliver, name="instruments", daemon=True)
         player.start()

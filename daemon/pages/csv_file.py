@@ -54,6 +54,7 @@ _OF_ESTIMATE: dict[str, Callable[[Estimate], Cell]] = {
     "standard_uncertainty": lambda estimate: estimate.standard_uncertainty,
     "expanded_uncertainty": lambda estimate: estimate.expanded_uncertainty,
     "coverage_factor": lambda estimate: estimate.coverage_factor,
+    "effective_degrees_of_freedom": lambda estimate: _number(estimate.effective_degrees_of_freedom),
     "interval_low": lambda estimate: estimate.interval[0] if estimate.interval else None,
     "interval_high": lambda estimate: estimate.interval[1] if estimate.interval else None,
     "coverage": lambda estimate: estimate.coverage,
@@ -66,6 +67,10 @@ COLUMNS = (
     "intercept_uncertainty", "residual_sd", "signal_unit", "background", "blank", "inputs_digest", "rules_digest",
     "calculation_version",
 )  # fmt: skip
+
+
+def _number(count: int | None) -> float | None:
+    return None if count is None else float(count)
 
 
 def render_csv(batch: BatchOutcome) -> bytes:

@@ -100,6 +100,7 @@ def _estimate(estimate: Estimate | None, unit: str) -> dict[str, Any]:
         "standard_uncertainty": known.standard_uncertainty,
         "expanded_uncertainty": known.expanded_uncertainty,
         "coverage_factor": known.coverage_factor,
+        "effective_degrees_of_freedom": known.effective_degrees_of_freedom,
         "interval": None if known.interval is None else list(known.interval),
         "coverage": None if estimate is None else known.coverage,
         "uncertainty_reason": known.reason,

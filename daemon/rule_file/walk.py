@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import re
 from collections.abc import Iterable, Iterator, Mapping
 from typing import Any
 
@@ -155,8 +156,11 @@ class Walker:
     def _unknown(self, key: Node, path: str, known: tuple[str, ...], present: set[str], deeper: str = "") -> str:
         """Report a key that is not known; the key that was meant, or an empty text."""
         homes = _homes(self._root, key.text)
-        # A key that is right elsewhere is more likely misplaced than misspelt.
-        meant = near(key.text, set(known) - present, cutoff=0.8 if homes else 0.6)
+        section = re.split(r"[.\[]", path)[0]
+        columns = [home for home in _homes(self._root, key.text, of_maps=True) if home.startswith(f"{section}.")]
+        homes = homes or columns
+        # A key that is right elsewhere is more likely misplaced than misspelt, the more so in the same section.
+        meant = near(key.text, set(known) - present, cutoff=1.0 if columns else 0.8 if homes else 0.6)
         if meant:
             hint = f"did you mean {meant}?"
         elif homes:
@@ -200,7 +204,8 @@ class Walker:
         key: bool = False,
     ) -> None:
         """Report a problem at the value of a path (or at its key), or at the nearest part of the file around it."""
-        self.at_node(self._nearest(path, self.keys if key else self.places), path, code, found, expected, hint, severity)
+        node = self._nearest(path, self.keys if key else self.places)
+        self.at_node(node, path, code, found, expected, hint, severity)
 
     def line_of(self, path: str) -> int:
         """The line of a path, or of the nearest part of the file around it."""
@@ -235,13 +240,15 @@ def _deeper(block: Block) -> str:
     return field.name if free else ""
 
 
-def _homes(block: Block, name: str, path: str = "") -> list[str]:
-    """The blocks of a schema in which a key is at home."""
-    found = [path] if path and any(field.name == name for field in block.fields) else []
+def _homes(block: Block, name: str, path: str = "", of_maps: bool = False) -> list[str]:
+    """The blocks of a schema in which a key is at home, or the maps of given keys."""
+    found = [path] if path and not of_maps and any(field.name == name for field in block.fields) else []
     for field in block.fields:
         shape = field.shape
+        if of_maps and isinstance(shape, MapOf) and name in shape.keys:
+            found.append(f"{path}.{field.name}".lstrip("."))
         while isinstance(shape, (ListOf, MapOf)):
             shape = shape.item
         if isinstance(shape, Block):
-            found += _homes(shape, name, f"{path}.{field.name}".lstrip("."))
+            found += _homes(shape, name, f"{path}.{field.name}".lstrip("."), of_maps)
     return found

@@ -21,10 +21,12 @@ from spikeward.rules.checks.subject import (
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check
 from spikeward.rules.records import Reading
 from spikeward.rules.rulebook import Limits
+from spikeward.rules.series import one_sequence
 from spikeward.rules.solve.solved import Background
-from spikeward.rules.solve.transform import mean_of, unusable
+from spikeward.rules.solve.transform import unusable, vessel_signal
 
-_NEEDS_TIMES = "Declare the column measured_at or order"
+_NEEDS_TIMES = "Declare the column measured_at"
+_ASKED = "the rule file, which asks for brackets"
 
 
 def visits(
@@ -40,7 +42,8 @@ def visits(
 
     Returns
     -------
-    the visits by (analyte, line), and the lines on which not every reading has an acquisition time or order
+    the visits by (analyte, line), and the lines on which the brackets themselves cannot be put in order. Other readings
+    that cannot be placed beside them are passed over: each series answers for its own
     """
     by_line: dict[LineKey, list[Reading]] = {}
     for reading in readings:
@@ -48,10 +51,12 @@ def visits(
     found: dict[LineKey, tuple[Bracket, ...]] = {}
     untimed: set[LineKey] = set()
     for line, of_line in by_line.items():
-        if not all(reading.measured_at or reading.order is not None for reading in of_line):
+        marks = [reading for reading in of_line if reading.series.role == "bracket"]
+        if not one_sequence(marks):
             untimed.add(line)
             continue
-        ordered = sorted(of_line, key=lambda r: (r.when, r.series, r.solution, r.reading, r.path, r.row))
+        placed = [reading for reading in of_line if marks and one_sequence([*marks[:1], reading])]
+        ordered = sorted(placed, key=lambda r: (r.when, r.series, r.solution, r.reading, r.path, r.row))
         runs: list[list[Reading]] = []
         fresh = True
         for reading in ordered:
@@ -67,12 +72,11 @@ def visits(
 
 
 def _bracket(run: Sequence[Reading], background: Background | None) -> Bracket:
-    signals = [reading.signal for reading in run if reading.signal is not None]
     sensitivity = None
-    if unusable(run) is None and len(signals) == len(run):
-        sensitivity = mean_of(signals, [max(reading.readings, 1) for reading in run])
+    if unusable(run) is None and len({reading.unit for reading in run}) == 1:
+        sensitivity = vessel_signal(run).mean
         if background is not None and not background.problem and not any("blank" in r.already for r in run):
-            sensitivity -= background.mean
+            sensitivity = sensitivity - background.mean if background.unit == run[0].unit else None
     return Bracket(run[0].when, run[-1].when, run[0].solution, sensitivity, tuple(run))
 
 
@@ -80,7 +84,7 @@ def around(subject: Subject) -> tuple[Bracket, ...]:
     """The brackets that a line depends on: the nearest before it, those within, the nearest after, and the first."""
     every = subject.context.brackets.get(subject.line_key, ())
     times = [reading.when for reading in subject.readings]
-    if not every or not times:
+    if not times or not _placed(subject, every):
         return ()
     start, end = min(times), max(times)
     before = sum(one.last <= start for one in every)
@@ -89,16 +93,25 @@ def around(subject: Subject) -> tuple[Bracket, ...]:
     return near if near and near[0] is every[0] else (every[0], *near)
 
 
+def _placed(subject: Subject, every: Sequence[Bracket]) -> bool:
+    """Whether the readings of a series can be put in order with the brackets, of which there are any."""
+    return bool(every) and one_sequence([*subject.readings, *(reading for one in every for reading in one.readings)])
+
+
 def brackets(subject: Subject, limits: Limits) -> Check:
     """The sensitivity of the nearest bracket on either side, relative to the first bracket of the batch."""
     rules, line = subject.context.rules, subject.line_key
     if not rules.brackets and "bracket" not in rules.series.closes_with:
         return not_evaluated("brackets", "the rules ask for no brackets", "Declare brackets, and measure them")
-    if line in subject.context.untimed:
-        return not_evaluated("brackets", "no acquisition time or order", _NEEDS_TIMES)
     if any("drift" in reading.already for reading in subject.readings):
         return not_evaluated("brackets", "the export had its drift corrected already", "Export uncorrected signals")
     every, near = subject.context.brackets.get(line, ()), around(subject)
+    if line in subject.context.untimed or (every and subject.readings and not _placed(subject, every)):
+        sentence = (
+            "The drift is not known: without acquisition times, or an order within one file, series and brackets "
+            "cannot be placed beside each other."
+        )
+        return plain("brackets", WARN, sentence, _NEEDS_TIMES, _ASKED)
     times = [reading.when for reading in subject.readings]
     if not times:
         return not_evaluated("brackets", "the series has no readings")
@@ -112,9 +125,17 @@ def brackets(subject: Subject, limits: Limits) -> Check:
 
 
 def drift(near: Sequence[Bracket], every: Sequence[Bracket], limits: Limits) -> Check | None:
-    """The largest deviation of some visits from the first bracket of the batch; None where there are none."""
+    """The largest deviation of some visits from the first bracket of the batch; None where there are none.
+
+    A visit whose own readings scatter does not show the sensitivity any better than the standard uncertainty of their
+    mean, s/sqrt(n): where that alone is beyond the limits, it warns.
+    """
     if not near:
         return None
+    units = sorted({reading.unit or "no unit" for one in near for reading in one.readings})
+    if len(units) > 1:
+        sentence = f"The units of the brackets differ: they come in {' and '.join(units)}."
+        return plain("brackets", FAIL, sentence, "Export all brackets in one unit", "theory")
     for one in near:
         if one.sensitivity is None or (one is every[0] and one.sensitivity <= 0):
             sentence = f"The bracket {one.solution} has no signal that can be used."
@@ -130,7 +151,27 @@ def drift(near: Sequence[Bracket], every: Sequence[Bracket], limits: Limits) -> 
         "brackets", abs(worst), limits, told,
         f"Measure again what lies between bracket {solution} and its good neighbours", show=as_percent,
     )  # fmt: skip
-    return replace(check, observed=worst)
+    check = replace(check, observed=worst)
+    return (_scattering(near, limits) or check) if check.verdict == PASS else check
+
+
+def _scattering(near: Sequence[Bracket], limits: Limits) -> Check | None:
+    """A warning where the readings of one visit differ more than brackets may."""
+    known = [(u, one.solution) for one in near if (u := _relative_uncertainty(one)) is not None]
+    if not known:
+        return None
+    largest, solution = max(known)
+    told = f"The readings of bracket {solution} scatter: their mean is known to ± {near_limits(largest, limits)}"
+    remedy = f"Look at the readings of bracket {solution}; measure the series again between good brackets"
+    check = graded("brackets", largest, limits, told, remedy, show=as_percent)
+    return replace(check, verdict=WARN) if check.verdict in (WARN, FAIL) else None
+
+
+def _relative_uncertainty(one: Bracket) -> float | None:
+    if not one.sensitivity:
+        return None
+    signal = vessel_signal(one.readings)
+    return None if signal.sd is None else signal.sd / math.sqrt(signal.readings) / abs(one.sensitivity)
 
 
 def _one_sided(sides: Sequence[bool], limits: Limits) -> Check | None:

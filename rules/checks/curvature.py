@@ -15,6 +15,7 @@ from spikeward.rules.rounding import figure, percent, percent_apart
 from spikeward.rules.rulebook import Limits
 from spikeward.rules.words import counted, freedom
 
+_ROUGH = 1.02  # shares of test solution that differ more bend a curve in other ways than a parabola
 _DUST = 2.0**-40  # residuals below this share of the signal are rounding, not curvature
 
 
@@ -32,7 +33,7 @@ class Mandel:
     exact: bool = False
 
 
-def mandel(x: Sequence[float], y: Sequence[float]) -> Mandel | None:
+def mandel(x: Sequence[float], y: Sequence[float], w: Sequence[float] | None = None) -> Mandel | None:
     """Compare a straight line with a parabola through the same points.
 
     F = (SSE_line - SSE_parabola) / (SSE_parabola / (n - 3)), ISO 8466-1. The parabola is built from polynomials that
@@ -41,6 +42,7 @@ def mandel(x: Sequence[float], y: Sequence[float]) -> Mandel | None:
     Parameters
     ----------
     x, y : contents added and corrected signals, at least four points
+    w : weights as of the line, all 1 where they are not given
 
     Returns
     -------
@@ -53,24 +55,32 @@ def mandel(x: Sequence[float], y: Sequence[float]) -> Mandel | None:
     if scale == 0 or tall == 0 or not (math.isfinite(scale) and math.isfinite(tall)):
         return None
     xs, ys = [v / scale for v in x], [v / tall for v in y]
-    middle = math.fsum(xs) / n
+    w = [1.0] * n if w is None else w
+    total = math.fsum(w)
+    middle = _weighted(w, xs) / total
     d = [v - middle for v in xs]
-    sxx = math.fsum(v * v for v in d)
-    mean = math.fsum(ys) / n
-    slope = math.fsum(u * v for u, v in zip(d, ys, strict=True)) / sxx
+    sxx = _weighted(w, d, d)
+    mean = _weighted(w, ys) / total
+    slope = _weighted(w, d, ys) / sxx
     left = [v - mean - slope * u for u, v in zip(d, ys, strict=True)]
-    skew, square = math.fsum(v * v * v for v in d) / sxx, sxx / n
+    skew, square = _weighted(w, d, d, d) / sxx, sxx / total
     q = [v * v - skew * v - square for v in d]
-    bend = math.fsum(u * v for u, v in zip(q, left, strict=True)) / math.fsum(v * v for v in q)
-    rest = math.fsum((v - bend * u) ** 2 for u, v in zip(q, left, strict=True))
-    gain = bend * bend * math.fsum(v * v for v in q)
+    bend = _weighted(w, q, left) / _weighted(w, q, q)
+    over = [v - bend * u for u, v in zip(q, left, strict=True)]
+    rest = _weighted(w, over, over)
+    gain = bend * bend * _weighted(w, q, q)
     by_line = (mean / slope - middle) * scale if slope else math.nan
-    if math.fsum(v * v for v in left) <= n * _DUST * _DUST:
+    if _weighted(w, left, left) <= n * _DUST * _DUST:
         return Mandel(0.0, 1.0, by_line, by_line, exact=True)
     f = gain / (rest / (n - 3)) if rest > n * _DUST * _DUST else math.inf
     root = _zero_near(bend, slope - bend * skew, mean - bend * square, -mean / slope) if slope else None
     by_parabola = None if root is None else -(middle + root) * scale
     return Mandel(f, float(special.fdtrc(1, n - 3, f)), by_line, by_parabola)
+
+
+def _weighted(w: Sequence[float], *factors: Sequence[float]) -> float:
+    """The sum over the points of weight times factors."""
+    return math.fsum(math.prod(row) for row in zip(w, *factors, strict=True))
 
 
 def _zero_near(a: float, b: float, c: float, guess: float) -> float | None:
@@ -85,7 +95,12 @@ def _zero_near(a: float, b: float, c: float, guess: float) -> float | None:
 
 
 def curvature(subject: Subject, limits: Limits) -> Check:
-    """Mandel's F test for curvature, and how far a parabola would move the content."""
+    """Mandel's F test for curvature, and how far a parabola would move the content.
+
+    Curvature belongs to the content in the vessel, S = k c + q c². Where the share of test solution differs between
+    vessels the test on the corrected points still holds, as they lie on a straight line if there is no curvature, but
+    what the parabola would change is then a rough figure only.
+    """
     if no_line(subject):
         return not_evaluated("curvature", "there is no line")
     points = fitted_points(subject)
@@ -96,15 +111,17 @@ def curvature(subject: Subject, limits: Limits) -> Check:
             "curvature", f"{counted(len(points), 'vessel')} leave {freedom(left)}, too few to show curvature",
             f"{needed} or more vessels give it power",
         )  # fmt: skip
-    found = mandel([point.x for point in points], [point.y for point in points])
+    shares = [point.matrix_share for point in points]
+    weights = [(share / max(shares)) ** 2 for share in shares]
+    found = mandel([point.x for point in points], [point.y for point in points], weights)
     if found is None:
         return not_evaluated("curvature", "fewer than three different additions cannot show a curve", "More levels")
     if found.exact:
         return Check("curvature", PASS, "The points lie on the straight line to the last digit.", 0.0, "1")
-    return _judged(found, limits, left - 1)
+    return _judged(found, limits, left - 1, rough=max(shares) > _ROUGH * min(shares))
 
 
-def _judged(found: Mandel, limits: Limits, left: int) -> Check:
+def _judged(found: Mandel, limits: Limits, left: int, rough: bool) -> Check:
     warn_p, far = number(limits, "warn_p"), number(limits, "fail_change")
     change = None
     if found.by_parabola is not None and found.by_line:
@@ -116,6 +133,7 @@ def _judged(found: Mandel, limits: Limits, left: int) -> Check:
     moved = "a parabola never reaches zero signal"
     if change is not None:
         moved = f"a parabola moves the content {percent_apart(change, [] if far is None else [far])}"
+        moved += ", a rough figure as the volumes differ" if rough else ""
     told = f"warns below p {figure(warn_p)}" if warn_p is not None else ""
     if far is not None:
         told += f"; fails if the content then moves more than {percent(far)}"

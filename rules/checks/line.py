@@ -140,15 +140,18 @@ def residual(subject: Subject, limits: Limits) -> Check:
         return not_evaluated("residual", "there is no line")
     if subject.solved.degrees_of_freedom < 1 or not points:
         return not_evaluated("residual", "no degree of freedom is left for residuals", "Measure more levels")
-    floor = (number(limits, "floor") or 0.0) * max(abs(_fitted(point)) for point in points)
-    scale = [max(abs(_fitted(point)), floor) for point in points]
+    fitted = [abs(_fitted(point)) * point.matrix_share for point in points]  # as signals, before the volumes
+    floor = (number(limits, "floor") or 0.0) * max(fitted)
+    scale = [max(one, floor) for one in fitted]
     if min(scale) == 0:
         return not_evaluated("residual", "the fitted signal of a vessel is zero")
-    sizes = [abs(point.y - _fitted(point)) / size for point, size in zip(points, scale, strict=True)]
+    sizes = [
+        abs(point.y - _fitted(point)) * point.matrix_share / size for point, size in zip(points, scale, strict=True)
+    ]
     largest = max(sizes)
     where = vessel_name(points[sizes.index(largest)].level, points[sizes.index(largest)].vessel)
     against = "its fitted signal"
-    if floor > abs(_fitted(points[sizes.index(largest)])):
+    if floor > fitted[sizes.index(largest)]:
         against = f"{percent(number(limits, 'floor') or 0.0)} of the largest fitted signal"
     sentence = f"The largest residual, of {where}, is {near_limits(largest, limits)} of {against}"
     remedy = f"Look for a pipetting slip, first in {where}; prepare and measure it again"
@@ -159,7 +162,8 @@ def studentised(subject: Subject, limits: Limits) -> Check:
     """The largest internally studentised residual against its critical value at two levels of significance.
 
     With n vessels it cannot exceed sqrt(n - 2). Critical value by Bonferroni's bound (Cook and Weisberg, Residuals and
-    Influence in Regression, 1982, 2.2.2): t sqrt((n-2)/(n-3+t²)) with t at p/(2n) and n-3 degrees of freedom.
+    Influence in Regression, 1982, 2.2.2): t sqrt((n-2)/(n-3+t²)) with t at p/(2n) and n-3 degrees of freedom. With the
+    weights of the line, w = (V0/V)², the leverage is w (1/Sw + (x - xbar)²/Sxx) and the residual counts sqrt(w) times.
     """
     if no_line(subject):
         return not_evaluated("studentised", "there is no line")
@@ -172,9 +176,12 @@ def studentised(subject: Subject, limits: Limits) -> Check:
             "studentised", f"no power below {needed} vessels{bound}" if n < needed else "there is no scatter",
             f"{needed} or more vessels",
         )  # fmt: skip
+    weights = [point.matrix_share**2 for point in points]
+    total = math.fsum(weights)
+    leverages = [w * (1 / total + (p.x - x_mean) ** 2 / sxx) for w, p in zip(weights, points, strict=True)]
     ratios = [
-        abs(point.y - _fitted(point)) / (s * math.sqrt(max(1 - 1 / n - (point.x - x_mean) ** 2 / sxx, 1e-12)))
-        for point in points
+        abs(point.y - _fitted(point)) * point.matrix_share / (s * math.sqrt(max(1 - leverage, 1e-12)))
+        for point, leverage in zip(points, leverages, strict=True)
     ]
     largest = max(ratios)
     where = vessel_name(points[ratios.index(largest)].level, points[ratios.index(largest)].vessel)
@@ -206,7 +213,10 @@ def _significance(
 
 
 def span(subject: Subject, limits: Limits) -> Check:
-    """The top addition over the content: too little extrapolates far, too much crowds the content into a corner."""
+    """The top addition over the content: too little extrapolates far, too much crowds the content into a corner.
+
+    The content is that of the test solution, blank included: it decides how far the line is extrapolated.
+    """
     content, points = subject.solved.content, fitted_points(subject)
     if why := near_zero(subject):
         return not_evaluated("span", why)
@@ -214,7 +224,7 @@ def span(subject: Subject, limits: Limits) -> Check:
         return not_evaluated("span", "there is no content")
     ratio = max(point.x for point in points) / content.content
     low, high = "Repeat with larger additions", "Repeat with smaller additions, or with more test solution"
-    sentence = f"The top addition is {figure(ratio)} times the content"
+    sentence = f"The top addition is {figure(ratio)} times the content of the test solution"
     return graded("span", ratio, limits, sentence, low if ratio < 1 else high)
 
 

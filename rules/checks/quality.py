@@ -4,12 +4,21 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-from spikeward.rules.checks.line import fitted_points, near_zero
-from spikeward.rules.checks.subject import Subject, as_percent, graded, near_limits, not_evaluated, number, plain
+from spikeward.rules.checks.line import covers_zero, fitted_points, near_zero
+from spikeward.rules.checks.subject import (
+    Subject,
+    as_percent,
+    graded,
+    near_limits,
+    not_evaluated,
+    number,
+    plain,
+    source_of,
+)
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check, Estimate
-from spikeward.rules.rounding import rounded
+from spikeward.rules.rounding import figure, rounded
 from spikeward.rules.rulebook import Limits
-from spikeward.rules.words import unit_words
+from spikeward.rules.words import counted, unit_words
 
 _BLANKS = "the rule file; key blanks"
 
@@ -23,6 +32,8 @@ def expanded_uncertainty(subject: Subject, limits: Limits) -> Check:
     """The expanded uncertainty over the content; a precision from few vessels only warns."""
     estimate, count = reported(subject), len(fitted_points(subject))
     name = "expanded_uncertainty"
+    if estimate is not None and _below_zero(estimate):
+        return _negative(subject, estimate)
     if subject.role == "process_blank":
         return not_evaluated(name, near_zero(subject))
     if estimate is None or estimate.expanded_uncertainty is None:
@@ -47,6 +58,26 @@ def expanded_uncertainty(subject: Subject, limits: Limits) -> Check:
         few = f"with the precision of {count} vessels alone it only warns"
         return replace(check, verdict=WARN, sentence=f"{check.sentence[:-1]}; {few}.")
     return check
+
+
+def _below_zero(estimate: Estimate) -> bool:
+    """Whether a content lies below zero with its whole interval, or without one that could be asked."""
+    return estimate.content < 0 if estimate.interval is None else estimate.interval[1] < 0
+
+
+def _negative(subject: Subject, estimate: Estimate) -> Check:
+    """A content that is truly below zero: no sample holds it, so what was subtracted or the zero is wrong."""
+    value = figure(estimate.content)
+    told = f"The content, {value} {unit_words(estimate.unit)}, is below zero"
+    if estimate.expanded_uncertainty:
+        value, spread = rounded(estimate.content, estimate.expanded_uncertainty)
+        unit = unit_words(estimate.unit)
+        told = f"The content, {value} ± {spread} {unit}, is below zero by more than its uncertainty"
+    why, remedy = "though nothing was subtracted", "Look at the zero of the instrument and at the unspiked vessel"
+    if subject.solved.subtracted:
+        why, remedy = "background or blank was subtracted too high", "Look at background and blanks; measure them again"
+    surely = estimate.interval is not None and subject.role != "process_blank"
+    return plain("expanded_uncertainty", FAIL if surely else WARN, f"{told}: {why}.", remedy, "theory")
 
 
 def blank(subject: Subject, limits: Limits) -> Check:
@@ -80,13 +111,29 @@ def _share(subject: Subject, limits: Limits, amount: float) -> Check:
         told = ", ".join(sorted(failed))
         sentence = f"The process blank that was subtracted failed its own checks (process blank {told})."
         return plain("blank", FAIL, sentence, "Look at the blank's own summary; repeat it", "theory")
-    if estimate is None or estimate.content <= 0 or near_zero(subject):
+    if estimate is None or estimate.content <= 0 or covers_zero(estimate) or near_zero(subject):
         sentence = "Blank and sample cannot be told apart: the content does not differ from zero."
         return plain("blank", WARN, sentence, "Take it for not detected, or look where the blank comes from", "theory")
     share = abs(amount) / estimate.content
-    return graded(
+    check = graded(
         "blank", share, limits, f"The process blank is {near_limits(share, limits)} of the result",
         "Find what brings the analyte in: reagents, vessels, air; prepare the sample again", show=as_percent,
+    )  # fmt: skip
+    return _few_blanks(check, subject, limits)
+
+
+def _few_blanks(check: Check, subject: Subject, limits: Limits) -> Check:
+    """One blank has no scatter: how blanks vary from preparation to preparation is then in no uncertainty."""
+    count, needed = subject.solved.blanks, number(limits, "warn_blanks_below")
+    if needed is None or count >= needed or check.verdict == FAIL:
+        return check
+    few = f"{counted(count, 'process blank')} of {needed:g} or more"
+    if count == 1:
+        few = "one process blank says nothing about how preparations vary"
+    return replace(
+        check, verdict=WARN, sentence=f"{check.sentence[:-1]}; {few}.",
+        source=check.source if check.verdict == WARN else source_of(limits, "warn_blanks_below", "blank"),
+        remedy=check.remedy or "Take two or more process blanks through the preparation with every batch",
     )  # fmt: skip
 
 
@@ -94,24 +141,22 @@ def blank_lacking(subject: Subject) -> str:
     """Which blank that the rules subtract has not been measured for this line, or an empty text."""
     asked, batch = subject.context.rules.blanks, subject.context.batch
     prepared = subject.solved.prepared
-    if any("blank" in reading.already for reading in subject.readings):
-        return ""
-    if asked.background and subject.line_key not in subject.context.backgrounds:
+    already = subject.solved.net_by_export  # that blank is a background; a process blank is an amount
+    if asked.background and not already and subject.line_key not in subject.context.backgrounds:
         return f"no background of {subject.name} was measured in this batch"
     if not asked.process or subject.role == "process_blank":
         return ""
     if not any(key.role == "process_blank" for key in batch.members):
         return "no process blank was measured in this batch"
     if prepared.way_back is not None and subject.solved.in_sample is not None and subject.solved.blank is None:
-        return f"no process blank of {subject.name} gives a number"
+        why = subject.solved.blank_note.partition("no process blank was subtracted: ")[2]
+        return f"no process blank of {subject.name} can be subtracted: {why or 'none gives a number'}"
     return ""
 
 
 def _without_process_blank(subject: Subject) -> Check:
     """Nothing is subtracted in the sample: right where the rules or the export say so, else worth a look."""
-    solved, already = subject.solved, any("blank" in reading.already for reading in subject.readings)
-    if already:
-        return plain("blank", PASS, "The export had the blank taken off already; none was subtracted again.")
+    solved = subject.solved
     if subject.context.rules.blanks.process and solved.no_number:
         return not_evaluated("blank", "there is no content")
     if subject.context.rules.blanks.process:
@@ -119,6 +164,8 @@ def _without_process_blank(subject: Subject) -> Check:
         return plain(
             "blank", WARN, f"{told[:1].upper()}{told[1:]}.", "Declare the way back to the sample under preparations"
         )
+    if solved.net_by_export:
+        return plain("blank", PASS, "The export had the blank taken off already; none was subtracted again.")
     return plain("blank", PASS, f"The background of {subject.name} was taken off every reading.")
 
 

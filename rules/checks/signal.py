@@ -64,8 +64,8 @@ def linear_top(subject: Subject, limits: Limits) -> Check:
 def precision(subject: Subject, limits: Limits) -> Check:
     """The relative standard deviation of repeated readings of one vessel, pooled over the vessels.
 
-    Pooled as sum (n-1) s² / sum (n-1); each s is relative to its vessel's signal, or to ``floor`` times the largest
-    signal where that is more, so that the noise of a signal near zero does not decide.
+    Pooled as sum (n-1) s² / sum (n-1); each s is relative to its vessel's signal without the background, or to
+    ``floor`` times the largest such signal where that is more, so that the noise of a signal near zero does not decide.
     """
     vessels = [vessel for vessel in _usable(subject) if vessel.sd is not None and vessel.readings > 1]
     if not vessels:
@@ -73,9 +73,11 @@ def precision(subject: Subject, limits: Limits) -> Check:
             "precision", "no vessel was read more than once, nor does the export give standard deviations",
             "Read each vessel twice or more",
         )  # fmt: skip
-    floor = (number(limits, "floor") or 0.0) * max(abs(vessel.mean) for vessel in _usable(subject))
+    background = subject.solved.background
+    off = background.mean if background is not None and not background.problem else 0.0
+    floor = (number(limits, "floor") or 0.0) * max(abs(vessel.mean - off) for vessel in _usable(subject))
     scaled = [((vessel.sd or 0.0) / size if size else 0.0, vessel.readings - 1)
-              for vessel in vessels for size in [max(abs(vessel.mean), floor)]]  # fmt: skip
+              for vessel in vessels for size in [max(abs(vessel.mean - off), floor)]]  # fmt: skip
     within = sum(n for _, n in scaled)
     pooled = math.sqrt(math.fsum(n * s * s for s, n in scaled) / within)
     sentence = f"Readings of one vessel repeat to {near_limits(pooled, limits)} ({freedom(within)})"

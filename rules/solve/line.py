@@ -51,8 +51,8 @@ class Fits:
     Contents in the unit of x, ``slope`` in y per x, ``covariance`` in y squared per x. ``dof`` is vessels - 2, and the
     uncertainties are not a number where it is not positive. ``background_effect`` is the change of ``content`` per unit
     by which the background of all vessels rises. ``weight`` is the sum of weights, means and sums of squares are
-    weighted, and ``residual_sd`` is of y in a vessel of weight 1. ``spread`` is the root of ``sxx``. ``exact``: residuals
-    are rounding only. ``flat``: y does not change with x beyond rounding. ``one_x``: all x are equal.
+    weighted, and ``residual_sd`` is of y in a vessel of weight 1. ``spread`` is the root of ``sxx``. ``exact``:
+    residuals are rounding only. ``flat``: y does not change with x beyond rounding. ``one_x``: all x are equal.
     """
 
     vessels: Floats

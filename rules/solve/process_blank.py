@@ -61,7 +61,7 @@ def subtract_process_blank(solved: Solved, blanks: Sequence[Solved], coverage: f
     if solved.content is None or sample.key.role == "process_blank":
         return solved
     if sample.way_back is None:
-        return replace(solved, blank_note=NO_WAY_BACK)
+        return replace(solved, blank_note=_joined(solved.blank_note, NO_WAY_BACK))
     ordered = sorted(blanks, key=lambda one: one.prepared.key)
     left_out = [why for one in ordered if (why := _why_left_out(one, solved))]
     used = [one for one in ordered if not _why_left_out(one, solved)]
@@ -119,7 +119,8 @@ def _subtracted(
     mean = mean_of(amounts, [1] * len(amounts))
     component, known = _component(used, amounts, mean, solved.prepared)
     told = f"mean of {len(amounts)} process blanks" if len(amounts) > 1 else "one process blank"
-    note = _joined(solved.blank_note, f"{told}, {mean:.3g} {unit_words(back.unit)}, subtracted as an amount{known}", *left_out)
+    told = f"{told}, {mean:.3g} {unit_words(back.unit)}, subtracted as an amount{known}"
+    note = _joined(solved.blank_note, told, *left_out)
     shared = _background(solved, back, used)
     estimate, nu = _estimate(solved, back, mean, [*shared, *component], coverage)
     if not is_finite(estimate):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import os
 import subprocess
 import sys
@@ -17,7 +18,7 @@ SECONDS = 30.0
 QUIET = 5.0
 
 _BARE = """
-import os, sys, time
+import json, os, sys, time
 
 def look(folder):
     with os.scandir(folder) as found:
@@ -26,11 +27,14 @@ def look(folder):
             if entry.is_dir(follow_symlinks=False):
                 look(entry.path)
 
-root, every, share = sys.argv[1], float(sys.argv[2]), float(sys.argv[3])
-while True:
-    began = time.monotonic()
-    look(root)
-    time.sleep(max(every, share * (time.monotonic() - began)))
+taken = []
+for _ in range(11):
+    began, used = time.monotonic(), time.process_time()
+    look(sys.argv[1])
+    taken.append((time.process_time() - used, time.monotonic() - began))
+pages = int(open("/proc/self/statm").read().split()[1])
+used, took = (sorted(values)[5] for values in zip(*taken))
+print(json.dumps({"used": used, "took": took, "memory": pages * os.sysconf("SC_PAGE_SIZE") / (1 << 20)}))
 """
 
 
@@ -67,16 +71,13 @@ def settle_down(daemon) -> None:
 def measure(daemon, backend, station, bench, table) -> None:
     share = share_of_processor(daemon.pid)
     memory = resident(daemon.pid)
-    arguments = [str(station.inbox), str(SCAN_EVERY[backend]), str(SHARE_OF_TIME)]
-    bare = subprocess.Popen([sys.executable, "-c", _BARE, *arguments])
-    try:
-        time.sleep(2.0)
-        floor, floor_memory = share_of_processor(bare.pid), resident(bare.pid)
-    finally:
-        bare.kill()
-        bare.wait()
-    table.append(bench.Row(f"idle on 20,000 files, {backend}: processor", 100 * share, "%", 100 * floor))
-    table.append(bench.Row(f"idle on 20,000 files, {backend}: memory", memory, "MiB", floor_memory))
+    told = subprocess.run([sys.executable, "-c", _BARE, str(station.inbox)], capture_output=True, check=True)
+    bare = json.loads(told.stdout)
+    interval = max(SCAN_EVERY[backend], SHARE_OF_TIME * bare["took"])  # as the daemon spaces its looks
+    note = f"the bare loop looks every {interval:.0f} s, {1e3 * bare['used']:.0f} ms of processor each"
+    name = f"idle on 20,000 files, {backend}"
+    table.append(bench.Row(f"{name}: processor", 100 * share, "%", 100 * bare["used"] / interval, None, note))
+    table.append(bench.Row(f"{name}: memory", memory, "MiB", bare["memory"]))
 
 
 def share_of_processor(pid: int) -> float:

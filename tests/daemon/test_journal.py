@@ -5,6 +5,7 @@ from __future__ import annotations
 import contextlib
 import os
 import random
+import shutil
 import signal
 import sqlite3
 import subprocess
@@ -157,6 +158,76 @@ def test_a_page_overwritten(path: str, page: int, how: str) -> None:
 def test_something_else_altogether(path: str) -> None:
     Path(path).write_bytes(b"this is a letter to the laboratory\n" * 100)
     rebuilt(path)
+
+
+FALSE = {
+    "a size that is no number": "update files set size = 'large'",
+    "a time that is no number": "update files set mtime_ns = 'yesterday'",
+    "a path that is a number": "update files set path = 7 where path = (select min(path) from files)",
+    "a waiting file without a time": "insert into waiting values (x'69', x'7a', 1, 'x', '1', 0.0)",
+    "a wait that is a word": "insert into waiting values (x'69', x'7a', 1, '1', '1', 'long')",
+    "a quiet time that is a word": "insert into idle values ('x', 'long')",
+    "a quiet time without end": "insert into idle values ('x', 9e999)",
+    "an output whose name is bytes": "insert into outputs values (x'2f', x'ff', 'ab')",
+    "another table of that name": "drop table files; create table files (a)",
+    "a version below nothing": "pragma user_version = -5",
+    "no version": "pragma user_version = 0",
+}
+
+
+@pytest.mark.parametrize("how", FALSE)
+def test_well_formed_but_false_it_is_set_aside(path: str, how: str) -> None:
+    filled(path, 2)
+    with contextlib.closing(sqlite3.connect(path)) as other:
+        other.executescript(FALSE[how])
+    with opened(path) as journal:
+        assert journal.load_waiting() == []
+        assert journal.load_idle() == {}
+        assert journal.load_outputs() == {}
+        journal.record_files([record("a.csv")])
+        journal.load_files()
+        assert ["a new one was begun" in sentence for sentence in journal.sentences] == [True]
+    with opened(path) as journal:
+        journal.record_files([record("b.csv")])
+        assert [each.path for each in journal.load_files()][-1] == "b.csv"
+        assert journal.sentences == []
+
+
+def test_a_folder_in_its_place_is_set_aside(path: str) -> None:
+    os.mkdir(path)
+    with opened(path) as journal:
+        journal.record_files([record("a.csv")])
+        assert "is a folder" in journal.sentences[0]
+        assert os.path.isdir(path + ".damaged-1")
+
+
+def test_cut_short_while_it_was_made_for_the_first_time(path: str, tmp_path: Path) -> None:
+    """What a kill leaves then: pages of a transaction that was never finished, and the log to take them back."""
+    begun = str(tmp_path / "begun")
+    with contextlib.closing(sqlite3.connect(begun, isolation_level=None)) as db:
+        db.execute("pragma cache_size = 1")
+        db.executescript(f"begin; {MIGRATIONS[0]}")
+        for number in range(200):
+            db.execute("insert into idle values (?, 1.0)", (f"{number}" * 100,))
+        assert os.path.getsize(begun) > 0
+        for ending in ("", "-journal"):
+            shutil.copy(begun + ending, path + ending)
+    with opened(path) as journal:
+        assert journal.sentences == []
+        journal.record_files([record("a.csv")])
+        assert len(journal.load_files()) == 1
+        assert journal.load_idle() == {}
+
+
+def test_its_whole_folder_deleted_while_it_runs(tmp_path: Path) -> None:
+    path = str(tmp_path / "state" / "journal.sqlite")
+    os.mkdir(tmp_path / "state")
+    with opened(path) as journal:
+        journal.record_files([record("a.csv")])
+        shutil.rmtree(tmp_path / "state")
+        journal.record_files([record("b.csv")])
+        assert [each.path for each in journal.load_files()] == ["b.csv"]
+        assert "was deleted" in journal.sentences[0]
 
 
 def test_several_damaged_ones_are_all_kept(path: str) -> None:

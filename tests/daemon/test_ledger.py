@@ -3,18 +3,27 @@
 from __future__ import annotations
 
 import errno
+import os
+import shutil
 from pathlib import Path
 
 import pytest
 from disk_that_dies import Died, DyingDisk
 
 from spikeward.daemon.disk import RealDisk
-from spikeward.daemon.ledger import Ledger, LedgerDamaged, RuleTexts
+from spikeward.daemon.ledger import Ledger, LedgerDamaged, RuleTexts, history_lost
 
 PATH = "/state/ledger.jsonl"
+SERIES = ["in", "\udcff", "é\n", "sample", "7"]
 EVENTS = [
-    {"event": "closing", "batch": ["in", "", "MD1"]},
-    {"event": "lapse", "series": ["\udcff", "é\n"]},
+    {
+        "event": "closing",
+        "batch": SERIES[:3],
+        "rules_digest": "ab" * 32,
+        "calculation_version": "1",
+        "series": [SERIES],
+    },
+    {"event": "lapse", "series": SERIES, "readings": "cd" * 32},
     {"event": "x"},
 ]
 
@@ -98,6 +107,7 @@ def test_an_end_that_a_power_cut_filled_with_rubbish(tail: bytes) -> None:
     ledger = Ledger(disk, PATH)
     assert ledger.read() == EVENTS
     assert "cut off" in ledger.sentences[0]
+    assert "If a power cut did it" in ledger.sentences[0], "whether it had been acted on cannot be known"
 
 
 def test_events_of_one_call_are_torn_together() -> None:
@@ -150,6 +160,136 @@ def test_a_full_disk_leaves_no_half_line_behind() -> None:
     disk.full = False
     ledger.append(EVENTS[1])
     assert Ledger(disk, PATH).read() == EVENTS[:2]
+
+
+def recorded(tmp_path: Path) -> tuple[Ledger, Path]:
+    """A ledger in use, and its file."""
+    ledger = Ledger(RealDisk(), str(tmp_path / "state" / "ledger.jsonl"))
+    (tmp_path / "state").mkdir()
+    for event in EVENTS[:2]:
+        ledger.append(event)
+    return ledger, tmp_path / "state" / "ledger.jsonl"
+
+
+CHANGES = {
+    "cut short": lambda data: data[:30],
+    "a line shorter": lambda data: data[: data.index(b"\n") + 1],
+    "emptied": lambda data: b"",
+    "junk added": lambda data: data + b"\0\0junk",
+    "a line added": lambda data: data + b'{"event":"x"}\n',
+    "one sign changed": lambda data: data.replace(b"sample", b"sAmple"),
+}
+
+
+@pytest.mark.parametrize("replaced", [False, True])
+@pytest.mark.parametrize("how", CHANGES)
+def test_changed_by_somebody_else_while_in_use_nothing_is_added(tmp_path: Path, how: str, replaced: bool) -> None:
+    ledger, path = recorded(tmp_path)
+    whole = path.read_bytes()
+    changed = CHANGES[how](whole)
+    if replaced:
+        path.unlink()
+    with open(path, "wb" if replaced else "r+b") as file:
+        file.truncate(0)
+        file.write(changed)
+    os.utime(path, ns=(1, 1))
+    for _ in range(2):
+        with pytest.raises(LedgerDamaged, match="was changed by somebody else") as refused:
+            ledger.append(EVENTS[2])
+        assert isinstance(refused.value, OSError), "a running daemon meets it like any refusal of a disk"
+        assert refused.value.filename == str(path)
+    assert path.read_bytes() == changed
+    os.replace(f"{path}.as-recorded", path)
+    ledger.append(EVENTS[2])
+    assert Ledger(RealDisk(), str(path)).read() == EVENTS
+
+
+@pytest.mark.parametrize("what", ["the file", "the folder"])
+def test_deleted_while_in_use_it_is_written_again(tmp_path: Path, what: str) -> None:
+    ledger, path = recorded(tmp_path)
+    if what == "the folder":
+        shutil.rmtree(path.parent)
+    else:
+        path.unlink()
+    ledger.append(EVENTS[2])
+    assert Ledger(RealDisk(), str(path)).read() == EVENTS
+    assert ["was deleted while it was in use" in sentence for sentence in ledger.sentences] == [True]
+
+
+def test_looked_at_or_copied_back_unchanged_it_goes_on(tmp_path: Path) -> None:
+    ledger, path = recorded(tmp_path)
+    data = path.read_bytes()
+    path.unlink()
+    path.write_bytes(data)
+    ledger.append(EVENTS[2])
+    assert Ledger(RealDisk(), str(path)).read() == EVENTS
+    assert ledger.sentences == []
+
+
+def test_an_addition_that_was_written_but_not_brought_to_the_medium_is_not_recorded_twice() -> None:
+    class Stubborn(DyingDisk):
+        refuses = False
+
+        def append(self, path: str, data: bytes) -> None:
+            super().append(path, data)
+            if self.refuses:
+                raise OSError(errno.EIO, "Input/output error", path)
+
+    disk = Stubborn()
+    disk.mkdirs("/state")
+    ledger = Ledger(disk, PATH)
+    ledger.append(EVENTS[0])
+    disk.refuses = True
+    with pytest.raises(OSError, match="Input/output"):
+        ledger.append(EVENTS[1])
+    disk.refuses = False
+    ledger.append(EVENTS[1])
+    assert Ledger(disk, PATH).read() == EVENTS[:2]
+    assert ledger.sentences == []
+
+
+FALSE = {
+    b'{"noevent":1}': "does not say what happened",
+    b'{"event":7}': "does not say what happened",
+    b'{"event":"revision"}': "'series' of its event 'revision' is missing",
+    b'{"event":"closing"}': "'batch' of its event 'closing' is missing",
+    b'{"event":"lapse","series":["a","b"],"readings":"x"}': "'series' of its event 'lapse'",
+    b'{"event":"lapse","series":["a","b","c","d",5],"readings":"x"}': "'series' of its event 'lapse'",
+    b'{"event":"decisions","root":"in","path":"d.yaml","digest":"x","text":null}': "'text' of its event 'decisions'",
+    b'{"event":"closing","batch":["a","","b"],"rules_digest":"../../x","calculation_version":"1","series":[]}': (
+        "'rules_digest' of its event 'closing'"
+    ),
+    b'[{"event":"x"},{"event":"closing"}]': "'batch' of its event 'closing'",
+}
+
+
+@pytest.mark.parametrize("last", [False, True])
+@pytest.mark.parametrize("line", FALSE)
+def test_a_line_that_is_no_record_is_refused_with_its_number(line: bytes, last: bool) -> None:
+    disk = start()
+    Ledger(disk, PATH).append(EVENTS[0])
+    disk.append(PATH, line + (b"\n" if last else b'\n{"event":"x"}\n'))
+    before = disk.read(PATH)
+    with pytest.raises(LedgerDamaged, match=f"Line 2 .* cannot be used: .*{FALSE[line]}"):
+        Ledger(disk, PATH).read()
+    assert disk.read(PATH) == before
+
+
+def test_a_missing_ledger_is_told_where_results_stand(tmp_path: Path) -> None:
+    path = str(tmp_path / "state" / "ledger.jsonl")
+    folder = tmp_path / "inbox" / "night"
+    folder.mkdir(parents=True)
+    (folder / "N1_01.waiting.flag").touch()
+    (folder / "N1_01_A0.csv.unread.flag").touch()
+    folders = [str(tmp_path / "absent"), str(tmp_path / "inbox")]
+    assert history_lost(RealDisk(), path, folders) == [], "so far nothing was recorded that could be lost"
+    (folder / "N1_02.pass.flag").touch()
+    (told,) = history_lost(RealDisk(), path, folders)
+    assert "closings, adopted decisions and the history of revisions are lost" in told
+    assert "N1_02.pass.flag" in told
+    os.mkdir(tmp_path / "state")
+    Path(path).touch()
+    assert history_lost(RealDisk(), path, folders) == []
 
 
 def test_a_number_that_no_reader_could_read_back_is_refused() -> None:

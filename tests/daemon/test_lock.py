@@ -141,3 +141,75 @@ def test_folders_that_cannot_be_locked_are_said(tmp_path: Path, monkeypatch: pyt
     assert len(warnings) == 2
     assert any("Read-only" in each for each in warnings)
     held[0].release()
+
+
+OTHER = Identity(1, "h", "c", "s")
+
+
+@pytest.mark.parametrize("held_by_the_first", ["night", "night/tray", "night/tray/raw"])
+@pytest.mark.parametrize("asked_by_the_second", ["night", "night/tray", "night/tray/raw"])
+def test_two_stations_whose_folders_overlap(tmp_path: Path, held_by_the_first: str, asked_by_the_second: str) -> None:
+    (tmp_path / "night" / "tray" / "raw").mkdir(parents=True)
+    first, _ = acquire_stations([str(tmp_path / held_by_the_first)], ME)
+    with pytest.raises(Locked, match="pid: 4711"):
+        acquire_stations([str(tmp_path / asked_by_the_second)], OTHER)
+    assert not first[0].lost()
+    assert len(list(tmp_path.rglob(STATION))) == 1, "nothing is held by the one that was refused"
+    first[0].release()
+    second, _ = acquire_stations([str(tmp_path / asked_by_the_second)], OTHER)
+    second[0].release()
+
+
+def test_one_station_may_have_folders_within_each_other(tmp_path: Path) -> None:
+    (tmp_path / "night" / "out").mkdir(parents=True)
+    held, warnings = acquire_stations([str(tmp_path / "night"), str(tmp_path / "night" / "out")], ME)
+    assert len(held) == 2
+    assert warnings == []
+    for each in held:
+        each.release()
+
+
+@pytest.mark.parametrize("where", ["night", "night/tray/raw", "aside"])
+def test_folders_beside_each_other_and_locks_of_the_dead_keep_nobody_out(tmp_path: Path, where: str) -> None:
+    for folder in ("night/tray/raw", "aside"):
+        (tmp_path / folder).mkdir(parents=True)
+    (tmp_path / where / STATION).write_text("pid: 1\n")
+    aside, _ = acquire_stations([str(tmp_path / "aside")], ME)
+    held, _ = acquire_stations([str(tmp_path / "night" / "tray")], OTHER)
+    for each in (*aside, *held):
+        each.release()
+
+
+@pytest.mark.parametrize("odd", ["pipe", "link"])
+def test_something_odd_under_the_name_of_a_lock_above_is_not_opened(tmp_path: Path, odd: str) -> None:
+    (tmp_path / "night").mkdir()
+    if odd == "pipe":
+        os.mkfifo(tmp_path / STATION)
+    else:
+        (tmp_path / STATION).symlink_to("/etc/passwd")
+    held, _ = acquire_stations([str(tmp_path / "night")], ME)
+    held[0].release()
+
+
+def test_a_lock_that_was_lost_is_taken_again(tmp_path: Path) -> None:
+    path = tmp_path / "lock"
+    held = acquire(str(path), ME, "S")
+    path.unlink()
+    held.take_again()
+    assert not held.lost()
+    with pytest.raises(Locked, match="pid: 4711"):
+        acquire(str(path), OTHER, "S")
+    held.release()
+    assert not path.exists()
+
+
+def test_a_lock_that_another_one_took_meanwhile_stays_theirs(tmp_path: Path) -> None:
+    path = tmp_path / "lock"
+    held = acquire(str(path), ME, "S")
+    path.unlink()
+    other = acquire(str(path), OTHER, "S")
+    with pytest.raises(Locked, match="pid: 1"):
+        held.take_again()
+    held.release()
+    assert not other.lost()
+    other.release()

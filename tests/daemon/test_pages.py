@@ -22,15 +22,17 @@ from spikeward.daemon.pages.csv_file import COLUMNS, render_csv
 from spikeward.daemon.pages.digest import content_digest
 from spikeward.daemon.pages.flag import render_flag, render_unread
 from spikeward.daemon.pages.summary import render_summary
-from spikeward.rules.outcomes import BatchOutcome
+from spikeward.rules.outcomes import BatchOutcome, Check
 from spikeward.rules.records import BatchKey
 from tests.daemon.page_cases import (
     BATCH_OUTCOME,
+    FAILED,
     HISTORY,
     HOSTILE,
     LINKS,
     NOTICES,
     OUTCOMES,
+    PASSED,
     STATION,
     TURNED,
     cadmium,
@@ -87,7 +89,7 @@ def test_a_flag_tells_why_it_fails_and_what_to_do():
     lines = lines_of(render_flag(OUTCOMES["failed"], ""))
     reasons = [text for key, text in lines if key == "reason"]
     assert reasons[0].startswith("fail, Cd 226.5, linear_top: Vessel 3 reads 1.12 Abs")
-    assert reasons[0].endswith("Dilute the digest 1 + 1 and run the series again.")
+    assert reasons[0].endswith("Dilute the digest 1 + 1 and run the series again. Source: rule file.")
     assert [text for key, text in lines if key == "result"][1] == (
         "fail, Pb 283.3, no number: the slope does not differ from zero"
     )
@@ -243,6 +245,30 @@ def test_a_board_counts_first_and_lists_what_needs_a_person():
     urgent = text[text.index("Needs a person") : text.index("Notices")]
     assert urgent.index("Fail 09 Cd 226.5: Vessel 3 reads 1.12 Abs") < urgent.index("Waiting 08")
     assert "Waiting 08 Cd 226.5: Vessel 2b lies 6.2 % off the line" in urgent
+
+
+def test_a_board_says_which_result_rests_on_an_excluded_vessel():
+    text = " ".join(Page(PAGES["board"]).text.split())
+    rows = text[text.index("All results") :]
+    assert rows.count("1 vessel excluded") == 1
+    assert "2.52 ± 0.20 mg/kg dry matter 1 vessel excluded" in rows[rows.index("09Fail") :]
+
+
+def test_a_check_that_fails_somewhere_is_not_in_control():
+    found = [replace(PASSED, name="reference"), replace(FAILED, name="reference"), replace(PASSED, name="brackets")]
+    batch = replace(BATCH_OUTCOME, checks=tuple(found))
+    text = " ".join(Page(render_board(batch, (), {}, STATION)).text.split())
+    assert "; reference: 1 fails; in control: brackets." in text
+
+
+def test_a_fraction_is_observed_in_per_cent():
+    drifted = Check("brackets", "pass", "The sensitivity held.", -0.01111, "1", "warns above 5 %")
+    sides = Check("brackets", "warn", "No bracket was measured after this series.", 1.0, "sides")
+    ratio = Check("span", "pass", "The top addition is 2.5 times the content.", 2.5, "1")
+    batch = replace(BATCH_OUTCOME, checks=(drifted, sides, ratio))
+    text = " ".join(Page(render_board(batch, (), {}, STATION)).text.split())
+    assert [told in text for told in ("Observed −1.11 %", "Observed 1 sides", "Observed 2.5")] == [True] * 3
+    assert "0.0111" not in text
 
 
 def test_a_board_of_good_results_needs_nobody():

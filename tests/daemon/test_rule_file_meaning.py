@@ -32,8 +32,12 @@ READER_LINE = "  - folder: inbox"
 SAMPLE_RULE = "  - role: sample\n"
 BEHIND = "  match: '(?P<batch>"
 LEVELS = "levels: {0: 0 mL, 1: 0.25 mL, 2: 0.5 mL, 3: 0.75 mL}"
+WIDE_COLUMNS = "{solution: Solution, measured_at: Measured}"
 MUD = "MUD-1: {Cd: 2.40 mg/kg, uncertainty: 0.16 mg/kg, k: 2}"
 COLUMNS = "{solution: Solution, analyte: Element, line: Line, signal: Signal, unit: Unit, measured_at: Measured}"
+
+
+SINGLE = [("    levels: [0, 1, 2, 3]\n", ""), ("design: flasks", "design: single")]
 
 
 def second_preparation(text: str) -> Edit:
@@ -64,6 +68,36 @@ def second_preparation(text: str) -> Edit:
             "R010",
             "readers.readings.columns.signal_rsd",
             "readings",
+        ),
+        (
+            [("unit: Unit, ", "unit: Unit, readings: Wdh, ")],
+            "R031",
+            "readers.readings.columns.readings",
+            "for repeated rows use reading: for their number, or series: same_name: reading",
+        ),
+        (
+            [(COLUMNS, WIDE_COLUMNS), ("# wide: {Cd 214 (A): {", "wide: {X: {analyte: Cd, signal_sd: X SD}, Y: {")],
+            "R010",
+            "readers.readings.wide.X.signal_sd",
+            "add readings",
+        ),
+        (
+            [(COLUMNS, WIDE_COLUMNS), ("# wide: {", "wide: {X: {analyte: Cd, readings: n}, ")],
+            "R031",
+            "readers.readings.wide.X.readings",
+            "add signal_sd",
+        ),
+        (
+            [(COLUMNS, WIDE_COLUMNS.replace("}", ", signal_sd: SD, readings: N}")), ("# wide: ", "wide: ")],
+            "R031",
+            "readers.readings.columns.signal_sd",
+            "write signal_sd beside each analyte under wide",
+        ),
+        (
+            [(COLUMNS, WIDE_COLUMNS), ("# wide: {", "wide: {X: {analyte: Cd, reading: Wdh}, Y: Pb} # {")],
+            "R012",
+            "readers.readings.wide.X.reading",
+            "it belongs under readers.columns",
         ),
         ([("# wide: ", "wide: ")], "R031", "readers.readings.wide", "delete one"),
         ([("Europe/Lisbon", "Europe/Lisbonn")], "R017", "readers.readings.time_zone", "did you mean Europe/Lisbon?"),
@@ -157,6 +191,18 @@ def second_preparation(text: str) -> Edit:
         ([("final: 25 mL", "# ")], "R010", "preparations[0]", "add final"),
         ([("design: flasks", "design: successive")], "R031", "preparations[0].final", "delete final"),
         ([("design: flasks", "design: single")], "R031", "preparations[0].additions.levels", "say design: flasks"),
+        (
+            [*SINGLE, (LEVELS, "levels: {A: 0.1 mL, B: 0.2 mL}")],
+            "R031",
+            "preparations[0].additions.levels",
+            "give one level 0 mL",
+        ),
+        (
+            [*SINGLE, (LEVELS, "levels: {0: 0.1 mL}")],
+            "R031",
+            "preparations[0].additions.levels",
+            "one without and one with",
+        ),
         ([("# volume: 5 mL", "volume: 5 mL")], "R031", "preparations[0].sample", "mass and a volume"),
         ([("mass: bench", "# "), ("dry_matter: bench", "# ")], "R010", "preparations[0].sample", "add mass"),
         ([("digest: 50 mL", "# ")], "R010", "preparations[0].sample", "add digest"),
@@ -179,6 +225,7 @@ def second_preparation(text: str) -> Edit:
         ([("{batch: 'MD\\d+'}", "{role: 'process_blank|reference'}")], "R030", "names[4].role", "role sample"),
         ([("{batch: 'MD\\d+'}", "{batch: '(MD'}")], "R020", "preparations[0].for.batch", "cannot be used"),
         # contents that are known
+        ([("contents: {Cd: 20 ug/L, Pb: 100 ug/L}", "Cu: 20 ug/L")], "R012", "brackets.Cu", "contents: {Cu: …}"),
         ([("Cd: 20 ug/L", "Cu: 20 ug/L")], "R030", "brackets.contents.Cu", "no standard holds 'Cu'"),
         (
             [(MUD, MUD.replace("uncertainty", "uncertanty"))],
@@ -274,6 +321,37 @@ def test_warned_of_and_still_read(edits: list[Edit], code: str, path: str, says:
     assert [(p.code, p.path, p.severity) for p in problems] == [(code, path, "warning")]
     assert says in problems[0].sentence
     assert " warning R04" in problems[0].line_text()
+
+
+def test_a_level_that_one_preparation_does_not_make_is_told_with_its_line():
+    fewer = "levels: {0: 0 mL, 1: 0.25 mL}"
+    special = (
+        "  # Which series it applies to, as patterns",
+        f"  - for: {{sample: '9'}}\n    design: flasks\n    aliquot: 10 mL\n    final: 25 mL\n"
+        f"    additions: {{standard: Mix-7, {fewer}}}\n    report_in: mg/L\n"
+        "  # Which series it applies to, as patterns",
+    )
+    (problem,) = problems_of(special)
+    assert (problem.code, problem.path, problem.severity) == ("R043", "series.expects.levels", "warning")
+    text = EXAMPLE.replace(*special)
+    line = 1 + text[: text.index(fewer)].count("\n")
+    assert f"levels 2 and 3 are expected, and the preparation in line {line} " in problem.sentence
+    (none,) = problems_of(("levels: [0, 1, 2, 3]", "levels: [A, B]"))
+    assert (none.code, none.severity) == ("R031", "error")
+    assert "levels A and B are expected" in none.sentence
+
+
+def test_levels_may_have_any_names():
+    letters = (LEVELS, "levels: {A: 0 mL, B: 0.25 mL}")
+    assert problems_of(letters, ("levels: [0, 1, 2, 3]", "levels: [A, B]"), ("design: flasks", "design: single")) == ()
+
+
+def test_a_value_that_stands_alone_is_called_so():
+    problem = next(each for each in problems_of((MUD, "MUD-1: 2.40 mg/kg")) if each.path == "references.MUD-1")
+    assert problem.found == "a single value"
+    (problem,) = problems_of(("aliquot: 10 mL", "aliquot: [10 mL]"))
+    assert problem.found == "a list"
+    assert problem.expected.startswith("a volume such as 10 mL, or a map with the keys volume")
 
 
 def test_a_special_rule_before_a_general_one_is_no_shadow():

@@ -3,8 +3,12 @@
 import errno
 import hashlib
 import os
+import signal
 import socket
 import time
+from collections.abc import Iterator
+from contextlib import contextmanager
+from multiprocessing.connection import wait
 from pathlib import Path
 
 import pytest
@@ -21,7 +25,7 @@ LAYOUT = Layout("bench", columns=COLUMNS, unit="A")
 GOOD = b"Solution,Signal\nX1_A0,0.125\n"
 
 PLUGIN = """
-import ctypes, os, signal, sys, time
+import os, signal, subprocess, sys, time
 from spikeward.rules.records import Entry, Table
 
 class Reader:
@@ -31,9 +35,19 @@ class Reader:
         if what == "leaves": sys.exit(3)
         if what == "hangs":
             while True: time.sleep(0.01)
+        if what == "computes for ever":
+            while True: pass
+        if what == "is slow": time.sleep(1.2)
         if what == "hangs without timer":
-            signal.signal(signal.SIGALRM, signal.SIG_IGN)
+            for number in (signal.SIGALRM, signal.SIGPROF): signal.signal(number, signal.SIG_IGN)
             while True: time.sleep(0.01)
+        if what.startswith("starts another"):
+            program = subprocess.Popen(["sleep", "600"])
+            with open(layout.encoding, "a") as note: print(program.pid, file=note)
+        if what == "starts another and hangs":
+            while True: time.sleep(0.01)
+        if what == "copies itself" and os.fork() == 0: time.sleep(0.05)
+        if what == "kills itself": os.kill(os.getpid(), signal.SIGKILL)
         if what == "eats": bytearray(1 << 40)
         if what == "eats slowly":
             kept = []
@@ -66,10 +80,11 @@ def plugin(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     site = tmp_path / "site"
     (site / "wild-1.0.dist-info").mkdir(parents=True)
     (site / "wild_reader.py").write_text(PLUGIN)
+    (site / "leaving_reader.py").write_text("import sys; sys.exit(4)")
     (site / "wild-1.0.dist-info" / "METADATA").write_text("Metadata-Version: 2.1\nName: wild\nVersion: 1.0\n")
     (site / "wild-1.0.dist-info" / "entry_points.txt").write_text(
         "[spikeward.readers]\nwild = wild_reader:READER\nmissing = wild_reader:NOWHERE\n"
-        "idle = wild_reader:READS_NOTHING\ndelimited = wild_reader:READER\n"
+        "idle = wild_reader:READS_NOTHING\ndelimited = wild_reader:READER\nleaving = leaving_reader:READER\n"
     )
     monkeypatch.setenv("PYTHONPATH", str(site))
     return tmp_path
@@ -213,7 +228,7 @@ def test_a_name_that_is_not_unicode_reaches_the_worker(tmp_path: Path):
 ODD = {
     "raises": "ValueError: no such thing",
     "leaves": "SystemExit",
-    "hangs": "did not come to an end within 2 s",
+    "computes for ever": "did not come to an end within 0.5 s of work",
     "eats": "more memory than a reader may have",
     "eats slowly": "more memory than a reader may have",
     "exits": "with code 7",
@@ -229,7 +244,7 @@ def test_a_reader_that_misbehaves_costs_its_file_only(plugin: Path):
     jobs = [wild(plugin, what) for what in ODD]
     jobs += [wild(plugin, "writes"), wild(plugin, "fine")]
     jobs += [job_of(plugin, f"{number}.csv", GOOD) for number in range(60)]
-    with Readers(2, seconds=2.0, memory=96 << 20) as readers:
+    with Readers(2, seconds=0.5, memory=96 << 20) as readers:
         found = by_name(readers.read_many(jobs))
     assert len(found) == len(jobs)
     for what, said in ODD.items():
@@ -244,12 +259,93 @@ def test_a_reader_that_misbehaves_costs_its_file_only(plugin: Path):
     assert all(found[f"{number}.csv"].table is not None for number in range(60))
 
 
-def test_a_reader_that_disarms_its_timer_is_ended_from_outside(plugin: Path, monkeypatch: pytest.MonkeyPatch):
+def test_a_slow_machine_or_a_slow_share_makes_no_file_unread(plugin: Path):
+    """The clock goes on while a process is not let run; only its own work counts against a reader."""
+    with Readers(1, seconds=0.3) as readers:
+        (reply,) = readers.read_many([wild(plugin, "is slow")])
+        assert reply.table is not None
+        readers.start([wild(plugin, "is slow", 1)])
+        readers.replies(0.0)
+        (worker,) = readers._workers
+        worker.process.send_signal(signal.SIGSTOP)
+        wait([worker.connection], 0.8)  # nothing can come of a stopped process
+        worker.process.send_signal(signal.SIGCONT)
+        (reply,) = readers.read_many([])
+    assert reply.sentence == ""
+    assert reply.table is not None
+
+
+def test_opening_a_file_does_not_count_against_the_reader(tmp_path: Path, monkeypatch: pytest.MonkeyPatch):
+    order: list[str] = []
+    real = reading._content
+
+    def content(path: str) -> tuple[bytes, Stamp]:
+        order.append("opened and read")
+        return real(path)
+
+    @contextmanager
+    def limited() -> Iterator[None]:
+        order.append("limit")
+        yield
+
+    monkeypatch.setattr(reading, "_content", content)
+    assert read_file(job_of(tmp_path, "x.csv", GOOD), limited).table is not None
+    assert order == ["opened and read", "limit"]
+
+
+@pytest.mark.parametrize("what", ["hangs", "hangs without timer", "kills itself"])
+def test_what_may_be_the_machines_doing_is_only_tried_again(plugin: Path, monkeypatch: pytest.MonkeyPatch, what: str):
+    """Also, the files behind a hanging one wait for it once, and are not suspected with it."""
     monkeypatch.setattr(workers, "_GRACE", 0.5)
-    with Readers(1, seconds=0.5) as readers:
-        found = by_name(readers.read_many([wild(plugin, "hangs without timer"), job_of(plugin, "x.csv", GOOD)]))
-    assert "did not come to an end" in found["hangs without timer 0.wild"].sentence
-    assert found["x.csv"].table is not None
+    jobs = [job_of(plugin, f"{number}.csv", GOOD) for number in range(20)]
+    with Readers(1, patience=0.5) as readers:
+        begun = time.monotonic()
+        found = by_name(readers.read_many([*jobs[:10], wild(plugin, what), *jobs[10:]]))
+        assert time.monotonic() - begun < 8.0
+    reply = found.pop(f"{what} 0.wild")
+    assert reply.temporary
+    assert "is tried again" in reply.sentence
+    assert len(found) == 20
+    assert all(each.table is not None for each in found.values())
+
+
+@pytest.mark.parametrize("what", ["starts another", "starts another and hangs"])
+def test_what_a_reader_started_ends_with_its_process(plugin: Path, what: str):
+    with Readers(1, patience=0.5) as readers:
+        readers.read_many([wild(plugin, what)])
+    started = [int(line) for line in (plugin / "once").read_text().split()]
+    assert started
+    assert all(ended(number) for number in started)
+
+
+def test_what_a_reader_started_ends_when_the_daemon_is_gone(plugin: Path):
+    with Readers(1) as readers:
+        readers.read_many([wild(plugin, "starts another")])
+        (worker,) = readers._workers
+        worker.connection.close()
+        worker.process.wait(10.0)
+        assert all(ended(int(line)) for line in (plugin / "once").read_text().split())
+        readers._workers.clear()
+
+
+def test_a_reader_that_copies_its_process_is_answered_once(plugin: Path):
+    jobs = [wild(plugin, "copies itself", number) for number in range(3)]
+    with Readers(1) as readers:
+        found = by_name(readers.read_many(jobs))
+        again = by_name(readers.read_many([job_of(plugin, f"{number}.csv", GOOD) for number in range(40)]))
+    assert all(reply.table is not None for reply in [*found.values(), *again.values()])
+
+
+def ended(number: int, within: float = 5.0) -> bool:
+    """Whether a process is gone, or only waits to be reaped."""
+    until = time.monotonic() + within
+    while time.monotonic() < until:
+        try:
+            if Path(f"/proc/{number}/stat").read_text().rpartition(")")[2].split()[0] == "Z":
+                return True
+        except (FileNotFoundError, ProcessLookupError):
+            return True
+    return False
 
 
 def test_a_worker_that_somebody_else_kills_is_replaced_and_its_file_read(plugin: Path):
@@ -273,13 +369,23 @@ def test_a_worker_killed_between_two_files_is_replaced(tmp_path: Path):
 def test_packages_are_told_apart_by_name_and_built_in_readers_stay(plugin: Path):
     jobs = {
         name: job_of(plugin, name, content, Layout("l", name, columns=COLUMNS, unit="A"))
-        for name, content in {"missing": b"x", "idle": b"x", "nowhere": b"x", "delimited": GOOD}.items()
+        for name, content in {
+            "missing": b"x",
+            "idle": b"x",
+            "nowhere": b"x",
+            "leaving": b"x",
+            "delimited": GOOD,
+        }.items()
     }
     with Readers(1) as readers:
         found = by_name(readers.read_many(jobs.values()))
     assert "cannot be loaded (AttributeError)" in found["missing"].sentence
+    assert "'leaving' cannot be loaded (SystemExit)" in found["leaving"].sentence
     assert "has no function read" in found["idle"].sentence
-    assert "no reader is called 'nowhere'; installed are delimited, idle, missing, wild" in found["nowhere"].sentence
+    assert (
+        "no reader is called 'nowhere'; installed are delimited, idle, leaving, missing, wild"
+        in found["nowhere"].sentence
+    )
     assert found["delimited"].table.entries[0].signal == 0.125
 
 
@@ -331,5 +437,5 @@ def test_a_worker_ends_by_itself_when_the_daemon_is_gone(tmp_path: Path):
         readers.read_many([job_of(tmp_path, "x.csv", GOOD)])
         (worker,) = readers._workers
         worker.connection.close()
-        assert worker.process.wait(10.0) == 0
+        assert worker.process.wait(10.0) in (0, -signal.SIGKILL)
         readers._workers.clear()

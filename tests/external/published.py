@@ -123,24 +123,27 @@ def _printed(told: Mapping[str, str]) -> Printed:
 def recomputed(case: Case) -> dict[str, float]:
     """The case in fractions, so that nothing is rounded before the last step.
 
-    Least squares on x = standard x addition / aliquot and y = signal x final / aliquot; the standard uncertainty of an
-    extrapolated content (Miller and Miller, Statistics and Chemometrics for Analytical Chemistry, chapter 5) and its
+    Least squares on x = standard x addition / aliquot and y = signal x final / aliquot with weights (aliquot / final)²,
+    for noise that is constant in the signal; the standard uncertainty of an extrapolated content (Miller and Miller, Statistics and Chemometrics for Analytical Chemistry, chapter 5) and its
     limits by Fieller's theorem. Two points have no uncertainty.
     """
     x = [case.standard * addition / aliquot for aliquot, addition, _, _ in case.flasks]
     y = [signal * final / aliquot for aliquot, _, final, signal in case.flasks]
-    n = Fraction(len(x))
-    x_mean, y_mean = sum(x, Fraction()) / n, sum(y, Fraction()) / n
-    sxx = sum(((each - x_mean) ** 2 for each in x), Fraction())
-    slope = sum(((a - x_mean) * (b - y_mean) for a, b in zip(x, y, strict=True)), Fraction()) / sxx
+    w = [Fraction(aliquot / final) ** 2 for aliquot, _, final, _ in case.flasks]
+    n, total = len(x), sum(w, Fraction())
+    x_mean = sum((c * a for c, a in zip(w, x, strict=True)), Fraction()) / total
+    y_mean = sum((c * b for c, b in zip(w, y, strict=True)), Fraction()) / total
+    sxx = sum((c * (a - x_mean) ** 2 for c, a in zip(w, x, strict=True)), Fraction())
+    slope = sum((c * (a - x_mean) * (b - y_mean) for c, a, b in zip(w, x, y, strict=True)), Fraction()) / sxx
     content = y_mean / slope - x_mean
     found = {"content": float(content)}
     if n > 2:
-        rest = sum((b - y_mean - slope * (a - x_mean)) ** 2 for a, b in zip(x, y, strict=True)) / (n - 2)
-        found["standard_uncertainty"] = math.sqrt(rest / slope**2 * (1 / n + (content + x_mean) ** 2 / sxx))
+        left = [b - y_mean - slope * (a - x_mean) for a, b in zip(x, y, strict=True)]
+        rest = sum(c * each**2 for c, each in zip(w, left, strict=True)) / (n - 2)
+        found["standard_uncertainty"] = math.sqrt(rest / slope**2 * (1 / total + (content + x_mean) ** 2 / sxx))
         t = Fraction(float(stdtrit(float(n - 2), 0.5 + COVERAGE / 2)))
         g = t**2 * rest / (slope**2 * sxx)
-        half = float(t) * math.sqrt(rest / slope**2 * ((1 - g) / n + (content + x_mean) ** 2 / sxx))
+        half = float(t) * math.sqrt(rest / slope**2 * ((1 - g) / total + (content + x_mean) ** 2 / sxx))
         middle = float((content + x_mean) / (1 - g) - x_mean)
         found["low"], found["high"] = middle - half / float(1 - g), middle + half / float(1 - g)
     if case.over is not None:

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import os
 import random
+import shutil
+import subprocess
 import threading
 import time
 from collections.abc import Mapping

@@ -191,6 +191,39 @@ MEANS = replace(
 )
 
 
+def test_the_number_of_a_repeated_row_is_kept_as_text():
+    layout = replace(SMALL, columns={**SMALL.columns, "reading": "Wdh"})
+    entries = read("Solution;Wdh;Signal\nX;01;0.5\nX;b;0.6\nX;;0.7\n", layout).entries
+    assert [entry.values for entry in entries] == [(("reading", "01"),), (("reading", "b"),), ()]
+
+
+SPREAD = Layout(
+    "spread",
+    columns={"solution": "Name", "readings": "N"},
+    wide={
+        "Cd": WideColumn("Cd", "Cd 214.4", signal_sd="Cd SD"),
+        "Pb": WideColumn("Pb", signal_rsd="Pb RSD", readings="Pb n"),
+        "Zn": WideColumn("Zn"),
+    },
+    unit="cps",
+)
+
+
+def test_each_column_of_a_wide_table_has_its_own_scatter():
+    text = "Name;N;Cd;Cd SD;Pb;Pb RSD;Pb n;Zn\nX;3;100;1,5;200;2 %;5;300\nY;3;100;;-200;2,0;;300\n"
+    found = [(entry.analyte, entry.sd, entry.readings) for entry in read(text, SPREAD).entries]
+    assert found == [
+        ("Cd", 1.5, 3), ("Pb", 4.0, 5), ("Zn", None, 3), ("Cd", None, 3), ("Pb", 4.0, 1), ("Zn", None, 3),
+    ]  # fmt: skip
+
+
+def test_a_scatter_of_a_wide_column_is_looked_for_and_read_with_care():
+    lacking = refused("Name;N;Cd;Pb;Pb RSD;Pb n;Zn\nX;3;1;2;2;5;3\n", SPREAD)
+    assert "lacks 'Cd SD'" in lacking.sentence
+    below = refused("Name;N;Cd;Cd SD;Pb;Pb RSD;Pb n;Zn\nX;3;100;-1,5;200;2;5;300\n", SPREAD)
+    assert (below.row, below.column) == (2, "Cd SD")
+
+
 def test_means_carry_their_relative_standard_deviation_and_number():
     text = "Solution;Mean;RSD [%];N\nX1;-0,200;1,5;3\nX2;n.d.;n.d.;3\nX3;0,3;2,0 %;\nX4;0,4;;5\n"
     entries = read(text, MEANS).entries
@@ -384,6 +417,16 @@ def test_a_cell_without_end_is_refused():
         "a cell is longer than 131072 characters"
         in refused('Solution;Signal\n"' + "X" * 140_000 + '";1\n', SMALL).sentence
     )
+
+
+def test_a_row_of_another_width_is_quoted_and_blames_no_column():
+    text = HEAD + ROW + "Mittelwerte siehe Protokoll\n"
+    told = refused(text, replace(LONG, ends_at=("Mittelwerte",)))
+    assert (told.row, told.column) == (3, None)
+    assert "1 cell where the headings have 6, and its first cell is 'Mittelwerte siehe Protokoll'" in told.sentence
+    assert "add the whole first cell under ends_at" in told.sentence
+    assert len(read(text, replace(LONG, ends_at=("Mittelwerte siehe Protokoll",))).entries) == 1
+    assert "its first cell is empty" in refused(HEAD + ROW + ",x\n").sentence
 
 
 # ---- whatever comes --------------------------------------------------------------------------------------------------

@@ -5,7 +5,9 @@ from __future__ import annotations
 import math
 from dataclasses import replace
 
+import numpy as np
 import pytest
+import statsmodels.api as sm
 from scipy import stats
 
 from spikeward.rules.checks.curvature import mandel
@@ -14,6 +16,7 @@ from spikeward.rules.checks.registry import REGISTRY
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WARN
 from spikeward.rules.records import OVER_RANGE
 from spikeward.rules.rulebook import Top
+from spikeward.rules.solve.solved import Background
 
 X4 = (0.0, 0.25, 0.5, 0.75)
 X6 = (0.0, 0.2, 0.4, 0.6, 0.8, 1.0)
@@ -45,6 +48,10 @@ def test_levels(bench):
     every_verdict(bench, "levels", (of(4), of(3), of(2), None))
     single = bench.subject_of(bench.line_of(X4[:2], ys(X4[:2]), design="single"))
     assert bench.check_of("levels", single).verdict == PASS
+    assert "declare the design single" in bench.check_of("levels", of(2)).remedy
+    without_zero = bench.subject_of(bench.line_of(X4[1:3], ys(X4[1:3])))
+    for subject in (of(1), of(3), without_zero, single):  # none of these would be a single addition, or is one
+        assert "declare" not in bench.check_of("levels", subject).remedy
 
 
 def test_response_holds_g_against_fieller(bench):
@@ -259,6 +266,70 @@ def test_precision_pools_exported_deviations_and_repeated_readings(bench):
     assert check.observed == pytest.approx(0.02 / math.sqrt(2) / 1.01, rel=1e-9)
 
 
+def test_precision_is_that_of_the_signal_without_its_background(bench):
+    """A background of 0.4 on signals of 0.3 to 1.05: readings that differ by 0.02."""
+    line = bench.line_of(X4, [y + 0.4 for y in ys(X4)])
+    twice = tuple(
+        replace(v, readings=(replace(r, signal=r.signal - 0.01), replace(r, signal=r.signal + 0.01, row=r.row + 50)))
+        for v in line.vessels for r in v.readings
+    )  # fmt: skip
+    plain = bench.subject_of(replace(line, vessels=twice))
+    background = Background(0.4, None, 0, 1, (), "A")
+    subject = replace(plain, solved=replace(plain.solved, background=background))
+    expected = math.sqrt(sum((0.01 * math.sqrt(2) / y) ** 2 for y in ys(X4)) / 4)
+    assert bench.check_of("precision", subject, floor=0.0).observed == pytest.approx(expected, rel=1e-9)
+    assert bench.check_of("precision", plain, floor=0.0).observed < expected / 1.3
+
+
+def test_a_content_below_zero_by_more_than_its_uncertainty_fails(bench):
+    subject = bench.subject_of(bench.line_of(X4, ys(X4, content=-0.2)))
+    check = bench.check_of("expanded_uncertainty", subject)
+    assert check.verdict == FAIL
+    assert "below zero by more than its uncertainty: though nothing was subtracted" in check.sentence
+    background = Background(0.4, None, 0, 1, (), "A")
+    less = replace(subject, solved=replace(subject.solved, background=background))
+    assert "subtracted too high" in bench.check_of("expanded_uncertainty", less).sentence
+    near = bench.subject_of(bench.line_of(X4, ys(X4, content=-0.01)))
+    assert "cannot be told from zero" in bench.check_of("expanded_uncertainty", near).sentence
+    single = bench.subject_of(bench.line_of(X4[:2], ys(X4[:2], content=-0.2), design="single"))
+    assert bench.check_of("expanded_uncertainty", single).verdict == WARN
+
+
+def growing(bench, bend=0.0):
+    """Successive additions of 1 mL to 10 mL: S = 0.4 c + bend c² of the content c in the vessel."""
+    line = bench.line_of([0.0] * 6, [0.0] * 6, design="successive")
+    vessels = []
+    for n, vessel in enumerate(line.vessels):
+        content, final = (3.0 + 10.0 * n) / (10.0 + n), 10.0 + n
+        signal = 0.4 * content + bend * content**2 + 0.001 * SCATTER[n]
+        readings = (replace(vessel.readings[0], signal=signal),)
+        vessels.append(replace(vessel, aliquot_ml=10.0, final_ml=final, added=10.0 * n, readings=readings))
+    return bench.subject_of(replace(line, vessels=tuple(vessels)))
+
+
+def test_checks_of_the_line_take_the_weights_of_its_volumes(bench):
+    subject = growing(bench)
+    points = subject.solved.points
+    x, y = np.array([p.x for p in points]), np.array([p.y for p in points])
+    w = np.array([p.matrix_share for p in points]) ** 2
+    fit = sm.WLS(y, sm.add_constant(x), weights=w).fit()
+    parabola = sm.WLS(y, np.column_stack([np.ones(6), x, x**2]), weights=w).fit()
+    f = (fit.ssr - parabola.ssr) / (parabola.ssr / 3)
+    assert bench.check_of("curvature", subject).observed == pytest.approx(f, rel=1e-6)
+    influence = sm.OLS(fit.model.wendog, fit.model.wexog).fit().get_influence()
+    largest = np.abs(influence.resid_studentized_internal).max()
+    assert bench.check_of("studentised", subject).observed == pytest.approx(largest, rel=1e-6)
+    relative = np.abs(y - fit.fittedvalues) / fit.fittedvalues
+    assert bench.check_of("residual", subject, floor=0.0).observed == pytest.approx(relative.max(), rel=1e-6)
+
+
+def test_curvature_in_a_growing_volume_says_that_its_figure_is_rough(bench):
+    assert bench.check_of("curvature", growing(bench)).verdict == PASS
+    bent = bench.check_of("curvature", growing(bench, bend=-0.02))
+    assert bent.verdict in (WARN, FAIL)
+    assert "a rough figure as the volumes differ" in bent.sentence
+
+
 def test_standard_in_date(bench):
     line = bench.line_of(X4, ys(X4))
     never = tuple(replace(v, readings=(replace(v.readings[0], measured_at=""),)) for v in line.vessels)
@@ -291,3 +362,41 @@ def test_pack_and_registry_agree(bench):
         assert set(limits.values) == set(limits.sources), name
         assert all(limits.sources.values()), name
     assert all(name == one.name and one.describes for name, one in REGISTRY.items())
+
+
+def with_over_range(bench):
+    line = bench.line_of(X4, ys(X4))
+    vessel = line.vessels[3]
+    over = replace(vessel.readings[0], signal=None, text="OVER", qualifier=OVER_RANGE)
+    return bench.subject_of(replace(line, vessels=(*line.vessels[:3], replace(vessel, readings=(over,)))))
+
+
+@pytest.mark.parametrize("name", ["levels", "response", "correlation", "curvature", "residual", "studentised"])
+def test_where_no_line_was_drawn_nothing_is_said_of_it(bench, name):
+    check = bench.check_of(name, with_over_range(bench))
+    assert (check.verdict, check.sentence, check.remedy) == (NOT_EVALUATED, "Not evaluated: there is no line.", "")
+
+
+def test_a_vessel_over_range_has_one_remedy(bench):
+    check = bench.check_of("solved", with_over_range(bench))
+    assert check.sentence == "There is no number: level 3 (inbox/run.csv, row 2) is over range."
+    assert check.remedy == "Dilute the test solution and measure again, or exclude the vessel by a decision"
+
+
+def test_one_degree_of_freedom_is_one(bench):
+    check = bench.check_of("curvature", bench.subject_of(bench.line_of(X4[:3], ys(X4[:3]))))
+    assert "3 vessels leave 1 degree of freedom, too few" in check.sentence
+
+
+def test_a_share_near_its_limit_is_not_told_as_the_limit(bench):
+    subject = bench.subject_of(bench.line_of(X4, ys(X4)))
+    share = bench.check_of("residual", subject).observed
+    check = bench.check_of("residual", subject, warn_above=round(share, 4))
+    limit, told = f"{round(share, 4) * 100:g} %", check.sentence.split(" is ")[1].split(" of ")[0]
+    assert f"warns above {limit}" in check.sentence
+    assert told != limit
+
+
+def test_a_limit_says_under_which_key_it_is_changed(bench):
+    check = bench.check_of("residual", bench.subject_of(bench.line_of(X4, ys(X4))))
+    assert check.source == "common practice; key checks: residual"

@@ -6,14 +6,14 @@ import math
 from decimal import Decimal
 
 import pytest
-from hypothesis import given
+from hypothesis import assume, given
 from hypothesis import strategies as st
 
 from spikeward.rules.outcomes import Estimate
 from spikeward.rules.records import SeriesKey
-from spikeward.rules.rounding import figure, percent, rounded
+from spikeward.rules.rounding import figure, percent, percent_apart, rounded
 from spikeward.rules.sentences import estimate_words, series_name
-from spikeward.rules.words import line_words
+from spikeward.rules.words import freedom, line_words, listed, unit_words
 
 
 @pytest.mark.parametrize(
@@ -61,7 +61,40 @@ def test_figures_in_words():
     assert figure(73.333) == "73.3"
     assert percent(0.0413) == "4.1 %"
     assert estimate_words(Estimate(2.3123, "mg/kg", 0.09, 0.1811), "dry matter") == "2.31 ± 0.18 mg/kg dry matter"
+    assert estimate_words(Estimate(43.04, "ug/kg", 2.0, 6.02)) == "43.0 ± 6.0 µg/kg"
     assert estimate_words(Estimate(2.3123, "mg/L")) == "2.31 mg/L, uncertainty not known"
+
+
+@pytest.mark.parametrize(
+    ("fraction", "limits", "told"),
+    [
+        (0.0504, (0.05, 0.1), "5.04 %"),
+        (0.05, (0.05, 0.1), "5 %"),
+        (0.052, (0.05, 0.1), "5.2 %"),
+        (0.09996, (0.05, 0.1), "9.996 %"),
+        (0.0500004, (0.05,), "5.00004 %"),
+        (0.3, (), "30 %"),
+    ],
+)
+def test_a_share_near_a_limit_is_told_apart_from_it(fraction, limits, told):
+    assert percent_apart(fraction, limits) == told
+
+
+@given(st.floats(min_value=1e-6, max_value=10), st.floats(min_value=1e-6, max_value=10))
+def test_two_different_shares_are_never_told_alike(fraction, limit):
+    assume(abs(fraction / limit - 1) > 1e-9 and figure(limit * 100) == f"{limit * 100:g}")
+    assert percent_apart(fraction, (limit,)) != percent(limit, 3)
+
+
+def test_counts_units_and_lists_in_words():
+    assert [freedom(1), freedom(2), freedom(0)] == [
+        "1 degree of freedom", "2 degrees of freedom", "0 degrees of freedom",
+    ]  # fmt: skip
+    assert [unit_words(code) for code in ("ug/kg", "mg/kg", "1", "units")] == ["µg/kg", "mg/kg", "", "units"]
+    assert listed(["a"]) == "a"
+    assert listed(["a", "b", "c"]) == "a, b and c"
+    assert listed([str(n) for n in range(20)]) == "0, 1, 2 and 17 more"
+    assert listed([]) == ""
 
 
 def test_names_as_people_say_them():

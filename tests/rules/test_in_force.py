@@ -54,6 +54,82 @@ def test_two_files_that_disagree_fail_and_are_both_named():
     assert "prefer" in conflict
 
 
+def replicates(times: bool, vessels: int = 4, analytes: tuple[str, ...] = ("Mn",), **changes: object) -> list[Reading]:
+    """Every vessel three times in one file, row by row; with ``times`` each row has its own minute."""
+    rows = [(level, analyte, n) for level in range(vessels) for analyte in analytes for n in range(3)]
+    return [
+        reading(
+            0.1 * level + 0.001 * n, "run.csv", row, level=str(level), solution=f"N1_07_A{level}", analyte=analyte,
+            measured_at=f"2026-03-01T20:{row:02d}:00Z" if times else "", **changes,
+        )
+        for row, (level, analyte, n) in enumerate(rows, 2)
+    ]  # fmt: skip
+
+
+@pytest.mark.parametrize("times", [True, False])
+@pytest.mark.parametrize("analytes", [("Mn",), ("Fe", "Mn")])
+def test_repeated_rows_are_told_once_for_a_series(times: bool, analytes: tuple[str, ...]):
+    (conflict,) = only(replicates(times, analytes=analytes)).conflicts
+    named = "N1_07_A0, rows 2, 3 and 4" if len(analytes) == 1 else "N1_07_A0, Fe: rows 2, 3 and 4"
+    assert conflict == (
+        f"every vessel stands 3 times in run.csv (first: {named}); if these are repeated readings say same_name: "
+        "reading under series, or give their number in a column or the name"
+    )
+    assert only(replicates(times, analytes=analytes), "reading").conflicts == ()
+
+
+def test_some_repeated_vessels_are_named_and_many_are_counted():
+    single = [reading(9.0, "run.csv", 900, level="99", solution="N1_07_A99")]
+    (conflict,) = only(replicates(False, vessels=20) + single).conflicts
+    assert conflict.startswith("N1_07_A0, N1_07_A1, N1_07_A2 and 17 more stand 3 times each in run.csv")
+    (one,) = only(replicates(False, vessels=1) + single).conflicts
+    assert one.startswith("N1_07_A0 stands 3 times in run.csv (rows 2, 3 and 4); if these are repeated readings")
+
+
+def test_two_rows_of_one_time_ask_for_times_of_their_own():
+    rows = [reading(0.2, row=2), reading(0.3, row=3)]
+    (conflict,) = only(rows, "reading").conflicts
+    assert conflict.endswith("; if these are repeated readings give each its own time, or its number in the name")
+
+
+def test_files_that_disagree_about_a_whole_series_are_told_once():
+    rows = [
+        reading(signal + 0.1 * level, path, 2 + level, level=str(level), solution=f"N1_07_A{level}")
+        for path, signal in (("a.csv", 0.1), ("b.csv", 0.2))
+        for level in range(4)
+    ]
+    (conflict,) = only(rows).conflicts
+    assert conflict.startswith("a.csv and b.csv disagree about every vessel (first: N1_07_A0, Mn: a.csv row 2 (0.1 A) ")
+    assert conflict.endswith("; remove the wrong file, declare the column of the processing time, or say prefer in the "
+                             "decisions file")  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    ("changes", "first", "second"),
+    [
+        ({"sd": 0.001}, "0.2007 A, no SD", "0.2007 A, SD 0.001"),
+        ({"readings": 3}, "0.2007 A, a single reading", "0.2007 A, mean of 3"),
+        (
+            {"values": (("mass", "0.5 g", "column"),)},
+            "0.2007 A, no quantity beside it", "0.2007 A, mass 0.5 g from the column",
+        ),
+        ({"already": ("blank",)}, "0.2007 A, nothing taken off", "0.2007 A, blank taken off already"),
+    ],
+)  # fmt: skip
+def test_equal_signals_that_disagree_say_in_what(changes: dict[str, object], first: str, second: str):
+    (conflict,) = only([reading(0.2007, "a.csv"), reading(0.2007, "b.csv", **changes)]).conflicts
+    assert f"a.csv row 2 ({first}) and b.csv row 2 ({second}) disagree about one reading" in conflict
+
+
+def test_a_vessel_met_again_in_another_file_names_both():
+    again = reading(0.21, "b.csv", 3, measured_at="2026-03-01T20:05:00Z")
+    (conflict,) = only([reading(0.2), again]).conflicts
+    assert "the same vessel is met again (a.csv row 2 and b.csv row 3)" in conflict
+    assert conflict.endswith("say same_name: reading under series, else take the wrong file out")
+    (other,) = only([reading(0.2), replace(again, solution="n1_7_a1")]).conflicts
+    assert other.endswith("else exclude one in the decisions file")
+
+
 def test_a_later_processing_time_decides():
     early = reading(0.2, "a.csv", processed_at="2026-03-01T21:00:00Z")
     late = reading(0.3, "b.csv", processed_at="2026-03-01T22:00:00Z")

@@ -68,6 +68,21 @@ def test_successive_deliveries_add_up_in_amount_and_in_volume():
     assert volumes(line(successive, THREE)) == [(10.0, 0.0, 10.0), (10.0, 0.25, 10.25), (10.0, 0.75, 10.75)]
 
 
+LETTERS = {"A": q("0 mL"), "B": q("0.5 mL")}
+
+
+def test_the_level_without_addition_is_the_undiluted_one_whatever_its_name():
+    single = replace(FLASKS, design="single", additions=LETTERS, level_0="undiluted")
+    assert volumes(line(single, [reading("A"), reading("B")])) == [(10.0, 0.0, 10.0), (10.0, 0.5, 25.0)]
+    swapped = replace(single, additions={"A": q("0.5 mL"), "B": q("0 mL")})
+    assert volumes(line(swapped, [reading("A"), reading("B")])) == [(10.0, 0.5, 25.0), (10.0, 0.0, 10.0)]
+
+
+def test_a_level_named_0_needs_no_declaration():
+    single = replace(FLASKS, design="single", additions={"1": q("0.5 mL")}, level_0="undiluted")
+    assert volumes(line(single, [reading("0"), reading("1")])) == [(10.0, 0.0, 10.0), (10.0, 0.5, 25.0)]
+
+
 def test_successive_totals_are_taken_as_said():
     successive = replace(FLASKS, design="successive", final=None, deliveries="total")
     assert volumes(line(successive, THREE))[2] == (10.0, 0.5, 10.5)
@@ -76,6 +91,34 @@ def test_successive_totals_are_taken_as_said():
 def test_a_level_that_was_not_measured_was_still_delivered():
     successive = replace(FLASKS, design="successive", final=None, deliveries="each")
     assert volumes(line(successive, [reading("0"), reading("2")]))[1] == (10.0, 0.75, 10.75)
+
+
+def successive_by_column(*levels: str, **changes):
+    successive = replace(FLASKS, design="successive", final=None, deliveries="each", **changes)
+    values = {level: () if level == "0" else (("addition", "0.5 mL", "column"),) for level in levels}
+    return line(successive, [reading(level, *values[level]) for level in levels])
+
+
+def test_a_delivery_that_nobody_tells_is_in_every_later_vessel():
+    two = successive_by_column("0", "1", "3", "4", additions={"0": q("0 mL"), "1": q("0.5 mL")})
+    assert two.missing == ("the addition of level 2, which every later vessel holds",)
+    assert [vessel.level for vessel in two.vessels] == ["0", "1"]
+    assert successive_by_column("0", "1", "2", "3").missing == ()
+    # names that count in steps, and a list of the rule file that is complete
+    assert successive_by_column("0", "10", "20", "30", additions={}).missing == ()
+    assert successive_by_column("0", "10", "30", additions={}).missing != ()
+    listed = {level: q("0.5 mL") for level in ("0", "1", "4")}
+    assert successive_by_column("0", "1", "4", additions=listed).missing == ()
+
+
+def test_a_final_volume_that_was_read_goes_before_the_sum_of_the_parts():
+    successive = replace(FLASKS, design="successive", final=None, deliveries="each")
+    readings = [reading(level, ("final", "50 mL", "column")) for level in ("0", "1", "2")]
+    assert [final for _, _, final in volumes(line(successive, readings))] == [50.0, 50.0, 50.0]
+    short = line(successive, [reading("0"), reading("1", ("final", "9 mL", "column")), reading("2")])
+    assert any("do not fit into the final volume" in problem for problem in short.problems)
+    contracted = line(successive, [reading("0"), reading("1", ("final", "10.2 mL", "column")), reading("2")])
+    assert contracted.problems == ()
 
 
 def test_the_unspiked_reading_of_the_undiluted_solution():
@@ -153,7 +196,19 @@ def test_dry_matter_and_dilution_enter_the_factor():
 
 def test_a_report_unit_that_the_sample_cannot_reach_is_a_problem():
     water = replace(FLASKS, report_in="mg/kg", sample=SampleRule(dilution=q("2")))
-    assert any("report_in: mg/kg cannot be reached" in problem for problem in line(water, THREE).problems)
+    (problem,) = line(water, THREE).problems
+    assert problem == (
+        "report_in asks for mg/kg, a mass per mass, but from a standard in mg/L the sample block leads to a mass per "
+        "volume (it gives neither mass nor digest); report in a unit such as mg/L, or give mass and digest for a "
+        "content per mass"
+    )
+
+
+def test_a_unit_that_fits_the_standard_but_not_the_sample_is_told_by_its_kind():
+    mud = replace(FLASKS, report_in="mg/L", sample=SampleRule(mass=q("0.5 g"), digest=q("50 mL")))
+    (problem,) = line(mud, THREE).problems
+    assert problem.startswith("report_in asks for mg/L, a mass per volume, but from a standard in mg/L the sample ")
+    assert "leads to a mass per mass (it gives mass and digest); report in a unit such as mg/kg" in problem
 
 
 @pytest.mark.parametrize("mass", ["0 g", "-1 g"])

@@ -7,6 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+import statsmodels.api as sm
 from hypothesis import given
 from hypothesis import strategies as st
 
@@ -223,7 +224,10 @@ def test_an_insignificant_slope_is_drawn_but_gives_no_number():
 def test_a_negative_content_stays_and_is_named():
     solved = solve(*(vessel(i, float(i), y) for i, y in enumerate((-0.05, 0.10, 0.24, 0.40))))
     assert solved.content.content < 0
-    assert any("below zero" in note for note in solved.notes)
+    assert any("though nothing was subtracted" in note for note in solved.notes)
+    known = {SLOT: Background(0.01, None, 0, 1, (), "A")}
+    less = solve(*(vessel(i, float(i), y) for i, y in enumerate((-0.05, 0.10, 0.24, 0.40))), backgrounds=known)
+    assert any("subtracted too high" in note for note in less.notes)
 
 
 def test_one_addition_and_two_vessels_each():
@@ -317,6 +321,98 @@ def test_the_background_is_the_mean_of_vessels():
     assert background.standard_uncertainty == pytest.approx(np.std([0.011, 0.014, 0.016], ddof=1) / 3**0.5)
     assert background.unit == "A"
     assert background_of([]) is None
+
+
+def test_repeated_readings_of_a_background_are_no_vessels():
+    """Two solutions, each read twice under names that end in _r1 and _r2: one degree of freedom, u = 0.004/2."""
+    one, two = replace(BLANK, sample="1"), replace(BLANK, sample="2")
+    readings = [
+        replace(read(signal, key=key, solution=f"BLK{key.sample}_r{n}"), reading=f"{n}")
+        for key, signal in ((one, 0.010), (two, 0.014)) for n in (1, 2)
+    ]  # fmt: skip
+    background = background_of(readings)
+    assert (background.vessels, background.degrees_of_freedom) == (2, 1)
+    assert background.standard_uncertainty == pytest.approx(0.002)
+    single = background_of(readings[:2])
+    assert single.vessels == 1
+    assert "from one vessel" in single.note
+
+
+def test_coverage_with_backgrounds_that_are_read_twice():
+    """Background solutions vary ten times as much as their readings: 95 % of intervals or more hold the truth."""
+    rng, lines, backgrounds, nights = np.random.default_rng(12), [], {}, 1000
+    for i in range(nights):
+        key = replace(KEY, batch=f"B{i}")
+        blanks = []
+        for solution in ("1", "2"):
+            level = 0.02 + rng.normal(0, 0.002)
+            own = replace(key, role="background", sample=solution)
+            blanks += [
+                read(level + rng.normal(0, 0.0002), key=own, solution=f"BLK{solution}_r{n}") for n in (1, 2)
+            ]
+        backgrounds[key.batch_key, "Cd", "228.8"] = background_of(blanks)
+        signals = [0.02 + 0.3 + x / 4 + rng.normal(0, 0.0005) for x in X]
+        lines.append(line(*(vessel(j, x / 4, s) for j, (x, s) in enumerate(zip(X, signals, strict=True))), key=key))
+    intervals = [solved.content.interval for solved in solve_lines(lines, backgrounds, 0.95)]
+    inside = sum(low <= 0.3 <= high for low, high in intervals)
+    assert 0.93 < inside / nights < 0.995
+
+
+def weighted(x, y, w):
+    """Content and standard uncertainty by weighted least squares from another program."""
+    fit = sm.WLS(y, sm.add_constant(x), weights=w).fit()
+    (a, b), v = fit.params, fit.cov_params()
+    gradient = np.array([1 / b, -a / b**2])
+    return a / b, math.sqrt(gradient @ v @ gradient), math.sqrt(fit.scale), fit
+
+
+@pytest.mark.parametrize(
+    ("aliquots", "finals"),
+    [
+        ((10.0,) * 4, (10.0, 25.0, 25.0, 25.0)),  # unspiked solution read undiluted
+        ((10.0,) * 4, (10.0, 12.5, 15.0, 17.5)),  # successive
+        ((4.0, 6.0, 8.0, 10.0), (25.0,) * 4),
+        ((10.0,) * 4, (25.0,) * 4),
+    ],
+)
+def test_the_noise_is_that_of_the_signal(aliquots, finals):
+    """u(y) = u(S) V/V0: weights (V0/V)², which change nothing where all shares are equal."""
+    volumes = list(zip(aliquots, finals, strict=True))
+    noise = (0.003, -0.005, 0.004, -0.002)
+    signals = [0.5 * (0.3 + x / 4) * v0 / vf + e for x, (v0, vf), e in zip(X, volumes, noise, strict=True)]
+    solved = solve(
+        *(vessel(i, X[i] / 4, s, v0, vf) for i, (s, (v0, vf)) in enumerate(zip(signals, volumes, strict=True)))
+    )
+    x = np.array(X) / 4
+    share = np.array(aliquots) / np.array(finals)
+    content, u, s, fit = weighted(x, np.array(signals) / share, share**2)
+    assert solved.content.content == pytest.approx(content, rel=1e-10)
+    assert solved.content.standard_uncertainty == pytest.approx(u, rel=1e-9)
+    assert solved.residual_sd == pytest.approx(s, rel=1e-9)  # in signal
+    assert solved.intercept_uncertainty == pytest.approx(fit.bse[0], rel=1e-9)
+    if len(set(share)) == 1:
+        assert content == pytest.approx(weighted(x, np.array(signals) / share, np.ones(4))[0], rel=1e-10)
+
+
+def test_coverage_where_small_aliquots_are_noisy():
+    """Aliquots of 4 to 10 mL in 25 mL, constant noise of the signal: with equal weights only 90 % hold the truth."""
+    rng, lines, series = np.random.default_rng(8), [], 2000
+    aliquots = (4.0, 6.0, 8.0, 10.0)
+    for i in range(series):
+        signals = [(0.3 * v0 + 2.5 * j) / 25 + rng.normal(0, 0.002) for j, v0 in enumerate(aliquots)]
+        vessels = [
+            vessel(j, 2.5 * j / v0, s, v0, 25.0) for j, (s, v0) in enumerate(zip(signals, aliquots, strict=True))
+        ]
+        lines.append(line(*vessels, key=replace(KEY, sample=f"S{i}")))
+    intervals = [solved.content.interval for solved in solve_lines(lines, {}, 0.95)]
+    assert 0.935 < sum(low <= 0.3 <= high for low, high in intervals) / series < 0.965
+
+
+@pytest.mark.parametrize(("v0", "vf"), [(1e-200, 1e200), (1e200, 1e-200)])
+def test_volumes_too_far_apart_are_refused(v0, vf):
+    solved = solve(*GOOD[:3], vessel(3, 3.0, 0.75, v0, vf))
+    assert "too large" in solved.no_number
+    assert solved.content is None
 
 
 def test_one_background_vessel():
