@@ -10,7 +10,7 @@ import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
-from markupsafe import Markup
+from markupsafe import Markup, escape
 
 from spikeward.daemon.pages.axis import Axis, axis_over
 from spikeward.daemon.pages.numbers import interval_shown, shown, value_shown
@@ -59,17 +59,26 @@ def addition_plot(result: Result, identity: str) -> Markup:
         return Markup("")
     frame = _frame(result, points)
     parts = [
-        Markup('<title id="{0}-title">{1}</title><desc id="{0}-desc">{2}</desc>').format(
-            identity, _title(result), _description(result, points)
+        _drawn(
+            '<title id="{0}-title">{1}</title><desc id="{0}-desc">{2}</desc>',
+            identity,
+            _title(result),
+            _description(result, points),
         ),
         *_axes(frame, result),
         *_line(frame, result, points),
         *_content(frame, result),
         *(_mark(frame, point, shape) for point, shape in zip(points, _shapes(points), strict=True)),
     ]
-    return Markup(
-        '<svg class="chart" viewBox="0 0 {1} {2}" role="img" aria-labelledby="{0}-title {0}-desc">\n{3}\n</svg>'
-    ).format(identity, _WIDTH, _HEIGHT, Markup("\n").join(parts))
+    return _drawn(
+        '<svg class="chart" viewBox="0 0 {1} {2}" role="img" aria-labelledby="{0}-title {0}-desc">\n{3}\n</svg>',
+        identity, _WIDTH, _HEIGHT, Markup("\n").join(parts),
+    )  # fmt: skip
+
+
+def _drawn(template: str, *values: object) -> Markup:
+    """A piece of the drawing, every text in it escaped; many times faster than the formatter of ``Markup``."""
+    return Markup(template.format(*(escape(value) if isinstance(value, str) else value for value in values)))
 
 
 def _crossing(result: Result) -> float | None:
@@ -108,21 +117,27 @@ def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
     shown_labels = _with_room(frame)
     for share, label in frame.x.ticks:
         at = frame.along(share)
-        yield Markup('<path class="grid" d="M{0:.1f} {1}V{2}"/>').format(at, _TOP, _BOTTOM)
+        yield _drawn('<path class="grid" d="M{0:.1f} {1}V{2}"/>', at, _TOP, _BOTTOM)
         if label in shown_labels:
-            yield Markup('<text class="tick" x="{0:.1f}" y="{1}">{2}</text>').format(at, _BOTTOM + 18, label)
+            yield _drawn('<text class="tick" x="{0:.1f}" y="{1}">{2}</text>', at, _BOTTOM + 18, label)
     for share, label in frame.y.ticks:
         at = _BOTTOM - (_BOTTOM - _TOP) * share
-        yield Markup('<path class="grid" d="M{0:.1f} {1:.1f}H{2}"/>').format(frame.left, at, _RIGHT)
-        yield Markup('<text class="tick up" x="{0:.1f}" y="{1:.1f}">{2}</text>').format(frame.left - 6, at + 4.5, label)
-    yield Markup('<path class="axis" d="M{0:.1f} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>').format(
-        frame.left, frame.up(0.0), _RIGHT, frame.across(0.0), _TOP, _BOTTOM
+        yield _drawn('<path class="grid" d="M{0:.1f} {1:.1f}H{2}"/>', frame.left, at, _RIGHT)
+        yield _drawn('<text class="tick up" x="{0:.1f}" y="{1:.1f}">{2}</text>', frame.left - 6, at + 4.5, label)
+    yield _drawn(
+        '<path class="axis" d="M{0:.1f} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>',
+        frame.left,
+        frame.up(0.0),
+        _RIGHT,
+        frame.across(0.0),
+        _TOP,
+        _BOTTOM,
     )
     added, middle = frame.x.titled(f"{_analyte(result)} added", unit_words(result.content_unit)), frame.along(0.5)
-    yield Markup('<text class="name" x="{0:.1f}" y="{1}">{2}</text>').format(middle, _HEIGHT - 12, added)
+    yield _drawn('<text class="name" x="{0:.1f}" y="{1}">{2}</text>', middle, _HEIGHT - 12, added)
     signal = frame.y.titled("Signal corrected for volume", visible(result.signal_unit))
-    yield Markup('<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>').format(
-        -(_TOP + _BOTTOM) / 2, signal
+    yield _drawn(
+        '<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>', -(_TOP + _BOTTOM) / 2, signal
     )
 
 
@@ -141,13 +156,21 @@ def _line(frame: _Frame, result: Result, points: Sequence[Point]) -> Iterator[Ma
     if len(fitted) < 2 or fitted[0][0] == fitted[-1][0]:
         return
     (x0, y0), (x1, y1) = fitted[0], fitted[-1]
-    yield Markup('<path class="fit" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>').format(
-        frame.across(x0), frame.up(y0), frame.across(x1), frame.up(y1)
+    yield _drawn(
+        '<path class="fit" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>',
+        frame.across(x0),
+        frame.up(y0),
+        frame.across(x1),
+        frame.up(y1),
     )
     crossing = _crossing(result)
     if crossing is not None:
-        yield Markup('<path class="beyond" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>').format(
-            frame.across(x0), frame.up(y0), frame.across(crossing), frame.up(0.0)
+        yield _drawn(
+            '<path class="beyond" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>',
+            frame.across(x0),
+            frame.up(y0),
+            frame.across(crossing),
+            frame.up(0.0),
         )
 
 
@@ -159,11 +182,11 @@ def _content(frame: _Frame, result: Result) -> Iterator[Markup]:
     if interval is not None:
         left, right = (min(max(frame.across(end), frame.left), _RIGHT) for end in interval)
         ends = _end(left, floor, -1, frame.x.share(interval[0])) + _end(right, floor, 1, frame.x.share(interval[1]))
-        yield Markup('<path class="interval" d="M{0:.1f} {1:.1f}H{2:.1f}{3}"/>').format(left, floor, right, ends)
+        yield _drawn('<path class="interval" d="M{0:.1f} {1:.1f}H{2:.1f}{3}"/>', left, floor, right, ends)
     at = frame.across(crossing)
-    yield Markup('<path class="crossing" d="M{0:.1f} {1:.1f}l4 4l-4 4l-4 -4z"/>').format(at, floor - 4)
-    yield Markup('<text class="crossing-name" x="{0:.1f}" y="{1:.1f}">−C₀</text>').format(
-        max(at - 3, frame.left + 28), floor - 12
+    yield _drawn('<path class="crossing" d="M{0:.1f} {1:.1f}l4 4l-4 4l-4 -4z"/>', at, floor - 4)
+    yield _drawn(
+        '<text class="crossing-name" x="{0:.1f}" y="{1:.1f}">−C₀</text>', max(at - 3, frame.left + 28), floor - 12
     )
 
 
@@ -190,7 +213,7 @@ def _mark(frame: _Frame, point: Point, shape: str) -> Markup:
         "excluded": "m-5 -5l10 10m0 -10l-10 10",
     }[shape]
     left_out = f"; excluded: {visible(point.excluded)}" if point.excluded else ""
-    return Markup('<path class="vessel {0}" d="M{1:.1f} {2:.1f}{3}"><title>{4}</title></path>').format(
+    return _drawn('<path class="vessel {0}" d="M{1:.1f} {2:.1f}{3}"><title>{4}</title></path>',
         shape, frame.across(point.x), frame.up(point.y), outline,
         f"level {visible(point.level)}{visible(point.vessel)}: {shown(point.x)} added, {shown(point.y)}{left_out}",
     )  # fmt: skip

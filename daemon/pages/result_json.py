@@ -12,6 +12,7 @@ from spikeward.daemon.pages.text import encodable
 from spikeward.rules.outcomes import Check, Estimate, Outcome, Point, Result, VesselReport
 from spikeward.rules.records import MEASURED, Reading, SeriesKey
 
+_encode = json.JSONEncoder(ensure_ascii=False, allow_nan=False).encode
 FORMAT = "spikeward result 1"
 """Raised when a program that reads the old form could misread the new one."""
 
@@ -40,8 +41,15 @@ def render_result(outcome: Outcome) -> bytes:
         "notes": list(outcome.notes),
         "cautions": list(CAUTIONS),
     }
-    text = json.dumps(_plain(document), ensure_ascii=False, allow_nan=False, indent=1)
-    return f"{text}\n".encode()
+    rows = ",\n".join(f'"{name}": {_row(_plain(value))}' for name, value in document.items())
+    return f"{{\n{rows}\n}}\n".encode()
+
+
+def _row(value: object) -> str:
+    """A field on one line, a list of objects with one of them a line: easy to follow and fast to write."""
+    if isinstance(value, list) and value and isinstance(value[0], dict):
+        return "[\n" + ",\n".join(_encode(item) for item in value) + "\n]"
+    return _encode(value)
 
 
 def series_fields(key: SeriesKey) -> dict[str, str]:

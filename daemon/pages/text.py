@@ -16,7 +16,7 @@ _SHORT = {"\n": "\\n", "\r": "\\r", "\t": "\\t"}
 
 def encodable(text: str) -> str:
     r"""The text with bytes that are no text written as ``\xff``, so that UTF-8 can always hold it."""
-    return _LONE.sub(_lone, text)
+    return text if text.isascii() else _LONE.sub(_lone, text)
 
 
 def one_line(text: str) -> str:
@@ -26,6 +26,8 @@ def one_line(text: str) -> str:
 
 def visible(text: str) -> str:
     """The text for a page: line breaks and tabs as spaces, other control codes and marks of direction by number."""
+    if text.isascii() and text.isprintable():
+        return text  # nearly every text there is, and pages ask hundreds of times
     return _UNSEEN.sub(_named, encodable(text))
 
 

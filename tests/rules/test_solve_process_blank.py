@@ -124,11 +124,12 @@ def night_of_blanks(rng, count, batch):
     return lines
 
 
-@pytest.mark.parametrize(("count", "low", "high"), [(1, 0.90, 0.995), (2, 0.93, 0.995), (3, 0.93, 0.99)])
+@pytest.mark.parametrize(("count", "low", "high"), [(1, 0.88, 0.95), (2, 0.95, 0.983), (3, 0.96, 0.989)])
 def test_coverage_with_blanks_over_one_background(count, low, high):
     """Blanks that vary by 0.002 mg/L and three background vessels that vary by 0.0012: about 95 % hold the truth.
 
-    With the background counted in the sample and again in every blank 99.7 % did.
+    With the background counted in the sample and again in every blank 97 to 99 % did. One blank shows nothing of how
+    blanks vary, so its intervals are too narrow, which the result says.
     """
     rng, lines, backgrounds, nights = np.random.default_rng(count), [], {}, 1200
     for i in range(nights):
