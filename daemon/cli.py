@@ -140,6 +140,12 @@ def _demo(commands: _Commands) -> None:  # type: ignore[valid-type]
     parser.add_argument("--seed", type=int, default=7, help="another night (default: 7)")
 
 
+def _begin_again_in_utf8() -> None:
+    """Names of files are bytes; which letters they stand for, and so what is published, must not depend on the locale."""
+    os.environ["PYTHONUTF8"] = "1"  # for the readers' processes, too
+    os.execv(sys.executable, [sys.executable, "-X", "utf8", *sys.orig_argv[1:]])
+
+
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one command.
 
@@ -147,6 +153,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     -------
     the exit code: 0 all is well, 1 something needs a person or still waits, 2 it could not run
     """
+    if arguments is None and sys.getfilesystemencoding() != "utf-8":
+        _begin_again_in_utf8()
     for stream in (sys.stdout, sys.stderr):
         if isinstance(stream, TextIOWrapper):
             stream.reconfigure(errors="backslashreplace")  # a terminal that lacks a sign still gets the sentence

@@ -44,11 +44,15 @@ class Root:
 
 @dataclass(frozen=True, slots=True)
 class _Trouble:
-    """A file that cannot be read now: why, when it is tried again, and the pause after that."""
+    """A file that cannot be read now: why, when it is tried again, and the pause after that.
+
+    ``stamp`` is how an unfinished file looked; one that looks otherwise has gone on, and its pause is over.
+    """
 
     sentence: str
     due: float
     pause: float
+    stamp: Stamp | None
 
 
 @dataclass(slots=True)
@@ -129,7 +133,9 @@ class Intake:
     def _look(self, root: Root, path: str, stamp: Stamp, seen: Seen) -> None:
         place = (root.watch.folder, path)
         trouble = self._troubles.get(place)
-        if trouble is not None and self._now < trouble.due:
+        if trouble is not None and trouble.stamp not in (None, stamp):
+            del self._troubles[place]
+        elif trouble is not None and self._now < trouble.due:
             return
         claims = self.claims(place)
         if not claims:
@@ -183,7 +189,9 @@ class Intake:
             before = self._troubles.get(place)
             pause = min(60.0, before.pause * 2) if before else 1.0
             sentence = f"waits for the end of the file; {_notes(reply)}" if unfinished else reply.sentence
-            self._troubles[place] = _Trouble(sentence, self._now + pause, pause)
+            self._troubles[place] = _Trouble(
+                sentence, self._now + pause, pause, None if reply.temporary else reply.stamp
+            )
             return set()
         return self.hold(place, reply.stamp, claim_key, content_of(reply, claim))
 
@@ -223,6 +231,11 @@ class Intake:
         for holdings, _ in self._feed:
             touched |= holdings.drop(place)
         return touched
+
+    @property
+    def reads_again(self) -> bool:
+        """Whether files still have to be read in the way that edited rules ask for."""
+        return bool(self._lacking)
 
     def settles_in(self, folder: str) -> float | None:
         """Seconds until a file of a watched folder can settle; those being read, or tried again later, are left aside."""

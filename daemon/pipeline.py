@@ -173,10 +173,11 @@ class Pipeline:
         for _ in range(2):  # a board that is refused stands on the others
             notices = self.notices()
             due = set(self.solved) if everything or notices != self._noticed else self._board_due & set(self.solved)
-            self._noticed, self._board_due = notices, set()
+            self._noticed, self._board_due = notices, due
             for key in sorted(due):
                 if key in self.solved:
                     self.boards.publish(self.solved[key].outcome, notices)
+                self._board_due.discard(key)  # not before: a full disk ends this
                 yield key
             self.boards.publish_folders(notices, self.solving.every(), self._output_places())
             if self.notices() == notices:

@@ -199,8 +199,9 @@ def serve(descriptor: int, seconds: float, patience: float, memory: int) -> None
                 if os.getpid() != myself:
                     os._exit(0)  # a copy of this process that a reader made and forgot
                 connection.send(reply)
-    if os.getpgrp() == myself:
-        os.killpg(myself, signal.SIGKILL)  # what readers started and left running ends with this process
+    if os.getpgrp() == myself:  # what readers started and left running ends with this process
+        signal.signal(signal.SIGTERM, signal.SIG_IGN)
+        os.killpg(myself, signal.SIGTERM)
 
 
 def _limit(memory: int) -> None:

@@ -36,6 +36,7 @@ class RuleEdits:
         try:
             edited = read_rule_file(self._path)
         except Trouble as trouble:
+            self._text = ""  # when it is back as it was, it is in force again and nothing is wrong with it
             self._refuse(str(trouble))
             return True
         if edited.text == self._text:

@@ -6,7 +6,7 @@ import os
 import signal
 import threading
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import Future
 from contextlib import contextmanager, suppress
 from dataclasses import dataclass, field
@@ -15,7 +15,7 @@ from typing import TypeVar
 from spikeward.daemon.events import NATIVE, POLL, Hints, RootWatch
 from spikeward.daemon.idle import Idle
 from spikeward.daemon.journal import Journal
-from spikeward.daemon.lock import Locked
+from spikeward.daemon.lock import Held, Locked
 from spikeward.daemon.log import Log
 from spikeward.daemon.memory import recall, remember
 from spikeward.daemon.mounts import read_mounts
@@ -179,6 +179,7 @@ class Watching:
             self._tell_refusals()
         except OSError as error:
             self._disk_wait = now + DISK_PAUSE
+            self._board_work = None  # it begins anew
             said = f"{error.strerror or error}; tried again in {DISK_PAUSE:.0f} s"
             self.log.error("disk", file=str(error.filename), note=said)
 
@@ -211,13 +212,14 @@ class Watching:
             self._rules_changed = True
             for scan in self._scans.values():
                 scan.full_due = now
+        self._keep_locks(self.opened.locks[:1])  # the state folder's, on this machine: asked every time
         if now < self._health_due:
             return
         self._health_due = now + CHECK_EVENTS_EVERY
         for watch in self._watches.values():
             if said := watch.check():
                 self.log.warning("events", note=said)
-        self._keep_locks()
+        self._keep_locks(self.opened.locks[1:])
         for sentence in self.opened.new_sentences():
             self.log.warning("state", note=sentence)
         with suppress(OSError):
@@ -225,9 +227,9 @@ class Watching:
             self.journal.record_waiting(self.pipeline.intake.waiting())
             self.journal.record_idle(self._idle.seconds())
 
-    def _keep_locks(self) -> None:
+    def _keep_locks(self, locks: Iterable[Held]) -> None:
         """A lock that somebody took away is taken again, before a second daemon can have it."""
-        for lock in self.opened.locks:
+        for lock in locks:
             try:
                 if lock.lost():
                     lock.take_again()
@@ -334,7 +336,7 @@ class Watching:
     def _write_a_board(self) -> None:
         """One board a turn: flags do not wait for boards."""
         if self._board_work is None:
-            if self._rules_changed:
+            if self._rules_changed and not self.pipeline.intake.reads_again:
                 self.pipeline.withdraw_orphans()
                 self._rules_changed = False
             self._board_work = self.pipeline.board_work()

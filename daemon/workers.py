@@ -205,20 +205,22 @@ class Readers:
             while worker.tasks and worker.connection.poll():
                 reply = worker.connection.recv()
                 if reply.key != worker.tasks[0].job.key:
-                    raise EOFError
+                    raise ValueError
                 self._done.append(_blamed(worker.tasks.popleft(), reply))
                 worker.deadline = self._monotonic() + self._patience + _GRACE
-        except Exception:  # the process is gone, or a reader wrote into the connection
+        except (EOFError, OSError):  # the process is gone
             self._lost(worker)
+        except Exception:  # a reader wrote into the connection
+            self._lost(worker, garbled=True)
 
-    def _lost(self, worker: _Worker, overdue: bool = False) -> None:
+    def _lost(self, worker: _Worker, overdue: bool = False, garbled: bool = False) -> None:
         """A worker died, or was too slow, over the first file that it had in hand; the others go back in line.
 
         What may be somebody else's doing is tried a second time, alone. A file that is to blame is only looked at, so
         that the reply says which content it was.
         """
         self._workers.remove(worker)
-        code = worker.end(0.0 if overdue else 1.0)
+        code = worker.end(0.0 if overdue or garbled else 1.0)
         task = worker.tasks.popleft()
         self._queue.extendleft(reversed(worker.tasks))
         how = f"the reader '{getattr(task.job.how, 'format', 'bench')}'"
@@ -230,6 +232,8 @@ class Readers:
             self._blame(task, f"{how} did not come to an end within {self._seconds:g} s of work")
         elif not task.lost_before:
             self._alone.append(replace(task, lost_before=True))
+        elif garbled:
+            self._blame(task, f"{how} disturbed what its process answers on this file")
         elif code == -signal.SIGKILL:
             self._later(task, f"{how} was ended from outside (is memory short?); it is tried again later")
         else:

@@ -179,7 +179,7 @@ def _additions(
     if preparation.deliveries == "each":
         unknown = _level_between(declared, preparation)
         if unknown is not None:
-            findings.lacks(f"the addition of level {unknown}, which every later vessel holds")
+            findings.lacks(f"the addition of level {unknown} (every later vessel holds it)")
             known = {level for level in levels if level_order(level) < level_order(unknown)}
             delivered |= {level: None for level in declared if level not in known}
         total: Decimal | None = Decimal(0)

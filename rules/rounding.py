@@ -42,18 +42,24 @@ def rounded(value: float, uncertainty: float) -> tuple[str, str]:
     )
 
 
-def figure(value: float, digits: int = 3) -> str:
-    """A single number to some significant figures, in plain digits where that stays readable."""
+def figure(value: float, digits: int = 3, full: bool = False) -> str:
+    """A single number to some significant figures, in plain digits where that stays readable.
+
+    Parameters
+    ----------
+    full : keep zeros at the end, which tell of a measured number how far it was read: 0.300, not 0.3
+    """
     exact = Decimal(value)
     if not exact:
         return "0"
+    kept = str if full else _trimmed
     place = exact.adjusted() - digits + 1
     exact = _rounded_at(exact, place)
     top = exact.adjusted()
     place = top - digits + 1
     if _PLAIN_FROM < top < _PLAIN_TO:
-        return _trimmed(_plain(exact, place))
-    return _trimmed(_plain(exact.scaleb(-top, _EXACT), place - top)) + f"x10^{top}"
+        return kept(_plain(exact, place))
+    return kept(_plain(exact.scaleb(-top, _EXACT), place - top)) + f"x10^{top}"
 
 
 def percent(fraction: float, digits: int = 2) -> str:

@@ -30,7 +30,7 @@ def estimate_words(estimate: Estimate, basis: str = "") -> str:
     """A content with expanded uncertainty and unit, rounded for a report."""
     unit = f"{unit_words(estimate.unit)} {basis}".strip()
     if not estimate.expanded_uncertainty:  # a scatter of zero is not a real one
-        return f"{figure(estimate.content)} {unit}, uncertainty not known"
+        return f"{figure(estimate.content, full=True)} {unit}, uncertainty not known"
     value, spread = rounded(estimate.content, estimate.expanded_uncertainty)
     return f"{value} ± {spread} {unit}"
 
@@ -78,11 +78,15 @@ def _coverage_factor(estimate: Estimate, solved: Solved) -> str:
     k, left = estimate.coverage_factor, estimate.effective_degrees_of_freedom or 0
     if not k:
         return ""
-    told = f", k {figure(k, 2)}"
-    if k <= _WIDE_K:
-        return f"{told} with {freedom(left)}" if left != solved.degrees_of_freedom else told
-    if left > 0 and t_quantile(left, estimate.coverage) > _WIDE_K:
+    told, of_line = f", k {figure(k, 2)}", solved.degrees_of_freedom
+    if k > _WIDE_K and left > 0 and t_quantile(left, estimate.coverage) > _WIDE_K:
         return f"{told}, because {freedom(left)} {'remains' if left == 1 else 'remain'}"
+    if left != of_line:
+        told += f" with {freedom(left)}"
+    if k <= _WIDE_K:
+        return told
+    if of_line > 0 and t_quantile(of_line, estimate.coverage) > _WIDE_K:
+        return f"{told}, because the line alone has {of_line}"
     return f"{told}, because the slope is not known well"
 
 
@@ -96,12 +100,12 @@ def interval_holds(result: Result, solved: Solved) -> str:
     if result.blank is not None and "not known" not in solved.blank_note:
         parts.append("the process blank")
     told = parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}"
-    lacking = ["standard", "volumes", "mass"]
+    lacking = ""
     if solved.background is not None and solved.background.standard_uncertainty is None:
-        lacking.insert(0, "the background, which was read once")
+        lacking += ", nor is the background, which was read once"
     if result.blank is not None and solved.blanks == 1:
-        lacking.insert(0, "how blanks vary between preparations, which one process blank does not show")
-    return f"The interval holds {told}; {', '.join(lacking[:-1])} and {lacking[-1]} are not in it."
+        lacking += ", nor is how blanks vary between preparations, which one process blank does not show"
+    return f"The interval holds {told}; standard, volumes and mass are not in it{lacking}."
 
 
 def not_shown(results: Sequence[Result]) -> str:

@@ -96,12 +96,14 @@ def _closing_bracket(members: Mapping[SeriesKey, Members]) -> list[str]:
     brackets = [reading for key, found in members.items() if key.role == "bracket" for reading in found.readings]
     if not brackets:
         return ["a bracket"]
+    if not one_sequence(brackets):
+        return []
     others = [
         reading
         for key, found in members.items()
         if key.role not in PLAIN_ROLES
         for reading in found.readings
-        if one_sequence([*brackets, reading])
+        if one_sequence([brackets[0], reading])
     ]
     last = max(reading.when for reading in brackets)
     if others and max(reading.when for reading in others) > last:

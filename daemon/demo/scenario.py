@@ -63,12 +63,12 @@ SAMPLES = {
     "EM42": ("08", "09", "10", "11", "12", "13", "14", "15"),
     "EM43": ("21", "22", "23", "24"),
 }
-PROCESS_BLANKS = {"EM41": ("1", "2"), "EM42": ("1",), "EM43": ("1",)}
+PROCESS_BLANKS = ("1", "2")  # of every batch
 
 
 def series_of(batch: str, chance: Chance) -> dict[str, Series]:
     """All addition series of a batch by the name that their solutions begin with."""
-    found = [_blank(batch, sample, chance) for sample in PROCESS_BLANKS[batch]]
+    found = [_blank(batch, sample, chance) for sample in PROCESS_BLANKS]
     found.append(_reference(batch, chance))
     found.append(_control(batch, chance))
     found += [_sample(batch, sample, chance) for sample in SAMPLES[batch]]

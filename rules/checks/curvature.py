@@ -80,7 +80,10 @@ def mandel(x: Sequence[float], y: Sequence[float], w: Sequence[float] | None = N
 
 def _weighted(w: Sequence[float], *factors: Sequence[float]) -> float:
     """The sum over the points of weight times factors."""
-    return math.fsum(math.prod(row) for row in zip(w, *factors, strict=True))
+    terms = list(w)
+    for factor in factors:
+        terms = [term * one for term, one in zip(terms, factor, strict=True)]
+    return math.fsum(terms)
 
 
 def _zero_near(a: float, b: float, c: float, guess: float) -> float | None:

@@ -88,7 +88,10 @@ def blank(subject: Subject, limits: Limits) -> Check:
     if lacking := blank_lacking(subject):
         if subject.context.batch.closed:
             sentence = f"{lacking[:1].upper()}{lacking[1:]}, though the rules subtract it."
-            return plain("blank", FAIL, sentence, "Measure it, or take it out of the rules", _BLANKS)
+            remedy = "Measure it, or take it out of the rules"
+            if subject.solved.blank_note:
+                remedy = "Look at the process blank's own summary and at its preparation"
+            return plain("blank", FAIL, sentence, remedy, _BLANKS)
         return not_evaluated("blank", f"{lacking}; it is still expected")
     solved = subject.solved
     if solved.background is not None and solved.background.problem:

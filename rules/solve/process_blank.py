@@ -102,9 +102,9 @@ def _why_left_out(blank: Solved, solved: Solved) -> str:
     if blank.no_number:
         return f"{name} gives no number ({blank.no_number})"
     if _is_net(blank) != _is_net(solved):
-        return f"the background was taken off only one of {name} and the sample: export both in the same way"
+        return f"the background is off only one of process blank {name} and the sample: export both in the same way"
     if blank.prepared.way_back is None:
-        return f"the rule file declares no way back for {name}: give its digest volume or dilution under preparations"
+        return f"process blank {name} has no way back: declare its digest volume or dilution under preparations"
     if blank_amount(blank, sample) is not None:
         return ""
     if UNITS[blank.prepared.unit][0] != UNITS[sample.unit][0]:

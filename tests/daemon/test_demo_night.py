@@ -16,7 +16,7 @@ from spikeward.daemon.demo.scenario import ANALYTES
 from spikeward.daemon.rule_file.load import load_rules
 from spikeward.rules.outcomes import FAIL, PASS, WARN
 
-BYTES_OF_SEED_7 = "b1f6cfec882f2dc4dc66ac86d8318c84fd2e3648bdd069c59a99b9a3f71d1f37"
+BYTES_OF_SEED_7 = "25245ab04039063fe931caad8841fbd2517ea356854c6d274b210b3101f4f575"
 
 
 @pytest.fixture(scope="module")

@@ -29,7 +29,7 @@ def inbox(tmp_path_factory: pytest.TempPathFactory) -> Path:
 def test_all_pages(inbox: Path, tmp_path: Path):
     """``SPIKEWARD_PICTURES=FOLDER`` keeps a picture of each page at 360 px and at 1280 px, to be looked at."""
     pages = sorted(inbox.rglob("*.html"))
-    assert len(pages) == 29 + 3  # a summary for each series, a board for each batch
+    assert len(pages) == 31 + 3  # a summary for each series, a board for each batch
     pictures = os.environ.get("SPIKEWARD_PICTURES")
     with opened(tmp_path) as browser:
         for page in pages:

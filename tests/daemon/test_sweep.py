@@ -6,6 +6,7 @@ import json
 from pathlib import Path
 
 import pytest
+
 from spikeward.daemon.cli import main
 
 RULES = r"""
@@ -50,7 +51,7 @@ class Home:
         return result["results"][0]["in_sample"]["content"]
 
 
-@pytest.fixture()
+@pytest.fixture
 def home(tmp_path: Path) -> Home:
     return Home(tmp_path)
 
@@ -159,3 +160,22 @@ def test_explain_names_the_series_that_there_are(home: Home, capsys: pytest.Capt
     assert "'N1_07_A3' is role sample, batch N1, sample 07, level 3" in capsys.readouterr().out
     assert main(["explain", str(home.rules), "N1_07"]) == 0
     assert home.ours() == []  # it looks only
+
+
+def test_decisions_that_are_refused_are_told_once(home: Home, capsys: pytest.CaptureFixture[str]):
+    (home.inbox / "decisions.yaml").write_text("- {exclude: N1_07_A3, by: N. Invented, why: flask was cracked}\n")
+    assert home.sweep() == 1
+    told = [line for line in capsys.readouterr().out.splitlines() if "decision" in line]
+    assert len(told) == 1
+    assert told[0].startswith("decision: decisions.yaml: ")
+    assert "'on' is missing" in told[0]
+
+
+def test_a_ledger_that_is_gone_is_told(home: Home, capsys: pytest.CaptureFixture[str]):
+    assert home.sweep("--close") == 0
+    assert "ledger" not in capsys.readouterr().err
+    (home.path / ".spikeward" / "ledger.jsonl").unlink()
+    home.sweep()
+    assert "closings, adopted decisions and the history of revisions are lost" in capsys.readouterr().err
+    home.sweep()
+    assert "ledger" not in capsys.readouterr().err

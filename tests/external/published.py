@@ -124,8 +124,9 @@ def recomputed(case: Case) -> dict[str, float]:
     """The case in fractions, so that nothing is rounded before the last step.
 
     Least squares on x = standard x addition / aliquot and y = signal x final / aliquot with weights (aliquot / final)²,
-    for noise that is constant in the signal; the standard uncertainty of an extrapolated content (Miller and Miller, Statistics and Chemometrics for Analytical Chemistry, chapter 5) and its
-    limits by Fieller's theorem. Two points have no uncertainty.
+    for noise that is constant in the signal; the standard uncertainty of an extrapolated content (Miller and Miller,
+    Statistics and Chemometrics for Analytical Chemistry, chapter 5) and its limits by Fieller's theorem. Two points
+    have no uncertainty.
     """
     x = [case.standard * addition / aliquot for aliquot, addition, _, _ in case.flasks]
     y = [signal * final / aliquot for aliquot, _, final, signal in case.flasks]

@@ -8,7 +8,7 @@ import signal
 import subprocess
 import sys
 import time
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import contextmanager, suppress
 from pathlib import Path
 
@@ -30,12 +30,12 @@ def until(holds: Callable[[], bool], what: str, within: float = DEADLINE) -> Non
 class Watch:
     """A running `spikeward watch`; its log goes to a file, so that no pipe can fill up."""
 
-    def __init__(self, home: Path, env: Mapping[str, str], umask: int, workers: int) -> None:
+    def __init__(self, home: Path, env: Mapping[str, str], umask: int, command: Sequence[str]) -> None:
         self._log = home / "watch.log"
         with self._log.open("ab") as log:
             self.process = subprocess.Popen(
-                [*COMMAND, "watch", "rules.yaml", "--workers", str(workers)],
-                cwd=home, env={**os.environ, **env}, umask=umask, stdout=log, stderr=log, stdin=subprocess.DEVNULL,
+                command, cwd=home, env={**os.environ, **env}, umask=umask, stdout=log, stderr=log,
+                stdin=subprocess.DEVNULL,
             )  # fmt: skip
 
     def log(self) -> str:
@@ -92,20 +92,25 @@ class Station:
         found = [*self.out.rglob("*.flag"), *self.out.rglob("*.result.json"), *self.out.rglob("*.results.csv")]
         return {str(path.relative_to(self.out)): path.read_bytes() for path in found}
 
-    def sweep(self, *arguments: str, env: Mapping[str, str] | None = None) -> subprocess.CompletedProcess[str]:
+    def sweep(
+        self, *arguments: str, env: Mapping[str, str] | None = None, umask: int = 0o022
+    ) -> subprocess.CompletedProcess[str]:
         """Run `spikeward sweep`; it must not end with a traceback or be unable to run."""
         done = subprocess.run(
             [*COMMAND, "sweep", "rules.yaml", *arguments],
-            cwd=self.home, env={**os.environ, **(env or {})}, capture_output=True, text=True, timeout=DEADLINE,
-            check=False,
+            cwd=self.home, env={**os.environ, **(env or {})}, umask=umask, capture_output=True, text=True,
+            encoding="utf-8", timeout=DEADLINE, check=False,
         )  # fmt: skip
         assert done.returncode in (0, 1), done.stderr
         return done
 
     @contextmanager
-    def watch(self, env: Mapping[str, str] | None = None, umask: int = 0o022, workers: int = 1) -> Iterator[Watch]:
-        """`spikeward watch`, ended at the latest with the context."""
-        watch = Watch(self.home, env or {}, umask, workers)
+    def watch(
+        self, env: Mapping[str, str] | None = None, umask: int = 0o022, workers: int = 1, program: Sequence[str] = ()
+    ) -> Iterator[Watch]:
+        """`spikeward watch`, ended at the latest with the context; or a ``program`` of Python that runs it."""
+        command = [sys.executable, *program] if program else [*COMMAND, "watch", "rules.yaml", "--workers", str(workers)]
+        watch = Watch(self.home, env or {}, umask, command)
         try:
             yield watch
         finally:

@@ -14,7 +14,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from harness import Clock, Life, MortalDisk, lives, opened_sweep, swept
+from harness import Clock, Life, MortalDisk, lives, opened_sweep, soon, swept
 from processes import Station, until
 from small_night import HEAD, RULES, batch, series, vessel
 
@@ -196,6 +196,23 @@ def test_a_sweep_that_is_refused_one_name_says_so_and_does_the_rest(
     assert not list(station.data.glob(".spikeward-tmp-*"))
 
 
+def test_a_board_comes_after_the_disk_was_full_for_it_alone(station: Station, clock: Clock) -> None:
+    disk = MortalDisk(fails_with=errno.ENOSPC)
+    disk.refuses = lambda changed: changed.endswith("N1.board.html")
+
+    def room(life: Life) -> None:
+        assert disk.refused
+        disk.refuses = lambda changed: False
+
+    def wait(life: Life) -> None:
+        clock.sleep(11)
+
+    def there(life: Life) -> None:
+        assert (station.data / "N1.board.html").is_file()
+
+    lives(str(station.home), clock, soon(60, room), wait, wait, there, disk=disk)
+
+
 # ---- what a person wrote into a result ----------------------------------------------------------------------------
 
 
@@ -356,7 +373,7 @@ def test_a_lock_that_another_daemon_took_meanwhile_ends_this_one(station: Statio
 def test_a_journal_locked_by_another_program_does_not_keep_it_from_ending(station: Station) -> None:
     """Found while it is watching and asked to end with something in hand: it waits for the lock only briefly then."""
     with station.watch() as watch:
-        until(lambda: watch.log().count("published") == 2, "the first results")
+        until(lambda: len(list(station.data.glob("*.warn.flag"))) == 2, "the first results")
         path = station.home / ".spikeward" / "journal.sqlite"
         with contextlib.closing(sqlite3.connect(path, isolation_level=None)) as other:
             other.execute("begin immediate")

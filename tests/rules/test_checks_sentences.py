@@ -63,6 +63,8 @@ def test_figures_in_words():
     assert estimate_words(Estimate(2.3123, "mg/kg", 0.09, 0.1811), "dry matter") == "2.31 ± 0.18 mg/kg dry matter"
     assert estimate_words(Estimate(43.04, "ug/kg", 2.0, 6.02)) == "43.0 ± 6.0 µg/kg"
     assert estimate_words(Estimate(2.3123, "mg/L")) == "2.31 mg/L, uncertainty not known"
+    assert estimate_words(Estimate(0.3, "mg/L")) == "0.300 mg/L, uncertainty not known"
+    assert estimate_words(Estimate(0.3, "mg/L", 0.0, 0.0)) == "0.300 mg/L, uncertainty not known"
 
 
 @pytest.mark.parametrize(

@@ -290,6 +290,37 @@ def test_brackets_in_different_units_are_not_compared(bench):
     assert (check.verdict, check.sentence) == (FAIL, "The units of the brackets differ: they come in A and mA.")
 
 
+def test_the_degrees_of_freedom_of_the_coverage_factor_are_told(bench):
+    """With five background vessels more degrees of freedom belong to k than the 2 of the line."""
+    night = bench.Night(bench.rulebook(blanks=BlankRule(background=True)))
+    for n, shift in enumerate((-0.002, -0.001, 0.0, 0.001, 0.002)):
+        night.read("background", str(n), "", 0.01 + shift)
+    (result,) = solve(bench, night.series(background=0.01), closed=True).results
+    left = result.in_sample.effective_degrees_of_freedom
+    assert left > result.degrees_of_freedom == 2
+    assert result.content.effective_degrees_of_freedom == left
+    k = f"k {result.in_sample.coverage_factor:.1f} with {left} degrees of freedom, because the line alone has 2;"
+    assert k in result.sentence
+    assert "4 vessels, 2 degrees of freedom" in result.sentence
+
+
+def test_a_background_read_once_is_missing_from_the_interval(bench):
+    night = bench.Night(bench.rulebook(blanks=BlankRule(background=True)))
+    night.read("background", "1", "", 0.01)
+    (result,) = solve(bench, night.series(background=0.01), closed=True).results
+    assert "are not in it, nor is the background, which was read once." in result.sentence
+
+
+def test_an_exact_line_has_no_uncertainty_of_zero(bench):
+    night = bench.Night()
+    for level in range(4):
+        night.read("sample", "07", str(level), 0.4 * (0.25 + 0.25 * level))
+    (result,) = solve(bench, night).results
+    assert "uncertainty not known" in result.sentence
+    assert "± 0" not in result.sentence
+    assert "The interval holds" not in result.sentence
+
+
 def test_one_process_blank_warns_and_says_what_it_does_not_show(bench):
     night = bench.Night(bench.rulebook(blanks=BlankRule(process=True)))
     night.series("1", role="process_blank", content=0.006).series()
@@ -329,7 +360,9 @@ def test_a_background_that_is_no_background_any_more(bench):
     assert "export all solutions in the same way" in outcome.results[0].no_number
 
 
-@pytest.mark.parametrize(("content", "verdict"), [(0.0599, WARN), (0.065, WARN), (0.3, FAIL), (1.2, WARN), (0.02, FAIL)])
+@pytest.mark.parametrize(
+    ("content", "verdict"), [(0.0599, WARN), (0.065, WARN), (0.3, FAIL), (1.2, WARN), (0.02, FAIL)]
+)
 def test_a_net_content_that_cannot_be_told_from_zero_has_no_share(bench, content, verdict):
     """0.02 less a blank of 0.06 is below zero by more than its uncertainty; of 0.3 the blank is a quarter."""
     night = bench.Night(bench.rulebook(blanks=BlankRule(process=True)))

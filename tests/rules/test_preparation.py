@@ -101,7 +101,7 @@ def successive_by_column(*levels: str, **changes):
 
 def test_a_delivery_that_nobody_tells_is_in_every_later_vessel():
     two = successive_by_column("0", "1", "3", "4", additions={"0": q("0 mL"), "1": q("0.5 mL")})
-    assert two.missing == ("the addition of level 2, which every later vessel holds",)
+    assert two.missing == ("the addition of level 2 (every later vessel holds it)",)
     assert [vessel.level for vessel in two.vessels] == ["0", "1"]
     assert successive_by_column("0", "1", "2", "3").missing == ()
     # names that count in steps, and a list of the rule file that is complete

@@ -211,7 +211,7 @@ def test_never_without_a_way_back():
 
 
 def test_a_digest_volume_on_one_side_only():
-    assert "declares no way back for PB1" in subtract_process_blank(sample(), [blank(0.1, back=None)], 0.95).blank_note
+    assert "PB1 has no way back" in subtract_process_blank(sample(), [blank(0.1, back=None)], 0.95).blank_note
     undigested = WayBack(5.0, "mg/L", "", None, None, "diluted by a factor 5")
     after = subtract_process_blank(sample(), [blank(0.1, back=undigested)], 0.95)
     assert after.blank is None
@@ -231,7 +231,7 @@ def test_each_dilution_is_its_own():
     assert after.in_sample.content == pytest.approx(expected, rel=1e-12)
     unsaid = subtract_process_blank(before, [blank(0.1, back=None)], 0.95)
     assert unsaid.blank is None
-    assert "give its digest volume or dilution" in unsaid.blank_note
+    assert "declare its digest volume or dilution" in unsaid.blank_note
 
 
 def test_more_blank_than_sample_is_named():
