@@ -141,7 +141,7 @@ def _demo(commands: _Commands) -> None:  # type: ignore[valid-type]
 
 
 def _begin_again_in_utf8() -> None:
-    """Names of files are bytes; which letters they stand for, and so what is published, must not depend on the locale."""
+    """Names of files are bytes; which letters they are, and so what is published, must not depend on the locale."""
     os.environ["PYTHONUTF8"] = "1"  # for the readers' processes, too
     os.execv(sys.executable, [sys.executable, "-X", "utf8", *sys.orig_argv[1:]])
 

@@ -238,7 +238,7 @@ class Intake:
         return bool(self._lacking)
 
     def settles_in(self, folder: str) -> float | None:
-        """Seconds until a file of a watched folder can settle; those being read, or tried again later, are left aside."""
+        """Seconds until a file of a watched folder can settle; those being read or tried again are left aside."""
         aside = {(root, path) for root, path, _ in self._inflight} | self._troubles.keys()
         return self.roots[folder].settling.due_in(aside)
 

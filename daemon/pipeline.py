@@ -57,7 +57,7 @@ class Pipeline:
     undecided: set[Place] = field(default_factory=set)  # decisions files that have settled, until they are adopted
     solved: dict[BatchKey, Solved] = field(default_factory=dict)
     rules_notice: Notice | None = None
-    _board_due: set[BatchKey] = field(default_factory=set)
+    board_due: set[BatchKey] = field(default_factory=set)
     _noticed: list[tuple[str, str, Notice]] = field(default_factory=list)
     intake: Intake = field(init=False)
     solving: Solving = field(init=False)
@@ -142,7 +142,7 @@ class Pipeline:
             if self._stands(one):
                 written += self.output.publish(one.outcome, check_all)
             self.solved[one.batch.key] = one
-            self._board_due.add(one.batch.key)
+            self.board_due.add(one.batch.key)
             self.touched.discard(one.batch.key)
         return written
 
@@ -169,15 +169,15 @@ class Pipeline:
             pass
 
     def board_work(self, everything: bool = False) -> Iterator[BatchKey]:
-        """Write boards and tables where something changed, one batch a step: a running daemon does other work between."""
+        """Write boards and tables where something changed, one batch a step: a daemon does other work between."""
         for _ in range(2):  # a board that is refused stands on the others
             notices = self.notices()
-            due = set(self.solved) if everything or notices != self._noticed else self._board_due & set(self.solved)
-            self._noticed, self._board_due = notices, due
+            due = set(self.solved) if everything or notices != self._noticed else self.board_due & set(self.solved)
+            self._noticed, self.board_due = notices, due
             for key in sorted(due):
                 if key in self.solved:
                     self.boards.publish(self.solved[key].outcome, notices)
-                self._board_due.discard(key)  # not before: a full disk ends this
+                self.board_due.discard(key)  # not before: a full disk ends this
                 yield key
             self.boards.publish_folders(notices, self.solving.every(), self._output_places())
             if self.notices() == notices:
@@ -187,7 +187,7 @@ class Pipeline:
         """What was refused is due once more; nothing new has arrived for it."""
         again = self.records.refusals.again(self.intake.roots, self.solving.every())
         self.unsaid |= again.files
-        self._board_due |= again.boards
+        self.board_due |= again.boards
         return again
 
     # ---- what time decides, entered as data --------------------------------------------------------------------------

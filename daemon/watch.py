@@ -341,7 +341,8 @@ class Watching:
                 self._rules_changed = False
             self._board_work = self.pipeline.board_work()
         if next(self._board_work, None) is None:
-            self._board_work, self._boards_due = None, None
+            self._board_work = None
+            self._boards_due = self.monotonic() if self.pipeline.board_due else None  # solved meanwhile
 
     def _let_time_decide(self, now: float) -> None:
         """Series that waited long enough lapse; batches without closing members close."""

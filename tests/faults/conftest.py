@@ -1,4 +1,4 @@
-"""Stations of these tests lie in memory where the machine has such a folder: their thousands of syncs cost nothing there."""
+"""Stations lie in memory where the machine has such a folder: their thousands of syncs cost nothing there."""
 
 from __future__ import annotations
 
@@ -9,6 +9,13 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
+
+
+def pytest_collection_modifyitems(config: pytest.Config, items: list[pytest.Item]) -> None:
+    if "bench" not in config.getoption("-m"):
+        for item in items:
+            if item.get_closest_marker("bench") and item.path.is_relative_to(Path(__file__).parent):
+                item.add_marker(pytest.mark.skip(reason="takes minutes: python -m pytest tests/faults -m bench"))
 
 
 @pytest.fixture

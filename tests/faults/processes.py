@@ -109,7 +109,9 @@ class Station:
         self, env: Mapping[str, str] | None = None, umask: int = 0o022, workers: int = 1, program: Sequence[str] = ()
     ) -> Iterator[Watch]:
         """`spikeward watch`, ended at the latest with the context; or a ``program`` of Python that runs it."""
-        command = [sys.executable, *program] if program else [*COMMAND, "watch", "rules.yaml", "--workers", str(workers)]
+        command = (
+            [sys.executable, *program] if program else [*COMMAND, "watch", "rules.yaml", "--workers", str(workers)]
+        )
         watch = Watch(self.home, env or {}, umask, command)
         try:
             yield watch

@@ -1,4 +1,4 @@
-"""A small made-up night: series of three levels for one or two metals, one file for each vessel, signals without scatter."""
+"""A small made-up night: series of four levels, one file for each vessel, signals that scatter little."""
 
 from __future__ import annotations
 
@@ -47,12 +47,14 @@ LEVELS = (0, 1, 2, 3)
 
 def row(solution: str, signal: float, minute: int, exported: int | None = None, element: str = "Cd") -> str:
     """One reading; minutes of the night."""
-    times = [f"2031-03-02T{20 + at // 60:02d}:{at % 60:02d}:00" for at in (minute, minute if exported is None else exported)]
+    times = [
+        f"2031-03-02T{20 + at // 60:02d}:{at % 60:02d}:00" for at in (minute, minute if exported is None else exported)
+    ]
     return f"{solution},{element},{signal:.5g},cps,{times[0]},{times[1]}\n"
 
 
 def vessel(batch: str, sample: int, level: int, content: float = 0.08, slip: float = 1.0, again: int = 0) -> bytes:
-    """The export of one vessel. ``slip`` is a factor of its signal, ``again`` minutes by which it was exported later."""
+    """The export of one vessel: ``slip`` is a factor of its signal; exported ``again`` minutes after measuring."""
     chance = Chance(1000 * sample + level)
     signal = 20000.0 * (content + 0.2 * level) * chance.noise(0.002) * slip
     minute = 10 + 8 * (sample % 20) + level

@@ -51,7 +51,7 @@ def reads(life: Life) -> int:
     return len(life.opened.pipeline.intake.files)
 
 
-# ---- A1, A2, A3: in pieces ---------------------------------------------------------------------------------------------
+# ---- A1, A2, A3: in pieces -----------------------------------------------------------------------
 
 
 def several(batch_name: str, sample: int) -> bytes:
@@ -118,7 +118,7 @@ def test_a_reader_that_knows_the_end_waits_for_it(tmp_path: Path, clock: Clock) 
     assert len(history(station, "N1_01")) == 1
 
 
-# ---- A4: renamed into place --------------------------------------------------------------------------------------------
+# ---- A4: renamed into place ----------------------------------------------------------------------
 
 
 def test_renamed_into_place_from_inside_outside_and_as_a_whole_folder(tmp_path: Path, clock: Clock) -> None:
@@ -175,7 +175,7 @@ def test_files_that_move_between_folders_keep_their_series(tmp_path: Path, clock
     assert b"2031/N1_01_A0.csv" in (station.out / "N1_01.result.json").read_bytes()
 
 
-# ---- A5: what is no data -----------------------------------------------------------------------------------------------
+# ---- A5: what is no data -------------------------------------------------------------------------
 
 
 def test_working_files_of_others_are_never_read(station: Station, clock: Clock) -> None:
@@ -186,7 +186,7 @@ def test_working_files_of_others_are_never_read(station: Station, clock: Clock) 
     assert flags(station) == []
 
 
-# ---- A7: the share goes and comes --------------------------------------------------------------------------------------
+# ---- A7: the share goes and comes ----------------------------------------------------------------
 
 
 @pytest.mark.parametrize("returns", ["whole", "empty first"])
@@ -239,7 +239,7 @@ def test_time_does_not_count_while_the_share_is_away(tmp_path: Path, clock: Cloc
     assert flags(station) == ["N1_01.warn.flag"]
 
 
-# ---- A8, A17: between listing and reading ------------------------------------------------------------------------------
+# ---- A8, A17: between listing and reading --------------------------------------------------------
 
 
 class MischievousDisk(MortalDisk):
@@ -260,7 +260,9 @@ class MischievousDisk(MortalDisk):
 
 
 @pytest.mark.parametrize("what", ["deleted", "renamed", "replaced", "turned into a folder"])
-def test_a_file_that_changes_between_listing_and_reading(station: Station, clock: Clock, tmp_path: Path, what: str) -> None:
+def test_a_file_that_changes_between_listing_and_reading(
+    station: Station, clock: Clock, tmp_path: Path, what: str
+) -> None:
     files = series("N1", 1)
     station.put_all(files)
     victim = station.data / "N1_01_A2.csv"
@@ -319,7 +321,7 @@ def test_a_file_that_cannot_be_read_now_is_tried_again_more_and_more_slowly(
     assert flags(station) == ["N1_01.warn.flag"]
 
 
-# ---- A9, A10: twice ----------------------------------------------------------------------------------------------------
+# ---- A9, A10: twice ------------------------------------------------------------------------------
 
 
 @pytest.mark.parametrize("copy", ["0 copy.csv", "zz copy.csv"])
@@ -382,7 +384,7 @@ def test_exported_again_with_another_value(station: Station, clock: Clock, tmp_p
     station.equals(fresh(tmp_path, RULES, files))
 
 
-# ---- A11, A12: times of files ------------------------------------------------------------------------------------------
+# ---- A11, A12: times of files --------------------------------------------------------------------
 
 
 def test_a_content_that_changed_behind_equal_size_and_time_is_found_by_sweep(
@@ -434,7 +436,7 @@ def test_files_older_than_the_station(tmp_path: Path, clock: Clock) -> None:
     station.equals(fresh(tmp_path, CLOSING, batch("N1", 2, "a", True)))
 
 
-# ---- A13: nothing, without end, too much -------------------------------------------------------------------------------
+# ---- A13: nothing, without end, too much ---------------------------------------------------------
 
 
 def test_an_empty_file_and_one_that_never_ends_wait_and_are_shown(station: Station, clock: Clock) -> None:
@@ -464,7 +466,7 @@ def test_a_file_that_is_too_large_is_refused_unread(station: Station, clock: Clo
     assert "huge.csv.unread.flag" in flags(station)
 
 
-# ---- A15: what is no file ----------------------------------------------------------------------------------------------
+# ---- A15: what is no file ------------------------------------------------------------------------
 
 
 def test_pipes_links_and_folders_with_the_name_of_a_file(station: Station, clock: Clock, tmp_path: Path) -> None:
@@ -481,7 +483,7 @@ def test_pipes_links_and_folders_with_the_name_of_a_file(station: Station, clock
     assert reads(life) == 4
 
 
-# ---- S8: a late file ---------------------------------------------------------------------------------------------------
+# ---- S8: a late file -----------------------------------------------------------------------------
 
 
 def test_a_late_file_of_an_old_series_makes_a_revision(tmp_path: Path, clock: Clock) -> None:
@@ -501,7 +503,9 @@ def test_a_late_file_of_an_old_series_makes_a_revision(tmp_path: Path, clock: Cl
     station.equals(fresh(tmp_path, RULES, series("N1", 1)))
 
 
-def test_a_late_file_makes_no_revision_while_a_source_is_missing(station: Station, clock: Clock, tmp_path: Path) -> None:
+def test_a_late_file_makes_no_revision_while_a_source_is_missing(
+    station: Station, clock: Clock, tmp_path: Path
+) -> None:
     station.put_all({path: each for path, each in series("N1", 1).items() if "A3" not in path})
     before: list[str] = []
 
@@ -522,8 +526,6 @@ def test_a_late_file_makes_no_revision_while_a_source_is_missing(station: Statio
     assert life.notices() == []
     swept(str(station.home), clock)
     station.equals(fresh(tmp_path, RULES, series("N1", 1)))
-
-
 
 
 def test_a_result_that_a_person_deletes_is_solved_from_what_is_there(

@@ -1,6 +1,6 @@
 """Thousands of files at once, with every event lost: the scan finds them all, and each is counted.
 
-The large one runs with ``pytest -m bench tests/faults/test_burst.py``.
+The large one takes minutes: ``python -m pytest tests/faults -m bench``.
 """
 
 from __future__ import annotations

@@ -1,4 +1,4 @@
-"""Full disks, clocks that jump, second daemons, lost journals, edited outputs, signals: nothing is lost, work goes on."""
+"""Full disks, clocks that jump, second daemons, lost journals, edited outputs, signals: nothing is lost."""
 
 from __future__ import annotations
 
@@ -14,9 +14,9 @@ from pathlib import Path
 from unittest import mock
 
 import pytest
-from harness import Clock, Life, MortalDisk, lives, soon, swept, with_the_same_past
+from harness import Clock, Life, MortalDisk, lives, soon, swept
 from processes import COMMAND, STOPS_WITHIN, Station, until
-from small_night import CLOSING, HEAD, RULES, batch, bracket, renamed, series, vessel
+from small_night import CLOSING, HEAD, RULES, batch, renamed, series, vessel
 
 NIGHT = batch("N1", 2, "a", brackets=True)
 DECISION = b"- {exclude: N1_01_A3, by: N. Invented, on: 2031-03-03, why: flask was cracked}\n"
@@ -40,7 +40,7 @@ def fresh(tmp_path: Path, rules: str, files: dict[str, bytes], name: str = "fres
     return other
 
 
-# ---- M3: no room -------------------------------------------------------------------------------------------------------
+# ---- M3: no room ---------------------------------------------------------------------------------
 
 REFUSING: dict[str, Callable[[str], bool]] = {
     "the data folder": lambda path: "/inbox" in path,
@@ -83,7 +83,9 @@ def test_a_full_disk_makes_it_late_and_nothing_else(
     station.equals(fresh(tmp_path, rules, files))
 
 
-def test_a_disk_that_is_full_at_the_end_does_not_keep_it_from_ending(station: Station, clock: Clock, tmp_path: Path) -> None:
+def test_a_disk_that_is_full_at_the_end_does_not_keep_it_from_ending(
+    station: Station, clock: Clock, tmp_path: Path
+) -> None:
     disk = MortalDisk()
     station.put_all({path: content for path, content in NIGHT.items() if "BR2" not in path})
 
@@ -98,7 +100,7 @@ def test_a_disk_that_is_full_at_the_end_does_not_keep_it_from_ending(station: St
     station.equals(fresh(tmp_path, CLOSING, NIGHT))
 
 
-# ---- M5: clocks --------------------------------------------------------------------------------------------------------
+# ---- M5: clocks ----------------------------------------------------------------------------------
 
 
 def test_the_time_of_day_decides_nothing(station: Station, clock: Clock, tmp_path: Path) -> None:
@@ -106,7 +108,7 @@ def test_the_time_of_day_decides_nothing(station: Station, clock: Clock, tmp_pat
     times = iter(
         ["2031-03-02T20:00:00Z", "2031-03-01T20:00:00Z", "2032-03-01T20:00:00Z", "1970-01-01T00:00:00Z"] * 2000
     )
-    with mock.patch("spikeward.daemon.opening.wall_clock", lambda: next(times)):
+    with mock.patch("spikeward.daemon.opening.wall_clock", side_effect=times):
         paths = list(NIGHT)
         steps = [soon(3, lambda life, path=path: station.put(path, NIGHT[path])) for path in paths]  # type: ignore[misc]
         lives(str(station.home), clock, *steps)
@@ -131,7 +133,7 @@ def test_a_series_lapses_by_time_that_was_lived_through(tmp_path: Path, clock: C
     assert seen == [["N1_01.waiting.flag"], ["N1_01.waiting.flag"], ["N1_01.warn.flag"]]
 
 
-# ---- M6: two daemons ---------------------------------------------------------------------------------------------------
+# ---- M6: two daemons -----------------------------------------------------------------------------
 
 
 @pytest.mark.parametrize("command", ["watch", "sweep"])
@@ -160,7 +162,7 @@ def test_a_lock_of_a_killed_daemon_is_taken_over(tmp_path: Path) -> None:
     station.sweep()
 
 
-# ---- M7: the journal ---------------------------------------------------------------------------------------------------
+# ---- M7: the journal -----------------------------------------------------------------------------
 
 
 def test_a_journal_of_a_newer_version_is_refused_with_a_sentence(station: Station) -> None:
@@ -221,7 +223,7 @@ def test_a_damaged_journal_while_it_runs(station: Station, clock: Clock, tmp_pat
 
 
 def test_a_file_that_went_while_nobody_watched_never_counts_again(tmp_path: Path, clock: Clock) -> None:
-    """Read, then deleted with its result so that the series is solved from what is there: a restart remembers nothing."""
+    """Read, then deleted with its result, so that the series is solved from what is there: not remembered."""
     station = Station(tmp_path / "home", RULES)
     files = series("N1", 1) | {"N1_01_A2 too.csv": vessel("N1", 1, 2, slip=1.02)}
     station.put_all(files)
@@ -268,14 +270,12 @@ def test_a_watched_folder_that_is_taken_out_of_the_rules_while_a_file_is_read(st
     assert lives(str(station.home), clock, edit_before_the_reply).notices() == []
 
 
-# ---- M8: what people do to outputs -------------------------------------------------------------------------------------
+# ---- M8: what people do to outputs ---------------------------------------------------------------
 
 
 @pytest.mark.parametrize("suffix", [".result.json", ".summary.html", ".pass.flag"])
 @pytest.mark.parametrize("deed", ["edited", "deleted", "read-only", "emptied"])
-def test_outputs_that_a_person_touched(
-    station: Station, clock: Clock, tmp_path: Path, suffix: str, deed: str
-) -> None:
+def test_outputs_that_a_person_touched(station: Station, clock: Clock, tmp_path: Path, suffix: str, deed: str) -> None:
     """They come back with `sweep`; an edit is kept aside."""
     station.put_all(NIGHT)
     lives(str(station.home), clock)
@@ -317,7 +317,7 @@ def test_an_edit_is_kept_aside_with_the_next_revision(tmp_path: Path, clock: Clo
     station.equals(fresh(tmp_path, RULES, series("N1", 1)))
 
 
-# ---- M10: signals ------------------------------------------------------------------------------------------------------
+# ---- M10: signals --------------------------------------------------------------------------------
 
 
 @pytest.mark.parametrize("number", [signal.SIGTERM, signal.SIGINT, signal.SIGHUP])

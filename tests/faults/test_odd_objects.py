@@ -213,7 +213,7 @@ def test_a_board_comes_after_the_disk_was_full_for_it_alone(station: Station, cl
     lives(str(station.home), clock, soon(60, room), wait, wait, there, disk=disk)
 
 
-# ---- what a person wrote into a result ----------------------------------------------------------------------------
+# ---- what a person wrote into a result -----------------------------------------------------------
 
 
 def with_(result: dict[str, Any], **changes: Any) -> bytes:
@@ -299,7 +299,7 @@ def test_an_orphan_whose_flag_cannot_go_is_recorded_once(station: Station, clock
     assert ledger.count('"withdrawn"') == 2
 
 
-# ---- more than a person wants to read -----------------------------------------------------------------------------
+# ---- more than a person wants to read ------------------------------------------------------------
 
 
 def test_a_thousand_files_of_one_kind_are_summed_up(station: Station, clock: Clock) -> None:
@@ -331,7 +331,7 @@ def test_a_few_are_all_told(station: Station, clock: Clock) -> None:
     assert not [line for line in lines if " more" in line]
 
 
-# ---- a lock that somebody took away -------------------------------------------------------------------------------
+# ---- a lock that somebody took away --------------------------------------------------------------
 
 
 def test_a_lock_that_was_deleted_is_taken_again(station: Station, clock: Clock) -> None:
@@ -367,7 +367,7 @@ def test_a_lock_that_another_daemon_took_meanwhile_ends_this_one(station: Statio
     others[0].release()
 
 
-# ---- a journal that another program locks -------------------------------------------------------------------
+# ---- a journal that another program locks --------------------------------------------------------
 
 
 def test_a_journal_locked_by_another_program_does_not_keep_it_from_ending(station: Station) -> None:

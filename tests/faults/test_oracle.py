@@ -63,7 +63,7 @@ def test_the_reference_is_the_night_and_says_something(usual: Night, swept: tupl
 def test_killed_at_random_moments_of_the_night(
     usual: Night, swept: tuple[Reference, Reference], tmp_path: Path
 ) -> None:
-    """Instruments deliver in about twenty seconds; meanwhile the daemon is killed a dozen times, and once more after."""
+    """Instruments deliver in about twenty seconds; meanwhile the daemon is killed a dozen times."""
     chance = random.Random(20261117)
     station = Station(tmp_path / "home", usual.rules)
     minutes = usual.deliveries[-1].minute
@@ -144,7 +144,7 @@ def test_the_journal_is_deleted_while_it_runs_and_while_it_is_stopped(
     closes_alike(station, swept)
 
 
-# ---- what surrounds the process ----------------------------------------------------------------------------------------
+# ---- what surrounds the process ------------------------------------------------------------------
 
 NO_KERNELS = "AVX2 FMA3 AVX512F AVX512CD AVX512_SKX AVX512_CLX AVX512_CNL AVX512_ICL X86_V3 X86_V4"
 SURROUNDINGS: dict[str, tuple[dict[str, str], int]] = {
@@ -186,7 +186,9 @@ def test_locale_time_zone_umask_and_processor(
 def test_names_that_are_not_ascii_are_the_same_everywhere(tmp_path: Path, locales: Path) -> None:
     """The bytes of a name are what counts: a locale of one byte a letter, or none, must not change what is quoted."""
     digests = set()
-    for number, env in enumerate(({}, *(SURROUNDINGS[w][0] for w in ("Turkish, one byte a letter", "C, nothing coerced")))):
+    for number, env in enumerate(
+        ({}, *(SURROUNDINGS[w][0] for w in ("Turkish, one byte a letter", "C, nothing coerced")))
+    ):
         station = Station(tmp_path / str(number), RULES)
         files = renamed(series("N1", 1), "Fluß Ø")
         station.put_all({path.replace("N1_01_A2", "Größe N1_01_A2"): content for path, content in files.items()})
@@ -195,7 +197,7 @@ def test_names_that_are_not_ascii_are_the_same_everywhere(tmp_path: Path, locale
     assert len(digests) == 1
 
 
-# ---- what is in the folder besides --------------------------------------------------------------------------------------
+# ---- what is in the folder besides ---------------------------------------------------------------
 
 
 def test_copies_of_files_count_once(usual: Night, tmp_path: Path) -> None:
@@ -213,7 +215,7 @@ def test_copies_of_files_count_once(usual: Night, tmp_path: Path) -> None:
     closes_alike(station, swept)
 
 
-# ---- one file at a time, in a clock's time ------------------------------------------------------------------------------
+# ---- one file at a time, in a clock's time -------------------------------------------------------
 
 
 @pytest.mark.parametrize("order", ["as measured", "shuffled", "backwards"])
@@ -228,7 +230,7 @@ def test_one_file_at_a_time(order: str, tmp_path: Path) -> None:
     closes_alike(station, swept)
 
 
-# ---- company ------------------------------------------------------------------------------------------------------------
+# ---- company -------------------------------------------------------------------------------------
 
 
 def of_vessels(vessels: int, number: int) -> dict[str, bytes]:
@@ -259,7 +261,7 @@ def test_a_series_has_the_same_digits_alone_and_in_company(tmp_path: Path) -> No
         assert mine == alone.published()
 
 
-# ---- exactly one flag -----------------------------------------------------------------------------------------------------
+# ---- exactly one flag ----------------------------------------------------------------------------
 
 
 def test_a_lister_never_sees_two_flags_of_a_series_or_none(usual: Night, tmp_path: Path) -> None:
