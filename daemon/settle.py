@@ -64,7 +64,7 @@ class Settling(Generic[Place]):
             del self._watched[place]
 
     def due_in(self, without: Container[Place] = ()) -> float | None:
-        """Seconds until the next file can settle, those in ``without`` left aside; None while none with content waits."""
+        """Seconds until the next file can settle, leaving ``without`` aside; None while none with content waits."""
         left = [
             self._quiet - each.seconds
             for place, each in self._watched.items()

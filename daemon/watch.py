@@ -21,6 +21,7 @@ from spikeward.daemon.memory import recall, remember
 from spikeward.daemon.mounts import read_mounts
 from spikeward.daemon.opening import Opened, open_station
 from spikeward.daemon.pipeline import Pipeline
+from spikeward.daemon.reading import ReadReply
 from spikeward.daemon.rule_edits import RuleEdits
 from spikeward.daemon.solving import Solved
 from spikeward.daemon.survey import Listing, survey
@@ -108,6 +109,7 @@ class Watching:
     _time_due: float = 0.0
     _rules_changed: bool = False
     _board_work: Iterator[BatchKey] | None = None
+    _unremembered: list[ReadReply] = field(default_factory=list)
     _disk_wait: float = 0.0
     _again_due: float = 0.0
     _idle: Idle = field(init=False)
@@ -171,8 +173,11 @@ class Watching:
         if now < self._disk_wait:
             return
         try:
-            self._read()
+            self._unremembered += self._read()
             self._publish(now)
+            if self._unremembered:
+                remember(self.pipeline, self.journal, self._unremembered)
+                self._unremembered.clear()
             self._let_time_decide(now)
             if self._boards_due is not None and now >= self._boards_due and not self.readers.busy:
                 self._write_a_board()
@@ -285,18 +290,17 @@ class Watching:
 
     # ---- reading, solving, publishing --------------------------------------------------------------------------------
 
-    def _read(self) -> None:
+    def _read(self) -> list[ReadReply]:
+        """Take in what was read; the replies are to be remembered, which no flag needs to wait for."""
         if self.pipeline.gone:
             self.journal.forget(self.pipeline.gone)
             self.pipeline.gone.clear()
         replies = self.readers.replies(0.0)
-        if not replies:
-            return
         self.pipeline.take(replies)
-        remember(self.pipeline, self.journal, replies)
         for reply in replies:
             if reply.sentence:
                 self.log.warning("unread", file=reply.key[1], note=reply.sentence)
+        return replies
 
     def _publish(self, now: float) -> None:
         again = self._try_again(now) - self.pipeline.touched

@@ -48,7 +48,7 @@ def _bench_is_meant(key: SeriesKey, preparations: Iterable[Preparation | None]) 
     if key.role != "process_blank":
         return True
     blocks = [each.sample for each in preparations if each is not None and each.sample is not None]
-    return any("bench" in (block.mass, block.volume, block.digest, block.dry_matter, block.dilution) for block in blocks)
+    return any("bench" in (each.mass, each.volume, each.digest, each.dry_matter, each.dilution) for each in blocks)
 
 
 def preparation_for(key: SeriesKey, analyte: str, rules: Rulebook) -> Preparation | None:

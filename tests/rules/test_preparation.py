@@ -31,9 +31,11 @@ def book(preparation: Preparation) -> Rulebook:
 
 def reading(level: str, *values: tuple[str, str, str], vessel: str = "") -> Reading:
     return Reading(
-        series=KEY, level=level, vessel=vessel, injection="", reading="", solution=f"N1_7_A{level}{vessel}",
+        series=KEY, level=level, vessel=vessel, injection="", reading="",
+        solution=f"N1_7_A{level}{vessel}",
         analyte="Mn", line="", unit="A", signal=0.1, text="0.1", qualifier="", readings=1, sd=None, measured_at="",
-        processed_at="", order=None, values=values, already=(), path=f"v{level}{vessel}.csv", row=2, digest=level + vessel,
+        processed_at="", order=None, values=values, already=(), path=f"v{level}{vessel}.csv", row=2,
+        digest=level + vessel,
     )  # fmt: skip
 
 
