@@ -17,6 +17,9 @@ from spikeward.rules.words import counted
 _REPORTED = ("sample", "duplicate", "spiked sample")
 
 
+_QUIET = ("duplicate", "no reader")  # notices that ask nothing of a person stand last
+
+
 @dataclass(frozen=True, slots=True)
 class Row:
     """One analyte of one series, or a series that has no result yet, as the board lists it."""
@@ -55,7 +58,10 @@ def render_board(
         headline=headline(batch, rows),
         urgent=causes(row for row in rows if row.verdict != PASS),
         rows=rows,
-        notices=sorted(notices, key=lambda notice: (notice.kind, notice.subject, notice.sentence, notice.since)),
+        notices=sorted(
+            notices,
+            key=lambda notice: (notice.kind in _QUIET, notice.kind, notice.subject, notice.sentence, notice.since),
+        ),
         folder=folder or (_place(batch.key.root, batch.key.folder) if batch else ""),
         station=station,
     )

@@ -160,7 +160,7 @@ def is_there(station: Station, path: str, content: bytes) -> bool:
 
 
 @settings(
-    max_examples=int(os.environ.get("SPIKEWARD_EXAMPLES", "60")),
+    max_examples=int(os.environ.get("SPIKEWARD_EXAMPLES", "30")),
     deadline=None,
     suppress_health_check=[HealthCheck.too_slow],
     phases=[Phase.explicit, Phase.reuse, Phase.generate],  # an example takes a third of a second: no shrinking
