@@ -239,13 +239,15 @@ class Intake:
 
     def settles_in(self, folder: str) -> float | None:
         """Seconds until a file of a watched folder can settle; those being read or tried again are left aside."""
-        aside = {(root, path) for root, path, _ in self._inflight} | self._troubles.keys()
+        paused = {place for place, trouble in self._troubles.items() if trouble.due > self._now}
+        aside = {(root, path) for root, path, _ in self._inflight} | paused
         return self.roots[folder].settling.due_in(aside)
 
     def due_in(self, folder: str, now: float) -> float | None:
         """Seconds until a look at a watched folder is worth it: a file can settle, or is tried again."""
         settles = self.settles_in(folder)
-        waits = [trouble.due - now for (root, _), trouble in self._troubles.items() if root == folder]
+        troubles = [trouble for (root, _), trouble in self._troubles.items() if root == folder]
+        waits = [trouble.due - now for trouble in troubles if trouble.due > self._now]  # others had their look
         waits += [] if settles is None else [settles]
         return max(0.0, min(waits)) if waits else None
 

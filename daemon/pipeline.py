@@ -217,14 +217,17 @@ class Pipeline:
     def time_is_up(self, one: Solved, idle: Callable[[BatchKey | SeriesKey], float]) -> None:
         """Incomplete series of which nothing has arrived for the stated time lapse, and a quiet batch may close.
 
-        ``idle`` gives the seconds for which nothing of a batch or series has arrived.
+        ``idle`` gives the seconds for which nothing of a batch or series has arrived. What is recorded is not recorded
+        again, also where the files of a batch are gone and nothing can be solved any more.
         """
         longest = one.rules.series.lapses_after
         waiting = [outcome.key for outcome in one.outcome.outcomes if outcome.incomplete]
         over = [key for key in waiting if idle(key) >= longest]
-        if over:
-            self.lapse(one, over)
-        elif not waiting and not closing_roles(one.rules) and idle(one.batch.key) >= longest:
+        fresh = [key for key in over if key not in self.closings.lapses_of(one.batch)]
+        closes = not waiting and not closing_roles(one.rules) and idle(one.batch.key) >= longest
+        if fresh:
+            self.lapse(one, fresh)
+        elif closes and not self.closings.covers(one.batch.key, one.batch.members):
             self.close([one])
             self.touched.add(one.batch.key)
 

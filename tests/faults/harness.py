@@ -148,6 +148,7 @@ class Life:
     opened: Opened = field(init=False)
     watching: Watching = field(init=False)
     turns: int = 0
+    happened: bool = False  # what a test had in mind to let happen
 
     def run(self, *steps: Step) -> None:
         """Live through the steps, then end as after SIGTERM. A ``MortalDisk`` may end it earlier, with ``Died``."""

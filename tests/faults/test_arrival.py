@@ -5,14 +5,15 @@ from __future__ import annotations
 import errno
 import os
 import re
+from collections.abc import Callable, Iterable
 from pathlib import Path
 
 import pytest
-from harness import BlinkingDisk, Clock, Life, MortalDisk, lives, opened_sweep, soon, swept
+from harness import BlinkingDisk, Clock, Life, Step, lives, opened_sweep, soon, swept
 from processes import Station
 from small_night import CLOSING, HEAD, RULES, SPANNING, batch, bracket, renamed, row, series, vessel
 
-from spikeward.daemon.disk import Listed
+from spikeward.daemon.reading import ReadJob
 from spikeward.daemon.settle import Stamp
 
 
@@ -242,21 +243,23 @@ def test_time_does_not_count_while_the_share_is_away(tmp_path: Path, clock: Cloc
 # ---- A8, A17: between listing and reading --------------------------------------------------------
 
 
-class MischievousDisk(MortalDisk):
-    """Lets something happen right after a file was listed, once the daemon is about to read it."""
+def before_reading(name: str, happens: Callable[[], object]) -> Step:
+    """Let something happen once, after a file was listed and found settled, and before it is read."""
 
-    def __init__(self, path: Path, happens: object) -> None:
-        super().__init__()
-        self._path, self._happens, self._looks = path, happens, 0
+    def install(life: Life) -> None:
+        readers = life.watching.readers
+        start, left = readers.start, [happens]
 
-    def entries(self, folder: str, skip: object = lambda name: False) -> list[Listed]:
-        """The second listing of the file is the last before it is read."""
-        found = super().entries(folder, skip)  # type: ignore[arg-type]
-        if any(each.name == self._path.name for each in found):
-            self._looks += 1
-            if self._looks == 2:
-                self._happens()  # type: ignore[operator]
-        return found
+        def start_later(jobs: Iterable[ReadJob]) -> None:
+            listed = list(jobs)
+            if left and any(job.path.endswith(name) for job in listed):
+                left.pop()()
+                life.happened = True
+            start(listed)
+
+        readers.start = start_later  # type: ignore[method-assign]
+
+    return soon(0, install)
 
 
 @pytest.mark.parametrize("what", ["deleted", "renamed", "replaced", "turned into a folder"])
@@ -277,7 +280,8 @@ def test_a_file_that_changes_between_listing_and_reading(
         if what.startswith("turned"):
             victim.mkdir()
 
-    life = lives(str(station.home), clock, disk=MischievousDisk(victim, happens))
+    life = lives(str(station.home), clock, before_reading("N1_01_A2.csv", happens))
+    assert life.happened
     assert life.notices() == []
     remaining = {name: content for name, content in files.items() if "A2" not in name}
     if what == "renamed":
@@ -318,6 +322,28 @@ def test_a_file_that_cannot_be_read_now_is_tried_again_more_and_more_slowly(
     pauses = [later - earlier for earlier, later in zip(tries, tries[1:], strict=False)]
     assert len(tries) > 4
     assert pauses == sorted(pauses)
+    assert flags(station) == ["N1_01.warn.flag"]
+
+
+def test_a_file_that_is_emptied_before_it_is_read_is_looked_at_no_more_often_than_others(
+    station: Station, clock: Clock
+) -> None:
+    """Its writer may have begun anew; it is waited for like any empty file."""
+    station.put_all(series("N1", 1))
+    victim = station.data / "N1_01_A2.csv"
+    turns: list[int] = []
+
+    def count(life: Life) -> None:
+        turns.append(life.turns)
+        clock.sleep(0.5)
+
+    def fill(life: Life) -> None:
+        victim.write_bytes(series("N1", 1)["N1_01_A2.csv"])
+
+    empty = before_reading("N1_01_A2.csv", lambda: victim.write_bytes(b""))
+    life = lives(str(station.home), clock, empty, count, count, count, fill)
+    assert life.happened
+    assert max(later - earlier for earlier, later in zip(turns, turns[1:], strict=False)) < 60
     assert flags(station) == ["N1_01.warn.flag"]
 
 
@@ -501,6 +527,31 @@ def test_a_late_file_of_an_old_series_makes_a_revision(tmp_path: Path, clock: Cl
     assert [row for row in history(station, "N1_01") if "N1_01_A3.csv" in row]
     swept(str(station.home), clock)
     station.equals(fresh(tmp_path, RULES, series("N1", 1)))
+
+
+@pytest.mark.parametrize("levels", [(0, 1, 2), (0, 1, 2, 3)])
+def test_time_is_up_once_also_for_a_batch_whose_files_are_gone(
+    station: Station, clock: Clock, levels: tuple[int, ...]
+) -> None:
+    """The ledger must not grow by a record each turn because nothing can be solved any more."""
+    files = {f"N1_01_A{level}.csv": vessel("N1", 1, level) for level in levels}
+    files["N2_01_A0.csv"] = vessel("N2", 1, 0)
+    station.put_all(files)
+    ledger = station.home / ".spikeward" / "ledger.jsonl"
+    lines: list[int] = []
+
+    def delete(life: Life) -> None:
+        for level in levels:
+            (station.data / f"N1_01_A{level}.csv").unlink()
+
+    def hours(life: Life) -> None:
+        clock.sleep(4 * 3600.0)
+
+    def count(life: Life) -> None:
+        lines.append(len(ledger.read_text().splitlines()))
+
+    lives(str(station.home), clock, delete, hours, soon(20, count), soon(100, count))
+    assert lines[0] == lines[1]
 
 
 def test_a_late_file_makes_no_revision_while_a_source_is_missing(
