@@ -32,6 +32,7 @@ class Watch:
 
     def __init__(self, home: Path, env: Mapping[str, str], umask: int, command: Sequence[str]) -> None:
         self._log = home / "watch.log"
+        self._before = self._log.stat().st_size if self._log.exists() else 0
         with self._log.open("ab") as log:
             self.process = subprocess.Popen(
                 command, cwd=home, env={**os.environ, **env}, umask=umask, stdout=log, stderr=log,
@@ -41,6 +42,10 @@ class Watch:
     def log(self) -> str:
         """What it has said so far, and its forerunners in this station."""
         return self._log.read_text(errors="replace")
+
+    def is_up(self) -> bool:
+        """Whether it has begun to watch; before that a signal ends it as it ends any program."""
+        return b" watching " in self._log.read_bytes()[self._before :]
 
     def kill(self) -> None:
         """End it as a crash would."""
@@ -123,10 +128,12 @@ class Station:
     def comes_to(self, other: Station | Reference, watch: Watch) -> None:
         """Wait until what is published equals what stands in another tree; stays so after the watch has ended."""
         try:
+            until(lambda: watch.is_up() or watch.process.poll() is not None, "the daemon is up")
             until(lambda: self.digest() == other.digest() or watch.process.poll() is not None, "equal trees")
         except AssertionError:
             raise AssertionError(f"{self.differs_from(other)}\n{watch.log()[-3000:]}") from None
-        assert watch.stop() == 0, watch.log()[-3000:]
+        # The trees may be equal before a restarted daemon listens to signals: then the signal itself ends it.
+        assert watch.stop() in (0, -signal.SIGTERM), watch.log()[-3000:]
         self.equals(other)
 
     def equals(self, other: Station | Reference) -> None:

@@ -48,7 +48,7 @@ def play_burst(station: Station, files: dict[str, bytes], mode: str, deadline: f
     program = station.home / "deaf.py"
     program.write_text(DEAF.format(deaf=mode == "native, but deaf"))
     with station.watch(program=[str(program)]) as watch:
-        until(lambda: "watching" in watch.log(), "the daemon is up")
+        until(watch.is_up, "the daemon is up")
         station.put_all(files)
         wanted = len(files) // len(LEVELS)
         until(lambda: watch.process.poll() is not None or settled(station) == wanted, "every series is there", deadline)

@@ -141,7 +141,7 @@ def test_a_second_daemon_is_refused_and_told_of_the_first(tmp_path: Path, comman
     station = Station(tmp_path / "home", RULES)
     (station.home / "other.yaml").write_text(RULES.replace("station:", "state: elsewhere\nstation:"))
     with station.watch() as watch:
-        until(lambda: "watching" in watch.log(), "the first is up")
+        until(watch.is_up, "the first is up")
         for rules in ("rules.yaml", "other.yaml"):
             second = subprocess.run(
                 [*COMMAND, command, rules], cwd=station.home, capture_output=True, text=True, timeout=30, check=False
@@ -156,7 +156,7 @@ def test_a_second_daemon_is_refused_and_told_of_the_first(tmp_path: Path, comman
 def test_a_lock_of_a_killed_daemon_is_taken_over(tmp_path: Path) -> None:
     station = Station(tmp_path / "home", RULES)
     with station.watch() as watch:
-        until(lambda: "watching" in watch.log(), "the first is up")
+        until(watch.is_up, "the first is up")
         watch.kill()
     assert (station.home / ".spikeward" / "lock").exists()
     station.sweep()
@@ -338,7 +338,7 @@ def test_a_signal_in_the_middle_of_work_ends_it_in_time(tmp_path: Path, number: 
     other.put_all(files)
     other.sweep()
     with station.watch() as watch:
-        until(lambda: watch.log().count("watching") == 2, "it is up again")
+        until(watch.is_up, "it is up again")
         assert watch.stop() == 0
     station.sweep()
     station.equals(other)

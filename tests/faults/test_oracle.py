@@ -109,7 +109,7 @@ def test_order_of_arrival_events_and_workers(
     station = Station(tmp_path / "home", events(usual.rules, mode))
     files = in_order(order, files_of(usual))
     with station.watch(workers=workers) as watch:
-        until(lambda: "watching" in watch.log(), "the daemon is up")
+        until(watch.is_up, "the daemon is up")
         for number, (path, content) in enumerate(files.items(), 1):
             station.put(path, content)
             if not order.startswith("all") and number in (20, 50, 80):
@@ -277,7 +277,7 @@ def test_a_lister_never_sees_two_flags_of_a_series_or_none(usual: Night, tmp_pat
     wrong: list[str] = []
     listings = largest = 0
     with station.watch() as watch:
-        until(lambda: "watching" in watch.log(), "the daemon is up")
+        until(watch.is_up, "the daemon is up")
         player.start()
         began = time.monotonic()
         changes = 0
