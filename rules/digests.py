@@ -30,7 +30,7 @@ def inputs_digest(
         ["calculation", CALCULATION_VERSION, rules.digest],
         ["series", key.root, key.folder, key.batch, key.role, key.sample],
         ["readings", [_reading(reading) for reading in members.readings]],
-        ["told", members.conflicts, members.notes, members.warnings],
+        ["told", members.conflicts, members.warnings],
         ["bench", sorted(
             [entry.level, entry.values, entry.path, entry.row, entry.digest]
             for entry in batch.bench
@@ -39,7 +39,7 @@ def inputs_digest(
         ["decisions", sorted(_decision(decision) for decision in batch.decisions if decision.target in used)],
         ["context", [_reading(reading) for reading in context]],
         ["batch says", [[check.name, check.verdict, check.sentence, check.remedy] for check in told]],
-        ["state", waiting_for, is_settled, batch.closed, key in batch.lapsed],
+        ["state", waiting_for, is_settled, key in batch.lapsed],
     ]  # fmt: skip
     text = json.dumps(parts, ensure_ascii=False, separators=(",", ":"))
     return hashlib.sha256(text.encode("utf-8", "surrogatepass")).hexdigest()

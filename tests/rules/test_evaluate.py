@@ -543,7 +543,7 @@ def test_equal_inputs_have_equal_digests_and_every_change_another(bench):
         signal = changed.readings[at].signal * 1.5
         changed.readings[at] = replace(changed.readings[at], signal=signal, text=f"{signal:.4f}")
         seen.add(found(changed.batch(closed=True)))
-    seen.add(found(built(telling={"07": {"notes": ("counted once",)}})))
+    seen.add(found(built(telling={"07": {"warnings": ("a.csv and b.csv have equal content",)}})))
     seen.add(found(built(decisions=[Decision("exclude", "MD12_sample_07_3", "A. Person", "2030-05-02", "spilt", 3)])))
     assert len(seen) == 10
 
@@ -600,3 +600,18 @@ def test_a_series_without_readings_fails_when_its_batch_closes(bench):
 
 def test_no_batches_no_outcomes(bench):
     assert evaluate([], bench.rulebook()) == ()
+
+
+def test_a_closing_that_nothing_waited_for_makes_no_revision(bench):
+    """Without closing members a complete series passes at once; closing its batch changes nothing that it says."""
+    night = bench.Night().series()
+    (before,), (after,) = evaluate([night.batch()], night.rules), evaluate([night.batch(closed=True)], night.rules)
+    assert before.outcomes[0].verdict == PASS
+    assert after.outcomes == before.outcomes
+
+
+def test_a_copy_that_does_not_count_makes_no_revision(bench):
+    night = bench.Night().series()
+    plain = evaluate([night.batch()], night.rules)
+    copied = evaluate([night.batch(telling={"07": {"notes": ("b.csv row 2 repeats a.csv row 2",)}})], night.rules)
+    assert copied[0].outcomes == plain[0].outcomes
