@@ -8,12 +8,10 @@ from __future__ import annotations
 
 import hashlib
 import os
-import re
 import sys
 
 from spikeward.daemon.names import RESULT, SUMMARY, TABLE, is_ours
-
-_HISTORY = re.compile(rb"<!-- history -->.*?<!-- /history -->", re.DOTALL)
+from spikeward.daemon.pages.history_marks import without_history
 
 
 def tree_digest(folder: str) -> str:
@@ -26,7 +24,7 @@ def tree_digest(folder: str) -> str:
         with open(os.path.join(os.fsencode(folder), path), "rb") as file:
             data = file.read()
         if path.endswith(SUMMARY.encode("ascii")):
-            data = _HISTORY.sub(b"", data)
+            data = without_history(data)
         digest.update(b"%d %d\n" % (len(path), len(data)))
         digest.update(path)
         digest.update(data)

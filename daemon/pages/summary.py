@@ -6,9 +6,9 @@ from collections.abc import Sequence
 
 from spikeward.daemon.pages.cautions import CAUTIONS
 from spikeward.daemon.pages.chart import addition_plot, caption
-from spikeward.daemon.pages.digest import HISTORY_ENDS, HISTORY_STARTS
 from spikeward.daemon.pages.facts import Revision
 from spikeward.daemon.pages.flag import result_name
+from spikeward.daemon.pages.history_marks import HISTORY_ENDS, HISTORY_STARTS
 from spikeward.daemon.pages.template import page
 from spikeward.rules.outcomes import Outcome
 from spikeward.rules.records import MEASURED, Reading
