@@ -152,9 +152,16 @@ def _outcome(one: Solved, outcome: Outcome) -> Iterator[str]:
     yield f"series {series_stem(outcome.key)} ({outcome.design or 'no design'}): {outcome.sentence}"
     yield from (f"  waits for {what}" for what in outcome.waiting_for)
     for vessel in outcome.vessels:
-        volumes = f"aliquot {_ml(vessel.aliquot_ml)}, addition {_ml(vessel.addition_ml)}, final {_ml(vessel.final_ml)}"
+        volumes = ", ".join(
+            (
+                f"aliquot {_size(vessel.aliquot, vessel.aliquot_unit)}",
+                f"addition {_size(vessel.addition, vessel.addition_unit)}",
+                f"final {_size(vessel.final, vessel.final_unit)}",
+            )
+        )
         excluded = f"; excluded: {vessel.excluded}" if vessel.excluded else ""
-        yield f"  level {vessel.level}{vessel.vessel}: {volumes}{excluded}"
+        run = f" in run {vessel.block}" if vessel.block else ""
+        yield f"  level {vessel.level}{vessel.vessel}{run}: {volumes}{excluded}"
         for reading in vessel.readings:
             signal = reading.qualifier or f"{reading.text} {reading.unit}".strip()
             yield f"    {shown(reading.path)} row {reading.row}: {line_words(reading.analyte, reading.line)} {signal}"
@@ -166,8 +173,8 @@ def _outcome(one: Solved, outcome: Outcome) -> Iterator[str]:
     yield from (f"  {note}" for note in one.batch.members[outcome.key].notes)
 
 
-def _ml(volume: float | None) -> str:
-    return "unknown" if volume is None else f"{volume:.6g} mL"
+def _size(size: float | None, unit: str) -> str:
+    return "unknown" if size is None else f"{size:.6g} {unit}"
 
 
 def _check(check: Check) -> str:

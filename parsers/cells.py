@@ -10,22 +10,31 @@ from spikeward.parsers.numbers import Cell, Numbers
 from spikeward.rules.quantities import parse_quantity, unit_code
 from spikeward.rules.records import FAULTY, MEASURED, MISSING, NOT_DETECTED, OVER_RANGE, Unreadable
 
-QUANTITIES = ("mass", "dry_matter", "aliquot", "addition", "final", "dilution", "standard")
+_CONTENT = ("mass per volume", "amount per volume", "mass per mass", "amount per mass")
+_EITHER = ("volume", "mass")
+_DIMENSIONS = {
+    "mass": ("mass",),
+    "volume": ("volume",),
+    "digest": _EITHER,
+    "dry_matter": ("fraction",),
+    "moisture": ("fraction",),
+    "aliquot": _EITHER,
+    "addition": (*_EITHER, "amount"),
+    "final": _EITHER,
+    "internal_standard": _EITHER,
+    "spike": _EITHER,
+    "content": _CONTENT,
+}
+_SUCH_AS = {"mass": "g", "dry_matter": "%", "moisture": "%", "content": "ug/L"}
+
+QUANTITIES = (*_DIMENSIONS, "dilution", "standard")
 """The meanings of columns that describe how a solution was made."""
 
-IDENTITIES = ("reading",)
+IDENTITIES = ("reading", "block")
 """The meanings of columns whose text tells rows of one solution apart."""
 
 _TEXTS = ("standard", *IDENTITIES)
 
-_DIMENSIONS = {
-    "mass": ("mass",),
-    "dry_matter": ("fraction",),
-    "aliquot": ("volume", "mass"),
-    "addition": ("volume", "mass"),
-    "final": ("volume", "mass"),
-}
-_SUCH_AS = {"mass": "g", "dry_matter": "%", "aliquot": "mL", "addition": "mL", "final": "mL"}
 _PARTS = re.compile(
     "([+\\-\N{MINUS SIGN}]?[0-9.,'\N{RIGHT SINGLE QUOTATION MARK}\\s]*(?:[eE][+-]?[0-9]+)?)(.*)", re.DOTALL
 )
@@ -80,9 +89,9 @@ def quantity_text(meaning: str, cell: Cell, unit: str, numbers: Numbers) -> str:
     if own and unit and unit_code(own) != unit_code(unit):
         raise Unreadable(f"'{cell.text}' and its heading ({unit}) name different units", cell.row, cell.column)
     if not (own or unit):
+        heading = f"{cell.column} [{_SUCH_AS.get(meaning, 'mL')}]"
         raise Unreadable(
-            f"'{cell.text}' has no unit; write it in the heading, such as {cell.column} [{_SUCH_AS[meaning]}], or in "
-            "the cell",
+            f"'{cell.text}' has no unit; write it in the heading, such as {heading}, or in the cell",
             cell.row,
             cell.column,
         )

@@ -44,7 +44,7 @@ def conflict_sentences(disputes: Iterable[Dispute], readings: Sequence[Reading],
     for dispute in sorted(disputes, key=_order):
         paths = dispute.paths
         causes.setdefault((paths, dispute.again and len(paths) > 1), []).append(dispute)
-    vessels = {(reading.level, reading.vessel) for reading in readings}
+    vessels = {_vessel(reading) for reading in readings}
     several_lines = len({(reading.analyte, reading.line) for reading in readings}) > 1
     return tuple(
         _within(found, _who(found, vessels), several_lines, repeats) if len(paths) == 1
@@ -55,15 +55,21 @@ def conflict_sentences(disputes: Iterable[Dispute], readings: Sequence[Reading],
 
 def _order(dispute: Dispute) -> tuple[object, ...]:
     first = dispute.readings[0]
-    return level_order(first.level), level_order(first.vessel), first.analyte, first.line, first.path, first.row
+    vessel = tuple(level_order(part) for part in _vessel(first))
+    return vessel, first.analyte, first.line, first.path, first.row
 
 
-def _who(found: Sequence[Dispute], vessels: set[tuple[str, str]]) -> str:
+def _vessel(reading: Reading) -> tuple[str, str, str]:
+    """A vessel in one run of its series."""
+    return reading.level, reading.vessel, reading.block
+
+
+def _who(found: Sequence[Dispute], vessels: set[tuple[str, str, str]]) -> str:
     """The vessels of some disputes, as the subject of a sentence."""
     names = list(dict.fromkeys(dispute.readings[0].solution for dispute in found))
     if len(names) == 1:
         return names[0]
-    touched = {(dispute.readings[0].level, dispute.readings[0].vessel) for dispute in found}
+    touched = {_vessel(dispute.readings[0]) for dispute in found}
     return "every vessel" if touched == vessels else listed(names)
 
 

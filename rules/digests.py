@@ -12,8 +12,8 @@ from spikeward.rules.rulebook import Rulebook
 
 
 def inputs_digest(
-    members: Members, batch: Batch, context: Sequence[Reading], told: Sequence[Check], waiting_for: Sequence[str],
-    is_settled: bool, rules: Rulebook,
+    members: Members, batch: Batch, context: Sequence[Reading], told: Sequence[Check], lent: Sequence[str],
+    waiting_for: Sequence[str], is_settled: bool, rules: Rulebook,
 ) -> str:
     """SHA-256, as hex, over one canonical text.
 
@@ -21,6 +21,7 @@ def inputs_digest(
     ----------
     context : readings of the batch that entered: backgrounds, process blanks, brackets
     told : checks whose finding comes from the rest of the batch
+    lent : what else comes from there, such as a pooled scatter
     waiting_for : what is still expected
     is_settled : whether the verdict stands
     """
@@ -39,6 +40,7 @@ def inputs_digest(
         ["decisions", sorted(_decision(decision) for decision in batch.decisions if decision.target in used)],
         ["context", [_reading(reading) for reading in context]],
         ["batch says", [[check.name, check.verdict, check.sentence, check.remedy] for check in told]],
+        ["lent", list(lent)],
         ["state", waiting_for, is_settled, key in batch.lapsed],
     ]  # fmt: skip
     text = json.dumps(parts, ensure_ascii=False, separators=(",", ":"))
@@ -50,7 +52,7 @@ def _reading(reading: Reading) -> list[object]:
         reading.series.role, reading.series.sample, reading.level, reading.vessel, reading.injection, reading.reading,
         reading.solution, reading.analyte, reading.line, reading.unit, reading.signal, reading.text, reading.qualifier,
         reading.readings, reading.sd, reading.measured_at, reading.processed_at, reading.order, reading.values,
-        reading.already, reading.path, reading.row, reading.digest,
+        reading.already, reading.path, reading.row, reading.digest, reading.block,
     ]  # fmt: skip
 
 

@@ -85,10 +85,11 @@ def in_force(
 
 
 def canonical(reading: Reading) -> tuple[object, ...]:
-    """The sort key of readings inside a series: by level, vessel, repetition, analyte, time, and place at last."""
+    """The sort key of readings inside a series: by level, vessel, run, repetition, analyte, time, and place."""
     return (
         level_order(reading.level),
         level_order(reading.vessel),
+        level_order(reading.block),
         level_order(reading.injection),
         level_order(reading.reading),
         reading.analyte,
@@ -101,7 +102,7 @@ def canonical(reading: Reading) -> tuple[object, ...]:
 
 def _vessel_identity(reading: Reading) -> Identity:
     return (
-        reading.level, reading.vessel, reading.injection, reading.reading, reading.analyte, reading.line,
+        reading.level, reading.vessel, reading.block, reading.injection, reading.reading, reading.analyte, reading.line,
     )  # fmt: skip
 
 

@@ -15,8 +15,14 @@ import re2
 from spikeward.rules.records import PLAIN_ROLES, Entry, Layout, Reading, SeriesKey, Table
 from spikeward.rules.rulebook import NameRule, Rulebook
 
-QUANTITY_GROUPS = ("mass", "dry_matter", "aliquot", "addition", "final", "dilution", "standard")
-GROUPS = ("batch", "sample", "level", "vessel", "injection", "reading", "analyte", "line", *QUANTITY_GROUPS)
+QUANTITY_GROUPS = (
+    "mass", "volume", "digest", "dry_matter", "moisture", "dilution", "aliquot", "addition", "final", "standard",
+    "internal_standard", "spike", "content",
+)  # fmt: skip
+GROUPS = (
+    "batch", "sample", "rerun_of", "level", "vessel", "block", "injection", "reading", "analyte", "line",
+    *QUANTITY_GROUPS,
+)  # fmt: skip
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,7 +142,9 @@ def _reading(entry: Entry, source: Source, understood: Understood, only_analyte:
         for group in QUANTITY_GROUPS
         if group in groups
     ]
-    values += [(meaning, text, "column") for meaning, text in entry.values if meaning != "reading"]
+    if "rerun_of" in groups:
+        values.append(("rerun_of", groups["rerun_of"], "name"))
+    values += [(meaning, text, "column") for meaning, text in entry.values if meaning not in ("reading", "block")]
     key = SeriesKey(source.root, source.folder, groups.get("batch", ""), rule.role, groups.get("sample", ""))
     reading = Reading(
         series=key,
@@ -162,5 +170,6 @@ def _reading(entry: Entry, source: Source, understood: Understood, only_analyte:
         row=entry.row,
         digest=entry.digest,
         file_digest=source.file_digest,
+        block=number_of(groups.get("block", dict(entry.values).get("block", ""))),
     )
     return reading, ""

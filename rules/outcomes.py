@@ -10,7 +10,7 @@ PASS, WARN, WAITING, FAIL = "pass", "warn", "waiting", "fail"
 NOT_EVALUATED = "not evaluated"
 SEVERITY = {NOT_EVALUATED: 0, PASS: 0, WARN: 1, WAITING: 2, FAIL: 3}
 
-CALCULATION_VERSION = "1"
+CALCULATION_VERSION = "2"
 """Raised by every change that can alter a digit of a result; the changelog says which."""
 
 
@@ -44,7 +44,7 @@ class Estimate:
     interval: tuple[float, float] | None = None
     coverage: float = 0.95
     reason: str = ""
-    effective_degrees_of_freedom: int | None = None  # of the coverage factor, by Welch and Satterthwaite
+    effective_degrees_of_freedom: int | None = None  # of the coverage factor, by Welch and Satterthwaite; None: no end
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,6 +61,28 @@ class Point:
     sd: float | None  # of single readings
     matrix_share: float  # aliquot over final volume
     excluded: str = ""  # who, when, why; an excluded point is shown but not fitted
+    factor: float = 1.0  # y over signal
+    weight: float = 1.0  # in the fit, the largest being 1
+    block: str = ""  # the run in which it was read
+
+
+@dataclass(frozen=True, slots=True)
+class Parameter:
+    """One fitted or derived number of a model, such as the slope of an electrode, with its standard uncertainty."""
+
+    name: str
+    value: float
+    unit: str
+    standard_uncertainty: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Beside:
+    """What another way of calculation gives for the same test solution, for comparison only."""
+
+    name: str
+    estimate: Estimate
+    sentence: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,6 +115,13 @@ class Result:
     blank: float | None = None  # subtracted process blank, in the unit of the sample's result
     preparation: str = ""  # the way back to the sample in words
     sentence: str = ""
+    reported_line: bool = True  # False: another line of this analyte is the one that is reported
+    response: str = "linear"  # linear, log, curve, overlap
+    precision: str = ""  # where the scatter comes from, in words
+    parameters: tuple[Parameter, ...] = ()  # of what is no straight line, and further ones of a line
+    beside: tuple[Beside, ...] = ()  # what other ways of calculation give, never instead
+    corrected: tuple[str, ...] = ()  # what was corrected and what not, a sentence each
+    cannot_tell: tuple[str, ...] = ()  # what this design does not show, a sentence each
 
     @property
     def reported(self) -> Estimate | None:
@@ -102,16 +131,20 @@ class Result:
 
 @dataclass(frozen=True, slots=True)
 class VesselReport:
-    """One vessel as it was understood: volumes in mL, with every reading in force."""
+    """One vessel as it was understood, with every reading in force; each quantity with its own unit, mL or g."""
 
     level: str
     vessel: str
-    aliquot_ml: float | None
-    addition_ml: float | None  # total standard in the vessel
-    final_ml: float | None
+    aliquot: float | None
+    addition: float | None  # total standard in the vessel
+    final: float | None
     standard: str
     readings: tuple[Reading, ...]
     excluded: str = ""
+    aliquot_unit: str = "mL"
+    addition_unit: str = "mL"
+    final_unit: str = "mL"
+    block: str = ""
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,27 +1,41 @@
-"""How the vessels of a series were made: volumes and standard by level, and the way back to the sample."""
+"""How the vessels of a series were made, put together: what the solver takes in of every analyte on every line."""
 
 from __future__ import annotations
 
-import math
 from collections import defaultdict
-from collections.abc import Iterable, Mapping
-from decimal import Decimal
-from itertools import pairwise
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
 
 import re2
 
+from spikeward.rules.additions import Delivery, Spiking, deliveries
+from spikeward.rules.amounts import Amounts, amounts_of, check_contents, content_unit
+from spikeward.rules.cannot_tell import cannot_tell
+from spikeward.rules.internal_standard import Internal, internal_of, only_internal
 from spikeward.rules.naming import level_order
 from spikeward.rules.prepared import PreparedLine, PreparedVessel
-from spikeward.rules.quantities import Quantity
+from spikeward.rules.quantities import UNITS
 from spikeward.rules.records import Batch, Members, Reading, SeriesKey
 from spikeward.rules.rulebook import Preparation, Rulebook, Standard
-from spikeward.rules.sources import Findings, Sources, sources_of
-from spikeward.rules.way_back import way_back
-from spikeward.rules.words import line_words
+from spikeward.rules.sources import PLACES, Findings, Sources, sources_of
+from spikeward.rules.vessels import Parts, Vessels, vessels_of
+from spikeward.rules.way_back import Returned, way_back
+from spikeward.rules.words import line_words, listed
 
-Volumes = dict[str, float]
+SPIKED = "spiked_sample"
 
-_CONTRACTS = Decimal("1.02")
+Place = tuple[str, str, str]  # level, vessel, block
+
+
+@dataclass(frozen=True, slots=True)
+class _Series:
+    """What all lines of a series share; ``excluded`` gives the decision by solution."""
+
+    key: SeriesKey
+    readings: Sequence[Reading]
+    sources: Sources
+    excluded: Mapping[str, str]
+    rules: Rulebook
 
 
 def prepare(members: Members, batch: Batch, rules: Rulebook) -> tuple[PreparedLine, ...]:
@@ -31,15 +45,23 @@ def prepare(members: Members, batch: Batch, rules: Rulebook) -> tuple[PreparedLi
     -------
     in the order of analyte and line; a series without a preparation in the rules carries that as its problem
     """
+    readings = members.readings
+    analytes = sorted({reading.analyte for reading in readings})
+    preparations = {analyte: preparation_for(members.key, analyte, rules) for analyte in analytes}
+    internal = only_internal(preparations, readings)
     by_line: dict[tuple[str, str], list[Reading]] = defaultdict(list)
-    for reading in members.readings:
-        by_line[reading.analyte, reading.line].append(reading)
-    preparations = [preparation_for(members.key, analyte, rules) for analyte in sorted({name for name, _ in by_line})]
-    sources = sources_of(members, batch, _bench_is_meant(members.key, preparations))
-    excluded = {decision.target: decision.words for decision in batch.decisions if decision.kind == "exclude"}
+    for reading in readings:
+        if reading.analyte not in internal:
+            by_line[reading.analyte, reading.line].append(reading)
+    series = _Series(
+        key=members.key,
+        readings=readings,
+        sources=sources_of(members, batch, _bench_is_meant(members.key, preparations.values())),
+        excluded={decision.target: decision.words for decision in batch.decisions if decision.kind == "exclude"},
+        rules=rules,
+    )
     return tuple(
-        _line(members.key, analyte, line, by_line[analyte, line], sources, excluded, rules)
-        for analyte, line in sorted(by_line)
+        _line(series, preparations[analyte], analyte, line, by_line[analyte, line]) for analyte, line in sorted(by_line)
     )
 
 
@@ -48,7 +70,10 @@ def _bench_is_meant(key: SeriesKey, preparations: Iterable[Preparation | None]) 
     if key.role != "process_blank":
         return True
     blocks = [each.sample for each in preparations if each is not None and each.sample is not None]
-    return any("bench" in (each.mass, each.volume, each.digest, each.dry_matter, each.dilution) for each in blocks)
+    return any(
+        "bench" in (each.mass, each.volume, each.digest, each.dry_matter, each.moisture, *each.dilution)
+        for each in blocks
+    )
 
 
 def preparation_for(key: SeriesKey, analyte: str, rules: Rulebook) -> Preparation | None:
@@ -61,185 +86,152 @@ def preparation_for(key: SeriesKey, analyte: str, rules: Rulebook) -> Preparatio
 
 
 def _line(
-    key: SeriesKey,
-    analyte: str,
-    line: str,
-    readings: list[Reading],
-    sources: Sources,
-    excluded: Mapping[str, str],
-    rules: Rulebook,
+    series: _Series, preparation: Preparation | None, analyte: str, line: str, readings: Sequence[Reading]
 ) -> PreparedLine:
     findings = Findings({}, {})
-    unit, signal_unit = "", readings[0].unit
-    preparation = preparation_for(key, analyte, rules)
+    signal_unit = readings[0].unit
     for reading in readings:
         if reading.unit != signal_unit:
             findings.fails(
                 f"signals of {line_words(analyte, line)} come in {signal_unit} and in {reading.unit} "
                 f"({reading.path} row {reading.row}); export one series in one unit"
             )
-    if preparation is None:
-        told = f"role {key.role}, batch {key.batch or '(folder)'}, sample {key.sample}, {analyte}"
-        findings.fails(f"no preparation in the rule file applies to {told}; widen a 'for' under preparations")
+    if preparation is not None:
+        return _Line(series, preparation, analyte, findings).prepared(line, readings)
+    key = series.key
+    told = f"role {key.role}, batch {key.batch or '(folder)'}, sample {key.sample}, {analyte}"
+    findings.fails(f"no preparation in the rule file applies to {told}; widen a 'for' under preparations")
+    problems = tuple(findings.problems)
+    return PreparedLine(key, analyte, line, "", "", signal_unit, (), None, "", "", problems=problems)
+
+
+@dataclass(frozen=True, slots=True)
+class _Line:
+    """One analyte of a series while it is prepared; everything that is wrong goes to ``findings``."""
+
+    series: _Series
+    preparation: Preparation
+    analyte: str
+    findings: Findings
+
+    def prepared(self, line: str, readings: Sequence[Reading]) -> PreparedLine:
+        """The line with its vessels, its way back, and what was found on the way."""
+        rule, sources = self.preparation, self.series.sources
+        levels = sorted({reading.level for reading in readings}, key=level_order)
+        delivered = deliveries(rule, levels, sources, self.findings)
+        spiking = Spiking(self.series.rules, self.findings)
+        used = spiking.standards(delivered) or self._declared()
+        check_contents(rule, self.analyte, used, self.findings)
+        vessels = vessels_of(rule, levels, delivered, sources, spiking)
+        unit = content_unit(rule, self.analyte, used, delivered, UNITS[vessels.aliquot_unit][0])
+        held = {level: delivered[level] for level in vessels.parts}
+        amounts = amounts_of(spiking, self.analyte, held, unit, vessels.aliquot_unit) if unit else {}
+        internal = internal_of(rule, self.analyte, readings, self.series.readings, sources, self.findings)
+        made = self._vessels(readings, vessels, amounts, internal)
+        back = self._back(unit)
+        spiked = self._spiked(back, unit)
+        rerun_of = self._rerun_of(readings)
         return PreparedLine(
-            key,
-            analyte,
-            line,
-            "",
-            unit,
-            signal_unit,
-            (),
-            None,
-            "",
-            "",
-            tuple(findings.missing),
-            tuple(findings.problems),
+            key=self.series.key,
+            analyte=self.analyte,
+            line=line,
+            design=rule.design,
+            unit=unit,
+            signal_unit=readings[0].unit,
+            vessels=made,
+            way_back=back.back if back is not None else None,
+            standard=", ".join(used),
+            expires=min((standard.expires for standard in used.values() if standard.expires), default=""),
+            missing=tuple(self.findings.missing),
+            problems=tuple(self.findings.problems),
+            response=rule.response,
+            aliquot_unit=vessels.aliquot_unit,
+            addition_unit=vessels.addition_unit,
+            final_unit=vessels.final_unit,
+            internal=internal.name,
+            entered=internal.entered,
+            electrode=rule.electrode,
+            cannot_tell=cannot_tell(rule, self.series.key.role, made),
+            spiked_amount=spiked,
+            spiked_when=rule.spike.added if rule.spike is not None and self.series.key.role == SPIKED else "",
+            rerun_of=rerun_of,
         )
-    standard = _standard(preparation, sources, findings, rules)
-    content = standard.contents.get(analyte) if standard else None
-    if standard is not None and content is None:
-        findings.fails(f"standard {standard.name} does not hold {analyte}; add its content under standards")
-    unit = content.unit if content else ""
-    vessels = _vessels(preparation, readings, sources, excluded, content, findings)
-    back = way_back(preparation, sources, unit, findings) if preparation.sample and content else None
-    return PreparedLine(
-        key, analyte, line, preparation.design, unit, signal_unit, vessels, back,
-        standard.name if standard else "", standard.expires if standard else "",
-        tuple(findings.missing), tuple(findings.problems),
-    )  # fmt: skip
 
+    def _declared(self) -> dict[str, Standard]:
+        """The standards of the rule file, where nothing was delivered yet."""
+        known = self.series.rules.standards
+        names = (addition.standard for addition in self.preparation.additions)
+        return {name: known[name] for name in names if name in known}
 
-def _standard(preparation: Preparation, sources: Sources, findings: Findings, rules: Rulebook) -> Standard | None:
-    told = sources.find("standard", "", findings)
-    names = {preparation.standard} if told is None else {str(told)}
-    names |= {text for (meaning, _), texts in sources.given.items() if meaning == "standard" for text, _ in texts}
-    if told is None and len(names) > 1:
-        names.discard(preparation.standard)
-    if len(names) > 1:
-        findings.fails(
-            f"the vessels name several standards ({', '.join(sorted(names))}); one series takes one standard"
+    def _vessels(
+        self, readings: Sequence[Reading], vessels: Vessels, amounts: Mapping[str, Amounts], internal: Internal
+    ) -> tuple[PreparedVessel, ...]:
+        grouped: dict[Place, list[Reading]] = defaultdict(list)
+        for reading in readings:
+            grouped[reading.level, reading.vessel, reading.block].append(reading)
+        places = sorted(grouped, key=lambda place: tuple(level_order(part) for part in place))
+        return tuple(
+            self._vessel(place, grouped[place], vessels.parts[place[0]], amounts.get(place[0]), internal)
+            for place in places
+            if place[0] in vessels.parts
         )
-    name = sorted(names)[0]
-    if name not in rules.standards:
-        findings.fails(f"standard {name} is not under standards in the rule file; add it there")
-        return None
-    return rules.standards[name]
 
-
-def _vessels(
-    preparation: Preparation,
-    readings: list[Reading],
-    sources: Sources,
-    excluded: Mapping[str, str],
-    content: Quantity | None,
-    findings: Findings,
-) -> tuple[PreparedVessel, ...]:
-    grouped: dict[tuple[str, str], list[Reading]] = defaultdict(list)
-    for reading in readings:
-        grouped[reading.level, reading.vessel].append(reading)
-    additions = _additions(preparation, sorted({level for level, _ in grouped}, key=level_order), sources, findings)
-    vessels = []
-    for level, vessel in sorted(grouped, key=lambda place: (level_order(place[0]), level_order(place[1]))):
-        kept = [reading for reading in grouped[level, vessel] if reading.solution not in excluded]
-        decision = "" if kept else excluded[grouped[level, vessel][0].solution]
-        volumes = _volumes(preparation, level, additions, sources, findings)
-        if volumes is None:
-            continue
-        added = float(content.value) * volumes["addition"] if content else 0.0
-        vessels.append(
-            PreparedVessel(
-                level,
-                vessel,
-                volumes["aliquot"],
-                volumes["addition"],
-                volumes["final"],
-                added,
-                tuple(kept or grouped[level, vessel]),
-                decision,
-            )  # fmt: skip
-        )
-    return tuple(vessels)
-
-
-def _additions(
-    preparation: Preparation, levels: list[str], sources: Sources, findings: Findings
-) -> dict[str, Decimal | None]:
-    """Total delivered volume in mL by level; of successive deliveries everything up to and including the level."""
-    delivered: dict[str, Decimal | None] = {}
-    declared = sorted({*preparation.additions, *levels}, key=level_order)
-    for level in declared:
-        quantity = sources.find("addition", level, findings) or preparation.additions.get(level)
-        if isinstance(quantity, Quantity):
-            delivered[level] = quantity.in_unit("mL")
-        elif level_order(level) == level_order("0"):
-            delivered[level] = Decimal(0)
-        else:
-            delivered[level] = None
-    known = set(levels)
-    if preparation.deliveries == "each":
-        unknown = _level_between(declared, preparation)
-        if unknown is not None:
-            findings.lacks(f"the addition of level {unknown} (every later vessel holds it)")
-            known = {level for level in levels if level_order(level) < level_order(unknown)}
-            delivered |= {level: None for level in declared if level not in known}
-        total: Decimal | None = Decimal(0)
-        for level in declared:
-            step = delivered[level]
-            total = None if total is None or step is None else total + step
-            delivered[level] = total
-    for level in levels:
-        if delivered[level] is None and level in known:
-            findings.fails(
-                f"no addition is known for level {level}; declare it under additions: levels, "
-                "or give it in the bench file, a column or the name"
+    def _vessel(
+        self, place: Place, readings: Sequence[Reading], parts: Parts, amounts: Amounts | None, internal: Internal
+    ) -> PreparedVessel:
+        excluded = self.series.excluded
+        kept = [reading for reading in readings if reading.solution not in excluded]
+        decision = "" if kept else excluded[readings[0].solution]
+        beside = internal.of(place, excluded)
+        if beside == () and not decision:
+            level, vessel, _ = place
+            self.findings.fails(
+                f"level {level}{vessel}: there is no reading of the internal standard {internal.name}; export it with "
+                "the others, or exclude the vessel by a decision"
             )
-    return delivered
+        return PreparedVessel(
+            level=place[0],
+            vessel=place[1],
+            aliquot=float(parts.aliquot),
+            addition=float(parts.addition),
+            final=float(parts.final),
+            added=float(amounts.own) if amounts is not None else 0.0,
+            readings=tuple(kept or readings),
+            excluded=decision,
+            block=place[2],
+            others=amounts.others if amounts is not None else (),
+            internal_amount=float(internal.amounts[place[0]]) if internal.amounts is not None else 1.0,
+            internal=beside or (),
+        )
 
+    def _back(self, unit: str) -> Returned | None:
+        if self.preparation.sample is None or not unit:
+            return None
+        molar_mass = self.series.rules.molar_masses.get(self.analyte)
+        return way_back(self.preparation, self.series.sources, unit, self.findings, molar_mass)
 
-def _level_between(levels: list[str], preparation: Preparation) -> str | None:
-    """The first level between others that is neither measured nor declared, so that its delivery is not known.
+    def _spiked(self, back: Returned | None, unit: str) -> float | None:
+        """What the analyte of a spiked sample rose by, in the unit of its way back times g or mL of sample."""
+        spike = self.preparation.spike
+        if spike is None or self.series.key.role != SPIKED:
+            return None
+        told = self.series.sources.quantity("spike", None, self.findings, "volume", "mass")
+        delivered = told or spike.delivered
+        if isinstance(delivered, str):
+            self.findings.lacks(f"spike of {self.series.key.sample} from {PLACES[delivered]}")
+            return None
+        standard = self.series.rules.standards.get(spike.standard)
+        if standard is None or self.analyte not in standard.contents or back is None or back.rise is None:
+            return None
+        what = UNITS[unit][0].partition(" per ")[0]
+        spiking = Spiking(self.series.rules, self.findings)
+        amount = spiking.amount(self.analyte, Delivery(spike.standard, delivered), what)
+        return float(amount.value * back.rise) if amount is not None else None
 
-    Where the rule file declares every level that was measured, its list is taken as it is. Levels may count in steps,
-    such as 0, 10, 20.
-    """
-    numbers = [int(level) for level in levels if level.isascii() and level.isdigit()]
-    if set(levels) <= set(preparation.additions) or len(numbers) < 2:
-        return None
-    steps = [after - before for before, after in pairwise(numbers)]
-    least = math.gcd(*steps)
-    return next((str(before + least) for before, step in zip(numbers, steps, strict=False) if step > least), None)
-
-
-def _volumes(
-    preparation: Preparation,
-    level: str,
-    additions: Mapping[str, Decimal | None],
-    sources: Sources,
-    findings: Findings,
-) -> Volumes | None:
-    """Aliquot, addition and final volume of one vessel in mL; None with the reason noted."""
-    addition = additions[level]
-    told = sources.find("aliquot", level, findings)
-    aliquot = told if isinstance(told, Quantity) else preparation.aliquot.get(level, preparation.aliquot.get(""))
-    if aliquot is None:
-        findings.fails(f"no aliquot is known for level {level}; declare it under preparations: aliquot")
-    if aliquot is None or addition is None:
-        return None
-    v0 = aliquot.in_unit("mL")
-    told = sources.find("final", level, findings)
-    final = told if isinstance(told, Quantity) else preparation.final
-    diluent = preparation.diluent.in_unit("mL") if preparation.diluent else Decimal(0)
-    mixed = v0 + diluent + addition
-    if preparation.level_0 == "undiluted" and not addition:
-        volume = v0
-    elif final is None:
-        volume = mixed
-    else:
-        volume = final.in_unit("mL")
-        # What was mixed in one vessel and then measured may be a little less than the sum of its parts.
-        if mixed > volume * (_CONTRACTS if preparation.design == "successive" else 1):
-            findings.fails(
-                f"level {level}: aliquot and additions ({mixed.normalize():f} mL) do not fit into the final volume "
-                f"({volume.normalize():f} mL); correct the volumes"
+    def _rerun_of(self, readings: Sequence[Reading]) -> str:
+        told = sorted({text for reading in readings for meaning, text, _ in reading.values if meaning == "rerun_of"})
+        if len(told) > 1:
+            self.findings.fails(
+                f"the vessels say that this is a rerun of {listed(told)}; a series is a rerun of one sample only"
             )
-    return {"aliquot": float(v0), "addition": float(addition), "final": float(volume)}
+        return told[0] if told else ""

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import re
 import unicodedata
+from collections.abc import Mapping
 from dataclasses import dataclass
 from decimal import Decimal
 
@@ -23,16 +24,20 @@ UNITS: dict[str, tuple[str, Decimal]] = {
         },
         "amount per volume": {
             "mol/L": "1", "mmol/L": "1e-3", "umol/L": "1e-6", "nmol/L": "1e-9", "pmol/L": "1e-12",
-            "umol/mL": "1e-3", "nmol/mL": "1e-6",
+            "mmol/mL": "1", "umol/mL": "1e-3", "nmol/mL": "1e-6",
         },
         "mass per mass": {
-            "g/kg": "1e-3", "mg/kg": "1e-6", "ug/kg": "1e-9", "ng/kg": "1e-12",
-            "mg/g": "1e-3", "ug/g": "1e-6", "ng/g": "1e-9", "pg/g": "1e-12",
+            "g/kg": "1e-3", "mg/kg": "1e-6", "ug/kg": "1e-9", "ng/kg": "1e-12", "pg/kg": "1e-15",
+            "g/g": "1", "mg/g": "1e-3", "ug/g": "1e-6", "ng/g": "1e-9", "pg/g": "1e-12",
         },
         "amount per mass": {
-            "mol/kg": "1e-3", "mmol/kg": "1e-6", "umol/kg": "1e-9", "nmol/kg": "1e-12",
+            "mol/kg": "1e-3", "mmol/kg": "1e-6", "umol/kg": "1e-9", "nmol/kg": "1e-12", "pmol/kg": "1e-15",
             "mmol/g": "1e-3", "umol/g": "1e-6", "nmol/g": "1e-9",
         },
+        "amount": {"mol": "1", "mmol": "1e-3", "umol": "1e-6", "nmol": "1e-9", "pmol": "1e-12"},
+        "mass per amount": {"g/mol": "1", "kg/mol": "1e3", "mg/mmol": "1"},
+        "potential": {"mV": "1e-3", "V": "1", "uV": "1e-6"},
+        "temperature": {"Cel": "1"},
         "fraction": {"1": "1", "%": "1e-2"},
         "time": {"s": "1", "ms": "1e-3", "min": "60", "h": "3600", "d": "86400"},
     }.items()
@@ -41,7 +46,8 @@ UNITS: dict[str, tuple[str, Decimal]] = {
 
 # Other spellings of a whole unit -> code.
 _WHOLE: dict[str, str] = {
-    "": "1", "x": "1", "M": "mol/L", "mM": "mmol/L", "uM": "umol/L", "nM": "nmol/L", "pM": "pmol/L",
+    "": "1", "x": "1", "degC": "Cel", "\N{DEGREE SIGN}C": "Cel", "kg/L": "g/mL", "kg/dm3": "g/mL", "g/cm3": "g/mL",
+    "kg/m3": "g/L", "M": "mol/L", "mM": "mmol/L", "uM": "umol/L", "nM": "nmol/L", "pM": "pmol/L",
     "mol/m3": "mmol/L", "mmol/m3": "umol/L", "g/m3": "mg/L", "mg/m3": "ug/L",
     "sec": "s", "second": "s", "seconds": "s", "minute": "min", "minutes": "min", "hour": "h", "hours": "h",
     "day": "d", "days": "d",
@@ -99,6 +105,61 @@ class Quantity:
         return f"{self.value:f} {self.unit}" if self.unit != "1" else f"{self.value:f}"
 
 
+def per(code: str, kind: str) -> str:
+    """The unit of content that goes with another one, or with an amount: ``mg/L`` and ``mg/kg``, ``ug`` and ``ug/L``.
+
+    Parameters
+    ----------
+    code : a unit of content, mass or amount of substance
+    kind : ``volume`` or ``mass``, of what the content is taken
+    """
+    top, _, below = ("g" if code == "kg" else code).partition("/")
+    small = below in ("mL", "g")
+    if kind == "volume":
+        return f"{top}/{'mL' if small else 'L'}"
+    return f"{top}/{'g' if small else 'kg'}"
+
+
+def by_density(quantity: Quantity, kind: str, density: Quantity | None) -> Quantity | None:
+    """A volume as a mass, or a mass as a volume; None where that takes a density and there is none.
+
+    Parameters
+    ----------
+    kind : ``volume`` or ``mass``, what it shall be
+    """
+    if quantity.dimension == kind:
+        return quantity
+    unit = _FIRST[kind]
+    if not quantity.value:
+        return Quantity(Decimal(0), unit)
+    if density is None:
+        return None
+    in_g_per_ml = density.in_unit("g/mL")
+    if kind == "mass":
+        return Quantity(quantity.in_unit("mL") * in_g_per_ml, unit)
+    return Quantity(quantity.in_unit("g") / in_g_per_ml, unit)
+
+
+def by_molar_mass(quantity: Quantity, kind: str, molar_mass: Quantity | None) -> Quantity | None:
+    """A mass as an amount of substance, or the other way; None where that takes a molar mass and there is none.
+
+    Parameters
+    ----------
+    kind : ``mass`` or ``amount``, what it shall be
+    """
+    if quantity.dimension == kind:
+        return quantity
+    if molar_mass is None:
+        return None
+    in_g_per_mol = molar_mass.in_unit("g/mol")
+    if kind == "mass":
+        return Quantity(quantity.in_unit("mol") * in_g_per_mol, "g")
+    return Quantity(quantity.in_unit("g") / in_g_per_mol, "mol")
+
+
+_FIRST = {"volume": "mL", "mass": "g"}
+
+
 def unit_code(spelling: str) -> str | None:
     """The UCUM code of a unit as people write it, or None where the table does not hold it.
 
@@ -137,6 +198,14 @@ def parse_quantity(text: str) -> Quantity:
     if value and abs(value.adjusted()) > _LARGEST:
         raise ValueError(f"'{text}' is too large or too small to be a quantity")
     return Quantity(value, _unit_of(match[2].strip()))
+
+
+def in_plain_units(text: str, meanings: Mapping[str, str]) -> str:
+    """A quantity or a unit in which ppm, ppb and ppt stand for what was declared."""
+    match = re.fullmatch(r"([-+\d.eE\s\u2212]*)(pp[mbt])\s*", text)
+    if match is None or match[2] not in meanings:
+        return text
+    return match[1] + meanings[match[2]]
 
 
 def _unit_of(spelling: str) -> str:

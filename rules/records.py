@@ -17,8 +17,8 @@ MISSING = "missing"  # an empty cell
 FAULTY = "faulty"  # what a program writes instead of a number: '#####', '#N/A'
 
 # Roles with levels are solved as addition series; the others are plain solutions of the batch.
-SERIES_ROLES = ("sample", "duplicate", "spiked_sample", "check", "reference", "process_blank")
-PLAIN_ROLES = ("background", "bracket", "calibration", "reagent_blank")
+SERIES_ROLES = ("sample", "duplicate", "spiked_sample", "check", "reference", "process_blank", "reagent_blank")
+PLAIN_ROLES = ("background", "bracket", "calibration")
 ROLES = SERIES_ROLES + PLAIN_ROLES
 
 
@@ -192,6 +192,7 @@ class Reading:
     row: int
     digest: str
     file_digest: str = ""
+    block: str = ""  # the run in which it was read, where one series is measured in several
 
     @property
     def when(self) -> tuple[str, int]:

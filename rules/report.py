@@ -9,15 +9,19 @@ from spikeward.rules.checks.brackets import around
 from spikeward.rules.checks.quality import blank_lacking
 from spikeward.rules.checks.registry import BATCH, REGISTRY, check_line
 from spikeward.rules.checks.series import completeness, conflicts
+from spikeward.rules.checks.slopes import calibration_for
 from spikeward.rules.checks.subject import Context, Subject
+from spikeward.rules.checks.straight import robust_beside
 from spikeward.rules.digests import inputs_digest
 from spikeward.rules.naming import level_order
-from spikeward.rules.outcomes import PASS, WAITING, Check, Outcome, Result, VesselReport, worst
+from spikeward.rules.outcomes import PASS, WAITING, Beside, Check, Outcome, Result, VesselReport, worst
 from spikeward.rules.prepared import PreparedLine, PreparedVessel
 from spikeward.rules.records import Members, Reading
+from spikeward.rules.rulebook import Rulebook
 from spikeward.rules.sentences import headline, result_sentence
+from spikeward.rules.solve.calibration import beside
 from spikeward.rules.solve.solved import Solved
-from spikeward.rules.solve.transform import vessel_name
+from spikeward.rules.solve.vessel_signal import vessel_name
 from spikeward.rules.verdicts import published
 from spikeward.rules.words import line_words, listed
 
@@ -50,9 +54,13 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
     lines = [line.prepared for line in solved]
     checks = (completeness(members, standing.missing, standing.over, rules), *conflicts(members))
     subjects = [Subject(line, context) for line in solved]
-    results = tuple(_result(subject, checks, standing) for subject in subjects)
-    so_far = worst([check.verdict for check in (*checks, *(c for result in results for c in result.checks))])
-    if so_far == PASS and not standing.settled and not all(result.reported for result in results):
+    results = tuple(
+        _result(subject, checks, standing, _reported_line(subject.solved.prepared, lines, rules))
+        for subject in subjects
+    )
+    deciding = [result for result in results if result.reported_line]
+    so_far = worst([check.verdict for check in (*checks, *(c for result in deciding for c in result.checks))])
+    if so_far == PASS and not standing.settled and not all(result.reported for result in deciding):
         so_far = WAITING  # nothing has failed yet, but there is no number that could pass
     verdict = published(so_far, standing.settled)
     entered = _entered(subjects)
@@ -73,18 +81,25 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
         context=entered,
         notes=_notes(members, solved),
         inputs_digest=inputs_digest(
-            members, context.batch, entered, told, standing.waiting_for, standing.settled, rules
+            members, context.batch, entered, told, _lent(subjects), standing.waiting_for, standing.settled, rules
         ),
         rules_digest=rules.digest,
         incomplete=standing.incomplete,
     )
 
 
+def _reported_line(prepared: PreparedLine, every: Sequence[PreparedLine], rules: Rulebook) -> bool:
+    """Whether the line of an analyte is the one that is reported; all are where the rules name none that was read."""
+    rule = rules.lines.get(prepared.analyte)
+    named = [one for one in every if rule is not None and one.analyte == prepared.analyte and one.line == rule.report]
+    return not named or prepared in named
+
+
 def _from_batch(check: Check) -> bool:
     return check.name == "blank" or (check.name in REGISTRY and REGISTRY[check.name].looks_at == BATCH)
 
 
-def _result(subject: Subject, common: Sequence[Check], standing: Standing) -> Result:
+def _result(subject: Subject, common: Sequence[Check], standing: Standing, reported_line: bool) -> Result:
     """One line; its verdict counts the checks of the whole series too, for a table shows it beside the number."""
     solved = subject.solved
     checks = check_line(subject, only_certain=standing.incomplete or bool(solved.prepared.problems))
@@ -113,8 +128,24 @@ def _result(subject: Subject, common: Sequence[Check], standing: Standing) -> Re
         background=_subtracted_background(solved),
         blank=None if withheld else solved.blank,
         preparation=solved.preparation,
+        reported_line=reported_line,
+        response=solved.prepared.response,
+        precision=solved.scatter.words,
+        parameters=solved.parameters,
+        beside=() if withheld else _beside(subject),
+        corrected=solved.corrected,
+        cannot_tell=solved.prepared.cannot_tell,
     )
     return replace(result, sentence=result_sentence(result, solved))
+
+
+def _beside(subject: Subject) -> tuple[Beside, ...]:
+    """What other ways of calculation give."""
+    calibration, solved = calibration_for(subject), subject.solved
+    found = [robust_beside(solved)]
+    if calibration is not None:
+        found.append(beside(solved, calibration, subject.context.rules.coverage))
+    return tuple(one for one in found if one is not None)
 
 
 def _withheld(subject: Subject, standing: Standing) -> str:
@@ -140,33 +171,57 @@ def _entered(subjects: Sequence[Subject]) -> tuple[Reading, ...]:
         if subject.solved.blank is not None:
             for blank in subject.context.solved.get(("process_blank", subject.line_key), ()):
                 found.update(dict.fromkeys(Subject(blank, subject.context).readings))
-        if "brackets" in subject.context.rules.checks:
+        if subject.solved.reagent is not None:
+            for blank in subject.context.solved.get(("reagent_blank", subject.line_key), ()):
+                found.update(dict.fromkeys(Subject(blank, subject.context).readings))
+        if "brackets" in subject.context.rules.checks or subject.context.rules.drift == "correct":
             found.update(dict.fromkeys(reading for bracket in around(subject) for reading in bracket.readings))
+            found.update(dict.fromkeys(_internal_brackets(subject)))
+        calibration = calibration_for(subject)
+        if calibration is not None:
+            found.update(dict.fromkeys(calibration.readings))
     return tuple(found)
 
 
+def _internal_brackets(subject: Subject) -> tuple[Reading, ...]:
+    """The internal standard in the brackets, where there is one."""
+    lines = sorted({(r.analyte, r.line) for vessel in subject.solved.prepared.vessels for r in vessel.internal})
+    brackets = [bracket for line in lines for bracket in subject.context.brackets.get(line, ())]
+    return tuple(reading for bracket in brackets for reading in bracket.readings)
+
+
+def _lent(subjects: Sequence[Subject]) -> list[str]:
+    """What the batch lends to the uncertainty of a series that is no reading of its own."""
+    scatters = [subject.solved.scatter for subject in subjects]
+    return [f"{one.words} {one.relative!r} {one.degrees_of_freedom!r}" for one in scatters]
+
+
+Place = tuple[str, str, str]  # level, vessel, run
+
+
 def _vessels(members: Members, lines: Sequence[PreparedLine]) -> tuple[VesselReport, ...]:
-    grouped: dict[tuple[str, str], list[Reading]] = {}
+    grouped: dict[Place, list[Reading]] = {}
     for reading in members.readings:
-        grouped.setdefault((reading.level, reading.vessel), []).append(reading)
-    prepared: dict[tuple[str, str], tuple[PreparedVessel, str]] = {}
+        grouped.setdefault((reading.level, reading.vessel, reading.block), []).append(reading)
+    prepared: dict[Place, tuple[PreparedVessel, PreparedLine]] = {}
     for line in lines:
         for vessel in line.vessels:
-            prepared.setdefault((vessel.level, vessel.vessel), (vessel, line.standard))
-    places = sorted(grouped, key=lambda place: (level_order(place[0]), level_order(place[1])))
+            prepared.setdefault((vessel.level, vessel.vessel, vessel.block), (vessel, line))
+    places = sorted(grouped, key=lambda place: tuple(level_order(part) for part in place))
     return tuple(_vessel(place, grouped[place], prepared.get(place)) for place in places)
 
 
 def _vessel(
-    place: tuple[str, str], readings: Sequence[Reading], found: tuple[PreparedVessel, str] | None
+    place: Place, readings: Sequence[Reading], found: tuple[PreparedVessel, PreparedLine] | None
 ) -> VesselReport:
-    level, name = place
+    level, name, block = place
     if found is None:
-        return VesselReport(level, name, None, None, None, "", tuple(readings))
-    vessel, standard = found
+        return VesselReport(level, name, None, None, None, "", tuple(readings), block=block)
+    vessel, line = found
     return VesselReport(
-        level, name, vessel.aliquot_ml, vessel.addition_ml, vessel.final_ml, standard, tuple(readings), vessel.excluded
-    )
+        level, name, vessel.aliquot, vessel.addition, vessel.final, line.standard, tuple(readings), vessel.excluded,
+        line.aliquot_unit, line.addition_unit, line.final_unit, block,
+    )  # fmt: skip
 
 
 def _excluded(lines: Sequence[PreparedLine]) -> tuple[str, ...]:

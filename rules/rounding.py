@@ -50,6 +50,8 @@ def figure(value: float, digits: int = 3, full: bool = False) -> str:
     full : keep zeros at the end, which tell of a measured number how far it was read: 0.300, not 0.3
     """
     exact = Decimal(value)
+    if not exact.is_finite():
+        return "no number"
     if not exact:
         return "0"
     kept = str if full else _trimmed

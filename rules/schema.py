@@ -8,22 +8,15 @@ from __future__ import annotations
 from spikeward.rules import schema_kinds as kind
 from spikeward.rules.naming import QUANTITY_GROUPS
 from spikeward.rules.records import ROLES
+from spikeward.rules.schema_preparation import PREPARATION, SOME_AMOUNT, SOME_CONTENT, STANDARD, content
 from spikeward.rules.schema_shapes import WITH_ITS_DEFAULTS, Block, Field, Limits, ListOf, MapOf
 
-ELSEWHERE = ("bench", "name", "column")
-"""Where a quantity of the sample comes from, when not from the rule file."""
-
-CONTENT = ("mass per volume", "amount per volume")
-SAMPLE_CONTENT = (*CONTENT, "mass per mass", "amount per mass")
-
 COLUMNS = (
-    "solution", "analyte", "line", "signal", "signal_sd", "signal_rsd", "readings", "reading", "unit", "measured_at",
-    "processed_at", "order", *QUANTITY_GROUPS,
+    "solution", "analyte", "line", "signal", "signal_sd", "signal_rsd", "readings", "reading", "block", "unit",
+    "measured_at", "processed_at", "order", *QUANTITY_GROUPS,
 )  # fmt: skip
 """What a column of an export can mean."""
 
-_VOLUME = kind.quantity("volume", example="10 mL")
-_CONTENT = kind.quantity(*CONTENT, example="10 mg/L")
 _TEXTS = ListOf(kind.text(), single=True)
 _HEADING = kind.text("a heading")
 _ENCODING = "auto, utf-8, utf-16, cp1252 or another name of a character set"
@@ -78,7 +71,8 @@ READER = Block((
           example="[Solution, Signal]"),
     Field("columns", MapOf(kind.text("a heading"), "a meaning", keys=COLUMNS),
           "What each column means. signal holds single readings, or means with signal_rsd or signal_sd and readings, "
-          "the count behind a mean. reading is the number of a repeated row. "
+          "the count behind a mean. reading is the number of a repeated row, block the run of a series that was read "
+          "in several. "
           "Without measured_at or order, checks of order are not evaluated. processed_at decides between two exports "
           "of one reading. A quantity may stand in a column too.",
           example="{solution: Solution, analyte: Element, line: Line, signal: Signal, unit: Unit, "
@@ -144,67 +138,6 @@ SERIES = Block((
           example="[bracket, process_blank, reference]"),
 ))  # fmt: skip
 
-STANDARD = Block((
-    Field("contents", MapOf(_CONTENT, "an analyte", "Cd"), "The content of each analyte of a mix.",
-          example="{Cd: 10.02 mg/L, Pb: 50.1 mg/L}"),
-    Field("analyte", kind.text("an analyte"), "The analyte, where there is only one; with content.", example="Cd",
-          hidden=True),
-    Field("content", _CONTENT, "Its content.", example="10 mg/L", hidden=True),
-    Field("lot", kind.text(), "The lot.", "", example="EB-24-017"),
-    Field("expires", kind.day(), "The last day on which it may be used; compared with the time of measurement.", "",
-          example="2027-03-31"),
-))  # fmt: skip
-
-SAMPLE = Block((
-    Field("mass", kind.quantity("mass", example="0.5 g", words=ELSEWHERE), "The mass of sample.", example="bench"),
-    Field("volume", kind.quantity("volume", example="5 mL", words=ELSEWHERE), "The volume of a liquid sample.",
-          example="5 mL", hidden=True),
-    Field("digest", kind.quantity("volume", example="50 mL", words=ELSEWHERE),
-          "The volume to which it was made up; the test solution.", example="50 mL"),
-    Field("dry_matter", kind.dry_matter(ELSEWHERE), "The share of dry matter; the result is then of dry matter.",
-          example="bench"),
-    Field("dilution", kind.dilution(ELSEWHERE),
-          "The dilution between digest and test solution: 1 + 4, or its factor 5.",
-          example="1 + 4", hidden=True),
-))  # fmt: skip
-
-PREPARATION = Block((
-    Field("for", MapOf(kind.pattern(), "batch, sample, role or analyte", keys=("batch", "sample", "role", "analyte")),
-          "Which series it applies to, as patterns that match the whole word. Left out: all. The first one that "
-          "applies counts.", example=r"{batch: 'MD\d+'}"),
-    Field("design", kind.word("single", "flasks", "successive"),
-          "single: one level without and one with an addition. flasks: every level made up to the same final volume. "
-          "successive: standard added again and again to one vessel.", required=True, example="flasks"),
-    Field("aliquot", Block((
-        Field("volume", _VOLUME, "The same volume at every level.", example="10 mL"),
-        Field("levels", MapOf(_VOLUME, "a level", "0"), "A volume for each level.", example="{0: 10 mL, 1: 9.5 mL}"),
-    ), short="volume"),
-          "The test solution that goes into each vessel; {levels: {0: 10 mL, 1: 9.5 mL}} where it differs.",
-          WITH_ITS_DEFAULTS,
-          example="10 mL"),
-    Field("final", Block((Field("volume", _VOLUME, "The volume.", required=True, example="25 mL"),), short="volume"),
-          "The volume to which each vessel is made up.", example="25 mL"),
-    Field("additions", Block((
-        Field("standard", kind.text("the name of a standard"),
-              "The spiking standard. Left out: the only one of this file.", example="Mix-7"),
-        Field("deliveries", kind.word("each", "total"),
-              "What the volumes mean: each is added on top of the earlier ones, total is all that a level holds. "
-              "Left out: each for successive, else total.", example="total"),
-        Field("levels", MapOf(kind.quantity("volume", example="0.25 mL", zero=True), "a level", "1"),
-              "The volume of standard by level.", example="{0: 0 mL, 1: 0.25 mL, 2: 0.5 mL, 3: 0.75 mL}"),
-    )), "The standard additions.", WITH_ITS_DEFAULTS),
-    Field("level_0", kind.word("as the others", "undiluted"),
-          "undiluted: the level without addition was read on the test solution as it is.", "as the others",
-          example="as the others"),
-    Field("diluent", kind.quantity("volume", example="50 mL"), "A buffer or solvent that every vessel holds.",
-          example="50 mL", hidden=True),
-    Field("sample", SAMPLE,
-          "The way from the test solution back to the sample. A value may be a word for where it comes from: bench (a "
-          "bench file), name (of the solution) or column (of the export)."),
-    Field("report_in", kind.unit(*SAMPLE_CONTENT, example="mg/kg"), "The unit of the reported result.", "",
-          example="mg/kg"),
-))  # fmt: skip
-
 BLANKS = Block((
     Field("background", Block((
         Field("subtract", kind.word("signal"), "What is subtracted.", required=True, example="signal"),
@@ -212,16 +145,26 @@ BLANKS = Block((
     Field("process", Block((
         Field("subtract", kind.word("amount"), "What is subtracted.", required=True, example="amount"),
     )), "Series of role process_blank: subtracted as amount, through their own additions."),
+    Field("reagent", Block((
+        Field("subtract", kind.word("amount"), "What is subtracted.", required=True, example="amount"),
+        Field("amounts", MapOf(Block((
+            Field("amount", SOME_AMOUNT, "The amount in each vessel.", required=True, example="0.5 ng"),
+            Field("uncertainty", SOME_AMOUNT, "Its standard uncertainty.", example="0.1 ng"),
+        ), short="amount"), "an analyte", "Cd"),
+              "The amounts, where they are known. Left out: from series of role reagent_blank.",
+              example="{Cd: 0.5 ng}"),
+    )), "What the reagents bring into every vessel: the same amount in each, subtracted as amount.",
+          example="{subtract: amount, amounts: {Cd: {amount: 0.5 ng, uncertainty: 0.1 ng}}}", hidden=True),
 ))  # fmt: skip
 
 _KNOWN_UNCERTAINTY = (
-    Field("uncertainty", kind.quantity(*SAMPLE_CONTENT, "fraction", example="0.16 mg/kg or 5 %"),
+    Field("uncertainty", kind.quantity(*SOME_CONTENT, "fraction", example="0.16 mg/kg or 5 %"),
           "The stated uncertainty; with k.", example="0.16 mg/kg"),
     Field("k", kind.number("2"), "Its coverage factor; 1 for a standard uncertainty.", example="2"),
 )  # fmt: skip
 
 KNOWN = Block((
-    Field("content", kind.quantity(*SAMPLE_CONTENT, example="2.40 mg/kg"), "The content.", required=True,
+    Field("content", kind.quantity(*SOME_CONTENT, example="2.40 mg/kg"), "The content.", required=True,
           example="31.0 mg/kg"),
     *_KNOWN_UNCERTAINTY,
 ), short="content")  # fmt: skip
@@ -233,8 +176,28 @@ TOP = Block((
           example="A"),
 ))  # fmt: skip
 
+SIGNAL = Block((
+    Field("signal", kind.number("0.0008"), "The signal.", required=True, example="0.0008"),
+    Field("unit", kind.text("the unit of the signal"), "Its unit, as the export writes it.", required=True,
+          example="A"),
+))  # fmt: skip
+
+NOISE = Block((
+    Field("floor", kind.number("0.0008"), "The noise of a signal near zero.", required=True, example="0.0008"),
+    Field("relative", kind.share("1.0 %"), "What comes to it in proportion to the signal, in quadrature.",
+          example="1.0 %"),
+    Field("unit", kind.text("the unit of the signal"), "The unit of floor, as the export writes it.", required=True,
+          example="A"),
+))  # fmt: skip
+
 RULE_FILE = Block((
     Field("station", kind.text("a name"), "The name of this bench, as pages show it.", "", example="Estuary bench"),
+    Field("units", MapOf(kind.unit(example="mg/L"), "ppm, ppb or ppt", keys=("ppm", "ppb", "ppt")),
+          "What ppm, ppb and ppt mean in this file; they are refused where it does not say.",
+          example="{ppm: mg/L}", hidden=True),
+    Field("molar_masses", MapOf(kind.quantity("mass per amount", example="112.414 g/mol"), "an analyte", "Cd"),
+          "Molar masses, where contents go from mass to amount of substance or back.",
+          example="{Cd: 112.414 g/mol}", hidden=True),
     Field("language", kind.word("en"), "The language of pages and sentences.", "en", example="en"),
     Field("state", kind.text("a folder"), "The folder of journal, ledger, rule texts and lock.", ".spikeward",
           example=".spikeward"),
@@ -261,8 +224,11 @@ RULE_FILE = Block((
     Field("preparations", ListOf(PREPARATION, single=True), "How the vessels were made.", required=True),
     Field("blanks", BLANKS, "Which blanks are subtracted, and how.", WITH_ITS_DEFAULTS),
     Field("brackets", Block((
-        Field("contents", MapOf(_CONTENT, "an analyte", "Cd"), "Its contents.", required=True,
+        Field("contents", MapOf(content(), "an analyte", "Cd"), "Its contents.", required=True,
               example="{Cd: 20 ug/L, Pb: 100 ug/L}"),
+        Field("drift", kind.word("check", "correct"),
+              "check: a drift of the sensitivity is only told. correct: each reading is divided by the sensitivity at "
+              "its time, between the brackets on both sides.", "check", example="check"),
     )), "The solution that is measured again and again to see whether the sensitivity holds."),
     Field("references", MapOf(Block(_KNOWN_UNCERTAINTY, others=MapOf(KNOWN, "an analyte", "Cd")), "a sample's name",
                               "MUD-1"),
@@ -273,6 +239,53 @@ MUD-1: {Cd: 2.40 mg/kg, uncertainty: 0.16 mg/kg, k: 2}
 MUD-2: {Cd: {content: 0.71 mg/kg, uncertainty: 5 %, k: 2}, Pb: 31.0 mg/kg}
 """),
     Field("range", MapOf(TOP, "an analyte or line", "Cd 214.4"), "How far the response is straight."),
+    Field("calibration", Block((
+        Field("contents", MapOf(MapOf(content(), "an analyte", "Cd"), "a calibration solution's name", "S1"),
+              "The contents of each solution of role calibration by the sample that its name gives. Left out: the "
+              "group content of the name.", example="{S0: {Cd: 0 ug/L}, S1: {Cd: 5 ug/L}, S2: {Cd: 10 ug/L}}"),
+    )), "Plain standards in the same run: their slope is set beside that of the additions, and the content that they "
+        "would have given beside the result.",
+        example="{contents: {S0: {Cd: 0 ug/L}, S1: {Cd: 5 ug/L}, S2: {Cd: 10 ug/L}}}", hidden=True),
+    Field("lines", MapOf(Block((
+        Field("report", kind.text("a line"), "The line or isotope that is reported.", required=True,
+              example="Cd 214.4"),
+        Field("agree", kind.share("10 %"),
+              "How near the others must be. Left out: as near as the scatter of their fits lets expect.",
+              example="10 %"),
+    ), short="report"), "an analyte", "Cd"),
+          "Where an analyte is read at several lines or isotopes: each is solved, one is reported.",
+          example="{Cd: {report: Cd 214.4, agree: 10 %}}", hidden=True),
+    Field("overlap", ListOf(Block((
+        Field("method", kind.word("generalised", "h_point"),
+              "generalised: every analyte was added on its own, and as many lines or more are read. h_point: two lines "
+              "at which one interferent answers equally.", required=True, example="generalised"),
+        Field("analytes", ListOf(kind.text("an analyte"), single=True), "The analytes that are solved.", required=True,
+              example="[Cd, As]"),
+        Field("at", ListOf(kind.text("an analyte with its line")), "The lines that are read.", required=True,
+              example="[Cd 228.8, As 228.8]"),
+        Field("interferent", kind.text("a name"), "The interferent of h_point.", "", example="humic matter"),
+    ))), "Analytes whose signals overlap, solved together.",
+          example="[{method: h_point, analytes: [Cd], at: [Cd 226.5, Cd 228.8], interferent: humic matter}]",
+          hidden=True),
+    Field("below_detection", Block((
+        Field("use", kind.word("refuse", "leave out", "substitute"),
+              "What a vessel is taken for whose signal was not detected, never zero: the series is refused, the vessel "
+              "is left out of the line, or the signal under signals stands for it.", "refuse", example="leave out"),
+        Field("signals", MapOf(SIGNAL, "an analyte or line", "Cd 214.4"), "The signals that stand for it.",
+              example="{Cd 214.4: {signal: 0.0008, unit: A}}"),
+    ), short="use"), "Vessels below detection.", WITH_ITS_DEFAULTS,
+          example="{use: substitute, signals: {Cd 214.4: {signal: 0.0008, unit: A}}}", hidden=True),
+    Field("precision", Block((
+        Field("from", kind.word("own", "pooled", "declared"),
+              "own: the scatter of each series. pooled: that of the batch, once it closes and if the series agree. "
+              "declared: the noise that stands here.", "own", example="own"),
+        Field("noise", MapOf(NOISE, "an analyte or line", "Cd 214.4"),
+              "The standard deviation of the signal of one vessel, each made and read anew, for declared.",
+              example="{Cd 214.4: {floor: 0.0008, relative: 1.0 %, unit: A}}", hidden=True),
+        Field("weights", kind.word("signal", "equal"),
+              "signal: signals of all vessels are equally noisy, and a point counts less the more its signal was "
+              "scaled up for its volume. equal: every point counts the same.", "signal", example="signal"),
+    ), short="from"), "Where the scatter comes from that the uncertainty is made of.", WITH_ITS_DEFAULTS),
     Field("report", Block((
         Field("coverage", kind.share("95 %"), "The coverage of intervals.", "95 %", example="95 %"),
     )), "How results are reported.", WITH_ITS_DEFAULTS),

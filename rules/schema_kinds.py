@@ -100,6 +100,18 @@ def _positive(value: Quantity, text: str, zero: bool) -> Quantity:
     return value
 
 
+def signed_quantity(*dimensions: str, example: str) -> Scalar:
+    """A quantity of one of some dimensions, of either sign but not zero."""
+
+    def convert(text: str) -> Quantity:
+        value = _of_dimension(parse_quantity(text), text, dimensions)
+        if value.value == 0:
+            raise ValueError(f"'{text}' is zero")
+        return value
+
+    return Scalar(f"a {' or '.join(dimensions)} such as {example}", convert, "R015", wrong="10 zzz")
+
+
 def dilution(words: tuple[str, ...]) -> Scalar:
     """A dilution as a factor or as parts, or one of some words."""
 
@@ -187,6 +199,17 @@ def count() -> Scalar:
         return int(text)
 
     return Scalar("a whole number such as 2", convert, "R014", wrong="2.5")
+
+
+def signed_count() -> Scalar:
+    """A whole number of either sign, not zero."""
+
+    def convert(text: str) -> int:
+        if not re.fullmatch(r"[+-]?[1-9]", text):
+            raise ValueError(f"'{text}' is not a charge")
+        return int(text)
+
+    return Scalar("a charge such as -1 or 2", convert, "R014", wrong="2.5")
 
 
 def fraction_of(text: str) -> float:

@@ -62,6 +62,8 @@ def _details(result: Result, solved: Solved) -> list[str]:
     elif estimate is not None and estimate.reason:
         parts.append(estimate.reason.rstrip("."))
     vessels = sum(not point.excluded for point in result.points)
+    if solved.scatter.kind != "own":
+        parts.append(solved.scatter.words)
     told = any(f" {left}" in part for part in parts)  # the coverage factor has said it already
     parts.append(counted(vessels, "vessel") if told else f"{counted(vessels, 'vessel')}, {left}")
     if excluded := sum(bool(vessel.excluded) for vessel in solved.prepared.vessels):
@@ -75,10 +77,12 @@ def _details(result: Result, solved: Solved) -> list[str]:
 
 def _coverage_factor(estimate: Estimate, solved: Solved) -> str:
     """The coverage factor, and why where it is far from the 2 that people expect."""
-    k, left = estimate.coverage_factor, estimate.effective_degrees_of_freedom or 0
+    k, left = estimate.coverage_factor, estimate.effective_degrees_of_freedom
     if not k:
         return ""
-    told, of_line = f", k {figure(k, 2)}", solved.degrees_of_freedom
+    if left is None:
+        return f", k {figure(k, 2)}"
+    told, of_line = f", k {figure(k, 2)}", solved.scatter_degrees_of_freedom
     if k > _WIDE_K and left > 0 and t_quantile(left, estimate.coverage) > _WIDE_K:
         return f"{told}, because {freedom(left)} {'remains' if left == 1 else 'remain'}"
     if left != of_line:
@@ -86,7 +90,7 @@ def _coverage_factor(estimate: Estimate, solved: Solved) -> str:
     if k <= _WIDE_K:
         return told
     if of_line > 0 and t_quantile(of_line, estimate.coverage) > _WIDE_K:
-        return f"{told}, because the line alone has {of_line}"
+        return f"{told}, because the line alone has {of_line:.0f}"
     return f"{told}, because the slope is not known well"
 
 
@@ -94,18 +98,32 @@ def interval_holds(result: Result, solved: Solved) -> str:
     """What the interval contains and what it leaves out."""
     if result.reported is None or not result.reported.expanded_uncertainty:
         return ""
-    parts = ["the scatter about the line"]
+    parts = [_SCATTER_WORDS[solved.scatter.kind]]
     if solved.background is not None and solved.background.standard_uncertainty is not None:
         parts.append("the background")
+    if solved.reagent is not None and solved.reagent.standard_uncertainty is not None:
+        parts.append("the reagent blank")
     if result.blank is not None and "not known" not in solved.blank_note:
         parts.append("the process blank")
+    back = solved.prepared.way_back
+    if result.in_sample is not None and back is not None and back.relative_uncertainty:
+        parts.append("the recovery")
     told = parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}"
     lacking = ""
     if solved.background is not None and solved.background.standard_uncertainty is None:
         lacking += ", nor is the background, which was read once"
+    if solved.reagent is not None and solved.reagent.standard_uncertainty is None:
+        lacking += ", nor is the reagent blank"
     if result.blank is not None and solved.blanks == 1:
         lacking += ", nor is how blanks vary between preparations, which one process blank does not show"
     return f"The interval holds {told}; standard, volumes and mass are not in it{lacking}."
+
+
+_SCATTER_WORDS = {
+    "own": "the scatter about the line",
+    "pooled": "the scatter of the batch's series about their lines",
+    "declared": "the declared noise",
+}
 
 
 def not_shown(results: Sequence[Result]) -> str:

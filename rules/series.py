@@ -20,6 +20,10 @@ def closing_roles(rules: Rulebook) -> tuple[str, ...]:
         roles.add("background")
     if rules.blanks.process:
         roles.add("process_blank")
+    if rules.blanks.reagent and not rules.blanks.reagent_amounts:
+        roles.add("reagent_blank")
+    if rules.drift == "correct":
+        roles.add("bracket")
     return tuple(sorted(roles))
 
 
@@ -29,24 +33,28 @@ def missing_members(members: Members, lines: Sequence[PreparedLine], rules: Rule
     expected = _expected_levels(members, rules)
     present = {reading.level for reading in members.readings}
     lacking += [f"level {level}" for level in expected if level not in present]
-    counts: dict[tuple[str, str], dict[tuple[str, str], int]] = defaultdict(lambda: defaultdict(int))
+    counts: dict[tuple[str, str], dict[_Vessel, int]] = defaultdict(lambda: defaultdict(int))
     for reading in members.readings:
-        counts[reading.analyte, reading.line][reading.level, reading.vessel] += reading.readings
+        counts[reading.analyte, reading.line][reading.level, reading.vessel, reading.block] += reading.readings
     vessels = sorted({vessel for found in counts.values() for vessel in found}, key=_vessel_order)
     for analyte, line in sorted(counts):
-        for level, vessel in vessels:
-            found = counts[analyte, line].get((level, vessel), 0)
+        for level, vessel, block in vessels:
+            found = counts[analyte, line].get((level, vessel, block), 0)
             if found < rules.series.readings:
                 needed = rules.series.readings - found
                 noun = "reading" if needed == 1 else "readings"
-                lacking.append(f"{needed} more {noun} of {line_words(analyte, line)} at level {level}{vessel}")
+                place = f"level {level}{vessel}{block and f' in run {block}'}"
+                lacking.append(f"{needed} more {noun} of {line_words(analyte, line)} at {place}")
     for line_ in lines:
         lacking += line_.missing
     return tuple(dict.fromkeys(lacking))
 
 
-def _vessel_order(vessel: tuple[str, str]) -> tuple[object, object]:
-    return level_order(vessel[0]), level_order(vessel[1])
+_Vessel = tuple[str, str, str]  # level, vessel, run
+
+
+def _vessel_order(vessel: _Vessel) -> tuple[object, ...]:
+    return tuple(level_order(part) for part in vessel)
 
 
 def _expected_levels(members: Members, rules: Rulebook) -> tuple[str, ...]:
@@ -56,7 +64,7 @@ def _expected_levels(members: Members, rules: Rulebook) -> tuple[str, ...]:
     for analyte in {reading.analyte for reading in members.readings}:
         preparation = preparation_for(members.key, analyte, rules)
         if preparation is not None:
-            levels |= set(preparation.additions)
+            levels |= preparation.levels
     return tuple(sorted(levels, key=level_order))
 
 

@@ -13,6 +13,11 @@ from dataclasses import dataclass
 from spikeward.rules.quantities import Quantity, parse_dilution, parse_quantity
 from spikeward.rules.records import Batch, Members, SeriesKey
 
+PLACES = {"bench": "the bench file", "name": "the solution's name", "column": "a column of the export"}
+"""What the words of the rule file stand for that say where a quantity comes from."""
+
+Told = tuple[str, str, str]  # text, place, and which of PLACES it is
+
 
 @dataclass(slots=True)
 class Findings:
@@ -35,18 +40,32 @@ class Sources:
     """The quantities given for particular solutions of one series, from bench file, column and name."""
 
     key: SeriesKey
-    given: Mapping[tuple[str, str], tuple[tuple[str, str], ...]]  # (meaning, level or '') -> ((text, place), ...)
+    given: Mapping[tuple[str, str], tuple[Told, ...]]  # (meaning, level or '') -> what is told
 
-    def find(self, meaning: str, level: str, findings: Findings) -> Quantity | str | None:
-        """The particular value of a quantity at a level, else of the whole sample; contradictions fail the series.
+    def at(self, meaning: str, level: str) -> tuple[Told, ...]:
+        """What is told of a level, or else of the whole sample."""
+        return self.given.get((meaning, level), ()) or self.given.get((meaning, ""), ())
+
+    def of_all(self, meaning: str) -> tuple[Told, ...]:
+        """What is told of the whole sample, whichever of its vessels tells it."""
+        return tuple(told for (name, _), texts in sorted(self.given.items()) if name == meaning for told in texts)
+
+    def find(self, meaning: str, level: str | None, findings: Findings, source: str = "") -> Quantity | str | None:
+        """The particular value of a quantity at a level, or of the whole sample; contradictions fail the series.
+
+        Parameters
+        ----------
+        level : None for the whole sample
+        source : bench, name or column, where no other one may speak
 
         Returns
         -------
         a Quantity; for ``standard`` its name; None where no source speaks
         """
-        places = self.given.get((meaning, level), ()) or self.given.get((meaning, ""), ())
-        values: dict[object, str] = {}
-        for text, place in places:
+        values: dict[Quantity | str, str] = {}
+        for text, place, kind in self.of_all(meaning) if level is None else self.at(meaning, level):
+            if source and kind != source:
+                continue
             try:
                 value = _value_of(meaning, text)
             except ValueError as error:
@@ -57,30 +76,45 @@ class Sources:
             told = " and ".join(f"{value} from {place}" for value, place in values.items())
             where = f" of level {level}" if level else ""
             findings.fails(f"{meaning}{where} is given as {told}; correct the source that is wrong")
-        return next(iter(values), None)  # type: ignore[return-value]
+        return next(iter(values), None)
+
+    def quantity(self, meaning: str, level: str | None, findings: Findings, *dimensions: str) -> Quantity | None:
+        """A quantity that measures one of some things; another one fails the series."""
+        value = self.find(meaning, level, findings)
+        if not isinstance(value, Quantity):
+            return None
+        named = f"{meaning.replace('_', ' ')} of {f'level {level}' if level else self.key.sample}"
+        if value.value < 0:
+            findings.fails(f"{named}: {value} is below zero, which cannot be; correct it")
+            return None
+        if value.dimension in dimensions:
+            return value
+        findings.fails(f"{named}: {value} is a {value.dimension}, not a {' or '.join(dimensions)}; correct its unit")
+        return None
+
+
+_BASE = {"volume": "mL", "mass": "g", "fraction": "1", "amount": "mol"}
 
 
 def _value_of(meaning: str, text: str) -> Quantity | str:
     if meaning == "standard":
         return text
     value = parse_dilution(text) if meaning == "dilution" else parse_quantity(text)
-    base = {"volume": "mL", "mass": "g", "fraction": "1"}.get(value.dimension)
+    base = _BASE.get(value.dimension)
     # Equal amounts in other units must compare equal: 0.5012 g and 501.2 mg.
     return Quantity(value.in_unit(base).normalize(), base) if base else value
 
 
 def sources_of(members: Members, batch: Batch, with_bench: bool = True) -> Sources:
     """Everything that bench file, columns and names say about one series; the bench file only where it is meant."""
-    given: dict[tuple[str, str], list[tuple[str, str]]] = defaultdict(list)
+    given: dict[tuple[str, str], list[Told]] = defaultdict(list)
     key = members.key
     for entry in batch.bench if with_bench else ():
         if entry.sample == key.sample and entry.batch in ("", key.batch):
             for meaning, text in entry.values:
-                given[meaning, entry.level].append((text, f"{entry.path} row {entry.row}"))
+                given[meaning, entry.level].append((text, f"{entry.path} row {entry.row}", "bench"))
     for reading in members.readings:
         for meaning, text, source in reading.values:
-            # A mass belongs to the sample whichever vessel tells it; volumes belong to their level.
-            level = reading.level if meaning in ("aliquot", "addition", "final", "standard") else ""
             place = f"the name {reading.solution}" if source == "name" else f"{reading.path} row {reading.row}"
-            given[meaning, level].append((text, place))
+            given[meaning, reading.level].append((text, place, source))
     return Sources(key, {place: tuple(texts) for place, texts in given.items()})

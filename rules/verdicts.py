@@ -6,10 +6,19 @@ from spikeward.rules.outcomes import FAIL, WAITING
 from spikeward.rules.rulebook import Rulebook
 from spikeward.rules.series import closing_roles
 
+_COMPANIONS = ("calibration", "duplicate", "spiked_sample")
+"""What a result is compared with, if it is measured."""
+
 
 def depends_on_batch(rules: Rulebook) -> bool:
-    """Whether what the rest of the batch still brings can change a series: blanks, brackets, references."""
-    return bool(closing_roles(rules) or rules.brackets or rules.references)
+    """Whether what the rest of the batch still brings can change a series: blanks, brackets, references, companions."""
+    return bool(
+        closing_roles(rules)
+        or rules.brackets
+        or rules.references
+        or rules.precision.comes_from == "pooled"
+        or any(rule.role in _COMPANIONS or "(?P<rerun_of>" in rule.pattern for rule in rules.names)
+    )
 
 
 def settled(closed: bool, incomplete: bool, rules: Rulebook) -> bool:

@@ -143,6 +143,7 @@ def _rows(outcome: Outcome, links: Mapping[SeriesKey, str]) -> list[Row]:
             _excluded(outcome, result),
         )
         for result in outcome.results
+        if result.reported_line
     ]  # fmt: skip
 
 

@@ -22,6 +22,7 @@ _WIDTH, _HEIGHT = 440, 330
 _RIGHT, _TOP, _BOTTOM = 428, 16, 272
 _LETTER = 9.3  # width of a digit where the labels are largest, on a narrow screen
 _SHAPES = ("round", "square", "diamond", "triangle")
+_TO_ZERO = ("linear", "curve")  # responses whose model reaches zero signal at minus the content
 _REACH = 1.5  # an interval is drawn this far beyond the rest, in widths of the rest; an arrow says that it goes on
 
 
@@ -83,7 +84,7 @@ def _drawn(template: str, *values: object) -> Markup:
 
 def _crossing(result: Result) -> float | None:
     """Where the line reaches zero signal, -C0, if the result stands on it."""
-    if result.content is None or result.no_number or not math.isfinite(result.content.content):
+    if result.response not in _TO_ZERO or result.content is None or result.no_number or not math.isfinite(result.content.content):
         return None
     return -result.content.content
 
@@ -106,7 +107,8 @@ def _frame(result: Result, points: Sequence[Point]) -> _Frame:
         reach = (max(across) / 2 - min(across) / 2) * 2 * _REACH
         reach = reach if math.isfinite(reach) else 0.0
         across += [max(interval[0], min(across) - reach), min(interval[1], max(across) + reach)]
-    upward = [0.0, *(point.y for point in points)]
+    upward = [] if result.response == "log" else [0.0]
+    upward += [point.y for point in points]
     upward += [point.fitted for point in points if point.fitted is not None and math.isfinite(point.fitted)]
     if result.intercept is not None and math.isfinite(result.intercept):
         upward.append(result.intercept)
@@ -127,7 +129,7 @@ def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
     yield _drawn(
         '<path class="axis" d="M{0:.1f} {1:.1f}H{2}M{3:.1f} {4}V{5}"/>',
         frame.left,
-        frame.up(0.0),
+        _floor(frame, result),
         _RIGHT,
         frame.across(0.0),
         _TOP,
@@ -135,7 +137,8 @@ def _axes(frame: _Frame, result: Result) -> Iterator[Markup]:
     )
     added, middle = frame.x.titled(f"{_analyte(result)} added", unit_words(result.content_unit)), frame.along(0.5)
     yield _drawn('<text class="name" x="{0:.1f}" y="{1}">{2}</text>', middle, _HEIGHT - 12, added)
-    signal = frame.y.titled("Signal corrected for volume", visible(result.signal_unit))
+    what = "Potential" if result.response == "log" else "Signal corrected for volume"
+    signal = frame.y.titled(what, visible(result.signal_unit))
     yield _drawn(
         '<text class="name" transform="rotate(-90)" x="{0:.1f}" y="14">{1}</text>', -(_TOP + _BOTTOM) / 2, signal
     )
@@ -150,28 +153,27 @@ def _with_room(frame: _Frame) -> set[str]:
     return {label for place, label in enumerate(labels) if (place - zero) % every == 0}
 
 
+def _floor(frame: _Frame, result: Result) -> float:
+    """Where the axis of contents lies: at zero signal, and below all potentials."""
+    return float(_BOTTOM) if result.response == "log" else frame.up(0.0)
+
+
 def _line(frame: _Frame, result: Result, points: Sequence[Point]) -> Iterator[Markup]:
-    """The fitted line over the vessels, and dashed down to the axis where it carries a content."""
-    fitted = sorted((point.x, point.fitted) for point in points if point.fitted is not None)
-    if len(fitted) < 2 or fitted[0][0] == fitted[-1][0]:
-        return
-    (x0, y0), (x1, y1) = fitted[0], fitted[-1]
-    yield _drawn(
-        '<path class="fit" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>',
-        frame.across(x0),
-        frame.up(y0),
-        frame.across(x1),
-        frame.up(y1),
-    )
+    """What was fitted, over the vessels of each run, and dashed down to the axis where it carries a content."""
     crossing = _crossing(result)
-    if crossing is not None:
-        yield _drawn(
-            '<path class="beyond" d="M{0:.1f} {1:.1f}L{2:.1f} {3:.1f}"/>',
-            frame.across(x0),
-            frame.up(y0),
-            frame.across(crossing),
-            frame.up(0.0),
-        )
+    for run in dict.fromkeys(point.block for point in points):
+        of_run = ((point.x, point.fitted) for point in points if point.block == run and point.fitted is not None)
+        fitted = sorted(set(of_run))
+        if len(fitted) < 2 or fitted[0][0] == fitted[-1][0]:
+            continue
+        if result.response == "linear":
+            fitted = [fitted[0], fitted[-1]]
+        places = [f"{frame.across(x):.1f} {frame.up(y):.1f}" for x, y in fitted]
+        yield _drawn('<path class="fit" d="M{0}"/>', "L".join(places))
+        if crossing is not None:
+            yield _drawn(
+                '<path class="beyond" d="M{0}L{1:.1f} {2:.1f}"/>', places[0], frame.across(crossing), frame.up(0.0)
+            )
 
 
 def _content(frame: _Frame, result: Result) -> Iterator[Markup]:
@@ -244,7 +246,9 @@ def _description(result: Result, points: Sequence[Point]) -> str:
     drawn = f"{len(points)} {'vessel' if len(points) == 1 else 'vessels'}"
     drawn += f", {excluded} of them excluded from the line" if excluded else ""
     if _crossing(result) is None or result.content is None:
+        if result.content is not None and not result.no_number:
+            return f"{drawn}. The content of the test solution is {value_shown(result.content)}."
         return f"{drawn}. No content is read from the line: {visible(result.no_number) or 'there is none yet'}."
-    words = f"{drawn}. The line meets the axis at minus the content, {value_shown(result.content)} in the test solution"
+    words = f"{drawn}. The {'curve' if result.response == 'curve' else 'line'} meets the axis at minus the content, {value_shown(result.content)} in the test solution"
     interval = interval_shown(result.content)
     return f"{words}, interval {interval}." if interval else f"{words}."

@@ -33,6 +33,9 @@ _OF_SERIES: dict[str, Callable[[Outcome], Cell]] = {
 _OF_RESULT: dict[str, Callable[[Result], Cell]] = {
     "analyte": lambda result: result.analyte,
     "line": lambda result: result.line,
+    "reported_line": lambda result: "yes" if result.reported_line else "no",
+    "response": lambda result: result.response,
+    "precision": lambda result: result.precision,
     "verdict": lambda result: result.verdict,
     "no_number": lambda result: result.no_number,
     "basis": lambda result: result.basis,
@@ -61,9 +64,9 @@ _OF_ESTIMATE: dict[str, Callable[[Estimate], Cell]] = {
     "uncertainty_reason": lambda estimate: estimate.reason,
 }
 COLUMNS = (
-    "root", "folder", "batch", "role", "sample", "analyte", "line", "verdict", "series_verdict", "final", "waiting_for",
+    "root", "folder", "batch", "role", "sample", "analyte", "line", "reported_line", "verdict", "series_verdict", "final", "waiting_for",
     "no_number", *(f"sample_{name}" for name in _OF_ESTIMATE), "basis", *(f"solution_{name}" for name in _OF_ESTIMATE),
-    "degrees_of_freedom", "vessels", "excluded_vessels", "checks_to_look_at", "slope", "slope_uncertainty", "intercept",
+    "response", "precision", "degrees_of_freedom", "vessels", "excluded_vessels", "checks_to_look_at", "slope", "slope_uncertainty", "intercept",
     "intercept_uncertainty", "residual_sd", "signal_unit", "background", "blank", "inputs_digest", "rules_digest",
     "calculation_version",
 )  # fmt: skip

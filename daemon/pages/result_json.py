@@ -9,11 +9,11 @@ from typing import Any
 from spikeward.daemon.pages.cautions import CAUTIONS
 from spikeward.daemon.pages.numbers import twelve_digits
 from spikeward.daemon.pages.text import encodable
-from spikeward.rules.outcomes import Check, Estimate, Outcome, Point, Result, VesselReport
+from spikeward.rules.outcomes import Beside, Check, Estimate, Outcome, Parameter, Point, Result, VesselReport
 from spikeward.rules.records import MEASURED, Reading, SeriesKey
 
 _encode = json.JSONEncoder(ensure_ascii=False, allow_nan=False).encode
-FORMAT = "spikeward result 1"
+FORMAT = "spikeward result 2"
 """Raised when a program that reads the old form could misread the new one."""
 
 
@@ -94,6 +94,13 @@ def _result(result: Result) -> dict[str, Any]:
         "background": result.background,
         "blank": result.blank,
         "preparation": result.preparation,
+        "reported_line": result.reported_line,
+        "response": result.response,
+        "precision": result.precision,
+        "parameters": [_parameter(parameter) for parameter in result.parameters],
+        "beside": [_beside(other) for other in result.beside],
+        "corrected": list(result.corrected),
+        "cannot_tell": list(result.cannot_tell),
         "points": [_point(point) for point in result.points],
         "checks": [_check(check) for check in result.checks],
         "budget": [],
@@ -115,6 +122,19 @@ def _estimate(estimate: Estimate | None, unit: str) -> dict[str, Any]:
     }
 
 
+def _parameter(parameter: Parameter) -> dict[str, Any]:
+    return {
+        "name": parameter.name,
+        "value": parameter.value,
+        "unit": parameter.unit,
+        "standard_uncertainty": parameter.standard_uncertainty,
+    }
+
+
+def _beside(other: Beside) -> dict[str, Any]:
+    return {"name": other.name, "sentence": other.sentence, **_estimate(other.estimate, other.estimate.unit)}
+
+
 def _point(point: Point) -> dict[str, Any]:
     return {
         "level": point.level,
@@ -126,6 +146,9 @@ def _point(point: Point) -> dict[str, Any]:
         "readings": point.readings,
         "sd": point.sd,
         "matrix_share": point.matrix_share,
+        "factor": point.factor,
+        "weight": point.weight,
+        "run": point.block,
         "excluded": point.excluded,
     }
 
@@ -147,9 +170,13 @@ def _vessel(vessel: VesselReport) -> dict[str, Any]:
     return {
         "level": vessel.level,
         "vessel": vessel.vessel,
-        "aliquot_ml": vessel.aliquot_ml,
-        "addition_ml": vessel.addition_ml,
-        "final_ml": vessel.final_ml,
+        "run": vessel.block,
+        "aliquot": vessel.aliquot,
+        "aliquot_unit": vessel.aliquot_unit,
+        "addition": vessel.addition,
+        "addition_unit": vessel.addition_unit,
+        "final": vessel.final,
+        "final_unit": vessel.final_unit,
         "standard": vessel.standard,
         "excluded": vessel.excluded,
         "readings": [_reading(reading) for reading in vessel.readings],
@@ -166,6 +193,7 @@ def _reading(reading: Reading) -> dict[str, Any]:
         "vessel": reading.vessel,
         "injection": reading.injection,
         "reading": reading.reading,
+        "run": reading.block,
         "analyte": reading.analyte,
         "line": reading.line,
         "signal": reading.signal,

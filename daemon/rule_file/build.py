@@ -6,6 +6,7 @@ import posixpath
 from collections.abc import Mapping
 from typing import Any
 
+from spikeward.daemon.rule_file.build_preparation import preparation, standard
 from spikeward.daemon.rule_file.walk import Walker
 from spikeward.parsers.headings import unit_text
 from spikeward.rules.naming import number_of
@@ -14,14 +15,16 @@ from spikeward.rules.records import Layout, WideColumn
 from spikeward.rules.rulebook import (
     BenchRule,
     BlankRule,
+    Censored,
     Known,
     Limits,
+    LinesRule,
     NameRule,
-    Preparation,
+    Noise,
+    Overlap,
+    Precision,
     Rulebook,
-    SampleRule,
     SeriesRule,
-    Standard,
     Top,
     Watch,
 )
@@ -51,12 +54,12 @@ def build(value: Values, checks: Mapping[str, Limits], walker: Walker) -> Rulebo
             series["lapsed"],
             tuple(series["closes_with"]),
         ),  # fmt: skip
-        standards={name: _standard(name, each) for name, each in value["standards"].items()},
+        standards={name: standard(name, each) for name, each in value["standards"].items()},
         preparations=tuple(
-            _preparation(each, tuple(value["standards"]), _line(walker, f"preparations[{number}]"))
+            preparation(each, tuple(value["standards"]), _line(walker, f"preparations[{number}]"))
             for number, each in enumerate(value["preparations"])
         ),
-        blanks=BlankRule(value["blanks"]["background"] is not None, value["blanks"]["process"] is not None),
+        blanks=_blanks(value["blanks"]),
         brackets={
             analyte: Known(content) for analyte, content in ((value["brackets"] or {}).get("contents") or {}).items()
         },
@@ -66,6 +69,16 @@ def build(value: Values, checks: Mapping[str, Limits], walker: Walker) -> Rulebo
         coverage=value["report"]["coverage"],
         decisions=value["decisions"],
         digest="",
+        drift=(value["brackets"] or {}).get("drift") or "check",
+        precision=_precision(value["precision"]),
+        lines={analyte: LinesRule(each["report"], each["agree"]) for analyte, each in value["lines"].items()},
+        overlap=tuple(
+            Overlap(each["method"], tuple(each["analytes"]), tuple(each["at"]), each["interferent"] or "")
+            for each in value["overlap"] or ()
+        ),
+        calibration=(value["calibration"] or {}).get("contents") or {},
+        censored=Censored(value["below_detection"]["use"], _signals(value["below_detection"]["signals"])),
+        molar_masses=value["molar_masses"],
     )
 
 
@@ -99,35 +112,28 @@ def _layout(name: str, each: Values) -> Layout:
     return Layout(name=name, **values)
 
 
-def _standard(name: str, each: Values) -> Standard:
-    contents = each["contents"] or {each["analyte"]: each["content"]}
-    return Standard(name, contents, each["lot"], each["expires"])
+def _blanks(each: Values) -> BlankRule:
+    reagent = each["reagent"] or {}
+    amounts = {
+        analyte: Known(known["amount"], _in_unit_of(known["amount"], known["uncertainty"]))
+        for analyte, known in (reagent.get("amounts") or {}).items()
+    }
+    return BlankRule(each["background"] is not None, each["process"] is not None, bool(reagent), amounts)
 
 
-def _preparation(each: Values, standards: tuple[str, ...], line: int) -> Preparation:
-    aliquot, additions = each["aliquot"], each["additions"]
-    by_level = _by_level(aliquot["levels"])
-    if aliquot["volume"] is not None:
-        by_level[""] = aliquot["volume"]
-    return Preparation(
-        applies=each["for"],
-        design=each["design"],
-        aliquot=by_level,
-        final=each["final"]["volume"] if each["final"] else None,
-        additions=_by_level(additions["levels"]),
-        deliveries=additions["deliveries"] or ("each" if each["design"] == "successive" else "total"),
-        standard=additions["standard"] or standards[0],
-        level_0=each["level_0"],
-        diluent=each["diluent"],
-        # Another unit of report is reached by a way back on which nothing was done.
-        sample=SampleRule(**each["sample"] or {}) if each["sample"] or each["report_in"] else None,
-        report_in=each["report_in"],
-        line=line,
-    )
+def _in_unit_of(amount: Quantity, uncertainty: Quantity | None) -> float | None:
+    return None if uncertainty is None else float(uncertainty.in_unit(amount.unit))
 
 
-def _by_level(levels: Values) -> dict[str, Quantity]:
-    return {number_of(level): volume for level, volume in levels.items()}
+def _precision(each: Values) -> Precision:
+    noise = {
+        name: Noise(one["floor"], one["relative"] or 0.0, unit_text(one["unit"])) for name, one in each["noise"].items()
+    }
+    return Precision(each["from"], noise, each["weights"])
+
+
+def _signals(each: Values) -> dict[str, Top]:
+    return {name: Top(one["signal"], unit_text(one["unit"])) for name, one in each.items()}
 
 
 def _reference(each: Values) -> dict[str, Known]:

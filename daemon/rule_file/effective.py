@@ -10,15 +10,31 @@ from spikeward.daemon.rule_file.checks import FROM_RULE_FILE
 from spikeward.daemon.rule_file.walk import defaults
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Layout, WideColumn
-from spikeward.rules.rulebook import BenchRule, Known, NameRule, Preparation, Rulebook
-from spikeward.rules.schema import BENCH, NAME, PREPARATION, READER, RULE_FILE, WATCH
+from spikeward.rules.rulebook import (
+    BenchRule,
+    BlankRule,
+    Electrode,
+    InternalStandard,
+    Known,
+    LinesRule,
+    NameRule,
+    Preparation,
+    Rulebook,
+    SampleRule,
+    Spike,
+    Top,
+)
+from spikeward.rules.schema import BENCH, NAME, READER, RULE_FILE, WATCH
+from spikeward.rules.schema_preparation import ELECTRODE, PREPARATION
 
 _MARK = "  # default"
 _PLAIN = frozenset("abcdefghijklmnopqrstuvwxyzABCDEFGHIJKLMNOPQRSTUVWXYZ0123456789_ ./%-")
 
 _DEFAULTS = defaults(RULE_FILE)
 _SERIES = _DEFAULTS["series"]
-_WATCH, _READER, _BENCH, _NAME, _PREPARATION = map(defaults, (WATCH, READER, BENCH, NAME, PREPARATION))
+_WATCH, _READER, _BENCH, _NAME, _PREPARATION, _ELECTRODE = map(
+    defaults, (WATCH, READER, BENCH, NAME, PREPARATION, ELECTRODE)
+)
 
 
 def effective(rules: Rulebook) -> str:
@@ -28,6 +44,8 @@ def effective(rules: Rulebook) -> str:
 
 def _lines(rules: Rulebook) -> Iterator[str]:
     yield _line(0, "station", rules.station, _DEFAULTS["station"])
+    if rules.molar_masses:
+        yield f"molar_masses: {_text(rules.molar_masses)}"
     yield _line(0, "language", rules.language, _DEFAULTS["language"])
     yield _line(0, "state", rules.state, _DEFAULTS["state"])
     yield "watch:"
@@ -53,6 +71,7 @@ def _lines(rules: Rulebook) -> Iterator[str]:
     for standard in rules.standards.values():
         yield f"  {_text(standard.name)}:"
         yield f"    contents: {_text(standard.contents)}"
+        yield _line(4, "density", standard.density or "not given", "not given")
         yield _line(4, "lot", standard.lot, "")
         yield _line(4, "expires", standard.expires, "")
     yield "preparations:"
@@ -103,36 +122,116 @@ def _percent(share: float) -> str:
 def _preparation(each: Preparation) -> Iterator[str]:
     yield f"  - for: {_text(each.applies)}{'' if each.applies else _MARK}"
     yield f"    design: {each.design}"
-    common = each.aliquot.get("") if set(each.aliquot) == {""} else None
-    yield f"    aliquot: {_text(common if common is not None else each.aliquot)}"
-    yield f"    final: {_text(each.final) if each.final else 'as mixed'}"
+    yield _line(4, "response", each.response, _PREPARATION["response"])
+    yield _line(4, "spiked", each.spiked, _PREPARATION["spiked"])
+    if each.spiked != "sample":
+        yield f"    aliquot: {_vessels(each.aliquot) or 'from elsewhere'}"
+        yield f"    final: {_vessels(each.final) or 'as mixed'}"
     usual = "each" if each.design == "successive" else "total"
     yield "    additions:"
-    yield f"      standard: {_text(each.standard)}"
-    yield _line(6, "deliveries", each.deliveries, usual)
-    yield f"      levels: {_text(each.additions)}"
+    for addition in each.additions:
+        yield f"      - standard: {_text(addition.standard) if addition.standard else 'none, the analyte itself'}"
+        yield _line(8, "deliveries", addition.deliveries, usual)
+        yield f"        {'levels' if addition.standard else 'amounts'}: {_text(addition.levels)}"
     yield _line(4, "level_0", each.level_0, _PREPARATION["level_0"])
     yield _line(4, "diluent", each.diluent or "none", "none")
+    yield _line(4, "density", each.density or "not given", "not given")
+    if each.internal_standard is not None:
+        yield f"    internal_standard: {_given(each.internal_standard, names='for')}"
+    if each.electrode is not None:
+        yield from _electrode(each.electrode)
     if each.sample is not None:
-        parts = {key: getattr(each.sample, key) for key in each.sample.__dataclass_fields__}
-        yield f"    sample: {_text({key: part for key, part in parts.items() if part is not None})}"
+        yield f"    sample: {_given(each.sample)}"
+    if each.recovery is not None:
+        factor, uncertainty = each.recovery
+        yield f"    recovery: {{factor: {factor:g}, uncertainty: {uncertainty:g}}}"
+    if each.spike is not None:
+        yield f"    spike: {_given(each.spike)}"
     yield f"    report_in: {each.report_in or f'the unit of the standard{_MARK}'}"
 
 
+def _vessels(levels: Mapping[str, Quantity]) -> str:
+    """A volume or mass for every level, those that differ beside it."""
+    if set(levels) == {""}:
+        return _text(levels[""])
+    return _text({level or "others": quantity for level, quantity in levels.items()}) if levels else ""
+
+
+def _given(record: InternalStandard | SampleRule | Spike, **renamed: str) -> str:
+    """What a record says, without what was left out; ``renamed`` gives the keys of the rule file."""
+    parts = {renamed.get(each.name, each.name): getattr(record, each.name) for each in fields(record)}
+    return _text({key: part for key, part in parts.items() if part not in (None, ())})
+
+
+def _electrode(electrode: Electrode) -> Iterator[str]:
+    yield "    electrode:"
+    yield f"      charge: {electrode.charge}"
+    yield _line(6, "temperature", f"{electrode.temperature:g} Cel", str(_ELECTRODE["temperature"]))
+    yield f"      slope: {_mv(electrode.slope) or f'fitted{_MARK}'}"
+    yield f"      uncertainty: {_mv(electrode.uncertainty) or f'none{_MARK}'}"
+
+
+def _mv(value: float | None) -> str:
+    return "" if value is None else f"{value:g} mV"
+
+
 def _batch(rules: Rulebook) -> Iterator[str]:
-    yield "blanks:"
-    yield _line(2, "background", "subtract signal" if rules.blanks.background else "none", "none")
-    yield _line(2, "process", "subtract amount" if rules.blanks.process else "none", "none")
+    yield from _blanks(rules.blanks)
     if rules.brackets:
-        yield f"brackets: {_text({analyte: known.content for analyte, known in rules.brackets.items()})}"
+        yield "brackets:"
+        yield f"  contents: {_text({analyte: known.content for analyte, known in rules.brackets.items()})}"
+        yield _line(2, "drift", rules.drift, "check")
     if rules.references:
         yield "references:"
         for sample, known in rules.references.items():
             yield f"  {_text(sample)}: {_text({analyte: _known(each) for analyte, each in known.items()})}"
     if rules.tops:
-        yield f"range: {_text({name: f'{top.signal:g} {top.unit}' for name, top in rules.tops.items()})}"
+        yield f"range: {_text(_signals(rules.tops))}"
+    if rules.calibration:
+        yield f"calibration: {_text({'contents': rules.calibration})}"
+    if rules.lines:
+        yield f"lines: {_text({analyte: _reported(each) for analyte, each in rules.lines.items()})}"
+    for overlap in rules.overlap:
+        yield f"overlap: {_text({each.name: getattr(overlap, each.name) for each in fields(overlap)})}"
+    yield from _precision(rules)
     yield "report:"
     yield _line(2, "coverage", _percent(rules.coverage), _percent(_DEFAULTS["report"]["coverage"]))
+
+
+def _blanks(blanks: BlankRule) -> Iterator[str]:
+    yield "blanks:"
+    yield _line(2, "background", "subtract signal" if blanks.background else "none", "none")
+    yield _line(2, "process", "subtract amount" if blanks.process else "none", "none")
+    yield _line(2, "reagent", "subtract amount" if blanks.reagent else "none", "none")
+    if blanks.reagent_amounts:
+        amounts = {analyte: _known(each) for analyte, each in blanks.reagent_amounts.items()}
+        yield f"  reagent amounts: {_text(amounts)}"
+
+
+def _signals(signals: Mapping[str, Top]) -> dict[str, str]:
+    return {name: f"{top.signal:g} {top.unit}" for name, top in signals.items()}
+
+
+def _reported(each: LinesRule) -> dict[str, str]:
+    return {"report": each.report, "agree": "as their fits allow" if each.agree is None else _percent(each.agree)}
+
+
+def _precision(rules: Rulebook) -> Iterator[str]:
+    """Vessels below detection, and where the scatter comes from."""
+    yield "below_detection:"
+    yield _line(2, "use", rules.censored.use, _DEFAULTS["below_detection"]["use"])
+    if rules.censored.signals:
+        yield f"  signals: {_text(_signals(rules.censored.signals))}"
+    usual = _DEFAULTS["precision"]
+    yield "precision:"
+    yield _line(2, "from", rules.precision.comes_from, usual["from"])
+    if rules.precision.noise:
+        noise = {
+            name: {"floor": f"{one.floor:g}", "relative": _percent(one.relative), "unit": one.unit}
+            for name, one in rules.precision.noise.items()
+        }
+        yield f"  noise: {_text(noise)}"
+    yield _line(2, "weights", rules.precision.weights, usual["weights"])
 
 
 def _known(known: Known) -> str:

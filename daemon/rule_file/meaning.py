@@ -12,11 +12,15 @@ import re2
 
 from spikeward.daemon.rule_file.folders import check_decisions, check_folders
 from spikeward.daemon.rule_file.names import check_names, groups_of
-from spikeward.daemon.rule_file.preparations import check_preparations, result_dimensions, told_elsewhere
+from spikeward.daemon.rule_file.preparations import analytes_of, check_preparations, levels_of, told_elsewhere
 from spikeward.daemon.rule_file.problems import ERROR, WARNING
+from spikeward.daemon.rule_file.responses import check_responses
+from spikeward.daemon.rule_file.samples import check_samples, result_dimensions
+from spikeward.daemon.rule_file.signals import check_signals
 from spikeward.daemon.rule_file.walk import Walker, near
 from spikeward.parsers.registry import formats
 from spikeward.rules.naming import number_of
+from spikeward.rules.quantities import UNITS
 from spikeward.rules.records import SERIES_ROLES
 from spikeward.rules.schema_kinds import one_of
 
@@ -26,6 +30,7 @@ Values = Mapping[str, Any]
 def check_meaning(value: Values, walker: Walker) -> None:
     """Look at everything whose parts are sound enough to be looked at."""
     check_folders(value, walker)
+    _check_units(value, walker)
     check_decisions(value["decisions"], walker)
     _check_watches(value, walker)
     for name, reader in (value["readers"] or {}).items():
@@ -35,11 +40,33 @@ def check_meaning(value: Values, walker: Walker) -> None:
     check_names(value, walker)
     _check_standards(value, walker)
     check_preparations(value, walker)
+    check_samples(value, walker)
+    check_responses(value, walker)
+    check_signals(value, walker)
     _check_applies(value, walker)
     _check_levels(value, walker)
     _check_roles(value, walker)
     _check_analytes(value, walker)
     _check_references(value, walker)
+
+
+_PARTS_OF = {
+    "ppm": {"mass per volume": "mg/L", "mass per mass": "mg/kg"},
+    "ppb": {"mass per volume": "ug/L", "mass per mass": "ug/kg"},
+    "ppt": {"mass per volume": "ng/L", "mass per mass": "ng/kg"},
+}
+
+
+def _check_units(value: Values, walker: Walker) -> None:
+    """What ppm may stand for: a millionth of mass in mass, or what that is in a litre of water."""
+    for name, unit in (value["units"] or {}).items():
+        possible = _PARTS_OF[name]
+        if unit is None:
+            continue
+        dimension, factor = UNITS[unit]
+        if dimension not in possible or factor != UNITS[possible[dimension]][1]:
+            expected = one_of(tuple(possible.values()))
+            walker.at(f"units.{name}", "R015", f"{unit} is not what {name} stands for", expected)
 
 
 def _check_watches(value: Values, walker: Walker) -> None:
@@ -93,7 +120,7 @@ def _check_reader(reader: Values, path: str, value: Values, walker: Walker) -> N
         told = "no column of solutions is named, and no rule under names reads the name of the file"
         walker.at(f"{path}.columns", "R010", told, "", "add solution: and its heading")
     groups = {group for rule in value["names"] or () if rule for group in groups_of(rule["match"])}
-    if "analyte" not in columns and not wide and "analyte" not in groups and len(_analytes(value)) != 1:
+    if "analyte" not in columns and not wide and "analyte" not in groups and len(analytes_of(value)) != 1:
         hint = "add analyte: and its heading, or (?P<analyte>…) to the patterns under names"
         walker.at(f"{path}.columns", "R010", "nothing says the analyte, and the standards hold several", "", hint)
 
@@ -233,7 +260,7 @@ def _check_levels(value: Values, walker: Walker) -> None:
             walker.at(path, "R031", f"level {level} stands there twice", "", "delete one of the two")
     if "addition" in set.union(*told_elsewhere(value).values()):
         return
-    made = [_levels_of(each) for each in value["preparations"] or ()]
+    made = [levels_of(each) for each in value["preparations"] or ()]
     for number, levels in enumerate(made):
         lacking = [level for level in dict.fromkeys(expected) if level not in levels]
         if not levels or not lacking:
@@ -244,12 +271,6 @@ def _check_levels(value: Values, walker: Walker) -> None:
         told = f"{_these(lacking)} expected, and the preparation in line {where} says no addition for that"
         hint = "add it under additions: levels, or delete it here; left out, each preparation says its own levels"
         walker.at(path, "R043" if partly else "R031", told, "", hint, WARNING if partly else ERROR)
-
-
-def _levels_of(preparation: Values) -> set[str]:
-    """The levels that a preparation makes; one named 0 is without addition where no other is declared so."""
-    volumes = {number_of(level): volume for level, volume in preparation["additions"]["levels"].items()}
-    return set(volumes) | (set() if any(not each.value for each in volumes.values()) or not volumes else {"0"})
 
 
 def _these(levels: Sequence[str]) -> str:
@@ -279,20 +300,11 @@ def _check_roles(value: Values, walker: Walker) -> None:
             walker.at(path, "R030", f"no naming rule has the role {one_of(roles)}", "", hint)
 
 
-def _analytes(value: Values) -> set[str]:
-    found: set[str] = set()
-    for standard in (value["standards"] or {}).values():
-        if standard is not None:
-            found |= set(standard["contents"] or {})
-            found |= {standard["analyte"]} if standard["analyte"] else set()
-    return found
-
-
 def _check_analytes(value: Values, walker: Walker) -> None:
     """Analytes of brackets and references that no standard holds."""
     if not walker.sound("standards"):
         return
-    analytes = _analytes(value)
+    analytes = analytes_of(value)
     places = [(f"brackets.contents.{each}", each) for each in (value["brackets"] or {}).get("contents") or {}]
     places += [
         (f"references.{sample}.{each}", each)

@@ -16,8 +16,15 @@ from spikeward.rules.quantities import UNITS
 from spikeward.rules.records import SERIES_ROLES
 from spikeward.rules.schema_kinds import one_of
 
-DIMENSIONS = {"mass": "mass", "aliquot": "volume", "addition": "volume", "final": "volume"}
+_CONTENT = ("mass per volume", "amount per volume", "mass per mass", "amount per mass")
+
+DIMENSIONS = {
+    "mass": ("mass",), "volume": ("volume",), "digest": ("volume", "mass"), "aliquot": ("volume", "mass"),
+    "addition": ("volume", "mass", "amount"), "final": ("volume", "mass"), "internal_standard": ("volume", "mass"),
+    "spike": ("volume", "mass"), "content": _CONTENT,
+}  # fmt: skip
 """What a quantity in a name measures, where it needs a unit."""
+_USUAL = {"volume": "mL", "mass": "g", "mass per volume": "mg/L"}
 _UNITLESS = ("dilution", "standard")
 
 Rule = dict[str, Any]
@@ -67,23 +74,21 @@ def _check_groups(rule: Rule, path: str, walker: Walker) -> None:
 
 def _check_units(rule: Rule, path: str, walker: Walker) -> None:
     groups, units = set(groups_of(rule["match"])), rule["units"] or {}
-    for group, dimension in DIMENSIONS.items():
+    for group, dimensions in DIMENSIONS.items():
         if group in groups and group not in units:
             if not walker.sound(f"{path}.units"):
                 continue
             told = f"the {group} in the name has no unit"
-            walker.at(
-                f"{path}.match", "R023", told, "", f"add units: {{{group}: {'mL' if dimension == 'volume' else 'g'}}}"
-            )
+            walker.at(f"{path}.match", "R023", told, "", f"add units: {{{group}: {_USUAL[dimensions[0]]}}}")
     for group, unit in units.items():
         where = f"{path}.units.{group}"
-        expected = DIMENSIONS.get(group, "fraction")
+        expected = DIMENSIONS.get(group, ("fraction",))
         if group not in groups:
             walker.at(where, "R031", f"the pattern has no group {group}", "", f"delete the unit, or add (?P<{group}>…)")
         elif group in _UNITLESS:
             walker.at(where, "R023", f"a {group} has no unit", "", "delete it")
-        elif unit is not None and UNITS[unit][0] != expected:
-            walker.at(where, "R023", f"{unit} is a unit of {UNITS[unit][0]}", f"a unit of {expected}")
+        elif unit is not None and UNITS[unit][0] not in expected:
+            walker.at(where, "R023", f"{unit} is a unit of {UNITS[unit][0]}", f"a unit of {one_of(expected)}")
 
 
 def _check_batches(rules: list[Rule], walker: Walker) -> None:

@@ -1,4 +1,4 @@
-"""Preparations: volumes that fit, a standard that is there, and a way back that leads to the unit of the report."""
+"""Preparations: what was added to what, volumes and masses that fit, and which levels a preparation makes."""
 
 from __future__ import annotations
 
@@ -9,12 +9,11 @@ from typing import Any
 from spikeward.daemon.rule_file.names import groups_of
 from spikeward.daemon.rule_file.walk import Walker, near
 from spikeward.rules.naming import level_order, number_of
-from spikeward.rules.quantities import UNITS
+from spikeward.rules.quantities import Quantity, by_density
 from spikeward.rules.schema_kinds import one_of
 
 Values = Mapping[str, Any]
-
-PER_MASS = {"mass per volume": "mass per mass", "amount per volume": "amount per mass"}
+Levels = dict[str, Quantity]
 
 
 def told_elsewhere(value: Values) -> dict[str, set[str]]:
@@ -25,165 +24,243 @@ def told_elsewhere(value: Values) -> dict[str, set[str]]:
     return {"bench": set(bench), "name": names, "column": columns}
 
 
-def check_preparations(value: Values, walker: Walker) -> None:
-    """Everything that preparations can get wrong once each is one."""
-    elsewhere = told_elsewhere(value)
-    known = set.union(*elsewhere.values())
-    for number, each in enumerate(value["preparations"] or ()):
-        path = f"preparations[{number}]"
-        if each is None:
-            continue
-        _check_standard(each, path, value, walker)
-        _check_volumes(each, path, known, walker)
-        if each["sample"] is not None:
-            _check_sample(each, path, elsewhere, walker)
-        _check_report_unit(each, path, value, walker)
+def additions_of(preparation: Values) -> list[Values]:
+    """The additions of a preparation that are sound enough to be looked at."""
+    return [each for each in preparation["additions"] or () if each is not None]
 
 
-def _check_standard(each: Values, path: str, value: Values, walker: Walker) -> None:
-    standards, named = value["standards"] or {}, (each["additions"] or {}).get("standard")
-    where = f"{path}.additions.standard"
-    if not walker.sound(where) or not walker.sound(f"{path}.additions") and not named:
-        return
-    if named and named not in standards:
-        meant = near(named, standards)
-        hint = f"did you mean {meant}?" if meant else "add it there"
-        walker.at(where, "R030", f"the standard '{named}' is not under standards", "", hint)
-    elif not named and len(standards) > 1:
-        walker.at(
-            where,
-            "R010",
-            "the standard is missing, and there are several",
-            "",
-            f"add standard: {one_of(tuple(standards))}",
-        )
+def standards_of(preparation: Values, standards: Values) -> list[Values]:
+    """The standards of a preparation that are there, in the order of its additions."""
+    only = next(iter(standards)) if len(standards) == 1 else ""
+    # Where no addition is declared, quantities from elsewhere are of the only standard.
+    additions = additions_of(preparation) or [{"standard": None, "amounts": None}]
+    names = [each["standard"] or only for each in additions if not each["amounts"]]
+    return [standard for name in names if (standard := standards.get(name))]
 
 
-def _check_volumes(each: Values, path: str, known: set[str], walker: Walker) -> None:
-    parts = (f"{path}.additions", f"{path}.aliquot", f"{path}.final", f"{path}.design")
-    if each["additions"] is None or each["aliquot"] is None or not walker.sound(*parts):
-        return
-    additions = _once(each["additions"]["levels"], f"{path}.additions.levels", walker)
-    aliquots = _once(each["aliquot"]["levels"], f"{path}.aliquot.levels", walker)
-    aliquot = each["aliquot"]["volume"]
-    if not additions and "addition" not in known:
-        walker.at(
-            f"{path}.additions.levels", "R010", "no level says its addition", "", "add levels: {0: 0 mL, 1: 0.25 mL}"
-        )
-    elif additions and not any(volume.value for volume in additions.values()) and "addition" not in known:
-        walker.at(f"{path}.additions.levels", "R031", "no level adds any standard", "", "give the volumes of standard")
-    if aliquot is None and "aliquot" not in known:
-        lacking = sorted({*additions} - {*aliquots}, key=level_order)
-        if lacking or not aliquots:
-            told = f"level {lacking[0]} has no aliquot" if aliquots else "the aliquot is missing"
-            walker.at(f"{path}.aliquot", "R010", told, "", "add aliquot: 10 mL")
-    _check_design(each, path, additions, known, walker)
-    if each["final"] and (aliquot is not None or aliquots):
-        _check_fit(each, path, additions, {"": aliquot, **aliquots} if aliquot else aliquots, walker)
+def levels_of(preparation: Values) -> set[str]:
+    """The levels that a preparation makes; one named 0 is without addition where no other is declared so."""
+    volumes = total_by_level(preparation)
+    return set(volumes) | (set() if any(not each for each in volumes.values()) or not volumes else {"0"})
 
 
-def _once(levels: Values | None, path: str, walker: Walker) -> dict[str, Any]:
-    """Volumes by level as levels are compared: 01 and 1 are one, and stand twice."""
-    found: dict[str, Any] = {}
-    for level, volume in (levels or {}).items():
-        name = number_of(level)
-        if name in found:
-            walker.at(f"{path}.{level}", "R031", f"level {name} stands here twice", "", "delete one of the two")
-        found[name] = volume
+def total_by_level(preparation: Values) -> dict[str, Decimal]:
+    """Whether anything is added at each declared level: the sum of its numbers, whatever their units."""
+    found: dict[str, Decimal] = {}
+    for each in additions_of(preparation):
+        for level, quantity in (each["amounts"] or each["levels"] or {}).items():
+            if quantity is not None:
+                found[number_of(level)] = found.get(number_of(level), Decimal(0)) + quantity.value
     return found
 
 
-def _check_design(each: Values, path: str, additions: Values, known: set[str], walker: Walker) -> None:
-    design = each["design"]
-    if design == "flasks" and not each["final"] and "final" not in known:
-        walker.at(path, "R010", "flasks are made up to a final volume, which is missing", "", "add final: 25 mL")
-    if design == "successive" and each["final"]:
-        hint = "delete final; aliquot, diluent and additions say the volume"
-        walker.at(f"{path}.final", "R031", "successive additions have no common final volume", "", hint)
-    if design == "single" and additions:
-        _check_single(additions, f"{path}.additions.levels", walker)
+def check_preparations(value: Values, walker: Walker) -> None:
+    """What preparations say about vessels, once each is one."""
+    known = set.union(*told_elsewhere(value).values())
+    for number, each in enumerate(value["preparations"] or ()):
+        if each is not None:
+            path = f"preparations[{number}]"
+            _check_standards(each, path, value, walker)
+            _check_vessels(each, path, known, walker, value["standards"] or {})
 
 
-def _check_single(additions: Values, path: str, walker: Walker) -> None:
-    """Two levels of any names: one without addition, which may be left out where it is named 0, and one with."""
-    without = [level for level, volume in additions.items() if not volume.value]
-    added = len(additions) - len(without)
-    if len(without) == 1 and added == 1 or not without and added == 1 and "0" not in additions:
-        return
-    if not added:
-        return  # said already: no level adds any standard
-    hint = "give one level 0 mL and one an addition"
-    told = "a single addition has two levels, one without and one with an addition"
-    walker.at(path, "R031", told, "", hint if len(additions) < 3 else f"{hint}, or say design: flasks")
-
-
-def _check_fit(each: Values, path: str, additions: Values, aliquots: Values, walker: Walker) -> None:
-    final = each["final"]["volume"].in_unit("mL")
-    diluent = each["diluent"].in_unit("mL") if each["diluent"] else Decimal(0)
-    before = Decimal(0)
-    for level in sorted(additions, key=level_order):
-        volume = additions[level].in_unit("mL")
-        if each["additions"]["deliveries"] == "each":
-            volume = before = before + volume
-        aliquot = aliquots.get(level, aliquots.get(""))
-        if aliquot is None or (each["level_0"] == "undiluted" and not volume):
+def _check_standards(each: Values, path: str, value: Values, walker: Walker) -> None:
+    standards = value["standards"] or {}
+    if not each["additions"] and len(standards) > 1 and "addition" in set.union(*told_elsewhere(value).values()):
+        told = "additions come from elsewhere, and there are several standards"
+        walker.at(f"{path}.additions", "R010", told, "", f"add additions: {{standard: {next(iter(standards))}}}")
+    for number, addition in enumerate(each["additions"] or ()):
+        where = f"{path}.additions[{number}]"
+        if addition is None or not walker.sound(f"{where}.standard"):
             continue
-        mixed = aliquot.in_unit("mL") + diluent + volume
-        if mixed > final:
-            volumes = f"{mixed.normalize():f} mL, the final volume {final.normalize():f} mL"
-            told = f"level {level}: aliquot and additions are {volumes}"
-            walker.at(f"{path}.final", "R031", told, "", "correct the volumes")
+        named = addition["standard"]
+        if addition["amounts"]:
+            _check_amounts(addition, each, where, value, walker)
+        elif named:
+            check_standard(named, f"{where}.standard", standards, walker)
+        if walker.sound("standards", where):
+            _check_density(addition, where, standards, walker)
+        if named or addition["amounts"]:
+            continue
+        if len(standards) > 1 and walker.sound(where):
+            hint = f"add standard: {one_of(tuple(standards))}"
+            walker.at(f"{where}.standard", "R010", "the standard is missing, and there are several", "", hint)
+
+
+def _check_density(addition: Values, where: str, standards: Values, walker: Walker) -> None:
+    """A standard whose content is per volume and that is weighed, or the other way, needs its density."""
+    name = addition["standard"] or (next(iter(standards)) if len(standards) == 1 else "")
+    standard = standards.get(name)
+    if not standard or standard["density"] is not None or addition["amounts"]:
+        return
+    ofs = {
+        content.dimension.partition(" per ")[2]
+        for content in (*(standard["contents"] or {}).values(), standard["content"])
+        if content is not None
+    }
+    for level, quantity in (addition["levels"] or {}).items():
+        if quantity.value and ofs - {quantity.dimension}:
+            told = f"a {quantity.dimension} of {name}, whose content is per {one_of(tuple(sorted(ofs)))}"
+            hint = f"give it by {one_of(tuple(sorted(ofs)))}, or add density to the standard"
+            walker.at(f"{where}.levels.{level}", "R010", told, "", hint)
             return
 
 
-def _check_sample(each: Values, path: str, elsewhere: Mapping[str, set[str]], walker: Walker) -> None:
-    base, sample = f"{path}.sample", each["sample"]
-    for quantity, source in sample.items():
-        if isinstance(source, str) and quantity not in elsewhere[source]:
-            hint = {
-                "bench": f"add {quantity} to the columns under bench",
-                "name": f"put (?P<{quantity}>…) into a pattern under names",
-                "column": f"add {quantity} to the columns of a reader",
-            }[source]
-            section = {"bench": "bench", "name": "names", "column": "readers"}[source]
-            if walker.sound(section):
-                walker.at(f"{base}.{quantity}", "R030", f"no {source} gives the {quantity.replace('_', ' ')}", "", hint)
-    if not walker.sound(base):
+def check_standard(named: str, where: str, standards: Values, walker: Walker) -> None:
+    """A standard that is named must be there."""
+    if named not in standards:
+        meant = near(named, standards)
+        hint = f"did you mean {meant}?" if meant else "add it there"
+        walker.at(where, "R030", f"the standard '{named}' is not under standards", "", hint)
+
+
+def _check_amounts(addition: Values, each: Values, where: str, value: Values, walker: Walker) -> None:
+    """Amounts of the analyte itself: of no standard, and of one analyte."""
+    for other in ("levels", "standard"):
+        if addition[other]:
+            told = f"amounts are of the analyte itself, and {other} stands beside them"
+            walker.at(f"{where}.amounts", "R031", told, "", "delete one of the two")
+    if len(analytes_of(value)) > 1 and "analyte" not in each["for"]:
+        told = "amounts are of one analyte, and this preparation is for several"
+        walker.at(f"{where}.amounts", "R031", told, "", "add for: {analyte: Cd}")
+
+
+def analytes_of(value: Values) -> set[str]:
+    """The analytes of all standards."""
+    found: set[str] = set()
+    for standard in (value["standards"] or {}).values():
+        if standard is not None:
+            found |= set(standard["contents"] or {})
+            found |= {standard["analyte"]} if standard["analyte"] else set()
+    return found
+
+
+def _check_vessels(each: Values, path: str, known: set[str], walker: Walker, standards: Values) -> None:
+    parts = (f"{path}.additions", f"{path}.aliquot", f"{path}.final", f"{path}.design", f"{path}.spiked")
+    if each["aliquot"] is None or not walker.sound(*parts):
         return
-    mass, volume, digest = (sample[name] is not None for name in ("mass", "volume", "digest"))
-    if mass and volume:
-        walker.at(base, "R031", "the sample has a mass and a volume", "", "delete one of the two")
-    elif digest and not (mass or volume) and each["for"].get("role") != "process_blank":  # which holds no sample
-        walker.at(base, "R010", "a digest needs the mass or the volume of the sample", "", "add mass, or say dilution")
-    elif (mass or volume) and not digest:
-        taken = "mass" if mass else "volume"
-        walker.at(
-            base, "R010", f"the {taken} of the sample needs the volume that it was made up to", "", "add digest: 50 mL"
+    for number, addition in enumerate(additions_of(each)):
+        for key in ("levels", "amounts"):
+            once(addition[key], f"{path}.additions[{number}].{key}", walker)
+    added = total_by_level(each)
+    where = f"{path}.additions[0].levels" if each["additions"] else f"{path}.additions"
+    if "addition" not in known:
+        if not added:
+            walker.at(where, "R010", "no level says its addition", "", "add levels: {0: 0 mL, 1: 0.25 mL}")
+        elif not any(added.values()):
+            walker.at(where, "R031", "no level adds any standard", "", "give the volumes of standard")
+    if each["spiked"] == "sample":
+        return
+    aliquots = _of_levels(each["aliquot"], f"{path}.aliquot", walker)
+    finals = _of_levels(each["final"], f"{path}.final", walker) if each["final"] else {}
+    if "" not in aliquots and "aliquot" not in known:
+        lacking = sorted({*added} - {*aliquots}, key=level_order)
+        if lacking or not aliquots:
+            told = f"level {lacking[0]} has no aliquot" if aliquots else "the aliquot is missing"
+            walker.at(f"{path}.aliquot", "R010", told, "", "add aliquot: 10 mL")
+    _check_design(each, path, added, {"aliquot": aliquots, "final": finals}, known, walker)
+    if finals and aliquots:
+        _check_fit(each, path, finals, aliquots, walker, standards)
+
+
+def once(levels: Values | None, path: str, walker: Walker) -> Levels:
+    """Quantities by level as levels are compared: 01 and 1 are one, and stand twice."""
+    found: Levels = {}
+    for level, quantity in (levels or {}).items():
+        name = number_of(level)
+        if name in found:
+            walker.at(f"{path}.{level}", "R031", f"level {name} stands here twice", "", "delete one of the two")
+        found[name] = quantity
+    return found
+
+
+def _of_levels(block: Values, path: str, walker: Walker) -> Levels:
+    """Volumes or masses by level, that of every level under an empty name."""
+    found = once(block["levels"], f"{path}.levels", walker)
+    if block["volume"] is not None and block["mass"] is not None:
+        walker.at(path, "R031", "there are a volume and a mass for every level", "", "delete one of the two")
+    common = block["volume"] if block["volume"] is not None else block["mass"]
+    if common is not None:
+        found[""] = common
+    return found
+
+
+def _check_design(
+    each: Values,
+    path: str,
+    added: Mapping[str, Decimal],
+    vessels: Mapping[str, Levels],
+    known: set[str],
+    walker: Walker,
+) -> None:
+    design = each["design"]
+    if design == "flasks" and not vessels["final"] and "final" not in known:
+        walker.at(path, "R010", "flasks are made up to a final volume, which is missing", "", "add final: 25 mL")
+    if design == "successive" and "" in vessels["final"]:
+        hint = "delete final; aliquot, diluent and additions say the volume"
+        walker.at(f"{path}.final", "R031", "successive additions have no common final volume", "", hint)
+    if design == "single" and added:
+        _check_single(
+            added, f"{path}.additions[0].{'amounts' if additions_of(each)[0]['amounts'] else 'levels'}", walker
         )
-    if sample["dry_matter"] is not None and not mass:
-        walker.at(f"{base}.dry_matter", "R031", "dry matter needs the mass of the sample", "", "add mass and digest")
+    if design == "weighed" and not _weighs(each, vessels) and not known & {"aliquot", "addition", "final"}:
+        hint = "give aliquot, additions or final by mass, or say design: flasks"
+        walker.at(path, "R031", "vessels made by mass, and no mass is given", "", hint)
 
 
-def result_dimensions(each: Values, value: Values) -> set[str]:
-    """What the results of a preparation measure; empty where the file does not say yet."""
-    standards = value["standards"] or {}
-    named = (each["additions"] or {}).get("standard")
-    chosen = standards.get(named) if named else next(iter(standards.values()), None)
-    if not chosen:
-        return set()
-    contents = [*(chosen["contents"] or {}).values(), chosen["content"]]
-    found = {content.dimension for content in contents if content is not None}
-    by_mass = bool(each["sample"]) and each["sample"]["mass"] is not None
-    return {PER_MASS[dimension] for dimension in found} if by_mass else found
+def _weighs(each: Values, vessels: Mapping[str, Levels]) -> bool:
+    quantities = [quantity for levels in vessels.values() for quantity in levels.values()]
+    quantities += [quantity for addition in additions_of(each) for quantity in (addition["levels"] or {}).values()]
+    return any(quantity.dimension == "mass" for quantity in quantities)
 
 
-def _check_report_unit(each: Values, path: str, value: Values, walker: Walker) -> None:
-    parts = (f"{path}.report_in", f"{path}.sample", f"{path}.additions", "standards")
-    if not walker.sound(*parts):
+def _check_single(added: Mapping[str, Decimal], path: str, walker: Walker) -> None:
+    """Two levels of any names: one without addition, which may be left out where it is named 0, and one with."""
+    without = [level for level, amount in added.items() if not amount]
+    spiked = len(added) - len(without)
+    if len(without) == 1 and spiked == 1 or not without and spiked == 1 and "0" not in added:
         return
-    where, unit, found = f"{path}.report_in", each["report_in"], result_dimensions(each, value)
-    if unit and found and found != {UNITS[unit][0]}:
-        told = f"{unit} is a unit of {UNITS[unit][0]}; standard and sample lead to {one_of(tuple(sorted(found)))}"
-        walker.at(where, "R015", told, "", "give mass and digest for a content per mass, or correct the unit")
-    elif not unit and found == {"amount per mass"}:
-        walker.at(where, "R010", "report_in is missing", "", "add report_in: mmol/kg")
+    if not spiked:
+        return  # said already: no level adds any standard
+    hint = "give one level 0 mL and one an addition"
+    told = "a single addition has two levels, one without and one with an addition"
+    walker.at(path, "R031", told, "", hint if len(added) < 3 else f"{hint}, or say design: flasks")
+
+
+def _check_fit(each: Values, path: str, finals: Levels, aliquots: Levels, walker: Walker, standards: Values) -> None:
+    """Whether what goes into a vessel fits into it, where all of it can be compared."""
+    unit = {"volume": "mL", "mass": "g"}
+    for level in sorted(levels_of(each), key=level_order):
+        aliquot, final = aliquots.get(level, aliquots.get("")), finals.get(level, finals.get(""))
+        held = _added_by(each, level, standards)
+        if (
+            aliquot is None
+            or final is None
+            or (each["level_0"] == "undiluted" and not any(one.value for one, _ in held))
+        ):
+            continue
+        kind = final.dimension
+        held += [(aliquot, each["density"])] + ([(each["diluent"], None)] if each["diluent"] else [])
+        parts = [by_density(quantity, kind, density) for quantity, density in held]
+        mixed = sum((part.in_unit(unit[kind]) for part in parts if part is not None), Decimal(0))
+        full = final.in_unit(unit[kind])
+        if None not in parts and mixed > full:
+            amounts = f"{mixed.normalize():f} {unit[kind]}, the final {kind} {full.normalize():f} {unit[kind]}"
+            told = f"level {level}: aliquot and additions are {amounts}"
+            walker.at(f"{path}.final", "R031", told, "", f"correct the {'volumes' if kind == 'volume' else 'masses'}")
+            return
+
+
+def _added_by(each: Values, level: str, standards: Values) -> list[tuple[Quantity, Quantity | None]]:
+    """Volumes or masses of standard in one level, each with the density of its standard."""
+    found: list[tuple[Quantity, Quantity | None]] = []
+    for addition in additions_of(each):
+        levels = {number_of(name): quantity for name, quantity in (addition["levels"] or {}).items()}
+        standard = standards.get(addition["standard"] or next(iter(standards), ""))
+        density = standard["density"] if standard else None
+        successive = addition["deliveries"] == "each" or (
+            addition["deliveries"] is None and each["design"] == "successive"
+        )
+        before = [name for name in levels if level_order(name) <= level_order(level)] if successive else [level]
+        found += [(levels[name], density) for name in before if name in levels]
+    return found

@@ -167,8 +167,9 @@ def _units_part() -> str:
     rows = "".join(f"| {dimension} | {', '.join(codes)} |\n" for dimension, codes in by_dimension.items())
     return (
         "\n## Units\n\nCommon other spellings are understood (`µL`, `ml`, `mg L-1`, `mg·L⁻¹`, `mM`). "
-        "`ppm` and `ppb` are refused,\n"
-        "since they do not say whether they are per volume or per mass; so is a decimal comma.\n\n"
+        "`ppm`, `ppb` and `ppt` do\n"
+        "not say whether they are per volume or per mass: they are refused unless `units` says it. So is a decimal "
+        "comma.\n\n"
         f"| measures | units |\n| --- | --- |\n{rows}"
     )
 

@@ -9,6 +9,7 @@ from typing import Any
 
 from spikeward.daemon.rule_file.problems import ERROR, MOST_PROBLEMS, Problem
 from spikeward.daemon.rule_file.yaml_text import KINDS, LIST, MAP, SCALAR, Node
+from spikeward.rules.quantities import in_plain_units, unit_code
 from spikeward.rules.schema_kinds import Scalar, one_of
 from spikeward.rules.schema_shapes import WITH_ITS_DEFAULTS, Block, Field, Limits, ListOf, MapOf, Shape, kind_of
 
@@ -39,10 +40,13 @@ class Walker:
         self.places: dict[str, Node] = {}
         self.keys: dict[str, Node] = {}
         self._root = root
+        self._meanings: dict[str, str] = {}  # of ppm, ppb and ppt
 
     def walk(self, node: Node, shape: Shape, path: str) -> Any:
         """The value of a node, or None where it is wrong; wrong entries of a list are None."""
         self.places[path] = node
+        if not path:
+            self._meanings = _meanings_of(node)
         if isinstance(shape, Limits):
             return node
         if node.kind == SCALAR and not node.text and (node.plain or not isinstance(shape, Scalar)):
@@ -70,7 +74,7 @@ class Walker:
             self.at_node(node, path, "R013", "the value is empty", shape.expected)
             return None
         try:
-            return shape.convert(node.text)
+            return shape.convert(in_plain_units(node.text, self._meanings) if shape.code == "R015" else node.text)
         except ValueError as error:
             suggestion = near(node.text, shape.words)
             hint = f"did you mean {suggestion}?" if suggestion else ""
@@ -233,11 +237,18 @@ def _default(field: Field) -> Any:
     return {} if isinstance(shape, MapOf) else None
 
 
+def _meanings_of(root: Node) -> dict[str, str]:
+    """What the file says that ppm, ppb and ppt mean, wherever it says so."""
+    units = next((value for key, value in root.entries if key.text == "units" and value.kind == MAP), None)
+    entries = units.entries if units is not None else []
+    return {key.text: code for key, value in entries if value.kind == SCALAR and (code := unit_code(value.text))}
+
+
 def _deeper(block: Block) -> str:
-    """The only key of a block that holds free names, which are easily written one level too high; else nothing."""
-    field = block.fields[0]
-    free = len(block.fields) == 1 and isinstance(field.shape, MapOf) and not field.shape.keys
-    return field.name if free else ""
+    """The first key of a block, if it alone holds free names, which are easily written one level too high."""
+    field, *others = block.fields
+    free = isinstance(field.shape, MapOf) and not field.shape.keys
+    return field.name if free and all(isinstance(other.shape, Scalar) for other in others) else ""
 
 
 def _homes(block: Block, name: str, path: str = "", of_maps: bool = False) -> list[str]:

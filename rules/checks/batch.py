@@ -62,7 +62,10 @@ def _brackets(context: Context) -> list[Check]:
         return []
     limits = context.rules.checks.get("brackets", NO_LIMITS)
     checks = []
-    for analyte, line in sorted(context.brackets):
+    potentials = {
+        line for (_, line), every in context.solved.items() if any(one.prepared.response == "log" for one in every)
+    }
+    for analyte, line in sorted(set(context.brackets) - potentials):
         visits = context.brackets[analyte, line]
         check = drift(visits, visits, limits) if len(visits) > 1 else None
         if check is not None:

@@ -3,81 +3,28 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import replace
 
 from spikeward.rules.checks.subject import (
-    Bracket,
-    LineKey,
     Subject,
     as_percent,
     graded,
     near_limits,
     not_evaluated,
+    not_straight,
     number,
     plain,
     source_of,
 )
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check
-from spikeward.rules.records import Reading
 from spikeward.rules.rulebook import Limits
 from spikeward.rules.series import one_sequence
-from spikeward.rules.solve.solved import Background
-from spikeward.rules.solve.transform import unusable, vessel_signal
+from spikeward.rules.solve.drift import Bracket
+from spikeward.rules.solve.vessel_signal import vessel_signal
 
 _NEEDS_TIMES = "Declare the column measured_at"
 _ASKED = "the rule file, which asks for brackets"
-
-
-def visits(
-    readings: Sequence[Reading], backgrounds: Mapping[LineKey, Background]
-) -> tuple[dict[LineKey, tuple[Bracket, ...]], frozenset[LineKey]]:
-    """The visits to the bracketing solution, line by line, in acquisition order.
-
-    Readings of one line that follow each other without another solution between them are one visit.
-
-    Parameters
-    ----------
-    readings : of every role of one batch, in force
-
-    Returns
-    -------
-    the visits by (analyte, line), and the lines on which the brackets themselves cannot be put in order. Other readings
-    that cannot be placed beside them are passed over: each series answers for its own
-    """
-    by_line: dict[LineKey, list[Reading]] = {}
-    for reading in readings:
-        by_line.setdefault((reading.analyte, reading.line), []).append(reading)
-    found: dict[LineKey, tuple[Bracket, ...]] = {}
-    untimed: set[LineKey] = set()
-    for line, of_line in by_line.items():
-        marks = [reading for reading in of_line if reading.series.role == "bracket"]
-        if not one_sequence(marks):
-            untimed.add(line)
-            continue
-        placed = [reading for reading in of_line if marks and one_sequence([*marks[:1], reading])]
-        ordered = sorted(placed, key=lambda r: (r.when, r.series, r.solution, r.reading, r.path, r.row))
-        runs: list[list[Reading]] = []
-        fresh = True
-        for reading in ordered:
-            if reading.series.role != "bracket":
-                fresh = True
-            elif fresh:
-                runs.append([reading])
-                fresh = False
-            else:
-                runs[-1].append(reading)
-        found[line] = tuple(_bracket(run, backgrounds.get(line)) for run in runs)
-    return found, frozenset(untimed)
-
-
-def _bracket(run: Sequence[Reading], background: Background | None) -> Bracket:
-    sensitivity = None
-    if unusable(run) is None and len({reading.unit for reading in run}) == 1:
-        sensitivity = vessel_signal(run).mean
-        if background is not None and not background.problem and not any("blank" in r.already for r in run):
-            sensitivity = sensitivity - background.mean if background.unit == run[0].unit else None
-    return Bracket(run[0].when, run[-1].when, run[0].solution, sensitivity, tuple(run))
 
 
 def around(subject: Subject) -> tuple[Bracket, ...]:
@@ -103,6 +50,8 @@ def brackets(subject: Subject, limits: Limits) -> Check:
     rules, line = subject.context.rules, subject.line_key
     if not rules.brackets and "bracket" not in rules.series.closes_with:
         return not_evaluated("brackets", "the rules ask for no brackets", "Declare brackets, and measure them")
+    if subject.solved.prepared.response == "log":
+        return not_evaluated("brackets", f"{not_straight(subject)}: potentials of brackets are no sensitivity")
     if any("drift" in reading.already for reading in subject.readings):
         return not_evaluated("brackets", "the export had its drift corrected already", "Export uncorrected signals")
     every, near = subject.context.brackets.get(line, ()), around(subject)

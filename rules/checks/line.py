@@ -3,17 +3,19 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 
 from scipy import special
 
 from spikeward.rules.checks.subject import (
+    BLANK_ROLES,
     Subject,
     as_percent,
     capital,
     graded,
     near_limits,
     not_evaluated,
+    not_straight,
     number,
     plain,
     source_of,
@@ -21,7 +23,7 @@ from spikeward.rules.checks.subject import (
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check, Estimate, Point
 from spikeward.rules.rounding import figure, percent
 from spikeward.rules.rulebook import Limits
-from spikeward.rules.solve.transform import unusable, vessel_name, why_unusable
+from spikeward.rules.solve.vessel_signal import unusable, vessel_name, why_unusable
 from spikeward.rules.words import counted
 
 
@@ -38,8 +40,8 @@ def covers_zero(estimate: Estimate) -> bool:
 def near_zero(subject: Subject) -> str:
     """Why a ratio to the content would mean nothing, or an empty text."""
     content = subject.solved.content
-    if subject.role == "process_blank":
-        return "a process blank is expected near zero"
+    if subject.role in BLANK_ROLES:
+        return f"a {subject.role.replace('_', ' ')} is expected near zero"
     if content is None:
         return "there is no content"
     if content.content <= 0 or covers_zero(content):
@@ -50,6 +52,16 @@ def near_zero(subject: Subject) -> str:
 def no_line(subject: Subject) -> bool:
     """Whether no line was drawn, so that nothing can be said about it."""
     return subject.solved.slope is None
+
+
+def no_straight_line(subject: Subject) -> str:
+    """Why the points cannot be held against one straight line, or an empty text."""
+    if why := not_straight(subject):
+        return why
+    runs = {point.block for point in fitted_points(subject)}
+    if len(runs) > 1:
+        return f"the series was measured in {len(runs)} runs, each with a line of its own"
+    return "there is no line" if no_line(subject) else ""
 
 
 def unread_vessel(subject: Subject) -> bool:
@@ -98,6 +110,8 @@ def response(subject: Subject, limits: Limits) -> Check:
     """Whether the signal answers to the additions: g = t² u(b)² / b², the slope's relative half-width squared."""
     g, slope = subject.solved.g, subject.solved.slope
     remedy = "Add more standard, or measure more vessels; look for a lost addition or a dead signal"
+    if why := not_straight(subject):
+        return not_evaluated("response", f"{why}, which has no one slope")
     if slope is not None and slope <= 0:
         return plain("response", FAIL, "The signal does not rise with the additions.", remedy, "theory")
     if g is None or slope is None:
@@ -120,8 +134,8 @@ def response(subject: Subject, limits: Limits) -> Check:
 def correlation(subject: Subject, limits: Limits) -> Check:
     """The correlation coefficient, where a method demands one; it is no proof of a straight line."""
     r = subject.solved.correlation
-    if no_line(subject):
-        return not_evaluated("correlation", "there is no line")
+    if why := no_straight_line(subject):
+        return not_evaluated("correlation", why)
     if r is None or subject.solved.degrees_of_freedom < 1:
         return not_evaluated("correlation", "two points always lie on a line", "Measure more levels")
     show = f"r is {r:.5f} over {len(fitted_points(subject))} vessels"
@@ -136,20 +150,20 @@ def residual(subject: Subject, limits: Limits) -> Check:
     is not taken for a slip.
     """
     points = [point for point in fitted_points(subject) if point.fitted is not None]
-    if no_line(subject):
+    if subject.solved.prepared.response == "log":
+        return not_evaluated("residual", f"{not_straight(subject)}, and a share of a potential means nothing")
+    if no_line(subject) and not points:
         return not_evaluated("residual", "there is no line")
     if subject.solved.degrees_of_freedom < 1 or not points:
         return not_evaluated("residual", "no degree of freedom is left for residuals", "Measure more levels")
-    fitted = [abs(_fitted(point)) * point.matrix_share for point in points]  # as signals, before the volumes
+    fitted = [abs(_fitted(point)) / point.factor for point in points]  # as signals, before the volumes
     floor = (number(limits, "floor") or 0.0) * max(fitted)
     scale = [max(one, floor) for one in fitted]
     if min(scale) == 0:
         return not_evaluated("residual", "the fitted signal of a vessel is zero")
-    sizes = [
-        abs(point.y - _fitted(point)) * point.matrix_share / size for point, size in zip(points, scale, strict=True)
-    ]
+    sizes = [abs(point.y - _fitted(point)) / point.factor / size for point, size in zip(points, scale, strict=True)]
     largest = max(sizes)
-    where = vessel_name(points[sizes.index(largest)].level, points[sizes.index(largest)].vessel)
+    where = _vessel(points[sizes.index(largest)])
     against = "its fitted signal"
     if floor > fitted[sizes.index(largest)]:
         against = f"{percent(number(limits, 'floor') or 0.0)} of the largest fitted signal"
@@ -163,33 +177,42 @@ def studentised(subject: Subject, limits: Limits) -> Check:
 
     With n vessels it cannot exceed sqrt(n - 2). Critical value by Bonferroni's bound (Cook and Weisberg, Residuals and
     Influence in Regression, 1982, 2.2.2): t sqrt((n-2)/(n-3+t²)) with t at p/(2n) and n-3 degrees of freedom. With the
-    weights of the line, w = (V0/V)², the leverage is w (1/Sw + (x - xbar)²/Sxx) and the residual counts sqrt(w) times.
+    weights w of the line the leverage is w (1/Sw + (x - xbar)²/Sxx) and the residual counts sqrt(w) times. The scatter
+    is always that of the residuals themselves, also where the uncertainty comes from elsewhere.
     """
-    if no_line(subject):
-        return not_evaluated("studentised", "there is no line")
+    if why := no_straight_line(subject):
+        return not_evaluated("studentised", why)
     points = [point for point in fitted_points(subject) if point.fitted is not None]
-    s, x_mean, sxx = subject.solved.residual_sd, subject.solved.x_mean, subject.solved.sxx
     n, needed = len(points), int(number(limits, "needs_vessels") or 5)
-    if n < needed or not s or x_mean is None or not sxx:
+    scattered = n >= max(needed, 4) and subject.solved.residual_sd
+    ratios = _studentised_ratios(points) if scattered else None
+    if ratios is None:
         bound = f"; with {n} it cannot exceed {math.sqrt(n - 2):.2f}" if n > 2 else ""
         return not_evaluated(
             "studentised", f"no power below {needed} vessels{bound}" if n < needed else "there is no scatter",
             f"{needed} or more vessels",
         )  # fmt: skip
-    weights = [point.matrix_share**2 for point in points]
-    total = math.fsum(weights)
-    leverages = [w * (1 / total + (p.x - x_mean) ** 2 / sxx) for w, p in zip(weights, points, strict=True)]
-    ratios = [
-        abs(point.y - _fitted(point)) * point.matrix_share / (s * math.sqrt(max(1 - leverage, 1e-12)))
-        for point, leverage in zip(points, leverages, strict=True)
-    ]
     largest = max(ratios)
-    where = vessel_name(points[ratios.index(largest)].level, points[ratios.index(largest)].vessel)
+    where = _vessel(points[ratios.index(largest)])
     sentence = f"The largest studentised residual is {largest:.3f}, of {where}"
     return _significance(
         "studentised", largest, limits, sentence, f"Look for a slip in {where}; prepare and measure it again",
         lambda p: _studentised_critical(p, n),
     )  # fmt: skip
+
+
+def _studentised_ratios(points: Sequence[Point]) -> list[float] | None:
+    """Internally studentised residuals without their sign; None where there is no scatter."""
+    w = [point.weight for point in points]
+    total = math.fsum(w)
+    x_mean = math.fsum(v * point.x for v, point in zip(w, points, strict=True)) / total
+    sxx = math.fsum(v * (point.x - x_mean) ** 2 for v, point in zip(w, points, strict=True))
+    left = [math.sqrt(v) * abs(point.y - _fitted(point)) for v, point in zip(w, points, strict=True)]
+    s = math.hypot(*left) / math.sqrt(len(points) - 2)
+    if not s > 0.0 or not sxx > 0.0:
+        return None
+    leverages = [v * (1 / total + (point.x - x_mean) ** 2 / sxx) for v, point in zip(w, points, strict=True)]
+    return [one / (s * math.sqrt(max(1 - leverage, 1e-12))) for one, leverage in zip(left, leverages, strict=True)]
 
 
 def _studentised_critical(p: float, n: int) -> float:
@@ -231,6 +254,9 @@ def span(subject: Subject, limits: Limits) -> Check:
 def matrix_spread(subject: Subject, limits: Limits) -> Check:
     """How much the share of test solution differs between vessels: volumes are corrected for, the matrix is not."""
     shares = [point.matrix_share for point in fitted_points(subject)]
+    if subject.solved.prepared.response == "log":
+        why = f"{not_straight(subject)}, and its buffer is what holds the matrix"
+        return not_evaluated("matrix_spread", why)
     if len(shares) < 2:
         return not_evaluated("matrix_spread", "fewer than two vessels are known")
     spread = max(shares) / min(shares) - 1
@@ -242,6 +268,10 @@ def matrix_spread(subject: Subject, limits: Limits) -> Check:
         "Take equal aliquots and make every vessel up to one volume, so that all hold the same matrix",
         show=as_percent,
     )  # fmt: skip
+
+
+def _vessel(point: Point) -> str:
+    return vessel_name(point.level, point.vessel, point.block)
 
 
 def _fitted(point: Point) -> float:

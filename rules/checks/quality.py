@@ -6,6 +6,7 @@ from dataclasses import replace
 
 from spikeward.rules.checks.line import covers_zero, fitted_points, near_zero
 from spikeward.rules.checks.subject import (
+    BLANK_ROLES,
     Subject,
     as_percent,
     graded,
@@ -34,7 +35,7 @@ def expanded_uncertainty(subject: Subject, limits: Limits) -> Check:
     name = "expanded_uncertainty"
     if estimate is not None and _below_zero(estimate):
         return _negative(subject, estimate)
-    if subject.role == "process_blank":
+    if subject.role in BLANK_ROLES:
         return not_evaluated(name, near_zero(subject))
     if estimate is None or estimate.expanded_uncertainty is None:
         why = estimate.reason if estimate is not None and estimate.reason else "there is no uncertainty"
@@ -76,14 +77,14 @@ def _negative(subject: Subject, estimate: Estimate) -> Check:
     why, remedy = "though nothing was subtracted", "Look at the zero of the instrument and at the unspiked vessel"
     if subject.solved.subtracted:
         why, remedy = "background or blank was subtracted too high", "Look at background and blanks; measure them again"
-    surely = estimate.interval is not None and subject.role != "process_blank"
+    surely = estimate.interval is not None and subject.role not in BLANK_ROLES
     return plain("expanded_uncertainty", FAIL if surely else WARN, f"{told}: {why}.", remedy, "theory")
 
 
 def blank(subject: Subject, limits: Limits) -> Check:
     """The blanks that the rules subtract: that they came, and the process blank's share of the result."""
     asked = subject.context.rules.blanks
-    if not asked.background and not asked.process:
+    if not asked.background and not asked.process and not asked.reagent:
         return not_evaluated("blank", "the rules subtract no blank", "Declare it under blanks")
     if lacking := blank_lacking(subject):
         if subject.context.batch.closed:
@@ -97,7 +98,10 @@ def blank(subject: Subject, limits: Limits) -> Check:
     if solved.background is not None and solved.background.problem:
         sentence = f"The background is not known: {solved.background.problem}."
         return plain("blank", FAIL, sentence, "Measure the background again", _BLANKS)
-    if subject.role == "process_blank":
+    if solved.reagent is not None and solved.reagent.problem:
+        sentence = f"What the reagents bring in is not known: {solved.reagent.problem.rstrip('.')}."
+        return plain("blank", FAIL, sentence, "Look at the reagent blank's own summary; measure it again", _BLANKS)
+    if subject.role in BLANK_ROLES:
         return plain("blank", PASS, "This series is a blank itself.")
     if not asked.process or solved.blank is None:
         return _without_process_blank(subject)
@@ -147,7 +151,9 @@ def blank_lacking(subject: Subject) -> str:
     already = subject.solved.net_by_export  # that blank is a background; a process blank is an amount
     if asked.background and not already and subject.line_key not in subject.context.backgrounds:
         return f"no background of {subject.name} was measured in this batch"
-    if not asked.process or subject.role == "process_blank":
+    if asked.reagent and subject.role != "reagent_blank" and (why := _reagent_lacking(subject)):
+        return why
+    if not asked.process or subject.role in BLANK_ROLES:
         return ""
     if not any(key.role == "process_blank" for key in batch.members):
         return "no process blank was measured in this batch"
@@ -155,6 +161,14 @@ def blank_lacking(subject: Subject) -> str:
         why = subject.solved.blank_note.partition("no process blank was subtracted: ")[2]
         return f"no process blank of {subject.name} can be subtracted: {why or 'none gives a number'}"
     return ""
+
+
+def _reagent_lacking(subject: Subject) -> str:
+    if subject.solved.reagent is not None or subject.line_key[0] in subject.context.rules.blanks.reagent_amounts:
+        return ""
+    if any(key.role == "reagent_blank" for key in subject.context.batch.members):
+        return f"no reagent blank of {subject.name} can be subtracted: none gives a number"
+    return "no reagent blank was measured in this batch"
 
 
 def _without_process_blank(subject: Subject) -> Check:
@@ -169,6 +183,8 @@ def _without_process_blank(subject: Subject) -> Check:
         )
     if solved.net_by_export:
         return plain("blank", PASS, "The export had the blank taken off already; none was subtracted again.")
+    if solved.reagent is not None:
+        return plain("blank", PASS, "What the reagents bring into every vessel was taken off as an amount.")
     return plain("blank", PASS, f"The background of {subject.name} was taken off every reading.")
 
 

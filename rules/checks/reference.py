@@ -5,13 +5,12 @@ from __future__ import annotations
 import math
 from dataclasses import replace
 
-from scipy import special
-
 from spikeward.rules.checks.subject import Subject, as_percent, graded, near_limits, not_evaluated, number, source_of
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, SEVERITY, WARN, Check
 from spikeward.rules.rounding import percent
 from spikeward.rules.rulebook import Known, Limits
 from spikeward.rules.solve.solved import Solved
+from spikeward.rules.uncertainty.fieller import t_quantile
 from spikeward.rules.words import unit_words
 
 _WORDS = {"reference": "reference", "check": "check sample"}
@@ -56,8 +55,9 @@ def _none_measured(subject: Subject, name: str, role: str) -> Check:
 def recovery(solved: Solved, subject: Subject, limits: Limits, name: str) -> Check:
     """What one reference found of its known content.
 
-    Beyond limits on the recovery, the distance over its standard uncertainty is held against Student's t at ``warn_p``
-    and ``fail_p`` (two-sided) with the effective degrees of freedom of that uncertainty, not against 2 and 3.
+    Beyond limits on the recovery, the zeta score (x - X) / sqrt(u_x² + u_X²) of ISO 13528 is held against Student's t
+    at ``warn_p`` and ``fail_p`` (two-sided) with the effective degrees of freedom of that uncertainty, not against 2
+    and 3.
     """
     key, analyte = solved.prepared.key, solved.prepared.analyte
     told = f"{_WORDS.get(key.role, key.role)} {key.sample}"
@@ -100,8 +100,9 @@ def _reason(solved: Solved) -> str:
 
 
 def _by_distance(check: Check, solved: Solved, known: Known, limits: Limits, remedy: str) -> Check:
+    """The same check with its zeta score told, and judged by it where that is worse."""
     estimate = solved.in_sample or solved.content
-    if estimate is None or not estimate.standard_uncertainty or check.verdict == FAIL:
+    if estimate is None or not estimate.standard_uncertainty:
         return check
     content = known.content.to(estimate.unit)
     scale = content / float(known.content.value) if known.content.value else 1.0
@@ -109,19 +110,17 @@ def _by_distance(check: Check, solved: Solved, known: Known, limits: Limits, rem
     u = math.hypot(estimate.standard_uncertainty, u_known)
     # Welch-Satterthwaite; the declared uncertainty counts as known
     freedom = solved.effective_degrees_of_freedom * (u / estimate.standard_uncertainty) ** 4
-    distance = abs(estimate.content - content) / u
+    zeta = (estimate.content - content) / u
+    told = f"zeta score {zeta:.1f}" + ("" if u_known else ", the uncertainty of what is known not being declared")
     for limit, verdict in (("fail_p", FAIL), ("warn_p", WARN)):
         p = number(limits, limit)
         if p is None or freedom <= 0 or SEVERITY[verdict] <= SEVERITY[check.verdict]:
             continue
-        t = -float(special.stdtrit(freedom, p / 2))
-        if distance > t:
-            sentence = (
-                f"{check.sentence[:-1]}; it lies {distance:.1f} standard uncertainties off, "
-                f"chance allows {t:.1f} at {percent(p)}."
-            )
+        t = t_quantile(freedom, 1.0 - p)
+        if abs(zeta) > t:
+            sentence = f"{check.sentence[:-1]}; {told}: chance allows {t:.1f} at {percent(p)}."
             return Check(
                 check.name, verdict, sentence, check.observed, check.unit, check.limit,
                 source_of(limits, limit, check.name), remedy,
             )  # fmt: skip
-    return check
+    return replace(check, sentence=f"{check.sentence[:-1]}; {told}.")

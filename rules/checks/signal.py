@@ -11,6 +11,7 @@ from spikeward.rules.checks.subject import (
     graded,
     near_limits,
     not_evaluated,
+    not_straight,
     number,
     plain,
 )
@@ -19,7 +20,7 @@ from spikeward.rules.prepared import PreparedVessel
 from spikeward.rules.records import OVER_RANGE, Reading
 from spikeward.rules.rounding import figure
 from spikeward.rules.rulebook import Limits, Top
-from spikeward.rules.solve.transform import VesselSignal, unusable, vessel_name, vessel_signal
+from spikeward.rules.solve.vessel_signal import VesselSignal, unusable, vessel_name, vessel_signal
 from spikeward.rules.words import freedom
 
 
@@ -39,6 +40,8 @@ def units(subject: Subject, limits: Limits) -> Check:
 def linear_top(subject: Subject, limits: Limits) -> Check:
     """The largest signal as it was read, background still in it, against the end of the straight line."""
     remedy = "Dilute the test solution and measure the series again"
+    if subject.solved.prepared.response == "log":
+        return not_evaluated("linear_top", f"{not_straight(subject)}, and no potential is its end")
     for vessel, reading in _read(subject):
         if reading.qualifier == OVER_RANGE:
             sentence = f"{capital(vessel)} is over range ({reading.solution}, {reading.path} row {reading.row})."
@@ -67,6 +70,8 @@ def precision(subject: Subject, limits: Limits) -> Check:
     Pooled as sum (n-1) s² / sum (n-1); each s is relative to its vessel's signal without the background, or to
     ``floor`` times the largest such signal where that is more, so that the noise of a signal near zero does not decide.
     """
+    if subject.solved.prepared.response == "log":
+        return not_evaluated("precision", "potentials have no zero of their own, and a share of them means nothing")
     vessels = [vessel for vessel in _usable(subject) if vessel.sd is not None and vessel.readings > 1]
     if not vessels:
         return not_evaluated(
@@ -97,7 +102,7 @@ def _usable(subject: Subject) -> list[VesselSignal]:
 
 def _read(subject: Subject) -> list[tuple[str, Reading]]:
     kept: list[PreparedVessel] = [vessel for vessel in subject.solved.prepared.vessels if not vessel.excluded]
-    return [(vessel_name(vessel.level, vessel.vessel), reading) for vessel in kept for reading in vessel.readings]
+    return [(vessel_name(each.level, each.vessel, each.block), reading) for each in kept for reading in each.readings]
 
 
 def _top(subject: Subject) -> Top | None:

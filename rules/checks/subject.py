@@ -9,25 +9,13 @@ from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WARN, Check
 from spikeward.rules.records import Batch, Reading, SeriesKey
 from spikeward.rules.rounding import figure, percent, percent_apart
 from spikeward.rules.rulebook import Limits, Rulebook
+from spikeward.rules.solve.calibration import Calibration, CalibrationKey
+from spikeward.rules.solve.drift import Bracket
+from spikeward.rules.solve.pooling import Pooling
 from spikeward.rules.solve.solved import Background, Solved
 from spikeward.rules.words import line_words
 
 LineKey = tuple[str, str]  # analyte, line
-
-
-@dataclass(frozen=True, slots=True)
-class Bracket:
-    """One visit to the bracketing solution: its readings on one line, read without another solution between them.
-
-    ``sensitivity`` is the mean signal, background off, in the instrument's unit; None where a reading has no number.
-    ``first`` and ``last`` are acquisition sort keys as ``Reading.when``.
-    """
-
-    first: tuple[str, int]
-    last: tuple[str, int]
-    solution: str
-    sensitivity: float | None
-    readings: tuple[Reading, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,7 +24,8 @@ class Context:
 
     ``solved`` holds every line of the batch by role and line, process blanks subtracted; ``waiting`` the series that
     are neither complete nor lapsed; ``failed`` the lines of blanks and references that failed their own checks;
-    ``untimed`` the lines on which acquisition times or order are not all known.
+    ``untimed`` the lines on which acquisition times or order are not all known; ``calibrations`` the plain standards of
+    the batch; ``pooling`` what was pooled where the rules ask for a pooled precision and the batch has closed.
     """
 
     batch: Batch
@@ -47,6 +36,8 @@ class Context:
     backgrounds: Mapping[LineKey, Background] = field(default_factory=dict)
     brackets: Mapping[LineKey, tuple[Bracket, ...]] = field(default_factory=dict)
     untimed: frozenset[LineKey] = frozenset()
+    calibrations: Mapping[CalibrationKey, Calibration] = field(default_factory=dict)
+    pooling: Mapping[LineKey, Pooling] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -75,6 +66,28 @@ class Subject:
     def readings(self) -> tuple[Reading, ...]:
         """The readings of all vessels that are not excluded."""
         return tuple(r for vessel in self.solved.prepared.vessels if not vessel.excluded for r in vessel.readings)
+
+
+BLANK_ROLES = ("process_blank", "reagent_blank")
+"""Series that are expected near zero."""
+
+
+def series_words(key: SeriesKey) -> str:
+    """A series of the batch as a sentence of another one names it."""
+    role = "check sample" if key.role == "check" else key.role.replace("_", " ")
+    return f"{role} {key.sample}"
+
+
+def not_straight(subject: Subject) -> str:
+    """Why what is asked of straight lines cannot be asked here, or an empty text."""
+    return _NOT_STRAIGHT.get(subject.solved.prepared.response, "")
+
+
+_NOT_STRAIGHT = {
+    "log": "an electrode answers to the logarithm of the content",
+    "curve": "the response was fitted as a curve",
+    "overlap": "lines that overlap were solved together",
+}
 
 
 def capital(text: str) -> str:

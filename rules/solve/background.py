@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 from spikeward.rules.records import NOT_DETECTED, OVER_RANGE, Reading
 from spikeward.rules.solve.solved import Background
-from spikeward.rules.solve.transform import mean_of, place_of, unusable, vessel_signal
+from spikeward.rules.solve.vessel_signal import mean_of, place_of, unusable, vessel_signal
 
 
 def background_of(readings: Sequence[Reading]) -> Background | None:

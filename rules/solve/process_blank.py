@@ -9,10 +9,10 @@ from dataclasses import replace
 from spikeward.rules.outcomes import Estimate
 from spikeward.rules.prepared import PreparedLine, WayBack
 from spikeward.rules.quantities import UNITS
-from spikeward.rules.solve.lines import background_component
+from spikeward.rules.solve.common import background_component, reagent_component, recovery_component
 from spikeward.rules.solve.solved import Solved
-from spikeward.rules.solve.transform import mean_of
 from spikeward.rules.solve.verdict import NEGATIVE, NEGATIVE_AS_READ, OUT_OF_RANGE
+from spikeward.rules.solve.vessel_signal import mean_of
 from spikeward.rules.uncertainty.interval import (
     Component,
     FitPart,
@@ -121,7 +121,8 @@ def _subtracted(
     told = f"mean of {len(amounts)} process blanks" if len(amounts) > 1 else "one process blank"
     told = f"{told}, {mean:.3g} {unit_words(back.unit)}, subtracted as an amount{known}"
     note = _joined(solved.blank_note, told, *left_out)
-    shared = _background(solved, back, used)
+    shared = [*_background(solved, back, used), *_reagent(solved, back, used)]
+    shared += recovery_component(before.content - mean, back) if (before := solved.in_sample) is not None else []
     estimate, nu = _estimate(solved, back, mean, [*shared, *component], coverage)
     if not is_finite(estimate):
         return replace(solved, content=None, in_sample=None, no_number=OUT_OF_RANGE)
@@ -140,7 +141,7 @@ def _component(
     """What the blanks bring of their own, the background apart, and how it is known, in words."""
     n = len(amounts)
     fits = [
-        Component(abs(_blank_factor(one, sample) or 0.0) * one.fit_uncertainty, one.degrees_of_freedom)
+        Component(abs(_blank_factor(one, sample) or 0.0) * one.fit_uncertainty, one.scatter_degrees_of_freedom)
         for one in used
         if one.fit_uncertainty is not None
     ]
@@ -157,7 +158,7 @@ def _component(
         "; the uncertainty of its fit counts once for the mean and once for the blank of this sample, and how "
         "preparations vary is not in it"
     )
-    return [Component(pooled * math.sqrt(2.0), used[0].degrees_of_freedom)], how
+    return [Component(pooled * math.sqrt(2.0), used[0].scatter_degrees_of_freedom)], how
 
 
 def _background(solved: Solved, back: WayBack, used: Sequence[Solved]) -> list[Component]:
@@ -173,14 +174,21 @@ def _background(solved: Solved, back: WayBack, used: Sequence[Solved]) -> list[C
     return background_component(background, own - mean_of(of_blanks, [1] * len(of_blanks)))
 
 
+def _reagent(solved: Solved, back: WayBack, used: Sequence[Solved]) -> list[Component]:
+    """The error of the common reagent amount in the difference; it cancels where blanks were made like the sample."""
+    own = back.factor * (solved.reagent_effect or 0.0)
+    of_blanks = [(_blank_factor(one, solved.prepared) or 0.0) * (one.reagent_effect or 0.0) for one in used]
+    return reagent_component(solved.reagent, own - mean_of(of_blanks, [1] * len(of_blanks)))
+
+
 def _estimate(
     solved: Solved, back: WayBack, mean: float, rest: list[Component], coverage: float
-) -> tuple[Estimate, int]:
+) -> tuple[Estimate, float]:
     content, before = solved.content, solved.in_sample
     if content is None or before is None:
         raise ValueError("a blank is subtracted from a number")
     if solved.fit_half_widths is None or solved.fit_uncertainty is None:
         return replace(before, content=before.content - mean), solved.effective_degrees_of_freedom
-    halves, dof = solved.fit_half_widths, solved.degrees_of_freedom
+    halves, dof = solved.fit_half_widths, solved.scatter_degrees_of_freedom
     fit = FitPart(content.content, solved.fit_uncertainty, halves, dof).times(back.factor)
     return printed(replace(fit, content=fit.content - mean), rest, back.unit, coverage, before.reason)

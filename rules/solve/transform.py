@@ -1,206 +1,321 @@
-"""From readings to points: a vessel's mean signal, the background off it, and the correction for volumes.
+"""From readings to points: a vessel's mean signal, corrected, and scaled for volumes.
 
 With S - B = k (C0 V0 + Cs v) / V the points x = Cs v / V0 and y = (S - B) V / V0 lie on y = k (C0 + x), whatever was
-diluted how far. The background comes off before the volumes: afterwards it would be scaled with them.
+diluted how far. The background comes off before the volumes: afterwards it would be scaled with them. An amount that
+reagents bring into every vessel counts with the additions. Where there is an internal standard the signal is the ratio
+of the two, and where it entered decides by what that is multiplied. A logarithmic response stays as it was read.
 """
 
 from __future__ import annotations
 
-import math
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import NamedTuple
 
+from spikeward.rules.naming import level_order
 from spikeward.rules.outcomes import Point
 from spikeward.rules.prepared import PreparedLine, PreparedVessel
-from spikeward.rules.records import FAULTY, MEASURED, MISSING, NOT_DETECTED, OVER_RANGE, Reading
-from spikeward.rules.solve.solved import Background
+from spikeward.rules.records import MEASURED, NOT_DETECTED, Reading
+from spikeward.rules.rounding import figure
+from spikeward.rules.rulebook import Censored
+from spikeward.rules.solve.corrections import Corrections, corrected
+from spikeward.rules.solve.drift import Drift
+from spikeward.rules.solve.internal_standard import NOT_PAIRED, divisors, factor_of, internal_problem
+from spikeward.rules.solve.solved import Background, Reagent
+from spikeward.rules.solve.vessel_signal import (
+    counts_of,
+    mean_of,
+    place_of,
+    unusable,
+    vessel_name,
+    vessel_signal,
+    why_unusable,
+)
+from spikeward.rules.words import line_words
 
-_UNUSABLE = {
-    NOT_DETECTED: "was not detected: that is a bound, not zero; enter a signal for it, or exclude the vessel by a "
-    "decision",
-    OVER_RANGE: "is over range: dilute the test solution and measure again, or exclude the vessel by a decision",
-    MISSING: "has no signal: export it again, or exclude the vessel by a decision",
-    FAULTY: "does not hold a number: export it again, or exclude the vessel by a decision",
-}
 
+class Row(NamedTuple):
+    """One vessel that is fitted: y = signal x factor at x.
 
-@dataclass(frozen=True, slots=True)
-class VesselSignal:
-    """The mean of a vessel's readings, each exported mean counting as its number of readings, before any correction.
-
-    ``sd`` is of single readings and None where the export does not tell it.
+    ``signal`` is the mean of its readings, corrected; the ratio where there is an internal standard. ``factor`` is
+    dy/dsignal. ``weight`` is 1 for the largest of the line. ``block`` counts the runs of the series from 0. ``share``
+    is aliquot over final volume. ``shift`` is by how much y falls when the background rises by one, ``per_amount``
+    by how much x rises with the amount in the vessel.
     """
 
-    mean: float
+    x: float
+    y: float
+    factor: float
+    signal: float
+    weight: float
+    block: int
+    share: float
     readings: int
-    sd: float | None
+    shift: float
+    per_amount: float
 
 
 @dataclass(frozen=True, slots=True)
 class Transformed:
-    """One line ready for the fit: the points of all vessels, and ``rows`` of those that are fitted.
+    """One line ready for the fit: the points of all vessels that have a signal, and ``rows`` of those that are fitted.
 
-    A row is (x, y, shift, signal): ``shift`` is V/V0, by which y falls when the background rises by one and by which
-    the noise of the signal is larger in y.
+    ``background`` and ``reagent`` are what was subtracted. ``corrected`` says what was done and what was not.
     """
 
     points: tuple[Point, ...]
-    rows: tuple[tuple[float, float, float, float], ...]
+    rows: tuple[Row, ...]
     background: Background | None
     problem: str = ""
     notes: tuple[str, ...] = ()
     blank_note: str = ""
+    corrected: tuple[str, ...] = ()
+    reagent: Reagent | None = None
 
 
-def weights_of(rows: Sequence[tuple[float, float, float, float]]) -> tuple[float, ...]:
-    """The weights of the rows of one line, the largest of them 1.
+@dataclass(frozen=True, slots=True)
+class _Way:
+    """How the readings of a line become signals; ``divided``: by the internal standard."""
 
-    The noise of signals is taken as constant, so u(y) = u(S) V / V0 and w is in proportion to (V0 / V)²: equal weights
-    wherever every vessel holds the same share of test solution. (Weights by the inverse variance: Miller and Miller,
-    Statistics and Chemometrics for Analytical Chemistry, chapter 5.)
-
-    Returns
-    -------
-    a weight of zero where volumes are too far apart to be calculated with
-    """
-    least = min((row[2] for row in rows), default=1.0)
-    ratios = [least / row[2] if row[2] > 0.0 else 0.0 for row in rows]
-    return tuple(ratio * ratio for ratio in ratios)
+    background: float
+    drift: Drift | None
+    divided: bool
+    entered: str
+    amount: float  # of reagents in each vessel
+    potential: bool  # the response is logarithmic
 
 
-def vessel_signal(readings: Sequence[Reading]) -> VesselSignal:
-    """Mean of measured readings, and the standard deviation of single readings.
-
-    Parameters
-    ----------
-    readings : of one vessel, all of them measured, at least one
-    """
-    signals = [_number(r) for r in readings]
-    counts = [max(r.readings, 1) for r in readings]
-    total = int(math.fsum(counts))
-    mean = mean_of(signals, counts)
-    if any(n > 1 and r.sd is None for n, r in zip(counts, readings, strict=True)) or total < 2:
-        return VesselSignal(mean, total, None)
-    within = [math.sqrt(n - 1) * r.sd for n, r in zip(counts, readings, strict=True) if r.sd is not None]
-    between = [math.sqrt(n) * (s - mean) for n, s in zip(counts, signals, strict=True)]
-    return VesselSignal(mean, total, math.hypot(*within, *between) / math.sqrt(total - 1))
+def weights_of(rows: Sequence[Row]) -> tuple[float, ...]:
+    """The weights of the rows of one line; one of zero where volumes are too far apart to be calculated with."""
+    return tuple(row.weight for row in rows)
 
 
-def mean_of(values: Sequence[float], counts: Sequence[int]) -> float:
-    """The mean of values, each counting so many times; its digits do not depend on their order.
-
-    Returns
-    -------
-    not finite where the values are too large to be added up
-    """
-    # around the smallest, so that equal values give exactly their value
-    smallest = min(values)
-    try:
-        return smallest + math.fsum(n * (v - smallest) for n, v in zip(counts, values, strict=True)) / math.fsum(counts)
-    except OverflowError:
-        return math.inf
-
-
-def unusable(readings: Sequence[Reading]) -> Reading | None:
-    """The first reading that is not a measured number, or None."""
-    for reading in readings:
-        if reading.qualifier != MEASURED or reading.signal is None or not math.isfinite(reading.signal):
-            return reading
-    return None
-
-
-def why_unusable(reading: Reading) -> str:
-    """What a reading without a number is, and what to do, as the end of a sentence."""
-    return _UNUSABLE.get(reading.qualifier, _UNUSABLE[FAULTY])
-
-
-def place_of(reading: Reading) -> str:
-    """Where a reading stands, for a sentence."""
-    return f"{reading.path}, row {reading.row}"
-
-
-def transform(line: PreparedLine, background: Background | None) -> Transformed:
-    """The points of one line, with the background off where the export has not taken it off already.
+def transform(line: PreparedLine, corrections: Corrections) -> Transformed:
+    """The points of one line, with everything corrected that the rules ask for and the export has not done already.
 
     Parameters
     ----------
     line : the vessels as they were prepared
-    background : in the unit of the line's signals, or None where none is subtracted
+    corrections : in the units of this line
     """
-    problem, blank_note = "", ""
-    already = {"blank" in r.already for vessel in line.vessels if not vessel.excluded for r in vessel.readings}
-    if already == {True, False}:
-        problem = (
-            "some exports of this series say that the blank was taken off already and others do not: "
-            "export all vessels in the same way"
-        )
-    if background is not None and True in already:
-        blank_note = "the export had the blank taken off already, so no background was subtracted"
-        background = None
-    if background is not None:
-        problem = problem or _background_problem(line, background)
-    points, rows = [], []
-    for vessel in line.vessels:
-        refused = _vessel_problem(vessel)
-        if refused:
-            problem = problem or ("" if vessel.excluded else refused)
-            continue
-        point = _point(vessel, 0.0 if background is None or background.problem else background.mean)
-        points.append(point)
-        if not vessel.excluded:
-            shift = vessel.final_ml / vessel.aliquot_ml
-            rows.append((point.x, point.y, shift, point.signal))
-    # the order of vessels must not reach the last digit of the fit
-    notes = (background.note,) if background is not None and background.note else ()
-    return Transformed(tuple(points), tuple(sorted(rows)), background, problem, notes, blank_note)
+    exported, problem = _exported(line)
+    background, blank_note, refused = _background(line, corrections.background, exported)
+    problem = problem or refused or _unknown_entry(line, exported)
+    vessels, notes, refused = _measured(line, corrections.censored, "internal_standard" not in exported)
+    problem = problem or refused or (corrections.reagent.problem if corrections.reagent is not None else "")
+    drift, not_drifted = _drift(line, corrections.drift, exported, vessels)
+    reagent = _counted(corrections.reagent)
+    way = _way(line, exported, background, drift, reagent)
+    made = [_point_and_row(vessel, way, _blocks(vessels)) for vessel in vessels]
+    rows = [row for vessel, (_, row) in zip(vessels, made, strict=True) if not vessel.excluded]
+    if way.divided and not all(divisors(vessel.readings, vessel.internal)[1] for vessel in vessels):
+        notes = (*notes, NOT_PAIRED)
+    return Transformed(
+        points=tuple(point for point, _ in made),
+        rows=_weighted(rows, corrections.weights),
+        background=background,
+        problem=problem,
+        notes=(*((background.note,) if background is not None and background.note else ()), *notes),
+        blank_note=blank_note,
+        corrected=corrected(line, exported, background, corrections.reagent, drift, not_drifted),
+        reagent=reagent,
+    )
 
 
-def _background_problem(line: PreparedLine, background: Background) -> str:
+def _counted(reagent: Reagent | None) -> Reagent | None:
+    """The reagents' amount, if it is known and there is one."""
+    if reagent is None or reagent.problem:
+        return None
+    return reagent if reagent.amount or reagent.standard_uncertainty else None
+
+
+def _way(
+    line: PreparedLine,
+    exported: frozenset[str],
+    background: Background | None,
+    drift: Drift | None,
+    reagent: Reagent | None,
+) -> _Way:
+    potential = line.response == "log"
+    return _Way(
+        background=background.mean if background is not None and not background.problem else 0.0,
+        drift=drift,
+        divided=bool(line.entered) and "internal_standard" not in exported and not potential,
+        entered="" if potential else line.entered,
+        amount=reagent.amount if reagent is not None else 0.0,
+        potential=potential,
+    )
+
+
+_EXPORTED = {"blank": "the blank was taken off", "internal_standard": "the internal standard was applied",
+             "drift": "the drift was corrected"}  # fmt: skip
+
+
+def _exported(line: PreparedLine) -> tuple[frozenset[str], str]:
+    """What the exports of a line say that they have corrected already, and a sentence where they differ in it."""
+    readings = [reading for vessel in line.vessels if not vessel.excluded for reading in vessel.readings]
+    problem, found = "", set()
+    for what, words in _EXPORTED.items():
+        says = {what in reading.already for reading in readings}
+        if True in says:
+            found.add(what)
+        if len(says) > 1:
+            problem = problem or (
+                f"some exports of this series say that {words} already and others do not: export all vessels in the "
+                "same way"
+            )
+    return frozenset(found), problem
+
+
+def _background(
+    line: PreparedLine, background: Background | None, exported: frozenset[str]
+) -> tuple[Background | None, str, str]:
+    """The background that comes off, a note where the export did it, and why it cannot be subtracted."""
+    if background is None or line.response == "log":
+        return None, "", ""
+    if "blank" in exported:
+        return None, "the export had the blank taken off already, so no background was subtracted", ""
     if background.problem:
-        return background.problem
+        return background, "", background.problem
     if background.unit != line.signal_unit:
-        return (
+        return background, "", (
             f"the background is in {background.unit or 'no unit'} and the signals are in "
             f"{line.signal_unit or 'no unit'}: it cannot be subtracted; export both in the same unit"
         )
-    return ""
+    divided = any("internal_standard" in reading.already for reading in background.readings)
+    if background.readings and divided != ("internal_standard" in exported):
+        return background, "", (
+            "the export applied the internal standard only to one of series and background: export both in the same way"
+        )
+    return background, "", ""
 
 
-def _vessel_problem(vessel: PreparedVessel) -> str:
-    name = vessel_name(vessel.level, vessel.vessel)
+def _unknown_entry(line: PreparedLine, exported: frozenset[str]) -> str:
+    """An export with its internal standard applied, of vessels in which it matters where that came in."""
+    if line.entered or "internal_standard" not in exported or line.response == "log":
+        return ""
+    made = {(vessel.aliquot, vessel.final) for vessel in line.vessels if not vessel.excluded}
+    if len(made) < 2:
+        return ""
+    return (
+        "the export says that the internal standard was applied already, and the volumes of the vessels differ: say "
+        "under preparations: internal_standard where it entered"
+    )
+
+
+def _measured(
+    line: PreparedLine, censored: Censored, needs_internal: bool
+) -> tuple[list[PreparedVessel], tuple[str, ...], str]:
+    """The vessels that have a signal, censored readings replaced as the rules say, with notes and the first problem."""
+    found, notes, problem = [], [], ""
+    for vessel in line.vessels:
+        name = vessel_name(vessel.level, vessel.vessel, vessel.block)
+        low = [reading for reading in vessel.readings if reading.qualifier == NOT_DETECTED]
+        if low and censored.use == "leave out" and not vessel.excluded:
+            notes.append(f"{name} was not detected ({place_of(low[0])}) and was left out of the line, as the rules say")
+            continue
+        refused = ""
+        if low and censored.use == "substitute":
+            vessel, told, refused = _substituted(vessel, low, line, censored)
+            notes += [f"{name} {told}"] if told else []
+        refused = refused or _vessel_problem(vessel, line, needs_internal)
+        if not refused:
+            found.append(vessel)
+        elif not vessel.excluded:
+            problem = problem or refused
+    return found, tuple(notes), problem
+
+
+def _substituted(
+    vessel: PreparedVessel, low: Sequence[Reading], line: PreparedLine, censored: Censored
+) -> tuple[PreparedVessel, str, str]:
+    """The vessel with the declared signal for each reading that was not detected."""
+    declared = censored.signals.get(line.line) or censored.signals.get(line.analyte)
+    if declared is None:
+        told = f"no signal is declared for {line_words(line.analyte, line.line)} under below_detection"
+        return vessel, "", f"{told}, and {place_of(low[0])} was not detected: add it under signals"
+    if declared.unit != line.signal_unit:
+        return vessel, "", (
+            f"the signal under below_detection is in {declared.unit or 'no unit'} and the signals are in "
+            f"{line.signal_unit or 'no unit'}: declare it in the unit of the export"
+        )
+    readings = tuple(
+        replace(one, signal=declared.signal, qualifier=MEASURED, sd=None) if one in low else one
+        for one in vessel.readings
+    )
+    stands = f"{figure(declared.signal)} {declared.unit} stands for it, as the rules say"
+    told = f"was not detected ({place_of(low[0])}): {stands}"
+    return replace(vessel, readings=readings), told, ""
+
+
+def _vessel_problem(vessel: PreparedVessel, line: PreparedLine, needs_internal: bool) -> str:
+    name = vessel_name(vessel.level, vessel.vessel, vessel.block)
     if not vessel.readings:
         return f"{name} has no reading: export it, or exclude it by a decision"
     reading = unusable(vessel.readings)
     if reading is not None:
         return f"{name} ({place_of(reading)}) {why_unusable(reading)}"
-    if not (vessel.aliquot_ml > 0 and vessel.final_ml > 0):
-        return f"{name} has an aliquot of {vessel.aliquot_ml:g} mL in {vessel.final_ml:g} mL: both must be above zero"
-    return ""
+    if not (vessel.aliquot > 0 and vessel.final > 0):
+        told = f"{name} has an aliquot of {vessel.aliquot:g} {line.aliquot_unit}"
+        return f"{told} in {vessel.final:g} {line.final_unit}: both must be above zero"
+    return internal_problem(vessel, line.internal, needs_internal) if line.entered and line.response != "log" else ""
 
 
-def vessel_name(level: str, vessel: str) -> str:
-    """A vessel as sentences name it."""
-    return f"level {level}, vessel {vessel}" if vessel else f"level {level}"
+def _drift(
+    line: PreparedLine, drift: Drift | None, exported: frozenset[str], vessels: Sequence[PreparedVessel]
+) -> tuple[Drift | None, str]:
+    """The drift that is corrected, or the reason why it is not although the rules ask for it."""
+    if drift is None:
+        return None, ""
+    if line.response == "log":
+        return None, "a potential has no sensitivity that it could be divided by"
+    if "drift" in exported:
+        return None, "the export had it corrected already"
+    refused = drift.why_not([reading for vessel in vessels if not vessel.excluded for reading in vessel.readings])
+    return (None, refused) if refused else (drift, "")
 
 
-def _point(vessel: PreparedVessel, background: float) -> Point:
-    mean = vessel_signal(vessel.readings)
-    signal = mean.mean - background
-    return Point(
-        level=vessel.level,
-        vessel=vessel.vessel,
-        x=vessel.added / vessel.aliquot_ml,
-        y=signal * (vessel.final_ml / vessel.aliquot_ml),
-        fitted=None,
-        signal=signal,
-        readings=mean.readings,
-        sd=mean.sd,
-        matrix_share=vessel.aliquot_ml / vessel.final_ml,
-        excluded=vessel.excluded,
-    )
+def _blocks(vessels: Sequence[PreparedVessel]) -> dict[str, int]:
+    """The runs of a series, counted from 0."""
+    named = sorted({vessel.block for vessel in vessels if not vessel.excluded}, key=level_order)
+    return {name: number for number, name in enumerate(named)}
 
 
-def _number(reading: Reading) -> float:
-    if reading.signal is None:
-        raise ValueError(f"{place_of(reading)} has no measured signal")
-    return reading.signal
+def _point_and_row(vessel: PreparedVessel, way: _Way, blocks: Mapping[str, int]) -> tuple[Point, Row]:
+    """One vessel on the line; its weight is still 1."""
+    readings, counts = vessel.readings, counts_of(vessel.readings)
+    below = divisors(readings, vessel.internal)[0] if way.divided else (1.0,) * len(readings)
+    # an excluded vessel outside the brackets is shown as it was read
+    drift = None if way.drift is not None and vessel.excluded and way.drift.why_not(readings) else way.drift
+    drifts = [drift.at(reading) if drift is not None else (1.0, 0.0) for reading in readings]
+    scales = [1.0 / (one * relative) for one, (relative, _) in zip(below, drifts, strict=True)]
+    mean = vessel_signal(readings, scales)
+    scale = mean_of(scales, counts)
+    signal = mean.mean - way.background * scale
+    factor = 1.0 if way.potential else factor_of(vessel, way.entered)
+    # the background is in the sensitivities too: what it takes from them comes back
+    tilts = [
+        ((reading.signal or 0.0) - way.background) * each * tilt
+        for reading, each, (_, tilt) in zip(readings, scales, drifts, strict=True)
+    ]
+    shift = scale + mean_of(tilts, counts)
+    share = vessel.aliquot / vessel.final
+    x, y = (vessel.added + way.amount) / vessel.aliquot, signal * factor
+    sd = None if way.divided and any(count > 1 for count in counts) else mean.sd
+    point = Point(
+        level=vessel.level, vessel=vessel.vessel, x=x, y=y, fitted=None, signal=signal, readings=mean.readings, sd=sd,
+        matrix_share=share, excluded=vessel.excluded, factor=factor, block=vessel.block,
+    )  # fmt: skip
+    block = blocks.get(vessel.block, 0)
+    return point, Row(x, y, factor, signal, 1.0, block, share, mean.readings, shift * factor, 1.0 / vessel.aliquot)
+
+
+def _weighted(rows: Sequence[Row], how: str) -> tuple[Row, ...]:
+    """The rows in an order of their own, since that of vessels must not reach the last digit, with their weights.
+
+    The noise of signals is taken as constant, so u(y) = u(S) factor and w is in proportion to 1 over factor squared:
+    equal weights wherever every vessel holds the same share of test solution. (Weights by the inverse variance: Miller
+    and Miller, Statistics and Chemometrics for Analytical Chemistry, chapter 5.)
+    """
+    least = min((row.factor for row in rows), default=1.0)
+    ratios = [1.0 if how == "equal" else least / row.factor if row.factor > 0.0 else 0.0 for row in rows]
+    return tuple(sorted(row._replace(weight=ratio * ratio) for row, ratio in zip(rows, ratios, strict=True)))

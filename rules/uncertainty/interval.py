@@ -6,16 +6,21 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+from scipy.special import ndtri
+
 from spikeward.rules.outcomes import Estimate
 from spikeward.rules.uncertainty.fieller import t_quantile
 
 
 @dataclass(frozen=True, slots=True)
 class Component:
-    """One standard uncertainty, in the unit of the content that it belongs to, with its degrees of freedom."""
+    """One standard uncertainty, in the unit of the content that it belongs to, with its degrees of freedom.
+
+    They are infinite where it was declared.
+    """
 
     standard_uncertainty: float
-    degrees_of_freedom: int
+    degrees_of_freedom: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -25,7 +30,7 @@ class FitPart:
     content: float
     standard_uncertainty: float
     halves: tuple[float, float]
-    degrees_of_freedom: int
+    degrees_of_freedom: float
 
     def times(self, factor: float) -> FitPart:
         """The same after a preparation factor, which is positive."""
@@ -38,13 +43,20 @@ class FitPart:
         )
 
 
-def effective_degrees_of_freedom(components: Sequence[Component]) -> int:
+def coverage_factor(degrees_of_freedom: float, coverage: float) -> float:
+    """Student's factor, and the normal one where the degrees of freedom are infinite."""
+    if math.isinf(degrees_of_freedom):
+        return float(ndtri(0.5 + coverage / 2.0))
+    return t_quantile(int(degrees_of_freedom), coverage)
+
+
+def effective_degrees_of_freedom(components: Sequence[Component]) -> float:
     """Welch and Satterthwaite, cut to a whole number (JCGM 100:2008, G.4.1).
 
     Returns
     -------
-    at least 1, and 1 where an uncertainty is not finite; components without uncertainty do not count, and if none has
-    any the smallest number stands
+    at least 1, and 1 where an uncertainty is not finite; infinite where all components are declared; components without
+    uncertainty do not count, and if none has any the smallest number stands
     """
     if not all(math.isfinite(c.standard_uncertainty) for c in components):
         return 1
@@ -56,11 +68,13 @@ def effective_degrees_of_freedom(components: Sequence[Component]) -> int:
     squares = [q * q for q in ratios]
     total = math.fsum(squares)
     below = math.fsum(q * q / c.degrees_of_freedom for q, c in zip(squares, components, strict=True) if q > 0.0)
+    if below == 0.0:
+        return math.inf
     # a sum that is whole but for rounding must not lose one
     return max(1, math.floor(total * total / below * (1.0 + 2.0**-40)))
 
 
-def printed(fit: FitPart, rest: Sequence[Component], unit: str, coverage: float, reason: str) -> tuple[Estimate, int]:
+def printed(fit: FitPart, rest: Sequence[Component], unit: str, coverage: float, reason: str) -> tuple[Estimate, float]:
     """Combine the fit with what is common to all vessels.
 
     Each half of the fit's interval is combined in quadrature with t(ν_eff) times the standard uncertainty of the rest;
@@ -78,7 +92,7 @@ def printed(fit: FitPart, rest: Sequence[Component], unit: str, coverage: float,
     the estimate and its effective degrees of freedom
     """
     nu = effective_degrees_of_freedom([Component(fit.standard_uncertainty, fit.degrees_of_freedom), *rest])
-    t = t_quantile(nu, coverage)
+    t = coverage_factor(nu, coverage)
     u_rest = math.hypot(*(c.standard_uncertainty for c in rest))
     u = math.hypot(fit.standard_uncertainty, u_rest)
     lower, upper = (math.hypot(half, t * u_rest) for half in fit.halves)
@@ -93,7 +107,7 @@ def printed(fit: FitPart, rest: Sequence[Component], unit: str, coverage: float,
             interval=(fit.content - lower, fit.content + upper),
             coverage=coverage,
             reason=reason,
-            effective_degrees_of_freedom=nu,
+            effective_degrees_of_freedom=None if math.isinf(nu) else int(nu),
         ),
         nu,
     )

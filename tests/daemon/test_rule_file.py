@@ -73,10 +73,11 @@ def test_a_first_rule_file_is_short_and_enough():
     assert rules.layouts == {"readings": Layout("readings", columns=columns)}
     assert rules.series == SeriesRule()
     (preparation,) = rules.preparations
-    assert preparation.standard == "Cd-10"
+    (addition,) = preparation.additions
+    assert addition.standard == "Cd-10"
     assert preparation.aliquot == {"": mL("10")}
-    assert preparation.additions == {"0": mL("0"), "1": mL("0.25"), "2": mL("0.5"), "3": mL("0.75")}
-    assert preparation.deliveries == "total"
+    assert addition.levels == {"0": mL("0"), "1": mL("0.25"), "2": mL("0.5"), "3": mL("0.75")}
+    assert addition.deliveries == "total"
     assert preparation.line == 11
     assert set(rules.checks) >= {"levels", "response", "residual"}
     assert rules.coverage == 0.95
@@ -84,9 +85,9 @@ def test_a_first_rule_file_is_short_and_enough():
 
 def test_successive_deliveries_add_up_unless_said_otherwise():
     successive = FIRST.replace("flasks", "successive").replace("  final: 25 mL\n", "")
-    assert rules_of(successive).preparations[0].deliveries == "each"
+    assert rules_of(successive).preparations[0].additions[0].deliveries == "each"
     told = successive.replace("additions: {", "additions: {deliveries: total, ")
-    assert rules_of(told).preparations[0].deliveries == "total"
+    assert rules_of(told).preparations[0].additions[0].deliveries == "total"
 
 
 def test_levels_are_compared_as_numbers():
@@ -94,7 +95,7 @@ def test_levels_are_compared_as_numbers():
         "aliquot: 10 mL", "aliquot: {volume: 10 mL, levels: {03: 9 mL}}"
     )
     (preparation,) = rules_of(text).preparations
-    assert set(preparation.additions) == {"0", "1", "2", "3"}
+    assert preparation.levels == {"0", "1", "2", "3"}
     assert preparation.aliquot == {"": mL("10"), "3": mL("9")}
 
 

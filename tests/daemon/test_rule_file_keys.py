@@ -37,6 +37,8 @@ def parts(node: Node, shape: Shape, path: str = "") -> Iterator[tuple[str, Node,
         for number, item in enumerate(node.items):
             yield f"{path}[{number}]", item, shape.item, None, False
             yield from parts(item, shape.item, f"{path}[{number}]")
+    elif isinstance(shape, ListOf) and shape.single:
+        yield from parts(node, shape.item, f"{path}[0]")
 
 
 def example_root() -> Node:

@@ -11,10 +11,18 @@ import pytest
 
 from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
 from spikeward.rules.records import Reading, SeriesKey
+from spikeward.rules.solve.corrections import Corrections
+from spikeward.rules.solve.job import Job
 from spikeward.rules.solve.lines import solve_lines
 from spikeward.rules.solve.solved import Solved
 
 KEY = SeriesKey("", "", "B1", "sample", "S1")
+
+
+def jobs(lines, backgrounds=None):
+    """Each line with the background of its batch, as an evaluation would ask for them."""
+    known = backgrounds or {}
+    return [Job(one, Corrections(known.get((one.key.batch_key, one.analyte, one.line)))) for one in lines]
 
 
 def reading(signal: float, level: str) -> Reading:
@@ -32,7 +40,7 @@ def vessel(level: int, aliquot: float, addition: float, final: float, content: f
 
 def solve(vessels: Sequence[PreparedVessel], unit: str = "mg/L", back: WayBack | None = None) -> Solved:
     line = PreparedLine(KEY, "X", "", "flasks", unit, "", tuple(vessels), back, "", "")
-    return solve_lines([line], {}, 0.95)[0]
+    return solve_lines(jobs([line]), 0.95)[0]
 
 
 def content_of(solved: Solved) -> float:

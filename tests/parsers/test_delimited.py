@@ -10,7 +10,9 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from spikeward.parsers.cells import QUANTITIES
 from spikeward.parsers.delimited import READER
+from spikeward.rules.naming import QUANTITY_GROUPS
 from spikeward.rules.records import (
     FAULTY,
     MEASURED,
@@ -195,6 +197,34 @@ def test_the_number_of_a_repeated_row_is_kept_as_text():
     layout = replace(SMALL, columns={**SMALL.columns, "reading": "Wdh"})
     entries = read("Solution;Wdh;Signal\nX;01;0.5\nX;b;0.6\nX;;0.7\n", layout).entries
     assert [entry.values for entry in entries] == [(("reading", "01"),), (("reading", "b"),), ()]
+
+
+def test_the_run_of_a_series_is_kept_as_text_and_needs_no_unit():
+    layout = replace(SMALL, columns={**SMALL.columns, "block": "Run", "reading": "Wdh"})
+    entries = read("Solution;Run;Wdh;Signal\nX;2;1;0.5\nX; evening ;1;0.6\nX;;2;0.7\n", layout).entries
+    assert [entry.values for entry in entries] == [
+        (("reading", "1"), ("block", "2")), (("reading", "1"), ("block", "evening")), (("reading", "2"),),
+    ]  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    ("meaning", "cell", "read_as"),
+    [
+        ("volume", "5 mL", "5 mL"), ("digest", "50 mL", "50 mL"), ("moisture", "12.5 %", "12.5 %"),
+        ("addition", "2.5 ug", "2.5 ug"), ("internal_standard", "0.1 mL", "0.1 mL"), ("spike", "100 uL", "100 uL"),
+        ("content", "5 ug/L", "5 ug/L"),
+    ],
+)  # fmt: skip
+def test_every_quantity_that_rules_know_is_read_from_a_column(meaning: str, cell: str, read_as: str):
+    layout = replace(SMALL, columns={**SMALL.columns, meaning: "Q"})
+    (entry,) = read(f"Solution;Q;Signal\nX;{cell};0.5\n", layout).entries
+    assert entry.values == ((meaning, read_as),)
+    with pytest.raises(Unreadable, match="is a time, not a"):
+        read("Solution;Q;Signal\nX;5 h;0.5\n", layout)
+
+
+def test_no_quantity_of_the_rules_is_unknown_to_the_reader():
+    assert set(QUANTITIES) == set(QUANTITY_GROUPS)
 
 
 SPREAD = Layout(

@@ -6,6 +6,7 @@ import sys
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from decimal import Decimal
+from functools import cache
 from importlib.resources import files
 from types import ModuleType
 from typing import Any
@@ -19,11 +20,22 @@ from spikeward.rules.outcomes import BatchOutcome, Check, Outcome
 from spikeward.rules.prepared import PreparedLine, PreparedVessel
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Batch, BatchKey, Decision, Members, Reading, SeriesKey
-from spikeward.rules.rulebook import BlankRule, Limits, Preparation, Rulebook, SampleRule, SeriesRule, Standard
+from spikeward.rules.rulebook import (
+    Addition,
+    BlankRule,
+    Limits,
+    Preparation,
+    Rulebook,
+    SampleRule,
+    SeriesRule,
+    Standard,
+)
+from spikeward.rules.solve.job import Job
 from spikeward.rules.solve.lines import solve_lines
 
 
-def general_pack() -> dict[str, Limits]:
+@cache
+def _pack() -> dict[str, Limits]:
     text = (files("spikeward.rules.packs") / "general.yaml").read_text(encoding="utf-8")
     found: dict[str, Limits] = {}
     for name, limits in yaml.safe_load(text).items():
@@ -35,6 +47,10 @@ def general_pack() -> dict[str, Limits]:
     return found
 
 
+def general_pack() -> dict[str, Limits]:
+    return dict(_pack())
+
+
 def quantity(value: str, unit: str) -> Quantity:
     return Quantity(Decimal(value), unit)
 
@@ -42,8 +58,8 @@ def quantity(value: str, unit: str) -> Quantity:
 def rulebook(**changes: Any) -> Rulebook:
     """Cadmium by additions of 10 mg/L to aliquots of 10 mL in 25 mL: x is 0, 0.25, 0.5 and 0.75 mg/L."""
     flasks = Preparation(
-        applies={}, design="flasks", aliquot={"": quantity("10", "mL")}, final=quantity("25", "mL"),
-        additions={str(n): quantity(f"{0.25 * n:g}", "mL") for n in range(4)}, deliveries="total", standard="Mix",
+        applies={}, design="flasks", aliquot={"": quantity("10", "mL")}, final={"": quantity("25", "mL")},
+        additions=(Addition("Mix", {str(n): quantity(f"{0.25 * n:g}", "mL") for n in range(4)}, "total"),),
         sample=SampleRule(mass=quantity("0.5", "g"), digest=quantity("50", "mL")), report_in="mg/kg",
     )  # fmt: skip
     contents = {"Cd": quantity("10", "mg/L"), "Pb": quantity("10", "mg/L")}
@@ -122,7 +138,7 @@ def line_of(x: Sequence[float], y: Sequence[float], **changes: Any) -> PreparedL
     key = SeriesKey("root", "inbox", "MD12", changes.pop("role", "sample"), "07")
     vessels = tuple(
         PreparedVessel(
-            level=str(n), vessel="", aliquot_ml=1.0, addition_ml=0.0, final_ml=1.0, added=added,
+            level=str(n), vessel="", aliquot=1.0, addition=0.0, final=1.0, added=added,
             readings=(Night().read(key.role, key.sample, str(n), signal),),
         )  # fmt: skip
         for n, (added, signal) in enumerate(zip(x, y, strict=True))
@@ -133,7 +149,7 @@ def line_of(x: Sequence[float], y: Sequence[float], **changes: Any) -> PreparedL
 
 def subject_of(line: PreparedLine, rules: Rulebook | None = None, closed: bool = False) -> Subject:
     book = rules or rulebook()
-    (solved,) = solve_lines([line], {}, 0.95)
+    (solved,) = solve_lines([Job(line)], 0.95)
     return Subject(solved, Context(Batch(BatchKey("root", "inbox", "MD12"), {}, closed=closed), book))
 
 

@@ -10,9 +10,9 @@ import pytest
 import statsmodels.api as sm
 from scipy import stats
 
-from spikeward.rules.checks.curvature import mandel
 from spikeward.rules.checks.line import _studentised_critical
 from spikeward.rules.checks.registry import REGISTRY
+from spikeward.rules.checks.straight import straightness_of
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WARN
 from spikeward.rules.records import OVER_RANGE
 from spikeward.rules.rulebook import Top
@@ -127,17 +127,7 @@ def test_points_on_the_line_to_the_last_digit_are_not_curved(bench):
     assert bench.check_of("curvature", subject).verdict == PASS
 
 
-def test_mandel_on_a_published_calibration():
-    """Eurachem/CITAC Guide, Quantifying Uncertainty in Analytical Measurement, example A5: cadmium, in triplicate."""
-    x = [c for c in (0.1, 0.3, 0.5, 0.7, 0.9) for _ in range(3)]
-    y = [0.028, 0.029, 0.029, 0.084, 0.083, 0.081, 0.135, 0.131, 0.133, 0.180, 0.181, 0.183, 0.215, 0.230, 0.216]
-    found = mandel(x, y)
-    assert found.f == pytest.approx(15.329, abs=0.0005)
-    assert found.p == pytest.approx(stats.f.sf(found.f, 1, 12), rel=1e-10)
-    assert found.p < 0.01
-
-
-def test_mandel_on_certified_data():
+def test_mandel_on_certified_data(bench):
     """NIST Statistical Reference Datasets, Pontius: r is 0.99999 and the curvature beyond any doubt."""
     first = (
         0.11019, 0.21956, 0.32949, 0.43899, 0.54803, 0.65694, 0.76562, 0.87487, 0.98292, 1.09146,
@@ -148,13 +138,15 @@ def test_mandel_on_certified_data():
         1.20004, 1.30818, 1.41613, 1.52408, 1.63159, 1.73965, 1.84696, 1.95445, 2.06177, 2.16829,
     )  # fmt: skip
     x = [150000.0 * k for k in range(1, 21)] * 2
-    found = mandel(x, first + second)
+    subject = bench.subject_of(bench.line_of(x, first + second))
+    check = bench.check_of("curvature", subject)
+    assert check.verdict == FAIL
     # F by analysis of variance of the certified straight-line and quadratic fits
-    assert found.f == pytest.approx(4218.52506, rel=1e-8)
+    assert check.observed == pytest.approx(4218.52506, rel=1e-8)
     # the certified parabola, B0 + B1 x + B2 x²: its zero nearest to that of the line
     b0, b1, b2 = 0.673565789473684e-3, 0.732059160401003e-6, -0.316081871345029e-14
     zero = (-b1 + math.sqrt(b1 * b1 - 4 * b2 * b0)) / (2 * b2)
-    assert found.by_parabola == pytest.approx(-zero, rel=1e-9)
+    assert straightness_of(subject).by_parabola.item() == pytest.approx(-zero, rel=1e-9)
 
 
 def test_a_curve_that_mandel_passes_and_r_fails(bench):
@@ -182,7 +174,7 @@ def test_span(bench):
 def test_matrix_spread(bench):
     def of(*finals):
         line = bench.line_of(X4, ys(X4))
-        vessels = tuple(replace(v, final_ml=f) for v, f in zip(line.vessels, finals, strict=True))
+        vessels = tuple(replace(v, final=f) for v, f in zip(line.vessels, finals, strict=True))
         return bench.subject_of(replace(line, vessels=vessels))
 
     one = bench.subject_of(bench.line_of(X4[:1], ys(X4[:1])))
@@ -303,7 +295,7 @@ def growing(bench, bend=0.0):
         content, final = (3.0 + 10.0 * n) / (10.0 + n), 10.0 + n
         signal = 0.4 * content + bend * content**2 + 0.001 * SCATTER[n]
         readings = (replace(vessel.readings[0], signal=signal),)
-        vessels.append(replace(vessel, aliquot_ml=10.0, final_ml=final, added=10.0 * n, readings=readings))
+        vessels.append(replace(vessel, aliquot=10.0, final=final, added=10.0 * n, readings=readings))
     return bench.subject_of(replace(line, vessels=tuple(vessels)))
 
 

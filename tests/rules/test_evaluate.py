@@ -30,7 +30,7 @@ def test_a_complete_series_passes_at_once(bench):
     assert result.in_sample.content == pytest.approx(30, rel=0.01)
     assert result.in_sample.unit == "mg/kg"
     assert len(outcome.vessels) == 4
-    assert outcome.vessels[1].addition_ml == 0.25
+    assert outcome.vessels[1].addition == 0.25
     assert outcome.design == "flasks"
 
 

@@ -7,7 +7,7 @@ from dataclasses import replace
 from spikeward.rules.evaluate import evaluate
 from spikeward.rules.outcomes import FAIL, PASS, WAITING
 from spikeward.rules.records import OVER_RANGE, Decision
-from spikeward.rules.rulebook import Known, SeriesRule
+from spikeward.rules.rulebook import Addition, Known, SeriesRule
 
 
 def solve(bench, night, sample="07", **state):
@@ -39,7 +39,8 @@ def test_a_coverage_factor_far_from_two_says_why(bench):
     outcome = solve(bench, bench.Night(three).series(levels=(0, 1, 2)))
     assert "k 13, because 1 degree of freedom remains; 3 vessels)" in outcome.results[0].sentence
     six = bench.rulebook()
-    flasks = replace(six.preparations[0], additions={str(n): bench.quantity(f"{0.25 * n:g}", "mL") for n in range(6)})
+    volumes = {str(n): bench.quantity(f"{0.25 * n:g}", "mL") for n in range(6)}
+    flasks = replace(six.preparations[0], additions=(Addition("Mix", volumes, "total"),))
     night = bench.Night(replace(six, preparations=(flasks,))).series()
     night.read("sample", "07", "4", 0.4 * 1.3 + 0.0003)
     night.read("sample", "07", "5", 0.4 * 1.55 - 0.0003)

@@ -10,8 +10,9 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from spikeward.rules.in_force import State, in_force
-from spikeward.rules.records import BatchKey, Decision, Reading, SeriesKey
-from spikeward.rules.rulebook import BlankRule, Rulebook, SeriesRule
+from spikeward.rules.naming import Namer, Source, name
+from spikeward.rules.records import BatchKey, Decision, Entry, Layout, Reading, SeriesKey, Table
+from spikeward.rules.rulebook import BlankRule, NameRule, Rulebook, SeriesRule
 
 KEY = SeriesKey("inbox", "", "N1", "sample", "7")
 
@@ -44,6 +45,51 @@ def test_a_copy_counts_once_and_is_named():
     assert [r.path for r in members.readings] == ["a.csv"]
     assert members.conflicts == ()
     assert "b.csv row 2 repeats a.csv row 2" in members.notes[0]
+
+
+def test_a_vessel_in_two_runs_is_no_contradiction():
+    runs = [reading(0.2, "a.csv", block="1"), reading(0.3, "b.csv", block="2")]
+    members = only(runs)
+    assert members.conflicts == ()
+    assert [one.block for one in members.readings] == ["1", "2"]
+    (conflict,) = only([replace(one, block="1") for one in runs]).conflicts
+    assert "a.csv row 2" in conflict
+
+
+@pytest.mark.parametrize(
+    ("solution", "column", "block"),
+    [("7_A1_run02", "", "2"), ("7_A1", "02", "2"), ("7_A1", "late", "late"), ("7_A1_run3", "9", "3"), ("7_A1", "", "")],
+)
+def test_the_run_comes_from_the_name_or_from_its_column(solution: str, column: str, block: str):
+    rule = NameRule("sample", "solution", r"(?P<sample>\d+)_A(?P<level>\d+)(_run(?P<block>\d+))?")
+    values = (("block", column), ("reading", "4"), ("mass", "1 g"))[0 if column else 1 :]
+    entry = Entry(2, solution, "Mn", "", "A", 0.2, "0.2", values=values)
+    (found,) = name(Table((entry,)), Source("", "a.csv", "", Layout("x")), Namer([rule]), book()).readings
+    assert (found.block, found.reading) == (block, "4")
+    assert found.values == (("mass", "1 g", "column"),)
+
+
+def test_runs_stand_in_the_order_of_their_numbers():
+    runs = [reading(0.1, level=level, block=block) for level in ("0", "1") for block in ("10", "9", "b", "")]
+    found = [(one.level, one.block) for one in only(random.Random(4).sample(runs, len(runs))).readings]
+    assert found == [(level, block) for level in ("0", "1") for block in ("9", "10", "", "b")]
+
+
+def test_every_vessel_of_one_run_is_not_every_vessel():
+    runs = [
+        reading(0.1 * level + 0.001 * row, "run.csv", row, level=str(level), solution=f"N1_7_A{level}_{block}",
+                block=block)
+        for row, (level, block) in enumerate([(n, block) for n in range(6) for block in ("1", "2")], 2)
+    ]
+    twice = [*runs, *(replace(one, row=one.row + 100, signal=9.0) for one in runs if one.block == "1")]
+    (conflict,) = only(twice).conflicts
+    assert conflict.startswith("N1_7_A0_1, N1_7_A1_1, N1_7_A2_1 and 3 more stand 2 times each in run.csv")
+
+
+def test_equal_files_of_two_runs_are_named():
+    """The same bytes under the names of two runs: somebody may have copied the wrong file."""
+    runs = [reading(0.2, f"{block}.csv", block=block, file_digest="same") for block in ("1", "2")]
+    assert "1.csv and 2.csv have equal content under names that mean different vessels" in only(runs).warnings[0]
 
 
 def test_two_files_that_disagree_fail_and_are_both_named():

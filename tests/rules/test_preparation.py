@@ -3,21 +3,31 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from typing import Any
 
 import pytest
 
 from spikeward.rules.in_force import in_force
 from spikeward.rules.preparation import prepare
+from spikeward.rules.quantities import Quantity
 from spikeward.rules.quantities import parse_quantity as q
 from spikeward.rules.records import BenchEntry, Decision, Reading, SeriesKey
-from spikeward.rules.rulebook import BlankRule, Preparation, Rulebook, SampleRule, SeriesRule, Standard
+from spikeward.rules.rulebook import Addition, BlankRule, Preparation, Rulebook, SampleRule, SeriesRule, Standard
 
 STANDARDS = {"Mix": "10 mg/L", "Old": "5 mg/L"}
 KEY = SeriesKey("inbox", "", "N1", "sample", "7")
 FLASKS = Preparation(
-    applies={}, design="flasks", aliquot={"": q("10 mL")}, final=q("25 mL"),
-    additions={"0": q("0 mL"), "1": q("250 uL"), "2": q("0.5 mL")}, deliveries="total", standard="Mix",
+    applies={}, design="flasks", aliquot={"": q("10 mL")}, final={"": q("25 mL")},
+    additions=(Addition("Mix", {"0": q("0 mL"), "1": q("250 uL"), "2": q("0.5 mL")}, "total"),),
 )  # fmt: skip
+SUCCESSIVE = replace(
+    FLASKS, design="successive", final={}, additions=(replace(FLASKS.additions[0], deliveries="each"),)
+)
+
+
+def adding(levels: dict[str, Quantity], rule: Preparation = FLASKS, **changes: Any) -> Preparation:
+    """A preparation with other levels of its one addition."""
+    return replace(rule, additions=(replace(rule.additions[0], levels=levels),), **changes)
 
 
 def book(preparation: Preparation) -> Rulebook:
@@ -51,7 +61,7 @@ def entry(*values: tuple[str, str], level: str = "", row: int = 2) -> BenchEntry
 
 
 def volumes(prepared) -> list[tuple[float, float, float]]:
-    return [(vessel.aliquot_ml, vessel.addition_ml, vessel.final_ml) for vessel in prepared.vessels]
+    return [(vessel.aliquot, vessel.addition, vessel.final) for vessel in prepared.vessels]
 
 
 THREE = [reading("0"), reading("1"), reading("2")]
@@ -66,37 +76,35 @@ def test_flasks_are_made_up_to_one_volume():
 
 
 def test_successive_deliveries_add_up_in_amount_and_in_volume():
-    successive = replace(FLASKS, design="successive", final=None, deliveries="each")
-    assert volumes(line(successive, THREE)) == [(10.0, 0.0, 10.0), (10.0, 0.25, 10.25), (10.0, 0.75, 10.75)]
+    assert volumes(line(SUCCESSIVE, THREE)) == [(10.0, 0.0, 10.0), (10.0, 0.25, 10.25), (10.0, 0.75, 10.75)]
 
 
 LETTERS = {"A": q("0 mL"), "B": q("0.5 mL")}
 
 
 def test_the_level_without_addition_is_the_undiluted_one_whatever_its_name():
-    single = replace(FLASKS, design="single", additions=LETTERS, level_0="undiluted")
+    single = adding(LETTERS, design="single", level_0="undiluted")
     assert volumes(line(single, [reading("A"), reading("B")])) == [(10.0, 0.0, 10.0), (10.0, 0.5, 25.0)]
-    swapped = replace(single, additions={"A": q("0.5 mL"), "B": q("0 mL")})
+    swapped = adding({"A": q("0.5 mL"), "B": q("0 mL")}, single)
     assert volumes(line(swapped, [reading("A"), reading("B")])) == [(10.0, 0.5, 25.0), (10.0, 0.0, 10.0)]
 
 
 def test_a_level_named_0_needs_no_declaration():
-    single = replace(FLASKS, design="single", additions={"1": q("0.5 mL")}, level_0="undiluted")
+    single = adding({"1": q("0.5 mL")}, design="single", level_0="undiluted")
     assert volumes(line(single, [reading("0"), reading("1")])) == [(10.0, 0.0, 10.0), (10.0, 0.5, 25.0)]
 
 
 def test_successive_totals_are_taken_as_said():
-    successive = replace(FLASKS, design="successive", final=None, deliveries="total")
+    successive = replace(FLASKS, design="successive", final={})
     assert volumes(line(successive, THREE))[2] == (10.0, 0.5, 10.5)
 
 
 def test_a_level_that_was_not_measured_was_still_delivered():
-    successive = replace(FLASKS, design="successive", final=None, deliveries="each")
-    assert volumes(line(successive, [reading("0"), reading("2")]))[1] == (10.0, 0.75, 10.75)
+    assert volumes(line(SUCCESSIVE, [reading("0"), reading("2")]))[1] == (10.0, 0.75, 10.75)
 
 
-def successive_by_column(*levels: str, **changes):
-    successive = replace(FLASKS, design="successive", final=None, deliveries="each", **changes)
+def successive_by_column(*levels: str, additions: dict[str, Quantity] | None = None):
+    successive = SUCCESSIVE if additions is None else adding(additions, SUCCESSIVE)
     values = {level: () if level == "0" else (("addition", "0.5 mL", "column"),) for level in levels}
     return line(successive, [reading(level, *values[level]) for level in levels])
 
@@ -114,12 +122,11 @@ def test_a_delivery_that_nobody_tells_is_in_every_later_vessel():
 
 
 def test_a_final_volume_that_was_read_goes_before_the_sum_of_the_parts():
-    successive = replace(FLASKS, design="successive", final=None, deliveries="each")
     readings = [reading(level, ("final", "50 mL", "column")) for level in ("0", "1", "2")]
-    assert [final for _, _, final in volumes(line(successive, readings))] == [50.0, 50.0, 50.0]
-    short = line(successive, [reading("0"), reading("1", ("final", "9 mL", "column")), reading("2")])
+    assert [final for _, _, final in volumes(line(SUCCESSIVE, readings))] == [50.0, 50.0, 50.0]
+    short = line(SUCCESSIVE, [reading("0"), reading("1", ("final", "9 mL", "column")), reading("2")])
     assert any("do not fit into the final volume" in problem for problem in short.problems)
-    contracted = line(successive, [reading("0"), reading("1", ("final", "10.2 mL", "column")), reading("2")])
+    contracted = line(SUCCESSIVE, [reading("0"), reading("1", ("final", "10.2 mL", "column")), reading("2")])
     assert contracted.problems == ()
 
 
@@ -129,7 +136,7 @@ def test_the_unspiked_reading_of_the_undiluted_solution():
 
 
 def test_diluent_enters_every_vessel():
-    successive = replace(FLASKS, design="successive", final=None, deliveries="each", diluent=q("50 mL"))
+    successive = replace(SUCCESSIVE, diluent=q("50 mL"))
     assert volumes(line(successive, THREE))[1] == (10.0, 0.25, 60.25)
 
 
@@ -151,7 +158,7 @@ def test_equal_amounts_in_other_units_do_not_contradict():
     readings = [reading("0"), reading("1", ("addition", "0.3 mL", "column"), ("addition", "300 uL", "name"))]
     prepared = line(FLASKS, readings, bench=(entry(("addition", "0.30 mL"), level="1"),))
     assert prepared.problems == ()
-    assert prepared.vessels[1].addition_ml == 0.3
+    assert prepared.vessels[1].addition == 0.3
 
 
 def test_two_sources_that_disagree_fail_the_series_and_are_both_named():
@@ -163,7 +170,7 @@ def test_two_sources_that_disagree_fail_the_series_and_are_both_named():
 
 
 def test_volumes_that_do_not_fit_the_flask_are_a_problem():
-    prepared = line(replace(FLASKS, final=q("10.2 mL")), THREE)
+    prepared = line(replace(FLASKS, final={"": q("10.2 mL")}), THREE)
     assert any("do not fit into the final volume" in problem for problem in prepared.problems)
 
 
@@ -187,7 +194,7 @@ def test_a_mass_that_the_bench_still_owes_makes_the_series_wait():
 def test_dry_matter_and_dilution_enter_the_factor():
     mud = replace(
         FLASKS, report_in="mg/kg",
-        sample=SampleRule(mass=q("0.5 g"), digest=q("50 mL"), dry_matter=q("80 %"), dilution=q("5")),
+        sample=SampleRule(mass=q("0.5 g"), digest=q("50 mL"), dry_matter=q("80 %"), dilution=(q("5"),)),
     )  # fmt: skip
     back = line(mud, THREE).way_back
     # 100 mg/kg per mg/L, times 5 for the dilution, over 0.8: exact arithmetic.
@@ -197,12 +204,12 @@ def test_dry_matter_and_dilution_enter_the_factor():
 
 
 def test_a_report_unit_that_the_sample_cannot_reach_is_a_problem():
-    water = replace(FLASKS, report_in="mg/kg", sample=SampleRule(dilution=q("2")))
+    water = replace(FLASKS, report_in="mg/kg", sample=SampleRule(dilution=(q("2"),)))
     (problem,) = line(water, THREE).problems
     assert problem == (
         "report_in asks for mg/kg, a mass per mass, but from a standard in mg/L the sample block leads to a mass per "
-        "volume (it gives neither mass nor digest); report in a unit such as mg/L, or give mass and digest for a "
-        "content per mass"
+        "volume (it gives neither mass nor digest); report in a unit such as mg/L, give mass and digest for a content "
+        "per mass or give the density of the sample"
     )
 
 
@@ -241,8 +248,8 @@ def test_series_without_a_preparation_say_so():
 def test_a_bench_entry_of_a_sample_does_not_reach_the_process_blank_of_the_same_number():
     blank = SeriesKey("inbox", "", "N1", "process_blank", "7")
     readings = [replace(each, series=blank) for each in THREE]
-    diluted = replace(FLASKS, sample=SampleRule(dilution=q("2")))
-    for rule, factor in ((diluted, 2.0), (replace(diluted, sample=SampleRule(dilution="bench")), 10.0)):
+    diluted = replace(FLASKS, sample=SampleRule(dilution=(q("2"),)))
+    for rule, factor in ((diluted, 2.0), (replace(diluted, sample=SampleRule(dilution=("bench",))), 10.0)):
         (batch,) = in_force(readings, book(rule))
         batch = replace(batch, bench=(entry(("dilution", "1 + 9")),))
         (prepared,) = prepare(batch.members[blank], batch, book(rule))

@@ -57,6 +57,8 @@ def test_every_code_is_its_own_spelling_and_has_a_positive_factor():
         (("mol/L", "M", "mol/l", "mol L-1", "mol/dm3"), "mol/L"),
         (("umol/L", "µM", "μmol/l", "uM"), "umol/L"),
         (("mg/kg", "mg kg-1", "mg·kg⁻¹"), "mg/kg"),
+        (("Cel", "°C", "degC"), "Cel"),
+        (("g/mL", "kg/L", "g/cm³", "kg/dm³"), "g/mL"),
         (("1", "", "x"), "1"),
         (("h", "hour", "hours"), "h"),
     ],
@@ -66,7 +68,7 @@ def test_spellings(spellings: tuple[str, ...], code: str):
 
 
 @pytest.mark.parametrize(
-    "spelling", ["ML", "Mg/L", "mg/l/kg", "mgL", "g/", "/L", "L-1", "zzz", "°C", "mg N/L", "pH", "AU"]
+    "spelling", ["ML", "Mg/L", "mg/l/kg", "mgL", "g/", "/L", "L-1", "zzz", "°F", "mg N/L", "pH", "AU"]
 )
 def test_other_spellings_are_not_guessed(spelling: str):
     assert unit_code(spelling) is None

@@ -14,11 +14,19 @@ from hypothesis import strategies as st
 from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
 from spikeward.rules.records import FAULTY, MISSING, NOT_DETECTED, OVER_RANGE, Reading, SeriesKey
 from spikeward.rules.solve.background import background_of
+from spikeward.rules.solve.corrections import Corrections
+from spikeward.rules.solve.job import Job
 from spikeward.rules.solve.lines import solve_lines
 from spikeward.rules.solve.solved import Background, Solved
 
 KEY = SeriesKey("", "", "B1", "sample", "S1")
 SLOT = (KEY.batch_key, "Cd", "228.8")
+
+
+def jobs(lines, backgrounds=None):
+    """Each line with the background of its batch, as an evaluation would ask for them."""
+    known = backgrounds or {}
+    return [Job(one, Corrections(known.get((one.key.batch_key, one.analyte, one.line)))) for one in lines]
 
 
 def read(signal, level="0", vessel="", qualifier="", readings=1, sd=None, row=2, key=KEY, solution="", already=()):
@@ -39,7 +47,7 @@ def line(*vessels, back=None, key=KEY):
 
 
 def solve(*vessels, back=None, backgrounds=None, coverage=0.95) -> Solved:
-    return solve_lines([line(*vessels, back=back)], backgrounds or {}, coverage)[0]
+    return solve_lines(jobs([line(*vessels, back=back)], backgrounds or {}), coverage)[0]
 
 
 X, Y = (0.0, 1.0, 2.0, 3.0), (0.31, 0.44, 0.62, 0.75)
@@ -83,7 +91,7 @@ def test_the_background_comes_off_before_the_volumes():
     backgrounds = {SLOT: Background(0.03, None, 0, 1, (), "A")}
     assert solve(*growing(0.03), backgrounds=backgrounds).content.content == pytest.approx(0.5, rel=1e-12)
     # subtracted from the corrected signals, or not at all, it would not be 0.500
-    after = solve(*[replace(v, final_ml=10.0) for v in growing(0.03)], backgrounds=backgrounds).content.content
+    after = solve(*[replace(v, final=10.0) for v in growing(0.03)], backgrounds=backgrounds).content.content
     assert abs(after - 0.5) > 0.01
     assert solve(*growing(0.03)).content.content > 0.6
 
@@ -117,7 +125,7 @@ def test_a_shared_background_error_is_covered():
         lines.append(line(*(vessel(j, x, s) for j, (x, s) in enumerate(zip(X, signals, strict=True))), key=key))
         mean = 0.2 + rng.normal(0, 1.5 * noise)
         backgrounds[key.batch_key, "Cd", "228.8"] = Background(mean, 1.5 * noise, 60, 61, (), "A")
-    for solved in solve_lines(lines, backgrounds, 0.95):
+    for solved in solve_lines(jobs(lines, backgrounds), 0.95):
         lower, upper = solved.fit_half_widths
         alone += solved.content.content - lower <= truth <= solved.content.content + upper
         widened += solved.content.interval[0] <= truth <= solved.content.interval[1]
@@ -260,7 +268,7 @@ def test_an_exact_fit_says_that_zero_is_not_real():
 
 def test_problems_of_the_preparation_come_first():
     failing = replace(line(*GOOD), problems=("no final volume is known.",))
-    assert solve_lines([failing], {}, 0.95)[0].no_number == "no final volume is known."
+    assert solve_lines(jobs([failing]), 0.95)[0].no_number == "no final volume is known."
 
 
 def test_the_way_back_scales_every_digit():
@@ -285,7 +293,7 @@ def test_the_order_of_vessels_changes_no_digit(order):
 def test_other_units_give_the_same_content():
     known, plain = {SLOT: Background(0.01, 0.002, 4, 5, (), "A")}, GOOD
     milli = [replace(v, added=v.added * 1000.0) for v in plain]
-    litres = [replace(v, added=v.added / 1000.0, aliquot_ml=1e-3, final_ml=1e-3) for v in plain]
+    litres = [replace(v, added=v.added / 1000.0, aliquot=1e-3, final=1e-3) for v in plain]
     a, b, c = (solve(*v, backgrounds=known).content for v in (plain, milli, litres))
     for other, factor in ((b, 1000.0), (c, 1.0)):
         assert other.content == pytest.approx(factor * a.content, rel=1e-12)
@@ -300,10 +308,10 @@ def test_alone_and_in_company():
         made = [vessel(j, float(x), float(0.3 * (1 + x) + rng.normal(0, 0.02))) for j, x in enumerate(xs)]
         lines.append(line(*made, key=key))
         known[key.batch_key, "Cd", "228.8"] = Background(0.013 * (i % 5), 0.001, 5, 6, (), "A")
-    together = solve_lines(lines, known, 0.95)
-    assert together == tuple(solve_lines([one], known, 0.95)[0] for one in lines)
-    assert together[::-1] == solve_lines(lines[::-1], known, 0.95)
-    assert solve_lines([], {}, 0.95) == ()
+    together = solve_lines(jobs(lines, known), 0.95)
+    assert together == tuple(solve_lines(jobs([one], known), 0.95)[0] for one in lines)
+    assert together[::-1] == solve_lines(jobs(lines[::-1], known), 0.95)
+    assert solve_lines(jobs([]), 0.95) == ()
 
 
 BLANK = SeriesKey("", "", "B1", "background", "")
@@ -353,7 +361,7 @@ def test_coverage_with_backgrounds_that_are_read_twice():
         backgrounds[key.batch_key, "Cd", "228.8"] = background_of(blanks)
         signals = [0.02 + 0.3 + x / 4 + rng.normal(0, 0.0005) for x in X]
         lines.append(line(*(vessel(j, x / 4, s) for j, (x, s) in enumerate(zip(X, signals, strict=True))), key=key))
-    intervals = [solved.content.interval for solved in solve_lines(lines, backgrounds, 0.95)]
+    intervals = [solved.content.interval for solved in solve_lines(jobs(lines, backgrounds), 0.95)]
     inside = sum(low <= 0.3 <= high for low, high in intervals)
     assert 0.93 < inside / nights < 0.995
 
@@ -404,7 +412,7 @@ def test_coverage_where_small_aliquots_are_noisy():
             vessel(j, 2.5 * j / v0, s, v0, 25.0) for j, (s, v0) in enumerate(zip(signals, aliquots, strict=True))
         ]
         lines.append(line(*vessels, key=replace(KEY, sample=f"S{i}")))
-    intervals = [solved.content.interval for solved in solve_lines(lines, {}, 0.95)]
+    intervals = [solved.content.interval for solved in solve_lines(jobs(lines), 0.95)]
     assert 0.935 < sum(low <= 0.3 <= high for low, high in intervals) / series < 0.965
 
 

@@ -189,6 +189,8 @@ def company_dependent(source: str) -> list[str]:
     found = []
     for node in ast.walk(ast.parse(source)):
         if isinstance(node, ast.Call) and isinstance(node.func, ast.Attribute) and node.func.attr in FORBIDDEN:
+            if isinstance(node.func.value, ast.Name) and node.func.value.id == "math":
+                continue  # plain numbers, one after another
             found.append(node.func.attr)
         if isinstance(node, (ast.BinOp, ast.AugAssign)) and isinstance(node.op, ast.MatMult):
             found.append("@")

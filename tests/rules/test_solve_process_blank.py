@@ -11,6 +11,8 @@ import pytest
 
 from spikeward.rules.prepared import PreparedLine, PreparedVessel, WayBack
 from spikeward.rules.records import Reading, SeriesKey
+from spikeward.rules.solve.corrections import Corrections
+from spikeward.rules.solve.job import Job
 from spikeward.rules.solve.lines import solve_lines
 from spikeward.rules.solve.process_blank import blank_amount, subtract_process_blank
 from spikeward.rules.solve.solved import Background, Solved
@@ -19,6 +21,12 @@ KEY = SeriesKey("", "", "B1", "sample", "S1")
 NOISE = (0.001, -0.002, 0.0015, -0.0005)
 BACK = WayBack(50.0, "mg/kg", "", 25.0, 0.5, "0.5 g made up to 25 mL")
 BLANK_BACK = WayBack(1.0, "mg/L", "", 20.0, None, "made up to 20 mL")
+
+
+def jobs(lines, backgrounds=None):
+    """Each line with the background of its batch, as an evaluation would ask for them."""
+    known = backgrounds or {}
+    return [Job(one, Corrections(known.get((one.key.batch_key, one.analyte, one.line)))) for one in lines]
 
 
 def line(truth, sensitivity, key, back, already=(), noise=NOISE, unit="mg/L", levels=4) -> PreparedLine:
@@ -34,12 +42,12 @@ def line(truth, sensitivity, key, back, already=(), noise=NOISE, unit="mg/L", le
 
 
 def sample(truth=2.0, **more) -> Solved:
-    return solve_lines([line(truth, 0.12, KEY, more.pop("back", BACK), **more)], {}, 0.95)[0]
+    return solve_lines(jobs([line(truth, 0.12, KEY, more.pop("back", BACK), **more)]), 0.95)[0]
 
 
 def blank(truth, name="PB1", back=BLANK_BACK, **more) -> Solved:
     key = replace(KEY, role="process_blank", sample=name)
-    return solve_lines([line(truth, 0.20, key, back, **more)], {}, 0.95)[0]
+    return solve_lines(jobs([line(truth, 0.20, key, back, **more)]), 0.95)[0]
 
 
 def test_amounts_not_signals():
@@ -98,7 +106,7 @@ def test_the_background_of_sample_and_blanks_is_one(truths):
 
     def net(shift, known):
         backgrounds = {(KEY.batch_key, "Cd", ""): Background(0.01 + shift, known, 5, 6, (), "")}
-        before, *blanks = solve_lines(lines, backgrounds, 0.95)
+        before, *blanks = solve_lines(jobs(lines, backgrounds), 0.95)
         return subtract_process_blank(before, blanks, 0.95).in_sample
 
     effect = (net(1e-5, None).content - net(-1e-5, None).content) / 2e-5
@@ -137,7 +145,7 @@ def test_coverage_with_blanks_over_one_background(count, low, high):
         vessels = 0.02 + rng.normal(0, 0.0012, 3)
         key = replace(KEY, batch=f"B{i}").batch_key
         backgrounds[key, "Cd", ""] = Background(vessels.mean(), vessels.std(ddof=1) / 3**0.5, 2, 3, (), "")
-    solved, inside = solve_lines(lines, backgrounds, 0.95), 0
+    solved, inside = solve_lines(jobs(lines, backgrounds), 0.95), 0
     for i in range(nights):
         before, *blanks = solved[i * (count + 1) : (i + 1) * (count + 1)]
         interval = subtract_process_blank(before, blanks, 0.95).in_sample.interval
@@ -161,10 +169,16 @@ def test_a_sample_by_one_addition_keeps_its_reason():
     assert after.in_sample.reason == before.in_sample.reason
 
 
+def with_background(solved):
+    """The same blank, one background of no uncertainty having been taken off its signals."""
+    net = solve_lines([Job(solved.prepared, Corrections(Background(0.0, 0.001, 5, 6, (), "")))], 0.95)[0]
+    return replace(net, background=Background(0.01, 0.0, 5, 6, (), ""))
+
+
 def test_the_background_stays_in_the_uncertainty():
     known = {(KEY.batch_key, "Cd", ""): Background(0.01, 0.004, 5, 6, (), "")}
-    before = solve_lines([line(2.0, 0.12, KEY, BACK)], known, 0.95)[0]
-    blanks = [replace(blank(0.10, name), background=Background(0.01, 0.0, 5, 6, (), "")) for name in ("PB1", "PB2")]
+    before = solve_lines(jobs([line(2.0, 0.12, KEY, BACK)], known), 0.95)[0]
+    blanks = [with_background(blank(0.10, name)) for name in ("PB1", "PB2")]
     after = subtract_process_blank(before, blanks, 0.95)
     fit, floor = 50 * before.fit_uncertainty, 40 * blanks[0].fit_uncertainty / math.sqrt(2)
     # 50 for the sample's factor, 40 for 20 mL over 0.5 g; dC/dB of the blank is taken off that of the sample
