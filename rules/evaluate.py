@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 from spikeward.rules.checks.batch import check_batch
+from spikeward.rules.checks.reruns import beside_each_other
 from spikeward.rules.checks.subject import Context, LineKey
 from spikeward.rules.night import TURNS, Earlier, Night, Series, gather
 from spikeward.rules.outcomes import FAIL, BatchOutcome, Outcome
@@ -13,7 +14,6 @@ from spikeward.rules.records import Batch, BatchKey, SeriesKey
 from spikeward.rules.report import Standing, report
 from spikeward.rules.rulebook import Rulebook
 from spikeward.rules.series import closing_missing
-from spikeward.rules.solve.solved import Solved
 from spikeward.rules.solving import Solution, solve_nights
 from spikeward.rules.verdicts import depends_on_batch, settled
 
@@ -46,10 +46,11 @@ def _finish(night: Night, solution: Solution, rules: Rulebook) -> BatchOutcome:
     waiting = frozenset(series.members.key for series in night.series if series.incomplete)
     waiting |= {key for key, outcome in night.standing.items() if outcome.incomplete}
     context = Context(
-        night.batch, rules, _by_role(solution.lines), waiting,
+        night.batch, rules, waiting=waiting,
         backgrounds=night.backgrounds, brackets=night.brackets, untimed=night.untimed,
         calibrations=night.calibrations, pooling=solution.pooling,
     )  # fmt: skip
+    context = beside_each_other(context, (line for lines in solution.lines.values() for line in lines))
     outcomes: dict[SeriesKey, Outcome] = dict(night.standing)
     for roles in TURNS:
         for series in night.series:
@@ -66,14 +67,6 @@ def _finish(night: Night, solution: Solution, rules: Rulebook) -> BatchOutcome:
         check_batch(context, ordered, night.lacking),
         night.lacking,
     )
-
-
-def _by_role(of_series: Mapping[SeriesKey, tuple[Solved, ...]]) -> dict[tuple[str, LineKey], tuple[Solved, ...]]:
-    found: dict[tuple[str, LineKey], list[Solved]] = {}
-    for key, lines in of_series.items():
-        for line in lines:
-            found.setdefault((key.role, (line.prepared.analyte, line.prepared.line)), []).append(line)
-    return {place: tuple(lines) for place, lines in found.items()}
 
 
 def _complete(night: Night) -> frozenset[SeriesKey]:

@@ -10,8 +10,8 @@ from spikeward.rules.checks.quality import blank_lacking
 from spikeward.rules.checks.registry import BATCH, REGISTRY, check_line
 from spikeward.rules.checks.series import completeness, conflicts
 from spikeward.rules.checks.slopes import calibration_for
-from spikeward.rules.checks.subject import Context, Subject
 from spikeward.rules.checks.straight import robust_beside
+from spikeward.rules.checks.subject import Context, Subject
 from spikeward.rules.digests import inputs_digest
 from spikeward.rules.naming import level_order
 from spikeward.rules.outcomes import PASS, WAITING, Beside, Check, Outcome, Result, VesselReport, worst

@@ -220,7 +220,7 @@ class Precision:
 
 @dataclass(frozen=True, slots=True)
 class LinesRule:
-    """Which line or isotope of an analyte is reported, and how near the others must be (a share; None: by their fits)."""
+    """Which line or isotope of an analyte is reported, and how near the others must be: a share, or by their fits."""
 
     report: str
     agree: float | None = None

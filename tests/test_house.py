@@ -20,7 +20,7 @@ AT_THE_ROOT = {
 PURE = {
     "__future__", "collections", "dataclasses", "datetime", "decimal", "enum", "fractions", "functools", "hashlib",
     "itertools", "json", "math", "operator", "re", "typing", "unicodedata", "numpy", "re2", "scipy", "spikeward",
-    "difflib", "string", "fnmatch",
+    "difflib", "string", "fnmatch", "bisect",
 }  # fmt: skip
 IMPURE_CALLS = {"open", "input", "print", "exec", "eval", "__import__", "now", "today", "utcnow", "getenv"}
 

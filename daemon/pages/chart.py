@@ -84,7 +84,9 @@ def _drawn(template: str, *values: object) -> Markup:
 
 def _crossing(result: Result) -> float | None:
     """Where the line reaches zero signal, -C0, if the result stands on it."""
-    if result.response not in _TO_ZERO or result.content is None or result.no_number or not math.isfinite(result.content.content):
+    if result.response not in _TO_ZERO or result.content is None or result.no_number:
+        return None
+    if not math.isfinite(result.content.content):
         return None
     return -result.content.content
 
@@ -249,6 +251,7 @@ def _description(result: Result, points: Sequence[Point]) -> str:
         if result.content is not None and not result.no_number:
             return f"{drawn}. The content of the test solution is {value_shown(result.content)}."
         return f"{drawn}. No content is read from the line: {visible(result.no_number) or 'there is none yet'}."
-    words = f"{drawn}. The {'curve' if result.response == 'curve' else 'line'} meets the axis at minus the content, {value_shown(result.content)} in the test solution"
+    model = "curve" if result.response == "curve" else "line"
+    words = f"{drawn}. The {model} meets the axis at minus the content, {value_shown(result.content)} in the test solution"
     interval = interval_shown(result.content)
     return f"{words}, interval {interval}." if interval else f"{words}."

@@ -64,10 +64,10 @@ _OF_ESTIMATE: dict[str, Callable[[Estimate], Cell]] = {
     "uncertainty_reason": lambda estimate: estimate.reason,
 }
 COLUMNS = (
-    "root", "folder", "batch", "role", "sample", "analyte", "line", "reported_line", "verdict", "series_verdict", "final", "waiting_for",
-    "no_number", *(f"sample_{name}" for name in _OF_ESTIMATE), "basis", *(f"solution_{name}" for name in _OF_ESTIMATE),
-    "response", "precision", "degrees_of_freedom", "vessels", "excluded_vessels", "checks_to_look_at", "slope", "slope_uncertainty", "intercept",
-    "intercept_uncertainty", "residual_sd", "signal_unit", "background", "blank", "inputs_digest", "rules_digest",
+    "root", "folder", "batch", "role", "sample", "analyte", "line", "reported_line", "verdict", "series_verdict",
+    "final", "waiting_for", "no_number", *(f"sample_{name}" for name in _OF_ESTIMATE), "basis", *(f"solution_{name}" for name in _OF_ESTIMATE),
+    "response", "precision", "degrees_of_freedom", "vessels", "excluded_vessels", "checks_to_look_at", "slope",
+    "slope_uncertainty", "intercept", "intercept_uncertainty", "residual_sd", "signal_unit", "background", "blank", "inputs_digest", "rules_digest",
     "calculation_version",
 )  # fmt: skip
 

@@ -32,8 +32,7 @@ REPEATABILITY_FACTOR = 2.8
 def partner(subject: Subject, role: str) -> Solved | None:
     """The same sample's line in a series of another role of the batch; of several dilutions the one to report."""
     name = original(subject.solved.prepared)
-    every = subject.context.solved.get((role, subject.line_key), ())
-    found = [solved for solved in every if original(solved.prepared) == name]
+    found = subject.context.runs.get((role, subject.line_key, name), ())
     chosen = reported_rerun(found, subject.context)
     return next((solved for solved in found if solved.prepared.key == chosen), found[0] if found else None)
 

@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
+from dataclasses import replace
 
 from spikeward.rules.checks.chance import allowed, amount_words, factor_of, gravest, in_sample_pair, of_fit
 from spikeward.rules.checks.signal import linear_top
 from spikeward.rules.checks.subject import (
     NO_LIMITS,
     Context,
+    LineKey,
     Subject,
     not_evaluated,
     number,
@@ -38,15 +40,26 @@ def original_of(members: Members) -> str:
     return told[0] if told else members.key.sample
 
 
+def beside_each_other(context: Context, lines: Iterable[Solved]) -> Context:
+    """The context with the lines of its batch in it, by role and line, and by the sample that they are runs of."""
+    solved: dict[tuple[str, LineKey], list[Solved]] = {}
+    runs: dict[tuple[str, LineKey, str], list[Solved]] = {}
+    for line in lines:
+        role, place = line.prepared.key.role, (line.prepared.analyte, line.prepared.line)
+        solved.setdefault((role, place), []).append(line)
+        runs.setdefault((role, place, original(line.prepared)), []).append(line)
+    return replace(
+        context,
+        solved={place: tuple(found) for place, found in solved.items()},
+        runs={place: tuple(found) for place, found in runs.items()},
+    )
+
+
 def runs_of(subject: Subject) -> tuple[Solved, ...]:
     """Every run of the subject's sample on its line, itself among them, the lowest dilution first."""
-    key, name = subject.solved.prepared.key, original(subject.solved.prepared)
-    found = [
-        solved
-        for solved in subject.context.solved.get((subject.role, subject.line_key), ())
-        if original(solved.prepared) == name and solved.prepared.key != key
-    ]
-    return tuple(sorted((subject.solved, *found), key=_order))
+    name = original(subject.solved.prepared)
+    found = subject.context.runs.get((subject.role, subject.line_key, name), (subject.solved,))
+    return tuple(sorted(found, key=_order))
 
 
 def _order(solved: Solved) -> tuple[float, bool, SeriesKey]:

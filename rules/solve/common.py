@@ -1,4 +1,4 @@
-"""What every model shares on the way from a fit to a result: the bare line, and the interval with all that is common."""
+"""What every model shares between fit and result: the bare line, and the interval with all that is common."""
 
 from __future__ import annotations
 

@@ -23,6 +23,10 @@ from spikeward.rules.solve.separable import (
     share_of,
 )
 
+_BETWEEN = np.array([2.0 ** (power / 8.0) for power in range(-48, 49) if power % 8])
+_GRID = np.sort(np.concatenate([BOTH_SIDES, _BETWEEN]))
+"""Finer near the additions: a strongly bent profile has its valley and its turn close to each other."""
+
 
 @dataclass(frozen=True, slots=True)
 class CurveFit:
@@ -105,12 +109,17 @@ class _Curve:
         return moved, alone - share_of(self.w, shape.bend, alone) * shape.bend
 
     def look(self, content: Floats) -> Look:
-        """The profile."""
+        """The profile. A curve that falls at no content is drawn as one whose content is too high.
+
+        A parabola has two roots and the content is that of the rising branch; the profile turns over close to it,
+        where the slope at no content changes sign.
+        """
         shape = self.shape(content)
         _, alone = self._alone(shape)
+        pull = total(self.w * shape.residuals * alone)
         return Look(
             squares=total(self.w * shape.residuals * shape.residuals),
-            pull=total(self.w * shape.residuals * alone),
+            pull=np.where(shape.slope > 0.0, pull, -np.abs(pull)),
             stiffness=total(self.w * alone * alone),
         )
 
@@ -119,8 +128,11 @@ class _Curve:
         shape = self.shape(content)
         moved, alone = self._alone(shape)
         rises = np.where(self.w > 0.0, shape.slope + 2.0 * shape.curvature * shape.c, np.inf) > 0.0
-        apart = total(self.w * alone * alone) > DUST * DUST * total(self.w * moved * moved)
-        return (shape.slope > 0.0) & rises.all(axis=0) & apart
+        stiffness, pull = total(self.w * alone * alone), total(self.w * shape.residuals * alone)
+        apart = stiffness > DUST * DUST * total(self.w * moved * moved)
+        # at the edge of what rises the profile may still fall
+        still = np.abs(pull) <= 2.0**-20 * np.abs(content) * stiffness + DUST * np.sqrt(stiffness)
+        return (shape.slope > 0.0) & rises.all(axis=0) & apart & still
 
 
 def fit_curves(x: Floats, share: Floats, signal: Floats, w: Floats, noise: Floats, coverage: float) -> CurveFits:
@@ -150,7 +162,7 @@ def _portion(x: Floats, share: Floats, signal: Floats, w: Floats, noise: Floats,
     x_power, y_power = powers_of(np.where(used, x, 0.0)), powers_of(np.where(used, signal, 0.0))
     n, declared = total(np.where(used, 1.0, 0.0)), ~np.isnan(noise)
     curve = _Curve(np.ldexp(x, -x_power), share, np.ldexp(signal, -y_power), w)
-    best = lowest(curve, BOTH_SIDES, n.size).where(n >= 3.0)
+    best = lowest(curve, _GRID, n.size).where(n >= 3.0)
     residual_sd = deviation_of(best.squares, n - 3.0)
     deviation = np.where(declared, np.ldexp(noise, -y_power), residual_sd)
     ends = interval(curve, best, deviation, np.where(declared, np.inf, n - 3.0), coverage)

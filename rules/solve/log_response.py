@@ -99,6 +99,7 @@ class _Line:
     phi_mean: Floats
     phi: Floats
     phi_squares: Floats
+    moved_mean: Floats
     moved: Floats
     pulled: Floats
     turn: Floats
@@ -108,13 +109,14 @@ class _Line:
 
 @dataclass(frozen=True, slots=True)
 class _Electrode:
-    """The readings of all series, scaled: additions above the lowest one, ln of the shares, E less its mean.
+    """Readings of all series, scaled: additions above the lowest one, ln of shares over the top one, E less its mean.
 
     ``slope`` is what is known of it, per unit of ln, zero where nothing is. ``grip`` is how hard it is held, the
     variance of E over that of the slope: zero where it is free, infinite where it is exact.
     """
 
     above: Floats
+    top_share: Floats
     log_share: Floats
     e: Floats
     w: Floats
@@ -123,12 +125,13 @@ class _Electrode:
     grip: Floats
 
     def line(self, content: Floats) -> _Line:
-        """The least-squares line, at contents that are those of the vessel of the lowest addition before its share."""
+        """The least-squares line, at contents before the shares, the lowest addition included."""
         phi = xlog1py(1.0, self.above / content) + self.log_share
         phi_mean = total(self.w * phi) / self.weight
         phi = phi - phi_mean
         moved = 1.0 / (content + self.above)
-        moved = moved - total(self.w * moved) / self.weight
+        moved_mean = total(self.w * moved) / self.weight
+        moved = moved - moved_mean
         w_phi = self.w * phi
         phi_squares, pulled = total(w_phi * phi), total(w_phi * moved)
         held = phi_squares + self.grip
@@ -140,6 +143,7 @@ class _Electrode:
             phi_mean=phi_mean,
             phi=phi,
             phi_squares=phi_squares,
+            moved_mean=moved_mean,
             moved=moved,
             pulled=pulled,
             turn=pulled / held,
@@ -167,7 +171,10 @@ class _Electrode:
         """Whether E responds, and whether content and slope can be told apart, both beyond rounding."""
         line = self.line(content)
         responds = line.slope * line.slope * line.phi_squares > DUST * DUST
-        apart = self._alone(line)[1] > DUST * DUST * total(self.w * line.moved * line.moved)
+        moved = total(self.w * line.moved * line.moved) + self.weight * line.moved_mean * line.moved_mean
+        phi = line.phi_squares + self.weight * line.phi_mean * line.phi_mean
+        # what rounding leaves is in proportion to what the means were taken from
+        apart = self._alone(line)[1] > DUST * DUST * (moved + line.turn * line.turn * phi)
         return responds & apart
 
 
@@ -217,14 +224,15 @@ def _portion(
     bottom = np.where(used, x, np.inf).min(axis=0, initial=np.inf)
     above = np.where(used, x - bottom, 0.0)
     x_power, e_power = powers_of(above), powers_of(np.where(used, e, 0.0))
-    one_x = ~(above.max(axis=0, initial=0.0) > DUST * np.abs(x).max(axis=0, initial=0.0))
-    weight = total(w)
+    one_x = ~(above.max(axis=0, initial=0.0) > DUST * np.where(used, np.abs(x), 0.0).max(axis=0, initial=0.0))
+    weight, top_share = total(w), np.where(used, share, 0.0).max(axis=0, initial=0.0)
     scaled_e = np.where(used, np.ldexp(e, -e_power), 0.0)
     mean = total(w * scaled_e) / weight
     fitted = np.isnan(slope)
     free = _Electrode(
         above=np.where(one_x, np.nan, np.ldexp(above, -x_power)),
-        log_share=np.where(used, xlogy(1.0, share), 0.0),
+        top_share=top_share,
+        log_share=np.where(used, xlogy(1.0, share / top_share), 0.0),
         e=scaled_e - mean,
         w=w,
         weight=weight,
@@ -300,7 +308,7 @@ def _unscaled(
 ) -> LogFits:
     line, ends = found.line, found.interval
     lowest_vessel = np.ldexp(found.best.content, x_power)
-    at_one_unit = mean - line.slope * (line.phi_mean + xlogy(1.0, lowest_vessel))
+    vessel_mean = line.phi_mean + xlogy(1.0, electrode.top_share) + xlogy(1.0, lowest_vessel)
     used = electrode.w > 0.0
     return LogFits(
         vessels=found.n[0],
@@ -311,7 +319,7 @@ def _unscaled(
         high=(np.ldexp(ends.high, x_power) - bottom)[0],
         slope=np.ldexp(line.slope * DECADE, e_power)[0],
         slope_uncertainty=np.ldexp(found.slope_u * DECADE, e_power)[0],
-        standard_potential=np.ldexp(at_one_unit, e_power)[0],
+        standard_potential=np.ldexp(mean - line.slope * vessel_mean, e_power)[0],
         residual_sd=np.ldexp(found.residual_sd, e_power)[0],
         exact=(found.residual_sd == 0.0)[0],
         ambiguous=found.best.ambiguous()[0],

@@ -71,7 +71,10 @@ def _packed(transformed: Sequence[Transformed]) -> tuple[Floats, Floats, Floats,
 
 def _by_residuals(transformed: Sequence[Transformed], scatters: Sequence[Scatter]) -> list[_Drawn]:
     fits = fit_lines(*_packed(transformed))
-    return [_Drawn(fits.of(column), max(len(one.rows) - 2, 0), weights_of(one.rows)) for column, one in enumerate(transformed)]
+    return [
+        _Drawn(fits.of(column), max(len(one.rows) - 2, 0), weights_of(one.rows))
+        for column, one in enumerate(transformed)
+    ]
 
 
 def _by_pool(transformed: Sequence[Transformed], scatters: Sequence[Scatter]) -> list[_Drawn]:

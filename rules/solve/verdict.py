@@ -19,8 +19,8 @@ UNSETTLED = (
     "the weights of the declared noise do not settle on one line: look at the noise under precision, or use own scatter"
 )
 UNBOUNDED = (
-    "the points do not bound the content: the scatter is as large as what the additions change, and the interval has no "
-    "end"
+    "the points do not bound the content: the scatter is as large as what the additions change, and the interval has "
+    "no end"
 )
 NOT_FOUND = "no content fits the points: look for swapped levels, a wrong sign of the slope, or a wrong addition"
 NO_NOISE = (

@@ -10,6 +10,7 @@ from scipy import stats
 
 from spikeward.rules.checks.duplicates import REPEATABILITY_FACTOR
 from spikeward.rules.checks.registry import check_line
+from spikeward.rules.checks.reruns import beside_each_other
 from spikeward.rules.checks.spikes import sample_size
 from spikeward.rules.evaluate import evaluate
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WARN
@@ -32,8 +33,8 @@ def solved(bench, content=0.3, role="sample", mass=0.5, scatter=SCATTER, basis="
 
 def among(bench, own, *others, rules=None, **context):
     subject = bench.subject_of(own.prepared, rules)
-    found = {(one.prepared.key.role, (one.prepared.analyte, one.prepared.line)): (one,) for one in (own, *others)}
-    return replace(subject, solved=own, context=replace(subject.context, solved=found, **context))
+    context = replace(subject.context, **context)
+    return replace(subject, solved=own, context=beside_each_other(context, (own, *others)))
 
 
 def in_sample(one):
@@ -112,9 +113,7 @@ def test_a_duplicate_is_held_against_the_dilution_that_is_reported(bench):
     twin = solved(bench, 0.3, "duplicate")
     over = solved(bench, 1.0)  # reads up to 1.75 A
     again = solved(bench, 0.3, sample="07-D5", rerun_of="07")
-    subject = among(bench, twin, rules=rules)
-    runs = {**subject.context.solved, ("sample", ("Cd", "")): (over, again)}
-    check = bench.check_of("duplicate", replace(subject, context=replace(subject.context, solved=runs)))
+    check = bench.check_of("duplicate", among(bench, twin, over, again, rules=rules))
     assert (check.verdict, "Sample 07-D5 gives" in check.sentence) == (PASS, True)
 
 

@@ -10,7 +10,7 @@ from scipy import stats
 
 from spikeward.rules.checks.chance import allowed
 from spikeward.rules.checks.registry import REGISTRY, check_line
-from spikeward.rules.checks.reruns import original_of, reported_rerun
+from spikeward.rules.checks.reruns import beside_each_other, original_of, reported_rerun
 from spikeward.rules.checks.slopes import slopes_differ
 from spikeward.rules.checks.spectral_lines import is_reported
 from spikeward.rules.outcomes import FAIL, NOT_EVALUATED, PASS, WARN
@@ -35,11 +35,8 @@ def solved(bench, content=0.3, line="", sample="07", role="sample", scatter=SCAT
 def among(bench, own, *others, rules=None, **context):
     """A line among others of its batch."""
     subject = bench.subject_of(own.prepared, rules)
-    found = {}
-    for one in (own, *others):
-        found.setdefault((one.prepared.key.role, (one.prepared.analyte, one.prepared.line)), []).append(one)
-    placed = {place: tuple(lines) for place, lines in found.items()}
-    return replace(subject, solved=own, context=replace(subject.context, solved=placed, **context))
+    context = replace(subject.context, **context)
+    return replace(subject, solved=own, context=beside_each_other(context, (own, *others)))
 
 
 # ---- the rule that comparisons share

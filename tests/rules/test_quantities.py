@@ -8,7 +8,17 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from spikeward.rules.quantities import UNITS, Quantity, parse_dilution, parse_quantity, unit_code
+from spikeward.rules.quantities import (
+    UNITS,
+    Quantity,
+    by_density,
+    by_molar_mass,
+    in_plain_units,
+    parse_dilution,
+    parse_quantity,
+    per,
+    unit_code,
+)
 
 
 # Exact by the definitions of the SI prefixes and of the litre (1 L = 1 dm3), BIPM, The International System of Units.
@@ -174,3 +184,35 @@ def test_there_and_back(one: str, other: str):
     if UNITS[one][0] == UNITS[other][0]:
         there = Quantity(Quantity(Decimal("2.5"), one).in_unit(other), other)
         assert abs(there.in_unit(one) - Decimal("2.5")) < Decimal("1e-25")
+
+
+def test_every_content_has_its_counterpart_per_volume_and_per_mass():
+    for code, (dimension, _) in UNITS.items():
+        what, _, of = dimension.partition(" per ")
+        if of in ("volume", "mass") and what in ("mass", "amount"):
+            assert per(code, of) == code
+            other = "mass" if of == "volume" else "volume"
+            assert UNITS[per(code, other)][0] == f"{what} per {other}"
+            assert per(per(code, other), of) == code
+        if dimension in ("mass", "amount"):
+            assert UNITS[per(code, "volume")][0] == f"{dimension} per volume"
+
+
+def test_a_density_and_a_molar_mass_lead_there_and_back():
+    density, molar_mass = parse_quantity("1.25 kg/L"), parse_quantity("112.414 g/mol")
+    assert by_density(parse_quantity("8 mL"), "mass", density) == parse_quantity("10.00 g")
+    assert by_density(parse_quantity("10 g"), "volume", density) == parse_quantity("8 mL")
+    assert by_density(parse_quantity("8 mL"), "volume", None) == parse_quantity("8 mL")
+    assert by_density(parse_quantity("8 mL"), "mass", None) is None
+    assert by_density(parse_quantity("0 mL"), "mass", None) == parse_quantity("0 g")
+    assert by_molar_mass(parse_quantity("1 mmol"), "mass", molar_mass) == parse_quantity("0.112414 g")
+    assert by_molar_mass(parse_quantity("112.414 g"), "amount", molar_mass) == parse_quantity("1 mol")
+    assert by_molar_mass(parse_quantity("1 g"), "amount", None) is None
+
+
+@pytest.mark.parametrize(
+    ("text", "read"),
+    [("10 ppm", "10 mg/L"), ("1e-3 ppm", "1e-3 mg/L"), ("ppm", "mg/L"), ("10 ppb", "10 ppb"), ("10 xppm", "10 xppm")],
+)
+def test_parts_per_million_stand_for_what_was_declared(text: str, read: str):
+    assert in_plain_units(text, {"ppm": "mg/L"}) == read

@@ -59,6 +59,23 @@ def test_exact_curves(bend, vessels, content, growth):
     assert math.isnan(fit.fit_uncertainty) == (vessels == 3)
 
 
+def test_strongly_bent_curves_are_all_found():
+    """Contents of a sixty-fourth to three times the top addition, exact signals that level off or run away."""
+    rng = np.random.default_rng(3)
+    for vessels in (3, 4, 6):
+        content = 2.0 ** rng.uniform(-6.0, 1.5, 2000)
+        x = np.sort(rng.uniform(0.0, 1.0, (vessels, 2000)), axis=0)
+        x[0], x[-1] = 0.0, 1.0
+        share = 1.0 / (1.0 + x * rng.uniform(0.0, 0.3, 2000))
+        c = (content + x) * share
+        signal = c + rng.uniform(-0.45, 3.0, 2000) / c.max(axis=0) * c * c
+        fits = fit_curves(x, share, signal, np.ones(x.shape), np.full(2000, RESIDUALS), 0.95)
+        assert np.isfinite(fits.content).all()
+        # where two vessels lie close to each other the digits of the signals limit those of the content
+        assert np.mean(np.abs(fits.content / content - 1.0) < 1e-6) > 0.995
+        assert (np.abs(fits.content / content - 1.0) < 1e-2).all()
+
+
 def random_series(rng: np.random.Generator, vessels: int, growth: float):
     content = 10.0 ** rng.uniform(-2, 2)
     x = content * np.arange(vessels) * rng.uniform(0.5, 1.2)
@@ -168,6 +185,18 @@ def test_what_is_no_rising_curve_has_no_content():
     ):
         assert math.isnan(one(x, share, signal).content)
     assert math.isfinite(one(x, share, [1.0, 1.9, 2.6, 3.2, 3.6]).content)
+
+
+numbers = st.floats(0.01, 100.0)
+
+
+@given(
+    st.lists(numbers, min_size=2, max_size=8), numbers, st.tuples(numbers, numbers), st.sampled_from([RESIDUALS, 0.1])
+)
+def test_two_levels_do_not_tell_content_and_curve(signals, top, shares, noise):
+    """However often both are measured, and whatever the shares."""
+    level = np.arange(len(signals)) % 2
+    assert math.isnan(one(top * level, np.where(level == 0, *shares), signals, noise=noise).content)
 
 
 def packed(series, deepest=0) -> CurveFits:

@@ -423,6 +423,9 @@ def test_an_end_close_to_zero():
     assert fit.low == pytest.approx(brentq(rise, 1e-9, 2.0, xtol=1e-15), rel=1e-9)
 
 
+numbers = st.floats(0.01, 100.0)
+
+
 # -- any company, any scale, any order ---------------------------------------------------------------------------------
 
 
@@ -518,18 +521,23 @@ ILL = [
 ]  # fmt: skip
 
 
-@pytest.mark.parametrize(
-    ("x", "e"),
-    [
-        ([0, 1, 2, 3, 4, 5, 6], [0.1] * 7),  # their mean is not 0.1 to the last digit
-        ([0, 0, 0.7, 0.7], [5.1, 6.2, 20.3, 21.4]),  # two contents do not tell content and slope
-        ([0, 1], [0.1, 17.3]),
-    ],
-)
 @pytest.mark.parametrize("noise", [RESIDUALS, 0.1])
-def test_rounding_is_no_response(x, e, noise):
-    share = 0.7 * np.ones(len(x))
-    assert math.isnan(one(x, share, e, FREE, 0.0, noise).content)
+@given(
+    potentials=st.lists(st.floats(-300, 300), min_size=2, max_size=8), top=numbers, shares=st.tuples(numbers, numbers)
+)
+def test_two_levels_do_not_tell_content_and_slope(noise, potentials, top, shares):
+    """However often both are measured, and whatever the shares."""
+    level = np.arange(len(potentials)) % 2
+    x, share = top * level, np.where(level == 0, *shares)
+    assert math.isnan(one(x, share, potentials, FREE, 0.0, noise).content)
+
+
+@given(st.floats(-300, 300), st.integers(2, 9), numbers)
+def test_rounding_is_no_response(potential, vessels, share):
+    """Equal potentials, whose mean need not be equal to the last digit."""
+    x, e = np.arange(float(vessels)), np.full(vessels, potential)
+    for slope in (FREE, 58.0):
+        assert math.isnan(one(x, np.full(vessels, share), e, slope).content)
 
 
 @pytest.mark.parametrize(("x", "share", "e"), ILL)
