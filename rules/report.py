@@ -122,7 +122,7 @@ def _result(subject: Subject, common: Sequence[Check], standing: Standing, repor
         intercept_uncertainty=solved.intercept_uncertainty,
         residual_sd=solved.residual_sd,
         correlation=solved.correlation,
-        degrees_of_freedom=solved.degrees_of_freedom if solved.slope is not None else 0,
+        degrees_of_freedom=solved.degrees_of_freedom if solved.slope is not None or solved.parameters else 0,
         points=solved.points,
         checks=checks,
         background=_subtracted_background(solved),

@@ -98,7 +98,8 @@ def interval_holds(result: Result, solved: Solved) -> str:
     """What the interval contains and what it leaves out."""
     if result.reported is None or not result.reported.expanded_uncertainty:
         return ""
-    parts = [_SCATTER_WORDS[solved.scatter.kind]]
+    straight = solved.prepared.response == "linear" or solved.scatter.kind != "own"
+    parts = [_SCATTER_WORDS[solved.scatter.kind] if straight else "the scatter about the fit"]
     if solved.background is not None and solved.background.standard_uncertainty is not None:
         parts.append("the background")
     if solved.reagent is not None and solved.reagent.standard_uncertainty is not None:

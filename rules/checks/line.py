@@ -241,6 +241,8 @@ def span(subject: Subject, limits: Limits) -> Check:
     The content is that of the test solution, blank included: it decides how far the line is extrapolated.
     """
     content, points = subject.solved.content, fitted_points(subject)
+    if subject.solved.prepared.response == "log":
+        return not_evaluated("span", f"{not_straight(subject)}; its steps are judged in mV")
     if why := near_zero(subject):
         return not_evaluated("span", why)
     if content is None or not points:

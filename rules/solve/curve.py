@@ -23,8 +23,8 @@ from spikeward.rules.solve.separable import (
     share_of,
 )
 
-_BETWEEN = np.array([2.0 ** (power / 8.0) for power in range(-48, 49) if power % 8])
-_GRID = np.sort(np.concatenate([BOTH_SIDES, _BETWEEN]))
+_EIGHTHS = [(1.0 + eighth / 8.0) * 2.0**power for power in range(-6, 6) for eighth in range(1, 8)]
+_GRID = np.sort(np.concatenate([BOTH_SIDES, _EIGHTHS]))
 """Finer near the additions: a strongly bent profile has its valley and its turn close to each other."""
 
 

@@ -20,7 +20,8 @@ FINAL = batch("N1", 2, "a", brackets=True) | batch("N2", 1, "b", brackets=True)
 STRICTER = CLOSING.replace("use: pack:general", "use: pack:general\n  span: {warn_outside: [1, 30]}")
 OTHER_WAIT = CLOSING.replace("settle: 1 s", "settle: 0.5 s")
 READ_OTHERWISE = CLOSING.replace('files: "*.csv"', 'files: ["*.csv", "*.txt"]')
-GOOD = (CLOSING, STRICTER, OTHER_WAIT, READ_OTHERWISE)
+LENDING = CLOSING.replace("brackets:\n", "precision: pooled\nbrackets:\n  drift: correct\n")
+GOOD = (CLOSING, STRICTER, OTHER_WAIT, READ_OTHERWISE, LENDING)
 DECISIONS = (
     b"- {exclude: N1_01_A3, by: N. Invented, on: 2031-03-03, why: flask was cracked}\n",
     b"- {exclude: N2_01_A1, by: N. Invented, on: 2031-03-03, why: flask was cracked}\n",

@@ -385,6 +385,17 @@ def test_a_reading_before_dilution_needs_no_rise():
     assert one(x, share, e, 58.0).content == pytest.approx(2.0, rel=1e-12)
 
 
+def test_no_vessel_without_an_addition():
+    """The lowest addition need not be zero."""
+    x, share, e = vessel([0.5, 1.5, 3.0, 4.0])
+    assert one(x, share, e).content == pytest.approx(2.0, rel=1e-11)
+    noisy = e + np.array([0.1, -0.1, 0.05, 0.1])
+    fit = one(x, share, noisy, -57.3, 0.0, 0.1)
+    assert fit.content == pytest.approx(least_squared(x, share, noisy, -57.3)[0], rel=1e-8)
+    assert fit.content - fit.low == pytest.approx(1.96 * fit.fit_uncertainty, rel=0.1)
+    assert fit.high - fit.content == pytest.approx(1.96 * fit.fit_uncertainty, rel=0.1)
+
+
 def test_two_contents_that_fit_alike():
     """Two undiluted readings and one at four fifths: 2 and 0.0679 both go through all three, each with its own slope.
     None is given; a fourth vessel, or the slope, decides."""
