@@ -138,7 +138,7 @@ def result_dimensions(each: Values, value: Values) -> set[str]:
     whats = set().union(*_added(each, value).values())
     if whats and value["molar_masses"]:
         whats = {"mass", "amount"}
-    ofs = {"volume", "mass"} if _density_leads(each) else {_denominator(each)}
+    ofs = {"volume", "mass"} if _density_leads(each) else _denominators(each)
     return {f"{what} per {of}" for what in whats for of in ofs}
 
 
@@ -165,16 +165,22 @@ def _added(each: Values, value: Values) -> dict[str, set[str]]:
     return found
 
 
-def _denominator(each: Values) -> str:
-    """Whether results are per volume or per mass: as the sample was taken, or else as aliquots are."""
+def _denominators(each: Values) -> set[str]:
+    """Whether results are per volume or per mass: as the sample was taken, or else as aliquots are.
+
+    Both where aliquots are told elsewhere, by volume or by mass as it will turn out.
+    """
     sample = each["sample"] or {}
     if sample.get("mass") is not None:
-        return "mass"
+        return {"mass"}
     if sample.get("volume") is not None:
-        return "volume"
+        return {"volume"}
     aliquot = each["aliquot"] or {}
     given = (aliquot.get("volume"), aliquot.get("mass"), *(aliquot.get("levels") or {}).values())
-    return "mass" if any(one is not None and one.dimension == "mass" for one in given) else "volume"
+    kinds = {one.dimension for one in given if one is not None}
+    if each["spiked"] != "sample" and not kinds:
+        return {"volume", "mass"}
+    return {"mass"} if "mass" in kinds else {"volume"}
 
 
 def _density_leads(each: Values) -> bool:
@@ -189,15 +195,15 @@ def _check_report_unit(each: Values, path: str, value: Values, walker: Walker) -
     parts = ("report_in", "sample", "additions", "aliquot", "for", "density")
     if not each["report_in"] or not walker.sound("standards", "molar_masses", *(f"{path}.{part}" for part in parts)):
         return
-    unit, added, of = each["report_in"], _added(each, value), _denominator(each)
+    unit, added, ofs = each["report_in"], _added(each, value), _denominators(each)
     what, _, asked = UNITS[unit][0].partition(" per ")
     lacking = sorted(name for name, ways in added.items() if ways != {what} and name not in value["molar_masses"])
     ways = []
-    if asked != of and not _density_leads(each):
+    if asked not in ofs and not _density_leads(each):
         ways.append("give mass and digest for a content per mass, or density" if asked == "mass" else "give density")
     if lacking:
         ways.append(f"give the molar mass of {listed(lacking)} under molar_masses")
     if added and ways:
-        leads = one_of(tuple(sorted({f"{one} per {of}" for each_ in added.values() for one in each_})))
+        leads = one_of(tuple(sorted({f"{one} per {of}" for each_ in added.values() for one in each_ for of in ofs})))
         told = f"{unit} is a unit of {UNITS[unit][0]}; standard and sample lead to {leads}"
         walker.at(f"{path}.report_in", "R015", told, "", f"{' and '.join(ways)}, or correct the unit")

@@ -102,11 +102,11 @@ class _Curve:
         residuals = self.signal - straight * c - curvature * bend
         return _Shape(c, bend, straight - curvature * followed, curvature, residuals)
 
-    def _alone(self, shape: _Shape) -> tuple[Floats, Floats]:
-        """How signals change with the content, and what of it neither slope nor curvature can follow."""
+    def _alone(self, shape: _Shape) -> Floats:
+        """What of the change of signals with the content neither slope nor curvature can follow."""
         moved = self.share * (shape.slope + 2.0 * shape.curvature * shape.c)
         alone = moved - share_of(self.w, shape.c, moved) * shape.c
-        return moved, alone - share_of(self.w, shape.bend, alone) * shape.bend
+        return alone - share_of(self.w, shape.bend, alone) * shape.bend
 
     def look(self, content: Floats) -> Look:
         """The profile. A curve that falls at no content is drawn as one whose content is too high.
@@ -115,7 +115,7 @@ class _Curve:
         where the slope at no content changes sign.
         """
         shape = self.shape(content)
-        _, alone = self._alone(shape)
+        alone = self._alone(shape)
         pull = total(self.w * shape.residuals * alone)
         return Look(
             squares=total(self.w * shape.residuals * shape.residuals),
@@ -126,10 +126,14 @@ class _Curve:
     def sound(self, content: Floats) -> Bools:
         """Whether the response rises from no content to every vessel, and the content can be told from it."""
         shape = self.shape(content)
-        moved, alone = self._alone(shape)
+        alone = self._alone(shape)
         rises = np.where(self.w > 0.0, shape.slope + 2.0 * shape.curvature * shape.c, np.inf) > 0.0
         stiffness, pull = total(self.w * alone * alone), total(self.w * shape.residuals * alone)
-        apart = stiffness > DUST * DUST * total(self.w * moved * moved)
+        # what rounding leaves is in proportion to the terms, which may cancel, and to the squares that a slope follows
+        terms = self.share * (np.abs(shape.slope) + 2.0 * np.abs(shape.curvature * shape.c))
+        square = shape.c * shape.c
+        blur = total(self.w * terms * terms) * total(self.w * square * square)
+        apart = stiffness * total(self.w * shape.bend * shape.bend) > DUST * DUST * blur
         # at the edge of what rises the profile may still fall
         still = np.abs(pull) <= 2.0**-20 * np.abs(content) * stiffness + DUST * np.sqrt(stiffness)
         return (shape.slope > 0.0) & rises.all(axis=0) & apart & still
