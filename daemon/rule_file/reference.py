@@ -85,8 +85,6 @@ def _with_comment(line: str, comment: str, pad: str) -> Iterator[str]:
 
 def _told(field: Field) -> str:
     default = _default_text(field)
-    if default and field.example.strip("\"'") == default:
-        return f"{field.description.removesuffix('.')} (the default)."
     return field.description + (f" Default: {default}." if default else "")
 
 

@@ -47,7 +47,7 @@ def electrode_slope(subject: Subject, limits: Limits) -> Check:
     half = t_quantile(freedom, subject.context.rules.coverage) * u if u > 0.0 and freedom > 0 else 0.0
     spread = f" ± {percent(half)}" if half else ""
     sentence = (
-        f"The slope is {figure(slope.value)} {slope.unit or 'mV'} per decade, "
+        f"The slope is {figure(slope.value)} {slope.unit or 'mV per decade'}, "
         f"{near_limits(share, limits, 3)}{spread} of what theory says"
     )
     remedy = "Look at the electrode, its filling and the temperature; check its slope in two standards"

@@ -131,7 +131,7 @@ def _subtracted(
         notes = (*notes, NEGATIVE)
     return replace(
         solved, in_sample=estimate, effective_degrees_of_freedom=nu, blank=mean, blanks=len(used), blank_note=note,
-        notes=notes,
+        notes=notes, corrected=(*solved.corrected, f"{note[:1].upper()}{note[1:]}."),
     )  # fmt: skip
 
 

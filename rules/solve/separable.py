@@ -15,7 +15,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, fields, replace
 from itertools import count
 from typing import Any, Protocol, TypeVar
 
@@ -75,8 +75,10 @@ class Best:
 
     def where(self, enough: Bools) -> Best:
         """The same with a content for some series only."""
-        kept = (np.where(enough, each, np.nan) for each in (self.content, self.squares, self.stiffness))
-        return Best(*kept, self.rival, self.rival_squares)
+        content, squares, stiffness = (
+            np.where(enough, each, np.nan) for each in (self.content, self.squares, self.stiffness)
+        )
+        return replace(self, content=content, squares=squares, stiffness=stiffness)
 
     def ambiguous(self) -> Bools:
         """Whether two contents fit to all digits, so that the readings do not say which; then there is none."""

@@ -122,7 +122,8 @@ def _solved(job: Job, transformed: Transformed, drawn: _Drawn, coverage: float) 
         refused = UNSETTLED
     if refused:
         return replace(bare_one, no_number=refused)
-    least = min(row.factor for row in rows)  # of a vessel of weight 1
+    most = max(drawn.weights)
+    least = min(row.factor for row, weight in zip(rows, drawn.weights, strict=True) if weight == most)
     has_scatter = drawn.dof > 0 and math.isfinite(fit.slope_uncertainty)
     corrected = bare_one.background is not None or bare_one.reagent is not None
     background_effect, reagent_effect = _effects(rows, drawn.weights, fit) if corrected else (None, None)

@@ -11,7 +11,7 @@ from spikeward.rules.solve.common import bare, with_interval, without_uncertaint
 from spikeward.rules.solve.h_point import solve_h_point
 from spikeward.rules.solve.job import Job
 from spikeward.rules.solve.overlap import Overlap, solve_overlap
-from spikeward.rules.solve.solved import Background, Solved
+from spikeward.rules.solve.solved import OWN, Background, Scatter, Solved
 from spikeward.rules.solve.transform import Transformed, transform
 from spikeward.rules.solve.verdict import NO_NOISE, negative
 from spikeward.rules.uncertainty.fieller import t_quantile
@@ -19,6 +19,8 @@ from spikeward.rules.uncertainty.interval import Component, FitPart
 from spikeward.rules.words import line_words, listed
 
 Place = tuple[str, str, str]  # level, vessel, run
+
+_OF_THESE_LINES = Scatter(words="its own scatter, because lines that overlap are solved with no other")
 
 
 def members_of(jobs: Sequence[Job], rule: OverlapRule) -> tuple[Job, ...]:
@@ -50,13 +52,33 @@ def solve_together(jobs: Sequence[Job], rule: OverlapRule, coverage: float) -> l
         return [replace(one, no_number=one.no_number or refused) for one in shown.values()]
     places = _places(transformed)
     if rule.method == "h_point":
-        return [_by_h_point(one, jobs, transformed, places, rule, coverage) for one in shown.values()]
-    return _generalised(shown, jobs, transformed, places, rule, coverage)
+        solved = [_by_h_point(one, jobs, transformed, places, rule, coverage) for one in shown.values()]
+    else:
+        solved = _generalised(shown, jobs, transformed, places, rule, coverage)
+    return [_told(one, rule) for one in solved]
+
+
+def _told(solved: Solved, rule: OverlapRule) -> Solved:
+    """With what was solved together, and what that does not show."""
+    line, at = solved.prepared, listed(rule.at)
+    if rule.method == "h_point":
+        interferent = rule.interferent or "the interferent"
+        told = f"{at} were solved together: what {interferent} adds equally at both is not in the result."
+        open_question = f"That {interferent} answers equally at {at} was declared; these vessels do not show it."
+    else:
+        told = f"{at} were solved together for {listed(rule.analytes)}, each of which was added."
+        open_question = "What overlaps and was not itself added is not corrected."
+    return replace(
+        solved,
+        prepared=replace(line, cannot_tell=(open_question, *line.cannot_tell)),
+        corrected=(*solved.corrected, told),
+    )
 
 
 def _drawn(job: Job, transformed: Transformed) -> Solved:
     one = bare(job, transformed)
-    return replace(one, prepared=replace(one.prepared, response="overlap"))
+    scatter = one.scatter if one.scatter == OWN else _OF_THESE_LINES
+    return replace(one, prepared=replace(one.prepared, response="overlap"), scatter=scatter)
 
 
 def _refused(jobs: Sequence[Job], transformed: Sequence[Transformed], rule: OverlapRule) -> str:

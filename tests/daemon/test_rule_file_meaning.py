@@ -26,7 +26,7 @@ def problems_of(*edits: Edit) -> tuple[Problem, ...]:
     return load_rules(text, "rules.yaml")[1]
 
 
-READER_ENCODING = """encoding: auto                              # The character set (the default).
+READER_ENCODING = """encoding: auto                              # The character set. Default: auto.
     delimiter"""
 READER_LINE = "  - folder: inbox"
 SAMPLE_RULE = "  - role: sample\n"

@@ -166,7 +166,7 @@ def electrode(bench, efficiency=0.98, u=0.002, steps=(20.0, 15.0, 11.0), slope=N
         subject.solved.prepared, response="log", electrode=Electrode(charge, 25.0, slope, uncertainty), signal_unit="mV"
     )
     told = (
-        Parameter("electrode slope", -59.16 * efficiency, "mV", 59.16 * u if u else None),
+        Parameter("electrode slope", -59.16 * efficiency, "mV per decade", 59.16 * u if u else None),
         Parameter("slope efficiency", efficiency, "1", u),
     )
     solved = replace(
