@@ -20,8 +20,9 @@ from spikeward.rules.solve.line import Floats
 from spikeward.rules.solve.log_response import LogFit, fit_log_response, theoretical_slope
 from spikeward.rules.solve.solved import Scatter, Solved
 from spikeward.rules.solve.transform import Row, Transformed
-from spikeward.rules.solve.verdict import EXACT_FIT, NO_NOISE, NOT_FOUND, UNBOUNDED, negative, unreadable
+from spikeward.rules.solve.verdict import AMBIGUOUS, EXACT_FIT, NO_NOISE, NOT_FOUND, UNBOUNDED, negative, unreadable
 from spikeward.rules.uncertainty.interval import FitPart
+from spikeward.rules.words import listed
 
 _ROUNDS = 12  # of weights at the signals that the fit says; declared noise settles to all digits in far fewer
 
@@ -40,6 +41,7 @@ class _Bent:
     exact: bool
     fitted: tuple[float, ...]
     parameters: tuple[Parameter, ...]
+    refused: str = ""
 
 
 def _column(transformed: Sequence[Transformed], of: Callable[[Row], float], empty: float = 0.0) -> Floats:
@@ -107,10 +109,16 @@ def solve_blocks(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
         found.append(
             _Bent(
                 one.content, one.fit_uncertainty, one.low, one.high, one.dof, left, one.residual_sd, one.exact,
-                one.fitted, slopes,
+                one.fitted, slopes, _falling(slopes),
             )  # fmt: skip
         )
     return _results(jobs, transformed, found, _effects(transformed, lambda *step: fit(*step).content), coverage)
+
+
+def _falling(slopes: Sequence[Parameter]) -> str:
+    """Why a run does not carry a content, or an empty text."""
+    falling = [one.name.removeprefix("slope of ") for one in slopes if one.value <= 0.0]
+    return f"the signal does not rise with the additions in {listed(falling)}: look at that run" if falling else ""
 
 
 def _per(job: Job) -> str:
@@ -192,7 +200,7 @@ def solve_log_responses(jobs: Sequence[Job], transformed: Sequence[Transformed],
         found.append(
             _Bent(
                 one.content, one.fit_uncertainty, one.low, one.high, one.dof, left, one.residual_sd, one.exact,
-                one.fitted, _electrode_words(job, one),
+                one.fitted, _electrode_words(job, one), AMBIGUOUS if one.ambiguous else "",
             )  # fmt: skip
         )
     return _results(jobs, transformed, found, [_NO_EFFECT] * len(jobs), coverage)
@@ -258,6 +266,7 @@ def _result(
     if drawn.no_number:
         return drawn
     refused = unreadable([value for row in transformed.rows for value in (row.x, row.signal, row.factor)])
+    refused = refused or bent.refused
     if refused or not math.isfinite(bent.content):
         return replace(drawn, no_number=refused or NOT_FOUND)
     fitted = dict(zip(((row.x, row.signal, row.factor) for row in transformed.rows), bent.fitted, strict=False))

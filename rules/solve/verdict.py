@@ -23,6 +23,9 @@ UNBOUNDED = (
     "no end"
 )
 NOT_FOUND = "no content fits the points: look for swapped levels, a wrong sign of the slope, or a wrong addition"
+AMBIGUOUS = (
+    "two contents fit these vessels equally well: give the slope of the electrode, or measure one more vessel"
+)
 NO_NOISE = (
     "these vessels leave no degree of freedom for the scatter: declare the noise under precision, or measure more "
     "vessels"
