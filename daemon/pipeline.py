@@ -9,7 +9,6 @@ here may be lost and found again by a new look at the folders; what may not is i
 
 from __future__ import annotations
 
-import os
 from collections.abc import Callable, Iterable, Iterator
 from contextlib import suppress
 from dataclasses import dataclass, field
@@ -21,7 +20,7 @@ from spikeward.daemon.disk import Disk
 from spikeward.daemon.holdings import Holdings, Place
 from spikeward.daemon.intake import Intake
 from spikeward.daemon.ledger import EventLog, RuleTexts
-from spikeward.daemon.names import batch_words, unread_name
+from spikeward.daemon.names import unread_name
 from spikeward.daemon.notices import FEW, MANY, summed
 from spikeward.daemon.orphans import Orphans
 from spikeward.daemon.output import Output
@@ -31,6 +30,7 @@ from spikeward.daemon.reading import ReadJob, ReadReply
 from spikeward.daemon.records import Records
 from spikeward.daemon.refusals import Again
 from spikeward.daemon.solving import Solved, Solving
+from spikeward.daemon.standing import closed_otherwise, kept_aside, standing_notices
 from spikeward.daemon.station import Clock, Places, rules_from
 from spikeward.daemon.survey import Listing
 from spikeward.rules.outcomes import CALCULATION_VERSION, BatchOutcome
@@ -287,38 +287,10 @@ class Pipeline:
         return summed(self.intake.notices(), FEW) + summed(self._notices(), MANY)
 
     def _notices(self) -> list[tuple[str, str, Notice]]:
-        found = self.decisions.notices(self.solving.present) + list(self.records.refusals.standing.values())
-        for place, named in self.solving.present.named.items():
-            folder = self.solving.present.output_folder(place)
-            found += [(place[0], folder, Notice("unnamed", place[1], sentence)) for sentence in named.unnamed]
-        for place, sentence in self.solving.present.unread().items():
-            folder = self.solving.present.output_folder(place)
-            found.append((place[0], folder, Notice("unread", place[1], sentence)))
-        for one in self.solved.values():
-            key = one.batch.key
-            notes = sorted({note for members in one.batch.members.values() for note in members.notes})
-            found += [(key.root, key.folder, Notice("duplicate", key.batch, note)) for note in notes]
-        found += [(key.root, key.folder, notice) for key, notice in self.output.held.items()]
-        found += self._idle_bench()
-        found += [
-            (root, "", Notice("kept aside", os.path.basename(path), _KEPT))
-            for path in self.records.kept
-            for root in self.intake.roots
-        ]
-        if self.rules_notice is not None:
-            found += [(root, "", self.rules_notice) for root in self.intake.roots]
-        return found
-
-    def _idle_bench(self) -> list[tuple[str, str, Notice]]:
-        lacking = {
-            one.batch.key: {key.sample for key in one.batch.members}
-            for one in self.solved.values()
-            if any("from the bench file" in what for outcome in one.outcome.outcomes for what in outcome.waiting_for)
-        }
-        return [
-            (key.root, key.folder, Notice("bench", f"{entry.path} row {entry.row}", _NO_SERIES.format(entry.sample)))
-            for key, entry in self.solving.present.idle_bench(lacking)
-        ]
+        found = standing_notices(self.solving.present, self.solved.values(), self.decisions, self.records, self.output)
+        own = [kept_aside(path) for path in self.records.kept]
+        own += [self.rules_notice] if self.rules_notice is not None else []
+        return found + [(root, "", notice) for notice in own for root in self.intake.roots]
 
     def needs_a_person(self) -> list[str]:
         """One line for everything that is neither a result nor in order."""
@@ -332,18 +304,7 @@ class Pipeline:
 
     def remedies(self) -> list[str]:
         """How to solve closed batches again that stand under other rules than the present ones."""
-        other = sorted(
-            batch_words(key)
-            for key, closing in self.closings.closed.items()
-            if closing.rules_digest != self.rules.digest or closing.calculation_version != CALCULATION_VERSION
-        )
-        if not other:
-            return []
-        told = ", ".join(other[:5]) + (f" and {len(other) - 5} more" if len(other) > 5 else "")
-        return [
-            f"closed under earlier rules: {told}; to solve again under the present ones: "
-            f"spikeward sweep {self.places.rule_file} --again"
-        ]
+        return closed_otherwise(self.closings, self.rules, self.places.rule_file)
 
     def _folder_of(self, root: str, folder: str) -> str:
         watch = next((watch for watch in self.rules.watches if watch.folder == root), None)
@@ -386,10 +347,6 @@ class Pipeline:
                 self.records.publish_files(folder, {unread_name(name): render_unread(path, content.sentence)})
             else:
                 self.records.withdraw_unread(folder, name)
-
-
-_NO_SERIES = "no series has the sample '{}', while others wait for the bench file; compare how the names are written"
-_KEPT = "somebody had edited or replaced this file; the edit was kept aside under this name"
 
 
 def _below(folder: str, where: str) -> bool:

@@ -75,6 +75,12 @@ def snippets() -> list[tuple[str, str]]:
     return [(f"{page.name}-{number}", text) for page in OURS for number, text in enumerate(blocks(page, "yaml"), 1)]
 
 
+def base_of(name: str) -> str:
+    """The rule file that a page's fragments are set into: its own first one where that is complete."""
+    own = blocks(GUIDE / name, "yaml") if (GUIDE / name).exists() else []
+    return own[0] if own and {"watch", "standards", "preparations"} <= set(sections(own[0])) else BASE
+
+
 def is_decisions(text: str) -> bool:
     return text.startswith("- {")
 
@@ -95,7 +101,11 @@ def test_a_rule_file_in_the_guide_is_right(name, text):
         assert not wrong
         assert decisions
         return
-    whole = text if {"watch", "standards"} <= set(sections(text)) else without_conflicts(BASE, text)
+    base = base_of(name.rpartition("-")[0])
+    if {"watch", "standards"} <= set(sections(text)):
+        whole = text
+    else:
+        whole = without_conflicts(base, text) if base is BASE else "".join({**sections(base), **sections(text)}.values())
     rules, problems = load_rules(whole, "rules.yaml")
     assert not [problem.line_text() for problem in problems], whole
     assert rules is not None
