@@ -1,4 +1,4 @@
-"""What stands besides results and a person should see: names, unread files, duplicates, revisions that are held back."""
+"""What stands besides results and a person should see: names, unread files, duplicates, what is held back."""
 
 from __future__ import annotations
 

@@ -252,6 +252,7 @@ def _description(result: Result, points: Sequence[Point]) -> str:
             return f"{drawn}. The content of the test solution is {value_shown(result.content)}."
         return f"{drawn}. No content is read from the line: {visible(result.no_number) or 'there is none yet'}."
     model = "curve" if result.response == "curve" else "line"
-    words = f"{drawn}. The {model} meets the axis at minus the content, {value_shown(result.content)} in the test solution"
+    words = f"{drawn}. The {model} meets the axis at minus the content, "
+    words += f"{value_shown(result.content)} in the test solution"
     interval = interval_shown(result.content)
     return f"{words}, interval {interval}." if interval else f"{words}."

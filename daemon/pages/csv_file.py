@@ -65,10 +65,11 @@ _OF_ESTIMATE: dict[str, Callable[[Estimate], Cell]] = {
 }
 COLUMNS = (
     "root", "folder", "batch", "role", "sample", "analyte", "line", "reported_line", "verdict", "series_verdict",
-    "final", "waiting_for", "no_number", *(f"sample_{name}" for name in _OF_ESTIMATE), "basis", *(f"solution_{name}" for name in _OF_ESTIMATE),
+    "final", "waiting_for", "no_number", *(f"sample_{name}" for name in _OF_ESTIMATE), "basis",
+    *(f"solution_{name}" for name in _OF_ESTIMATE),
     "response", "precision", "degrees_of_freedom", "vessels", "excluded_vessels", "checks_to_look_at", "slope",
-    "slope_uncertainty", "intercept", "intercept_uncertainty", "residual_sd", "signal_unit", "background", "blank", "inputs_digest", "rules_digest",
-    "calculation_version",
+    "slope_uncertainty", "intercept", "intercept_uncertainty", "residual_sd", "signal_unit", "background",
+    "blank", "inputs_digest", "rules_digest", "calculation_version",
 )  # fmt: skip
 
 

@@ -23,9 +23,10 @@ class Context:
     """What the rest of the batch tells about a line.
 
     ``solved`` holds every line of the batch by role and line, process blanks subtracted; ``waiting`` the series that
-    are neither complete nor lapsed; ``runs`` the same lines by the sample that they are runs of; ``failed`` the lines of
-    blanks and references that failed their own checks; ``untimed`` the lines on which acquisition times or order are not all known; ``calibrations`` the plain standards of
-    the batch; ``pooling`` what was pooled where the rules ask for a pooled precision and the batch has closed.
+    are neither complete nor lapsed; ``runs`` the same lines by the sample that they are runs of; ``failed`` the lines
+    of blanks and references that failed their own checks; ``untimed`` the lines on which acquisition times or order are
+    not all known; ``calibrations`` the plain standards of the batch; ``pooling`` what was pooled where the rules ask
+    for a pooled precision and the batch has closed.
     """
 
     batch: Batch

@@ -24,6 +24,7 @@ from spikeward.daemon.opening import open_station
 from spikeward.daemon.watch import Watching
 from spikeward.daemon.workers import Readers
 from spikeward.rules.outcomes import WAITING
+from spikeward.rules.solve.calibration import BESIDE
 
 CASES = Path(__file__).parent / "cases"
 PATIENCE = 120.0  # s, for all of them together
@@ -39,7 +40,7 @@ Flask = tuple[Fraction, Fraction, Fraction, Fraction]
 class Printed:
     """A number as its digits stand in a publication, or ``why`` it stands here although it does not.
 
-    ``of`` names it: ``content``, ``high in sample``, ``content beside``, ``parameter electrode slope``, a field of a
+    ``of`` names it: ``content``, ``high in sample``, ``content by calibration``, ``parameter electrode slope``, a field of a
     result. ``within`` replaces half a unit of the last digit.
     """
 
@@ -155,8 +156,9 @@ def number(result: Mapping[str, Any], of: str) -> float | None:
     name, block = of, result
     if of.endswith(" in sample"):
         name, block = of.removesuffix(" in sample"), result["in_sample"]
-    elif of.endswith(" beside"):
-        name, block = of.removesuffix(" beside"), result["beside"][0]
+    elif of.endswith(" by calibration"):
+        name = of.removesuffix(" by calibration")
+        (block,) = (each for each in result["beside"] if each["name"] == BESIDE)
     if block is None:
         return None
     if name in ("low", "high"):

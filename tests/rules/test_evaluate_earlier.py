@@ -59,7 +59,7 @@ def _take_steps(full, rules, steps):
 def test_every_step_of_a_night_in_which_series_lend_each_other(
     bench: ModuleType, steps: list[list[int]], drift: str, precision: str, closing: bool
 ):
-    """Duplicates, spiked samples, another dilution, two lines, plain standards, reagents, brackets, pooled precision."""
+    """Duplicates, spiked samples, another dilution, two lines, standards, reagents, brackets, pooled precision."""
     rules = bench.rulebook(
         blanks=BlankRule(reagent=True),
         brackets={"Cd": Known(bench.quantity("0.3", "mg/L"))},
