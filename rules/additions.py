@@ -41,9 +41,12 @@ def deliveries(preparation: Preparation, levels: Sequence[str], sources: Sources
     alone = {level: _of_level(preparation, level, sources, findings) for level in known}
     for level in levels:
         if level in alone and alone[level] is None:
-            findings.fails(
+            sources.want(
+                "addition",
+                level,
+                findings,
                 f"no addition is known for level {level}; declare it under additions: levels, "
-                "or give it in the bench file, a column or the name"
+                "or give it in the bench file, a column or the name",
             )
     found: dict[str, tuple[Delivery, ...] | None] = dict.fromkeys(declared)
     for number, level in enumerate(known):

@@ -20,7 +20,8 @@ from spikeward.rules.solve.solved import Background
 LineKey = tuple[str, str]  # analyte, line
 
 TURNS = (
-    ("process_blank", "reagent_blank"),
+    ("reagent_blank",),
+    ("process_blank",),
     ("reference", "check"),
     ("sample", "duplicate", "spiked_sample"),
 )
@@ -125,8 +126,9 @@ def _untouched(batch: Batch, earlier: Earlier, rules: Rulebook) -> dict[SeriesKe
         for key in batch.members.keys() | before.members.keys()
         if batch.members.get(key) != before.members.get(key) or (key in batch.lapsed) != (key in before.lapsed)
     }
-    pooled = rules.precision.comes_from == "pooled" and batch.closed
-    if any(pooled or key.role not in TURNS[-1] for key in changed):
+    if rules.precision.comes_from == "pooled" and batch.closed:
+        return {}  # samples lend their scatter to blanks and references, which are solved again whatever has changed
+    if any(key.role not in TURNS[-1] for key in changed):
         return {}
     touched = {name for each in (batch, before) for name in _originals(each, changed)}
     return {

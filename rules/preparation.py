@@ -56,7 +56,12 @@ def prepare(members: Members, batch: Batch, rules: Rulebook) -> tuple[PreparedLi
     series = _Series(
         key=members.key,
         readings=readings,
-        sources=sources_of(members, batch, _bench_is_meant(members.key, preparations.values())),
+        sources=sources_of(
+            members,
+            batch,
+            _bench_is_meant(members.key, preparations.values()),
+            rules.bench.columns if rules.bench is not None else (),
+        ),
         excluded={decision.target: decision.words for decision in batch.decisions if decision.kind == "exclude"},
         rules=rules,
     )
@@ -96,6 +101,8 @@ def _line(
                 f"signals of {line_words(analyte, line)} come in {signal_unit} and in {reading.unit} "
                 f"({reading.path} row {reading.row}); export one series in one unit"
             )
+    if preparation is not None and preparation.response == "log" and signal_unit != "mV":
+        findings.fails(f"potentials are reckoned in mV, and signals come in {signal_unit or 'no unit'}; export them in mV")
     if preparation is not None:
         return _Line(series, preparation, analyte, findings).prepared(line, readings)
     key = series.key
@@ -128,7 +135,8 @@ class _Line:
         amounts = amounts_of(spiking, self.analyte, held, unit, vessels.aliquot_unit) if unit else {}
         internal = internal_of(rule, self.analyte, readings, self.series.readings, sources, self.findings)
         made = self._vessels(readings, vessels, amounts, internal)
-        back = self._back(unit)
+        # Without any vessel it is not known yet whether contents are per volume or per mass.
+        back = self._back(unit) if vessels.parts or not self.findings.missing else None
         spiked = self._spiked(back, unit)
         rerun_of = self._rerun_of(readings)
         return PreparedLine(

@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 from spikeward.rules.checks.brackets import around
 from spikeward.rules.checks.quality import blank_lacking
 from spikeward.rules.checks.registry import BATCH, REGISTRY, check_line
-from spikeward.rules.checks.series import completeness, conflicts
+from spikeward.rules.checks.series import answered, completeness, conflicts
 from spikeward.rules.checks.slopes import calibration_for
 from spikeward.rules.checks.straight import robust_beside
 from spikeward.rules.checks.subject import Context, Subject
@@ -53,6 +53,8 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
     rules, members = context.rules, standing.members
     lines = [line.prepared for line in solved]
     checks = (completeness(members, standing.missing, standing.over, rules), *conflicts(members))
+    if members.readings and not lines and not standing.incomplete:
+        checks = (*checks, answered(members))
     subjects = [Subject(line, context) for line in solved]
     results = tuple(
         _result(subject, checks, standing, _reported_line(subject.solved.prepared, lines, rules))

@@ -7,7 +7,7 @@ else the series fails and names both.
 from __future__ import annotations
 
 from collections import defaultdict
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 from spikeward.rules.quantities import Quantity, parse_dilution, parse_quantity
@@ -37,10 +37,21 @@ class Findings:
 
 @dataclass(frozen=True, slots=True)
 class Sources:
-    """The quantities given for particular solutions of one series, from bench file, column and name."""
+    """The quantities given for particular solutions of one series, from bench file, column and name.
+
+    ``awaited`` are those that a bench file tells, so that one that is not known may still come.
+    """
 
     key: SeriesKey
     given: Mapping[tuple[str, str], tuple[Told, ...]]  # (meaning, level or '') -> what is told
+    awaited: frozenset[str] = frozenset()
+
+    def want(self, meaning: str, level: str, findings: Findings, otherwise: str) -> None:
+        """Note a quantity of one level that is not known: it is waited for, or fails the series."""
+        if meaning in self.awaited:
+            findings.lacks(f"{meaning} of {self.key.sample}, level {level}, from {PLACES['bench']}")
+        else:
+            findings.fails(otherwise)
 
     def at(self, meaning: str, level: str) -> tuple[Told, ...]:
         """What is told of a level, or else of the whole sample."""
@@ -105,8 +116,15 @@ def _value_of(meaning: str, text: str) -> Quantity | str:
     return Quantity(value.in_unit(base).normalize(), base) if base else value
 
 
-def sources_of(members: Members, batch: Batch, with_bench: bool = True) -> Sources:
-    """Everything that bench file, columns and names say about one series; the bench file only where it is meant."""
+def sources_of(
+    members: Members, batch: Batch, with_bench: bool = True, on_the_bench: Iterable[str] = ()
+) -> Sources:
+    """Everything that bench file, columns and names say about one series; the bench file only where it is meant.
+
+    Parameters
+    ----------
+    on_the_bench : the quantities that bench files tell by the rules
+    """
     given: dict[tuple[str, str], list[Told]] = defaultdict(list)
     key = members.key
     for entry in batch.bench if with_bench else ():
@@ -117,4 +135,5 @@ def sources_of(members: Members, batch: Batch, with_bench: bool = True) -> Sourc
         for meaning, text, source in reading.values:
             place = f"the name {reading.solution}" if source == "name" else f"{reading.path} row {reading.row}"
             given[meaning, reading.level].append((text, place, source))
-    return Sources(key, {place: tuple(texts) for place, texts in given.items()})
+    awaited = frozenset(on_the_bench if with_bench else ())
+    return Sources(key, {place: tuple(texts) for place, texts in given.items()}, awaited)

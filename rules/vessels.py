@@ -66,8 +66,13 @@ def _mixed(
     aliquots = {level: _given("aliquot", preparation.aliquot, level, sources, findings) for level in known}
     for level, aliquot in aliquots.items():
         if aliquot is None:
-            findings.fails(f"no aliquot is known for level {level}; declare it under preparations: aliquot")
+            told = f"no aliquot is known for level {level}; declare it under preparations: aliquot"
+            sources.want("aliquot", level, findings, told)
     finals = {level: _given("final", preparation.final, level, sources, findings) for level in known}
+    unfilled = _unfilled(preparation, known, finals, "final" in sources.awaited)
+    for level in unfilled:
+        told = f"no final volume is known for level {level}; declare it under preparations: final, or give it for each"
+        sources.want("final", level, findings, told)
     kind = _one_kind("aliquots", aliquots, findings)
     final_kind = _one_kind("final volumes", finals, findings) or kind
     spiked_kind = _kind_of_additions(known)
@@ -75,13 +80,34 @@ def _mixed(
     found: dict[str, Parts] = {}
     for level, parts in known.items():
         aliquot = aliquots[level]
-        if aliquot is None or aliquot.dimension != kind:
+        if aliquot is None or aliquot.dimension != kind or level in unfilled:
             continue
         addition = _total(parts, spiked_kind, level, spiking)
         final = bench.final(level, aliquot, parts, finals[level])
         if addition is not None and final is not None:
             found[level] = Parts(aliquot.in_unit(UNIT[kind]), addition, final)
     return Vessels(found, UNIT[kind], UNIT[spiked_kind], UNIT[final_kind])
+
+
+def _undiluted(preparation: Preparation, parts: Sequence[Delivery]) -> bool:
+    """Whether a vessel was read on the test solution as it is."""
+    return preparation.level_0 == "undiluted" and not any(delivery.quantity.value for delivery in parts)
+
+
+def _unfilled(
+    preparation: Preparation,
+    known: Mapping[str, tuple[Delivery, ...]],
+    finals: Mapping[str, Quantity | None],
+    awaited: bool,
+) -> list[str]:
+    """Levels without a final volume where the others were made up: they were not left as they were mixed.
+
+    What was added again and again to one vessel is the sum of its parts, unless somebody read it.
+    """
+    made_up = any(finals.values()) or (awaited and preparation.design in ("flasks", "weighed"))
+    if preparation.design == "successive" or not made_up:
+        return []
+    return [level for level, final in finals.items() if final is None and not _undiluted(preparation, known[level])]
 
 
 def _given(
@@ -135,7 +161,7 @@ class _Bench:
 
     def final(self, level: str, aliquot: Quantity, parts: Sequence[Delivery], given: Quantity | None) -> Decimal | None:
         """What a vessel holds when it is measured, in mL or g."""
-        if self.preparation.level_0 == "undiluted" and not any(delivery.quantity.value for delivery in parts):
+        if _undiluted(self.preparation, parts):
             return self._of_test_solution(level, aliquot)
         if given is None:
             return self._as_mixed(level, aliquot, parts)

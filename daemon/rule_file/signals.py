@@ -1,4 +1,4 @@
-"""What a rule file says of signals: blanks of reagents, drift, vessels below detection, and precision."""
+"""What a rule file says of signals: blanks of reagents, drift, vessels below detection, precision, and overlap."""
 
 from __future__ import annotations
 
@@ -19,6 +19,7 @@ def check_signals(value: Values, walker: Walker) -> None:
     _check_drift(value, walker)
     _check_below_detection(value, walker)
     _check_precision(value, walker)
+    _check_overlap(value, walker)
 
 
 def _check_reagent(value: Values, walker: Walker) -> None:
@@ -52,12 +53,12 @@ def _check_amount(analyte: str, dimension: str, value: Values, where: str, walke
     """A mass where contents are amounts of substance, or the other way, takes a molar mass."""
     kinds = {kind.partition(" per ")[0] for kind in _dimensions_of(analyte, value)}
     if kinds and dimension not in kinds and analyte not in (value["molar_masses"] or {}):
-        told = f"the reagents bring a {_KIND[dimension]}, and a standard's content is a {_KIND[next(iter(kinds))]}"
+        told = f"the reagents bring {_KIND[dimension]}, and a standard's content is {_KIND[next(iter(kinds))]}"
         hint = f"give both in one kind of unit, or add molar_masses: {{{analyte}: 112.414 g/mol}}"
         walker.at(where, "R015", told, "", hint)
 
 
-_KIND = {"mass": "mass", "amount": "amount of substance"}
+_KIND = {"mass": "a mass", "amount": "an amount of substance"}
 
 
 def _dimensions_of(analyte: str, value: Values) -> Iterable[str]:
@@ -111,6 +112,29 @@ def _check_precision(value: Values, walker: Walker) -> None:
     _check_places(rule["noise"] or {}, f"{path}.noise", value, walker)
 
 
+def _check_overlap(value: Values, walker: Walker) -> None:
+    """Analytes that a standard holds, and lines of theirs, each once and as many as the method takes."""
+    for number, rule in enumerate(value["overlap"] or ()):
+        path = f"overlap[{number}]"
+        if not rule or not walker.sound(path, "standards"):
+            continue
+        analytes, at, known = rule["analytes"], rule["at"], analytes_of(value)
+        for place, name in enumerate(analytes):
+            if name not in known:
+                _not_known(name, known, f"no standard holds '{name}'", f"{path}.analytes[{place}]", walker, key=False)
+        for place, name in enumerate(at):
+            if not any(name == analyte or name.startswith(f"{analyte} ") for analyte in analytes):
+                told = f"'{name}' is no line of {one_of(tuple(analytes) or ('any analyte',))}"
+                hint = "write the analyte before its line, such as Cd 228.8, and name it under analytes"
+                walker.at(f"{path}.at[{place}]", "R030", told, "", hint)
+        if len(set(at)) < len(at) or len(set(analytes)) < len(analytes) or not analytes:
+            walker.at(path, "R031", "an analyte or line stands there twice, or none does", "", "name each of them once")
+        elif (len(analytes), len(at)) != (1, 2) if rule["method"] == "h_point" else len(at) < len(analytes):
+            needed = "one analyte and two lines" if rule["method"] == "h_point" else "as many lines as analytes, or more"
+            told = f"{rule['method']} takes {needed}; here are {len(analytes)} and {len(at)}"
+            walker.at(path, "R031", told, "", "name them, or delete the entry")
+
+
 def _check_places(found: Values, path: str, value: Values, walker: Walker) -> None:
     """Names of analytes or lines; a line is known by its reader only where that names it."""
     if not walker.sound("standards", "readers"):
@@ -127,7 +151,9 @@ def _check_places(found: Values, path: str, value: Values, walker: Walker) -> No
                        walker)  # fmt: skip
 
 
-def _not_known(name: str, known: Iterable[str], told: str, where: str, walker: Walker) -> None:
+def _not_known(
+    name: str, known: Iterable[str], told: str, where: str, walker: Walker, key: bool = True
+) -> None:
     meant = near(name, known)
     hint = f"did you mean {meant}?" if meant else f"possible here: {one_of(tuple(sorted(known)))}"
-    walker.at(where, "R030", told, "", hint, key=True)
+    walker.at(where, "R030", told, "", hint, key=key)

@@ -70,7 +70,19 @@ def brackets(subject: Subject, limits: Limits) -> Check:
         return drifted
     if sum(sides) < 2 and not subject.context.batch.closed:
         return not_evaluated("brackets", f"the bracket {_side_lacking(sides)} this series is still expected")
-    return _one_sided(sides, limits) or drifted or not_evaluated("brackets", "no bracket was measured")
+    found = _one_sided(sides, limits) or drifted or not_evaluated("brackets", "no bracket was measured")
+    return _uncorrected(found, subject)
+
+
+def _uncorrected(check: Check, subject: Subject) -> Check:
+    """A drift that the rules ask to correct and that was not corrected warns at least: the number stands without it."""
+    why = subject.solved.not_drifted
+    if not why or check.verdict == FAIL:
+        return check
+    told = f"The drift was not corrected, though the rules ask for it: {why}."
+    if check.verdict == WARN:
+        return replace(check, sentence=f"{check.sentence} {told}")
+    return plain("brackets", WARN, told, "Measure the series again between two brackets", _ASKED)
 
 
 def drift(near: Sequence[Bracket], every: Sequence[Bracket], limits: Limits) -> Check | None:

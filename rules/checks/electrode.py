@@ -12,6 +12,7 @@ from spikeward.rules.checks.subject import (
     graded,
     near_limits,
     not_evaluated,
+    plain,
     span_of,
 )
 from spikeward.rules.outcomes import FAIL, WARN, Check, Parameter, Point
@@ -60,7 +61,7 @@ def electrode_slope(subject: Subject, limits: Limits) -> Check:
 
 
 def steps_of(points: tuple[Point, ...]) -> list[tuple[str, float]]:
-    """By how much each addition moved the potential, in mV and without its sign, with the vessel after it.
+    """By how much each addition moved the potential, in mV, with the vessel after it; less than zero against the whole.
 
     Vessels of equal addition count as one, with their mean.
     """
@@ -69,8 +70,9 @@ def steps_of(points: tuple[Point, ...]) -> list[tuple[str, float]]:
         by_x.setdefault(point.x, []).append(point)
     ordered = [by_x[x] for x in sorted(by_x)]
     means = [mean_of([point.signal for point in group], [1] * len(group)) for group in ordered]
+    way = 1.0 if means[-1:] >= means[:1] else -1.0
     return [
-        (vessel_name(group[0].level, ""), abs(after - before))
+        (vessel_name(group[0].level, ""), way * (after - before))
         for group, before, after in zip(ordered[1:], means, means[1:], strict=False)
     ]
 
@@ -86,6 +88,10 @@ def potential_steps(subject: Subject, limits: Limits) -> Check:
     charge = abs(electrode.charge) or 1
     asked = _divided(limits, charge)
     bounds = span_of(asked, "warn_outside")
+    where, worst = min(steps, key=lambda step: (step[1], step[0]))
+    if bounds is not None and worst < -bounds[0]:
+        sentence = f"The addition of {where} moves the potential back by {figure(-worst)} mV, against the others."
+        return plain(name, FAIL, sentence, "Look for swapped levels or a drifting electrode; measure it again", "theory")
     where, worst = max(steps, key=lambda step: (_off(step[1], bounds), step[0]))
     sizes = [size for _, size in steps]
     sentence = f"The addition of {where} moves the potential by {figure(worst)} mV"

@@ -101,6 +101,10 @@ def blank(subject: Subject, limits: Limits) -> Check:
     if solved.reagent is not None and solved.reagent.problem:
         sentence = f"What the reagents bring in is not known: {solved.reagent.problem.rstrip('.')}."
         return plain("blank", FAIL, sentence, "Look at the reagent blank's own summary; measure it again", _BLANKS)
+    declared = subject.line_key[0] in asked.reagent_amounts
+    if solved.reagent is not None and not declared and (failed := _failed("reagent_blank", subject)):
+        sentence = f"The reagent blank that was subtracted failed its own checks (reagent blank {failed})."
+        return plain("blank", FAIL, sentence, "Look at the blank's own summary; repeat it", "theory")
     if subject.role in BLANK_ROLES:
         return plain("blank", PASS, "This series is a blank itself.")
     if not asked.process or solved.blank is None:
@@ -110,13 +114,8 @@ def blank(subject: Subject, limits: Limits) -> Check:
 
 def _share(subject: Subject, limits: Limits, amount: float) -> Check:
     estimate = reported(subject)
-    if failed := [
-        key.sample
-        for key, line in subject.context.failed
-        if key.role == "process_blank" and line == subject.line_key
-    ]:
-        told = ", ".join(sorted(failed))
-        sentence = f"The process blank that was subtracted failed its own checks (process blank {told})."
+    if failed := _failed("process_blank", subject):
+        sentence = f"The process blank that was subtracted failed its own checks (process blank {failed})."
         return plain("blank", FAIL, sentence, "Look at the blank's own summary; repeat it", "theory")
     if estimate is None or estimate.content <= 0 or covers_zero(estimate) or near_zero(subject):
         sentence = "Blank and sample cannot be told apart: the content does not differ from zero."
@@ -127,6 +126,12 @@ def _share(subject: Subject, limits: Limits, amount: float) -> Check:
         "Find what brings the analyte in: reagents, vessels, air; prepare the sample again", show=as_percent,
     )  # fmt: skip
     return _few_blanks(check, subject, limits)
+
+
+def _failed(role: str, subject: Subject) -> str:
+    """The blanks of a role that failed on this line, by their samples."""
+    failed = [key.sample for key, line in subject.context.failed if key.role == role and line == subject.line_key]
+    return ", ".join(sorted(failed))
 
 
 def _few_blanks(check: Check, subject: Subject, limits: Limits) -> Check:

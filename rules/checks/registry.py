@@ -23,6 +23,7 @@ from spikeward.rules.checks import (
     spikes,
     straight,
 )
+from spikeward.rules.checks.declared_slope import declared_slope
 from spikeward.rules.checks.subject import BLANK_ROLES, NO_LIMITS, CheckOfLine, Subject
 from spikeward.rules.outcomes import Check
 
@@ -49,6 +50,11 @@ class Registered:
     not_for: tuple[str, ...] = ()
     in_percent: bool = False
     concerns: Callable[[Subject], bool] = lambda subject: True
+
+
+def _declares_slope(subject: Subject) -> bool:
+    electrode = subject.solved.prepared.electrode
+    return electrode is not None and electrode.slope is not None
 
 
 def _is_electrode(subject: Subject) -> bool:
@@ -93,6 +99,10 @@ REGISTRY: dict[str, Registered] = {
         Registered(
             "potential_steps", electrode.potential_steps, RESULT, "every addition moves the potential enough",
             concerns=_is_electrode,
+        ),
+        Registered(
+            "declared_slope", declared_slope, RESULT, "the vessels do not contradict the declared slope",
+            concerns=lambda subject: _is_electrode(subject) and _declares_slope(subject),
         ),
         Registered(
             "internal_standard", internal_standard.internal_standard, BATCH, "the internal standard is recovered",

@@ -8,7 +8,7 @@ from spikeward.rules.checks.subject import Subject, capital, not_evaluated, plai
 from spikeward.rules.outcomes import FAIL, PASS, WARN, Check
 from spikeward.rules.records import Members
 from spikeward.rules.rulebook import Limits, Rulebook
-from spikeward.rules.words import listed
+from spikeward.rules.words import line_words, listed
 
 _IN_FORCE = "the readings in force"
 
@@ -34,6 +34,14 @@ def completeness(members: Members, missing: Sequence[str], over: bool, rules: Ru
     remedy = "Measure or enter what is missing; late files are still read"
     sentence = f"The series is not complete; it lacks {told}."
     return plain("completeness", verdict, sentence, remedy, "the rule file, series: lapsed")
+
+
+def answered(members: Members) -> Check:
+    """Of a series that was read and of which no line is left to report; it never passes by having nothing to check."""
+    read = listed(sorted({line_words(reading.analyte, reading.line) for reading in members.readings}))
+    sentence = f"No analyte of this series is reported: the rules use {read} for others only."
+    remedy = "Look at overlap and internal_standard in the rule file"
+    return plain("reported", FAIL, sentence, remedy, "the rule file")
 
 
 def conflicts(members: Members) -> tuple[Check, ...]:

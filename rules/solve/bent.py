@@ -24,6 +24,9 @@ from spikeward.rules.solve.verdict import AMBIGUOUS, EXACT_FIT, NO_NOISE, NOT_FO
 from spikeward.rules.uncertainty.interval import FitPart
 from spikeward.rules.words import listed
 
+SLOPE_BY_VESSELS = "slope by these vessels"
+"""The name of the slope that is fitted beside a declared one."""
+
 _ROUNDS = 12  # of weights at the signals that the fit says; declared noise settles to all digits in far fewer
 
 
@@ -182,16 +185,15 @@ def solve_log_responses(jobs: Sequence[Job], transformed: Sequence[Transformed],
     slope = [math.nan if one is None or one.slope is None else one.slope for one in electrodes]
     slope_u = [0.0 if one is None or one.uncertainty is None else one.uncertainty for one in electrodes]
     noise = [math.nan if job.scatter.noise is None else job.scatter.noise.floor for job in jobs]
-    fits = fit_log_response(
+    points = [
         _column(transformed, lambda row: row.x),
         _column(transformed, lambda row: row.share),
         _column(transformed, lambda row: row.signal),
         _column(transformed, lambda row: 1.0),
-        np.array(slope),
-        np.array(slope_u),
-        np.array(noise),
-        coverage,
-    )
+    ]
+    fits = fit_log_response(*points, np.array(slope), np.array(slope_u), np.array(noise), coverage)
+    # where the slope is declared these vessels may contradict it
+    free_fits = fit_log_response(*points, np.full(len(jobs), np.nan), np.zeros(len(jobs)), np.array(noise), coverage)
     found = []
     for column, job in enumerate(jobs):
         one = fits.of(column)
@@ -200,24 +202,30 @@ def solve_log_responses(jobs: Sequence[Job], transformed: Sequence[Transformed],
         found.append(
             _Bent(
                 one.content, one.fit_uncertainty, one.low, one.high, one.dof, left, one.residual_sd, one.exact,
-                one.fitted, _electrode_words(job, one), AMBIGUOUS if one.ambiguous else "",
+                one.fitted, _electrode_words(job, one, None if free else free_fits.of(column)), AMBIGUOUS if one.ambiguous else "",
             )  # fmt: skip
         )
     return _results(jobs, transformed, found, [_NO_EFFECT] * len(jobs), coverage)
 
 
-def _electrode_words(job: Job, fit: LogFit) -> tuple[Parameter, ...]:
+def _electrode_words(job: Job, fit: LogFit, free: LogFit | None) -> tuple[Parameter, ...]:
     electrode = job.line.electrode
     if electrode is None:
         return ()
     theory = theoretical_slope(electrode.temperature, electrode.charge)
     spread = known(fit.slope_uncertainty)
     percent = None if spread is None else abs(100.0 * spread / theory)
+    by_vessels = known(free.slope_uncertainty) if free is not None else None
     return (
         Parameter("electrode slope", fit.slope, "mV per decade", spread),
         Parameter("slope in theory", theory, "mV per decade"),
         Parameter("slope efficiency", 100.0 * fit.slope / theory, "%", percent),
         Parameter("potential at one unit", fit.standard_potential, "mV"),
+        *(
+            [Parameter(SLOPE_BY_VESSELS, free.slope, "mV per decade", by_vessels)]
+            if free is not None and by_vessels is not None and by_vessels > 0.0
+            else []
+        ),
     )
 
 

@@ -30,6 +30,7 @@ def bare(job: Job, transformed: Transformed) -> Solved:
         notes=transformed.notes,
         scatter=job.scatter,
         corrected=transformed.corrected,
+        not_drifted=transformed.not_drifted,
     )
 
 

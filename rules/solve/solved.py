@@ -117,6 +117,7 @@ class Solved:
     reagent_effect: float | None = None
     parameters: tuple[Parameter, ...] = ()
     corrected: tuple[str, ...] = ()
+    not_drifted: str = ""  # why the drift was not corrected although the rules ask for it
 
     @property
     def net_by_export(self) -> bool:

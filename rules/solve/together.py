@@ -89,6 +89,15 @@ def _refused(jobs: Sequence[Job], transformed: Sequence[Transformed], rule: Over
         return f"{listed(lacking)} is missing, which is solved together with {listed(names)}: export every line"
     if any(job.line.entered for job in jobs):
         return "lines that overlap are not solved with an internal standard: leave it out of their preparation"
+    if any(one.reagent is not None for one in transformed):
+        return "lines that overlap are not solved with a reagent blank: subtract a process blank instead"
+    if rule.method == "h_point" and len(jobs) != 2:
+        return f"h_point takes two lines, and {len(jobs)} are named: correct at under overlap"
+    if len({one.background is not None for one in transformed}) > 1:
+        return f"the background is off only some of {listed(names)}: measure it on every line that overlaps"
+    if len({bool(one.not_drifted) for one in transformed}) > 1:
+        why = next(one.not_drifted for one in transformed if one.not_drifted)
+        return f"the drift was corrected only on some of {listed(names)}: {why}"
     return next((one.problem for one in transformed if one.problem), "")
 
 

@@ -59,7 +59,8 @@ class Row(NamedTuple):
 class Transformed:
     """One line ready for the fit: the points of all vessels that have a signal, and ``rows`` of those that are fitted.
 
-    ``background`` and ``reagent`` are what was subtracted. ``corrected`` says what was done and what was not.
+    ``background`` and ``reagent`` are what was subtracted. ``corrected`` says what was done and what was not;
+    ``not_drifted`` why the drift was not corrected although the rules ask for it, as the end of a sentence.
     """
 
     points: tuple[Point, ...]
@@ -70,6 +71,7 @@ class Transformed:
     blank_note: str = ""
     corrected: tuple[str, ...] = ()
     reagent: Reagent | None = None
+    not_drifted: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -118,6 +120,7 @@ def transform(line: PreparedLine, corrections: Corrections) -> Transformed:
         blank_note=blank_note,
         corrected=corrected(line, exported, background, corrections.reagent, drift, not_drifted),
         reagent=reagent,
+        not_drifted=not_drifted,
     )
 
 

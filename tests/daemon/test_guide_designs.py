@@ -146,5 +146,54 @@ def test_what_the_page_quotes_is_said_in_the_result(swept: tuple[Example, Path])
     assert [quote for quote in example.quotes if quote not in said] == []
 
 
+def example(name: str) -> Example:
+    return next(each for each in EXAMPLES if each.name == name)
+
+
+def flag_of(home: Path, rules: str, files: dict[str, str], *options: str) -> str:
+    """The one flag of a sweep over some files."""
+    (home / "inbox").mkdir()
+    (home / "rules.yaml").write_text(rules.replace("{folder: inbox}", "{folder: inbox, settle: 0 s}"), encoding="utf-8")
+    for name, text in files.items():
+        (home / "inbox" / name).write_text(text, encoding="utf-8")
+    assert main(["sweep", str(home / "rules.yaml"), *options]) == 1
+    (flag,) = (home / "inbox").glob("*.flag")
+    return f"{flag.name}\n{flag.read_text(encoding='utf-8')}"
+
+
+def test_a_weighed_series_waits_for_its_bench_file(tmp_path: Path):
+    weighed = example("designs: Weighed")
+    told = flag_of(tmp_path, weighed.rules, {"run.csv": weighed.files["run.csv"]})
+    assert told.startswith("N1_11.waiting.flag")
+    for lacking in ("aliquot of 11, level 0", "addition of 11, level 3"):
+        assert f"missing: {lacking}, from the bench file" in told
+
+
+@pytest.mark.parametrize("design", ["weighed", "flasks"])
+def test_a_vessel_whose_filling_was_not_entered_is_not_taken_as_it_was_mixed(tmp_path: Path, design: str):
+    weighed = example("designs: Weighed")
+    rules = weighed.rules.replace("design: weighed", f"design: {design}")
+    bench = weighed.files["bench.csv"].replace(",24.97 g\n", ",\n")
+    assert bench != weighed.files["bench.csv"]
+    told = flag_of(tmp_path, rules, {**weighed.files, "bench.csv": bench})
+    assert told.startswith("N1_11.waiting.flag")
+    assert "missing: final of 11, level 3, from the bench file" in told
+
+
+def test_lines_that_overlap_do_not_claim_a_declared_noise(tmp_path: Path):
+    overlap = example("corrections: One known interferent")
+    noise = "precision: {from: declared, noise: {Cu: {floor: 0.1, unit: A}}}\n"
+    inbox = tmp_path / "inbox"
+    inbox.mkdir()
+    (tmp_path / "rules.yaml").write_text(
+        overlap.rules.replace("{folder: inbox}", "{folder: inbox, settle: 0 s}") + noise
+    )
+    (inbox / "run.csv").write_text(overlap.files["run.csv"], encoding="utf-8")
+    main(["sweep", str(tmp_path / "rules.yaml"), "--close"])
+    (result,) = results(inbox, "N1_40.pass.flag")["results"]
+    assert result["precision"] == "its own scatter, because lines that overlap are solved with no other"
+    assert "declared" not in result["sentence"]
+
+
 def test_the_examples_quote_what_the_program_says():
     assert sum(len(example.quotes) for example in EXAMPLES) > 12

@@ -40,8 +40,8 @@ Flask = tuple[Fraction, Fraction, Fraction, Fraction]
 class Printed:
     """A number as its digits stand in a publication, or ``why`` it stands here although it does not.
 
-    ``of`` names it: ``content``, ``high in sample``, ``content by calibration``, ``parameter electrode slope``, a field of a
-    result. ``within`` replaces half a unit of the last digit.
+    ``of`` names it: ``content``, ``high in sample``, ``content by calibration``, ``parameter electrode slope``, or a
+    field of a result. ``within`` replaces half a unit of the last digit.
     """
 
     of: str
@@ -49,7 +49,7 @@ class Printed:
     why: str = ""
     within: Decimal | None = None
     analyte: str = ""
-    unit: str = ""
+    unit: str | None = None  # where it is not that of the case
 
     @property
     def one(self) -> Decimal:
@@ -96,7 +96,9 @@ class Case:
 
     def unit_of(self, printed: Printed) -> str:
         """The unit of one of its numbers."""
-        return printed.unit or (self.sample_unit if printed.of.endswith(" in sample") else self.unit)
+        if printed.unit is not None:
+            return printed.unit
+        return self.sample_unit if printed.of.endswith(" in sample") else self.unit
 
 
 def cases() -> tuple[Case, ...]:
@@ -240,5 +242,3 @@ def _result(inbox: Path) -> Document:
     (path,) = inbox.glob("*.result.json")
     document: Document = json.loads(path.read_text(encoding="utf-8"))
     return document
-
-

@@ -6,15 +6,16 @@ import math
 from collections.abc import Sequence
 from decimal import Decimal
 
+from spikeward.rules.prepared import PreparedLine, PreparedVessel
 from spikeward.rules.quantities import Quantity
 from spikeward.rules.records import Reading, SeriesKey
-from spikeward.rules.prepared import PreparedLine, PreparedVessel
 from spikeward.rules.solve.calibration import beside, calibration_of
 from spikeward.rules.solve.job import Job
+from spikeward.rules.solve.line import Fit
 from spikeward.rules.solve.lines import solve_lines
 from spikeward.rules.solve.weights import pool
 from spikeward.rules.uncertainty.fieller import t_quantile
-from tests.external.published_sheets import Sheet, column, figure, line, tests_of
+from tests.external.published_sheets import Sheet, figure, line, numbers, tests_of
 from tests.external.test_reference_data import LOADS, PONTIUS, norris
 
 ARITHMETIC = "by arithmetic"
@@ -49,7 +50,8 @@ def _norris() -> Sheet:
 
 
 def _pontius() -> Sheet:
-    fit, tests = line(LOADS, PONTIUS), tests_of(LOADS, PONTIUS)
+    deflections = [float(one) for one in PONTIUS]
+    fit, tests = line(LOADS, deflections), tests_of(LOADS, deflections)
     b0, b1, b2 = tests.parabola[:, 0]
     return Sheet(
         "Pontius, a parabola",
@@ -104,8 +106,8 @@ def _through_origin_again() -> Sheet:
 
 
 def _thermometer() -> Sheet:
-    x = "1.521 2.012 2.512 3.003 3.507 3.999 4.513 5.002 5.503 6.010 6.511".split()
-    y = "-.171 -.169 -.166 -.159 -.164 -.165 -.156 -.157 -.159 -.161 -.160".split()
+    x = numbers("1.521 2.012 2.512 3.003 3.507 3.999 4.513 5.002 5.503 6.010 6.511")
+    y = numbers("-.171 -.169 -.166 -.159 -.164 -.165 -.156 -.157 -.159 -.161 -.160")
     fit = line(x, y)
     at_30 = math.sqrt(fit.intercept_uncertainty**2 + 100 * fit.slope_uncertainty**2 + 20 * fit.covariance)
     return Sheet(
@@ -125,8 +127,8 @@ def _thermometer() -> Sheet:
     )
 
 
-FLUORESCEIN = ("0 2 4 6 8 10 12".split(), "2.1 5.0 9.0 12.6 17.3 21.0 24.7".split())
-FURTHER = ("14 16 18 20".split(), "28.4 31.0 32.9 33.9".split())
+FLUORESCEIN = (numbers("0 2 4 6 8 10 12"), numbers("2.1 5.0 9.0 12.6 17.3 21.0 24.7"))
+FURTHER = (numbers("14 16 18 20"), numbers("28.4 31.0 32.9 33.9"))
 
 
 def _reading(series: SeriesKey, level: str, signal: float, row: int) -> Reading:
@@ -136,14 +138,12 @@ def _reading(series: SeriesKey, level: str, signal: float, row: int) -> Reading:
     )  # fmt: skip
 
 
-def _read_off(points: tuple[Sequence[str], Sequence[str]], signals: Sequence[float]) -> tuple[float, float]:
+def _read_off(points: tuple[Sequence[float], Sequence[float]], signals: Sequence[float]) -> tuple[float, float]:
     """Content and half-width of 95 % of a test solution that reads so, off a calibration; additions are invented."""
-    standards = [
-        _reading(SeriesKey("", "", "", "calibration", f"S{n}"), "", float(y), n) for n, y in enumerate(points[1])
-    ]
-    contents = {f"S{n}": {"X": Quantity(Decimal(x), "mg/L")} for n, x in enumerate(points[0])}
+    standards = [_reading(SeriesKey("", "", "", "calibration", f"S{n}"), "", y, n) for n, y in enumerate(points[1])]
+    contents = {f"S{n}": {"X": Quantity(Decimal(f"{x:g}"), "mg/L")} for n, x in enumerate(points[0])}
     key = SeriesKey("", "", "", "sample", "1")
-    mean, top = sum(signals) / len(signals), float(points[1][-1])
+    mean, top = sum(signals) / len(signals), points[1][-1]
     bare = [PreparedVessel("0", str(n), 1, 0, 1, 0.0, (_reading(key, "0", s, n),)) for n, s in enumerate(signals)]
     spiked = [
         PreparedVessel(str(n), "", 1, 0, 1, float(n), (_reading(key, str(n), mean + n * top, 9 + n),)) for n in (1, 2)
@@ -185,13 +185,13 @@ def _fluorescein() -> Sheet:
 
 
 WEIGHTED = (
-    "0 2 4 6 8 10".split(), ".009 .158 .301 .472 .577 .739".split(), ".001 .004 .010 .013 .017 .022".split(),
+    numbers("0 2 4 6 8 10"), numbers(".009 .158 .301 .472 .577 .739"), numbers(".001 .004 .010 .013 .017 .022"),
 )  # fmt: skip
 
 
 def _weighted() -> Sheet:
     x, y, sd = WEIGHTED
-    raw = [1.0 / float(one) ** 2 for one in sd]
+    raw = [1.0 / one**2 for one in sd]
     weights = [one * len(raw) / sum(raw) for one in raw]
     fit, plain = line(x, y, weights), line(x, y)
     weights_of_book = "5.53534 0.345959 0.0553534 0.0327535 0.0191534 0.0114367"
@@ -209,13 +209,13 @@ def _weighted() -> Sheet:
             figure("content at 0.1, unweighted", "1.20 0.65", *_read_off((x, y), [0.1])),
             figure("content at 0.6, unweighted", "8.09 0.63", *_read_off((x, y), [0.6]), within=0.01),
         ),
-        memory="limits from memory; those of the weighted line depend on the weight of the unknown and are not compared",
+        memory="limits from memory; of the weighted line they depend on the weight of the unknown: not compared",
     )
 
 
 CERAMIC = (
-    [x for x in "0.1 0.3 0.5 0.7 0.9".split() for _ in range(3)],
-    ".028 .029 .029 .084 .083 .081 .135 .131 .133 .180 .181 .183 .215 .230 .216".split(),
+    [x for x in numbers("0.1 0.3 0.5 0.7 0.9") for _ in range(3)],
+    numbers(".028 .029 .029 .084 .083 .081 .135 .131 .133 .180 .181 .183 .215 .230 .216"),
 )
 
 
@@ -230,8 +230,10 @@ def _ceramic() -> Sheet:
             figure("intercept and its u", "0.0087 0.0029", fit.intercept, fit.intercept_uncertainty),
             figure("s", "0.005486", fit.residual_sd),
             figure("correlation", "0.997", fit.correlation),
-            figure("u of both", "0.00500769 0.00287670", fit.slope_uncertainty, fit.intercept_uncertainty, why=ARITHMETIC),
-            figure("correlation of both", "-0.87038", together, why=ARITHMETIC),
+            figure(
+                "u of both", "0.00500769 0.00287670", fit.slope_uncertainty, fit.intercept_uncertainty, why=ARITHMETIC
+            ),
+            figure("correlation of both", "-0.870388", together, why=ARITHMETIC),
             figure("F, curvature", "15.329", tests.mandel[0], why=ARITHMETIC),
             figure("F, lack of fit", "4.885", tests.lack_of_fit[0], why=ARITHMETIC),
             figure("probability of the latter", "0.024", tests.lack_p[0], why=ARITHMETIC),
@@ -240,22 +242,35 @@ def _ceramic() -> Sheet:
 
 
 def _with_known_noise() -> Sheet:
-    x = "1 2 3 4 5 6".split()
-    same = line(x, "3.3 5.6 7.1 9.3 10.7 12.1".split(), sd=0.5)
-    other = line(x, "3.2 4.3 7.6 8.6 11.7 12.8".split(), [1, 1, 1, 0.25, 0.25, 0.25], sd=0.5)
+    x = numbers("1 2 3 4 5 6")
+    same = line(x, numbers("3.3 5.6 7.1 9.3 10.7 12.1"), sd=0.5)
+    other = line(x, numbers("3.2 4.3 7.6 8.6 11.7 12.8"), [1, 1, 1, 0.25, 0.25, 0.25], sd=0.5)
+    cases = (
+        ("equal u", same, 0.5, "1.867 0.465 1.757 0.120 -0.050 1.665", "4.913 0.322",
+         "1.8666667 0.46547467 1.7571429 0.11952286 -0.05 1.6647619", "4.9132791 0.3220356"),
+        ("u 0.5 and 1.0", other, 1.0, "0.8852 0.5297 2.0570 0.1779 -0.0823 4.131", "4.674 0.533",
+         "0.88523207 0.52970814 2.05696203 0.17789202 -0.08227848 4.1308017", "4.6742564 0.5331809"),
+    )  # fmt: skip
     figures = []
-    for fit, told, sharp in (
-        (same, "1.867 0.465 1.757 0.120 -0.050 1.665", "1.8666667 0.46547467 1.7571429 0.11952286 -0.05 1.6647619"),
-        (other, "0.885 0.530 2.057 0.178 -0.082 4.131", "0.88523207 0.52970814 2.05696203 0.17789202 -0.08227848 4.1308017"),
-    ):  # fmt: skip
+    for name, fit, u, told, at, sharp, sharply in cases:
         ours = (
             fit.intercept, fit.intercept_uncertainty, fit.slope, fit.slope_uncertainty, fit.covariance,
             fit.dof * (fit.residual_sd / 0.5) ** 2,
         )  # fmt: skip
-        name = "equal u" if fit is same else "u 0.5 and 1.0"
-        figures.append(figure(f"a, u, b, u, covariance, chi squared; {name}", told, *ours))
-        figures.append(figure("the same", sharp, *ours, why=ARITHMETIC))
+        figures += [
+            figure(f"{name}: a, u, b, u, covariance, chi squared", told, *ours),
+            figure(f"{name}: x at 10.5, u", at, *_inverse(fit, 10.5, u)),
+            figure(f"{name}: a, u, b, u, covariance, chi squared", sharp, *ours, why=ARITHMETIC),
+            figure(f"{name}: x at 10.5, u", sharply, *_inverse(fit, 10.5, u), why=ARITHMETIC),
+        ]
     return Sheet("Lines with known noise", "ISO/TS 28037:2010, clause 6, examples", tuple(figures))
+
+
+def _inverse(fit: Fit, y: float, u: float) -> tuple[float, float]:
+    """x at a y with its own u (ISO/TS 28037:2010, clause 11, from memory)."""
+    x = (y - fit.intercept) / fit.slope
+    variance = u**2 + fit.intercept_uncertainty**2 + (x * fit.slope_uncertainty) ** 2 + 2.0 * x * fit.covariance
+    return x, math.sqrt(variance) / fit.slope
 
 
 def _straight_or_not() -> Sheet:
@@ -268,7 +283,7 @@ def _straight_or_not() -> Sheet:
     return Sheet(
         "Test values of curvature",
         "ISO 8466-1, the test of Mandel, on series of this page",
-        tuple(figure(name, f, tests_of(x, y.split()).mandel[0], why=ARITHMETIC) for name, (x, y, f) in sets.items()),
+        tuple(figure(name, f, tests_of(x, numbers(y)).mandel[0], why=ARITHMETIC) for name, (x, y, f) in sets.items()),
         memory="from memory; a curve that bends nickel in ore by a factor of 1.9 stays below 18.51, F(95 %; 1, 2)",
     )
 
@@ -295,7 +310,11 @@ def _cochran() -> Sheet:
         "Cochran's largest variance, critical values",
         "Tables of Cochran's test; R. U. E. 't Lam, Anal. Chim. Acta 659 (2010) 68",
         tuple(
-            figure(f"{level:.0%}, {k} series of 1 to 5 degrees of freedom", row, *(_largest(k, n, level) for n in range(1, 6)))
+            figure(
+                f"{100 * level:g} %, {k} series of 1 to 5 degrees of freedom",
+                row,
+                *(_largest(k, n, level) for n in range(1, 6)),
+            )
             for level, rows in ((0.05, _FIVE), (0.01, _ONE))
             for k, row in rows.items()
         ),
@@ -326,6 +345,6 @@ def _fisher() -> Sheet:
     return Sheet(
         "Fisher's F with 1 and 3 to 8 degrees of freedom",
         "Tables of F (common practice)",
-        tuple(figure(f"{1 - p:.0%}", row, *(_f(k, p) for k in range(3, 9))) for p, row in tables.items()),
+        tuple(figure(f"{100 - 100 * p:g} %", row, *(_f(k, p) for k in range(3, 9))) for p, row in tables.items()),
         memory="out of the limits of Cochran's test",
     )

@@ -56,21 +56,24 @@ def figure(
     return Figure(of, published, tuple(float(each) for each in ours), why, within, relative)
 
 
-def column(values: Sequence[float | str]) -> Floats:
+def numbers(text: str) -> list[float]:
+    """Numbers between blanks."""
+    return [float(each) for each in text.split()]
+
+
+def column(values: Sequence[float]) -> Floats:
     """Numbers as the vessels of one series."""
     return np.array([float(each) for each in values]).reshape(-1, 1)
 
 
-def line(
-    x: Sequence[float | str], y: Sequence[float | str], w: Sequence[float] | None = None, sd: float | None = None
-) -> Fit:
+def line(x: Sequence[float], y: Sequence[float], w: Sequence[float] | None = None, sd: float | None = None) -> Fit:
     """The straight line of one series."""
     weights = column(w if w is not None else [1.0] * len(x))
     known = None if sd is None else np.array([sd])
     return fit_lines(column(x), column(y), weights, np.ones_like(weights), known).of(0)
 
 
-def tests_of(x: Sequence[float | str], y: Sequence[float | str]) -> Straightness:
+def tests_of(x: Sequence[float], y: Sequence[float]) -> Straightness:
     """Whether the points of one series are straight."""
     return straightness(column(x), column(y), np.ones((len(x), 1)))
 
