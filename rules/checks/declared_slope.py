@@ -1,4 +1,4 @@
-"""A declared electrode slope against the one that the vessels show: a wrong one shifts the content and leaves no trace."""
+"""A declared electrode slope against the one that the vessels show: a wrong one shifts the content without a trace."""
 
 from __future__ import annotations
 
@@ -33,7 +33,8 @@ def declared_slope(subject: Subject, limits: Limits) -> Check:
     distance = abs(by_vessels.value - electrode.slope) / u
     p = number(limits, "warn_p")
     told = (
-        f"The declared slope is {figure(electrode.slope)} mV per decade; these vessels show {figure(by_vessels.value)}, "
+        f"The declared slope is {figure(electrode.slope)} mV per decade; "
+        f"these vessels show {figure(by_vessels.value)}, "
         f"known to {figure(by_vessels.standard_uncertainty, 2)}"
     )
     if p is None:

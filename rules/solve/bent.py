@@ -202,7 +202,8 @@ def solve_log_responses(jobs: Sequence[Job], transformed: Sequence[Transformed],
         found.append(
             _Bent(
                 one.content, one.fit_uncertainty, one.low, one.high, one.dof, left, one.residual_sd, one.exact,
-                one.fitted, _electrode_words(job, one, None if free else free_fits.of(column)), AMBIGUOUS if one.ambiguous else "",
+                one.fitted, _electrode_words(job, one, None if free else free_fits.of(column)),
+                AMBIGUOUS if one.ambiguous else "",
             )  # fmt: skip
         )
     return _results(jobs, transformed, found, [_NO_EFFECT] * len(jobs), coverage)
