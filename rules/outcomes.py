@@ -68,12 +68,16 @@ class Point:
 
 @dataclass(frozen=True, slots=True)
 class Parameter:
-    """One fitted or derived number of a model, such as the slope of an electrode, with its standard uncertainty."""
+    """One fitted or derived number of a model, such as the slope of an electrode.
+
+    Without a standard uncertainty ``reason`` says why.
+    """
 
     name: str
     value: float
     unit: str
     standard_uncertainty: float | None = None
+    reason: str = "its uncertainty is not calculated; that of the content holds it"
 
 
 @dataclass(frozen=True, slots=True)
@@ -111,7 +115,8 @@ class Result:
     degrees_of_freedom: int = 0
     points: tuple[Point, ...] = ()
     checks: tuple[Check, ...] = ()
-    background: float | None = None  # signal subtracted from every reading
+    background: float | None = None  # signal subtracted from every reading, in ``background_unit``
+    background_unit: str = ""
     blank: float | None = None  # subtracted process blank, in the unit of the sample's result
     preparation: str = ""  # the way back to the sample in words
     sentence: str = ""

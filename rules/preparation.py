@@ -102,7 +102,8 @@ def _line(
                 f"({reading.path} row {reading.row}); export one series in one unit"
             )
     if preparation is not None and preparation.response == "log" and signal_unit != "mV":
-        findings.fails(f"potentials are reckoned in mV, and signals come in {signal_unit or 'no unit'}; export them in mV")
+        told = f"potentials are reckoned in mV, and signals come in {signal_unit or 'no unit'}"
+        findings.fails(f"{told}; export them in mV")
     if preparation is not None:
         return _Line(series, preparation, analyte, findings).prepared(line, readings)
     key = series.key

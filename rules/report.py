@@ -10,6 +10,7 @@ from spikeward.rules.checks.quality import blank_lacking
 from spikeward.rules.checks.registry import BATCH, REGISTRY, check_line
 from spikeward.rules.checks.series import answered, completeness, conflicts
 from spikeward.rules.checks.slopes import calibration_for
+from spikeward.rules.checks.spectral_lines import is_reported
 from spikeward.rules.checks.straight import robust_beside
 from spikeward.rules.checks.subject import Context, Subject
 from spikeward.rules.digests import inputs_digest
@@ -92,8 +93,7 @@ def report(standing: Standing, solved: Sequence[Solved], context: Context) -> Ou
 
 def _reported_line(prepared: PreparedLine, every: Sequence[PreparedLine], rules: Rulebook) -> bool:
     """Whether the line of an analyte is the one that is reported; all are where the rules name none that was read."""
-    rule = rules.lines.get(prepared.analyte)
-    named = [one for one in every if rule is not None and one.analyte == prepared.analyte and one.line == rule.report]
+    named = [one for one in every if one.analyte == prepared.analyte and is_reported(one.analyte, one.line, rules)]
     return not named or prepared in named
 
 
@@ -115,7 +115,7 @@ def _result(subject: Subject, common: Sequence[Check], standing: Standing, repor
         content=None if withheld else solved.content,
         in_sample=None if withheld else solved.in_sample,
         no_number=withheld,
-        signal_unit=solved.prepared.signal_unit,
+        signal_unit="ratio" if solved.ratio else solved.prepared.signal_unit,
         content_unit=solved.prepared.unit,
         basis=back.basis if back is not None else "",
         slope=solved.slope,
@@ -128,6 +128,7 @@ def _result(subject: Subject, common: Sequence[Check], standing: Standing, repor
         points=solved.points,
         checks=checks,
         background=_subtracted_background(solved),
+        background_unit=solved.prepared.signal_unit,
         blank=None if withheld else solved.blank,
         preparation=solved.preparation,
         reported_line=reported_line,

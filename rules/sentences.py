@@ -71,7 +71,7 @@ def _details(result: Result, solved: Solved) -> list[str]:
     if result.blank is not None and result.reported is not None:
         parts.append(f"process blank {figure(result.blank, 2)} {unit_words(result.reported.unit)} subtracted")
     if result.background is not None:
-        parts.append(f"background {figure(result.background, 2)} {result.signal_unit}".rstrip() + " subtracted")
+        parts.append(f"background {figure(result.background, 2)} {result.background_unit}".rstrip() + " subtracted")
     return parts
 
 
@@ -106,13 +106,17 @@ def interval_holds(result: Result, solved: Solved) -> str:
         parts.append("the reagent blank")
     if result.blank is not None and "not known" not in solved.blank_note:
         parts.append("the process blank")
+    if solved.drift:
+        parts.append("the scatter of the brackets")
     back = solved.prepared.way_back
     if result.in_sample is not None and back is not None and back.relative_uncertainty:
         parts.append("the recovery")
     told = parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}"
     lacking = ""
     if solved.background is not None and solved.background.standard_uncertainty is None:
-        lacking += ", nor is the background, which was read once"
+        lacking += ", nor is the background, whose scatter is not known"
+    if solved.drifted and not solved.drift:
+        lacking += ", nor is the scatter of the brackets"
     if solved.reagent is not None and solved.reagent.standard_uncertainty is None:
         lacking += ", nor is the reagent blank"
     if result.blank is not None and solved.blanks == 1:

@@ -92,6 +92,7 @@ def _result(result: Result) -> dict[str, Any]:
         "degrees_of_freedom": result.degrees_of_freedom,
         "signal_unit": result.signal_unit,
         "background": result.background,
+        "background_unit": result.background_unit,
         "blank": result.blank,
         "preparation": result.preparation,
         "reported_line": result.reported_line,
@@ -128,6 +129,7 @@ def _parameter(parameter: Parameter) -> dict[str, Any]:
         "value": parameter.value,
         "unit": parameter.unit,
         "standard_uncertainty": parameter.standard_uncertainty,
+        "uncertainty_reason": parameter.reason if parameter.standard_uncertainty is None else "",
     }
 
 

@@ -91,7 +91,8 @@ def potential_steps(subject: Subject, limits: Limits) -> Check:
     where, worst = min(steps, key=lambda step: (step[1], step[0]))
     if bounds is not None and worst < -bounds[0]:
         sentence = f"The addition of {where} moves the potential back by {figure(-worst)} mV, against the others."
-        return plain(name, FAIL, sentence, "Look for swapped levels or a drifting electrode; measure it again", "theory")
+        remedy = "Look for swapped levels or a drifting electrode; measure it again"
+        return plain(name, FAIL, sentence, remedy, "theory")
     where, worst = max(steps, key=lambda step: (_off(step[1], bounds), step[0]))
     sizes = [size for _, size in steps]
     sentence = f"The addition of {where} moves the potential by {figure(worst)} mV"

@@ -19,7 +19,7 @@ from spikeward.rules.outcomes import Check
 from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.quantities import UNITS
 from spikeward.rules.records import SERIES_ROLES
-from spikeward.rules.rounding import figure, percent
+from spikeward.rules.rounding import figure, percent, rounded
 from spikeward.rules.rulebook import Limits
 from spikeward.rules.solve.solved import Solved
 from spikeward.rules.uncertainty.fieller import t_quantile
@@ -70,7 +70,12 @@ def _recovery(spiked: Solved, native: Solved, subject: Subject, limits: Limits) 
         remedy = "Spike with about as much as the sample holds"
         return not_evaluated(_NAME, f"the spike, {told}, is only {share} of what the sample holds", remedy)
     found = (pair[0].content - pair[1].content) * size / added
-    sentence = f"Of {told}, {near_limits(found, limits)}{_spread(spiked, native, size / added, subject)} is found again"
+    half = _half(spiked, native, size / added, subject)
+    recovered = near_limits(found, limits, 3)
+    if half > 0.0:
+        share, spread = rounded(100.0 * found, 100.0 * half)
+        recovered = f"{share} % ± {spread} %"
+    sentence = f"Of {told}, {recovered} is found again"
     if spiked.prepared.spiked_when == _AFTER:
         sentence += ", which proves nothing about the digestion"
     if spiked.prepared.way_back is not None and spiked.prepared.way_back.relative_uncertainty:
@@ -79,15 +84,14 @@ def _recovery(spiked: Solved, native: Solved, subject: Subject, limits: Limits) 
     return graded(_NAME, found, limits, sentence, remedy, show=as_percent)
 
 
-def _spread(spiked: Solved, native: Solved, per_content: float, subject: Subject) -> str:
-    """The expanded uncertainty of the recovery by the scatter of both fits, in words."""
+def _half(spiked: Solved, native: Solved, per_content: float, subject: Subject) -> float:
+    """The expanded uncertainty of the recovery by the scatter of both fits; zero where it is not known."""
     parts = [Component(part.standard_uncertainty * per_content, part.degrees_of_freedom)
              for one in (spiked, native) for part in of_fit(one, factor_of(one))]  # fmt: skip
     if len(parts) < 2:
-        return ""
+        return 0.0
     u = math.hypot(*(part.standard_uncertainty for part in parts))
-    t = t_quantile(effective_degrees_of_freedom(parts), subject.context.rules.coverage)
-    return f" ± {percent(t * u)}" if u > 0.0 else ""
+    return u * t_quantile(effective_degrees_of_freedom(parts), subject.context.rules.coverage)
 
 
 def sample_size(line: PreparedLine) -> float | None:

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 from spikeward.rules.records import NOT_DETECTED, OVER_RANGE, Reading
 from spikeward.rules.solve.solved import Background
-from spikeward.rules.solve.vessel_signal import mean_of, place_of, unusable, vessel_signal
+from spikeward.rules.solve.vessel_signal import VesselSignal, mean_of, place_of, unusable, vessel_signal
 
 
 def background_of(readings: Sequence[Reading]) -> Background | None:
@@ -74,8 +74,9 @@ def _mean(readings: Sequence[Reading], kept: Sequence[Reading], left_out: Sequen
     u: float | None
     if n > 1:
         mean = mean_of(means, [1] * n)
-        u = math.hypot(*(value - mean for value in means)) / math.sqrt((n - 1) * n)
-        dof = n - 1
+        u, dof = _between(means, mean, [vessel_signal(vessel) for vessel in vessels.values()])
+        if u is None:
+            notes.append("the backgrounds agree to the last digit: how well they are known is not in the uncertainty")
     else:
         single = vessel_signal(kept)
         mean, dof = single.mean, single.readings - 1
@@ -86,3 +87,17 @@ def _mean(readings: Sequence[Reading], kept: Sequence[Reading], left_out: Sequen
             else "the background comes from one vessel: its uncertainty is that of repeated readings"
         )
     return Background(mean, u, dof if u is not None else 0, n, tuple(readings), kept[0].unit, note="; ".join(notes))
+
+
+def _between(means: Sequence[float], mean: float, signals: Sequence[VesselSignal]) -> tuple[float | None, int]:
+    """The standard uncertainty of the mean by the scatter between vessels, and never less than their readings say."""
+    n = len(means)
+    between = math.hypot(*(value - mean for value in means)) / math.sqrt((n - 1) * n)
+    within = [(one.sd, one.readings) for one in signals if one.sd is not None]
+    freedom = math.fsum(count - 1 for _, count in within)
+    if freedom > 0.0 and len(within) == n:
+        pooled = math.hypot(*(sd * math.sqrt(count - 1) for sd, count in within)) / math.sqrt(freedom)
+        floor = pooled / math.sqrt(math.fsum(count for _, count in within))
+        if floor > between:
+            return floor, int(freedom)
+    return (between, n - 1) if between > 0.0 else (None, 0)

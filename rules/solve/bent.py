@@ -17,7 +17,7 @@ from spikeward.rules.solve.common import bare, known, with_interval, without_unc
 from spikeward.rules.solve.curve import CurveFits, fit_curves
 from spikeward.rules.solve.job import Job
 from spikeward.rules.solve.line import Floats
-from spikeward.rules.solve.log_response import LogFit, fit_log_response, theoretical_slope
+from spikeward.rules.solve.log_response import LogFit, LogFits, fit_log_response, theoretical_slope
 from spikeward.rules.solve.solved import Scatter, Solved
 from spikeward.rules.solve.transform import Row, Transformed
 from spikeward.rules.solve.verdict import AMBIGUOUS, EXACT_FIT, NO_NOISE, NOT_FOUND, UNBOUNDED, negative, unreadable
@@ -185,28 +185,34 @@ def solve_log_responses(jobs: Sequence[Job], transformed: Sequence[Transformed],
     slope = [math.nan if one is None or one.slope is None else one.slope for one in electrodes]
     slope_u = [0.0 if one is None or one.uncertainty is None else one.uncertainty for one in electrodes]
     noise = [math.nan if job.scatter.noise is None else job.scatter.noise.floor for job in jobs]
-    points = [
-        _column(transformed, lambda row: row.x),
-        _column(transformed, lambda row: row.share),
-        _column(transformed, lambda row: row.signal),
-        _column(transformed, lambda row: 1.0),
-    ]
-    fits = fit_log_response(*points, np.array(slope), np.array(slope_u), np.array(noise), coverage)
+    x, per = _column(transformed, lambda row: row.x), _column(transformed, lambda row: row.per_amount)
+    share, potential = _column(transformed, lambda row: row.share), _column(transformed, lambda row: row.signal)
+    one = _column(transformed, lambda row: 1.0)
+
+    def fit(amount: float = 0.0) -> LogFits:
+        above = x + amount * per
+        return fit_log_response(
+            above, share, potential, one, np.array(slope), np.array(slope_u), np.array(noise), coverage
+        )
+
+    fits, unknown = fit(), np.full(len(jobs), np.nan)
     # where the slope is declared these vessels may contradict it
-    free_fits = fit_log_response(*points, np.full(len(jobs), np.nan), np.zeros(len(jobs)), np.array(noise), coverage)
+    known_nothing = np.zeros(len(jobs))
+    free_fits = fit_log_response(x, share, potential, one, unknown, known_nothing, np.array(noise), coverage)
     found = []
     for column, job in enumerate(jobs):
-        one = fits.of(column)
+        curve = fits.of(column)
         free = math.isnan(slope[column])
-        left = max(len(transformed[column].rows) - (3 if free else 2), 0)
+        asked = free or (slope_u[column] > 0.0 and math.isnan(noise[column]))  # the scatter is that about a free slope
+        left = max(len(transformed[column].rows) - (3 if asked else 2), 0)
         found.append(
             _Bent(
-                one.content, one.fit_uncertainty, one.low, one.high, one.dof, left, one.residual_sd, one.exact,
-                one.fitted, _electrode_words(job, one, None if free else free_fits.of(column)),
-                AMBIGUOUS if one.ambiguous else "",
+                curve.content, curve.fit_uncertainty, curve.low, curve.high, curve.dof, left, curve.residual_sd,
+                curve.exact, curve.fitted, _electrode_words(job, curve, None if free else free_fits.of(column)),
+                AMBIGUOUS if curve.ambiguous else "",
             )  # fmt: skip
         )
-    return _results(jobs, transformed, found, [_NO_EFFECT] * len(jobs), coverage)
+    return _results(jobs, transformed, found, _effects(transformed, lambda _, amount: fit(amount).content), coverage)
 
 
 def _electrode_words(job: Job, fit: LogFit, free: LogFit | None) -> tuple[Parameter, ...]:
@@ -231,7 +237,6 @@ def _electrode_words(job: Job, fit: LogFit, free: LogFit | None) -> tuple[Parame
 
 
 _Effects = tuple[float | None, float | None]
-_NO_EFFECT: _Effects = (None, None)
 
 
 def _effects(transformed: Sequence[Transformed], content: Callable[[float, float], Floats]) -> list[_Effects]:
@@ -275,7 +280,7 @@ def _result(
     if drawn.no_number:
         return drawn
     refused = unreadable([value for row in transformed.rows for value in (row.x, row.signal, row.factor)])
-    refused = refused or bent.refused
+    refused = refused or bent.refused or _in_runs(job, transformed)
     if refused or not math.isfinite(bent.content):
         return replace(drawn, no_number=refused or NOT_FOUND)
     fitted = dict(zip(((row.x, row.signal, row.factor) for row in transformed.rows), bent.fitted, strict=False))
@@ -298,6 +303,13 @@ def _result(
     part = FitPart(bent.content, bent.fit_uncertainty, (bent.content - bent.low, bent.high - bent.content), dof)
     drawn = replace(drawn, notes=(*drawn.notes, EXACT_FIT) if exact else drawn.notes)
     return with_interval(drawn, part, coverage, EXACT_FIT if exact else "")
+
+
+def _in_runs(job: Job, transformed: Transformed) -> str:
+    """Why a response that is no straight line is not solved over several runs, or an empty text."""
+    if job.line.response == "linear" or not any(row.block for row in transformed.rows):
+        return ""
+    return "only straight lines are solved over several runs: give each run of this series a sample name of its own"
 
 
 def _with_fitted(point: Point, fitted: dict[tuple[float, float, float], float], response: str) -> Point:

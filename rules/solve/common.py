@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
 from dataclasses import replace
 
 from spikeward.rules.outcomes import Estimate
@@ -22,7 +21,7 @@ def bare(job: Job, transformed: Transformed) -> Solved:
         prepared=line,
         points=transformed.points,
         degrees_of_freedom=max(len(transformed.rows) - 2, 0),
-        no_number=" ".join(line.problems) or transformed.problem or job.scatter.problem,
+        no_number="; ".join(line.problems) or transformed.problem or job.scatter.problem,
         background=transformed.background,
         reagent=transformed.reagent,
         blank_note=transformed.blank_note,
@@ -31,6 +30,8 @@ def bare(job: Job, transformed: Transformed) -> Solved:
         scatter=job.scatter,
         corrected=transformed.corrected,
         not_drifted=transformed.not_drifted,
+        drifted=transformed.drifted,
+        ratio=transformed.ratio,
     )
 
 
@@ -39,9 +40,7 @@ def known(value: float | None) -> float | None:
     return value if value is not None and math.isfinite(value) else None
 
 
-def with_interval(
-    drawn: Solved, part: FitPart, coverage: float, reason: str, further: Sequence[Component] = ()
-) -> Solved:
+def with_interval(drawn: Solved, part: FitPart, coverage: float, reason: str) -> Solved:
     """The content, in the test solution and in the sample, with what the fit says and everything that is common.
 
     Parameters
@@ -49,14 +48,12 @@ def with_interval(
     drawn : with the effects of background and reagents on the content
     part : what the fit alone says, in the content of the test solution
     reason : what the uncertainty does not hold, or empty
-    further : what else is common to all vessels, in the content of the test solution
     """
     line, back = drawn.prepared, drawn.prepared.way_back
-    content, nu = printed(part, [*rest_of(drawn, 1.0), *further], line.unit, coverage, reason)
+    content, nu = printed(part, rest_of(drawn, 1.0), line.unit, coverage, reason)
     in_sample = None
     if back is not None:
-        scaled = [replace(one, standard_uncertainty=one.standard_uncertainty * back.factor) for one in further]
-        rest = [*rest_of(drawn, back.factor), *scaled, *recovery_component(part.content * back.factor, back)]
+        rest = [*rest_of(drawn, back.factor), *recovery_component(part.content * back.factor, back)]
         in_sample, nu = printed(part.times(back.factor), rest, back.unit, coverage, reason)
     number = replace(
         drawn,
@@ -82,8 +79,25 @@ def without_uncertainty(drawn: Solved, content: float, coverage: float, reason: 
 
 def rest_of(drawn: Solved, factor: float) -> list[Component]:
     """What is common to all vessels and does not show in their scatter, after a preparation factor."""
-    background = background_component(drawn.background, (drawn.background_effect or 0.0) * factor)
-    return [*background, *reagent_component(drawn.reagent, (drawn.reagent_effect or 0.0) * factor)]
+    rest = background_component(drawn.background, background_effect_of(drawn) * factor)
+    for background, effect in drawn.other_backgrounds:
+        rest += background_component(background, effect * factor)
+    rest += reagent_component(drawn.reagent, (drawn.reagent_effect or 0.0) * factor)
+    return rest + drift_components(drawn, factor)
+
+
+def background_effect_of(solved: Solved) -> float:
+    """How the content changes with the background, through its own signals and through those of its reagent blanks.
+
+    One background is off both, so its error enters once (correlated inputs, JCGM 100:2008, 5.2).
+    """
+    through_reagent = solved.reagent.background_effect if solved.reagent is not None else 0.0
+    return (solved.background_effect or 0.0) + (solved.reagent_effect or 0.0) * through_reagent
+
+
+def drift_components(solved: Solved, factor: float) -> list[Component]:
+    """What the scatter of brackets brings in, after a preparation factor."""
+    return [replace(one, standard_uncertainty=one.standard_uncertainty * factor) for one in solved.drift]
 
 
 def background_component(background: Background | None, effect: float) -> list[Component]:

@@ -91,5 +91,5 @@ def _drift(drift: Drift) -> str:
     low, high = percent(min(known) / first, 3), percent(max(known) / first, 3)
     return (
         f"The drift was corrected: every reading was divided by the sensitivity at its place, interpolated {how}. "
-        f"Brackets read from {low} to {high} of the first; their own scatter is not in the uncertainty."
+        f"Brackets read from {low} to {high} of the first."
     )

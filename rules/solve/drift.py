@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 from bisect import bisect_right
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 
 from spikeward.rules.prepared import PreparedLine
@@ -42,13 +42,15 @@ class Bracket:
 class Sensitivity:
     """The sensitivity at one visit, None where it is not known, and by how much it falls per unit of background.
 
-    ``position`` is in seconds from the first visit, or in places of the declared order.
+    ``position`` is in seconds from the first visit, or in places of the declared order. ``scale`` is the sensitivity
+    per signal, 1 without an internal standard.
     """
 
     position: float
     value: float | None
     per_background: float
     solution: str
+    scale: float = 1.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,8 +98,26 @@ class Drift:
         start = first.value or math.nan
         return value / start, first.per_background / start - effect / value
 
+    def used(self, readings: Sequence[Reading]) -> tuple[int, ...]:
+        """Which visits the correction of some readings rests on: those around each, and the first."""
+        found = {0}
+        last = len(self.sensitivities) - 1
+        for reading in readings:
+            after = self._after(self._position(reading))
+            found |= {max(after - 1, 0), min(after, last)}
+        return tuple(sorted(found))
+
+    def with_value(self, place: int, value: float) -> Drift:
+        """The same with another sensitivity at one visit."""
+        visits = list(self.sensitivities)
+        visits[place] = replace(visits[place], value=value)
+        return replace(self, sensitivities=tuple(visits))
+
+    def _after(self, place: float) -> int:
+        return bisect_right([one.position for one in self.sensitivities], place)
+
     def _around(self, place: float) -> tuple[Sensitivity, Sensitivity]:
-        after = bisect_right([one.position for one in self.sensitivities], place)
+        after = self._after(place)
         last = len(self.sensitivities) - 1
         return self.sensitivities[max(after - 1, 0)], self.sensitivities[min(after, last)]
 
@@ -230,8 +250,8 @@ def _sensitivity(
     scale = mean_of(scales, counts)
     mean = vessel_signal(one.readings, scales).mean
     if background is None:
-        return Sensitivity(position, mean, 0.0, one.solution)
-    return Sensitivity(position, mean - background.mean * scale, scale, one.solution)
+        return Sensitivity(position, mean, 0.0, one.solution, scale)
+    return Sensitivity(position, mean - background.mean * scale, scale, one.solution, scale)
 
 
 def _position(reading: Reading, start: str) -> float:

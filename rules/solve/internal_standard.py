@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 
+from spikeward.rules.naming import level_order
 from spikeward.rules.prepared import PreparedVessel
 from spikeward.rules.records import Reading
 from spikeward.rules.solve.vessel_signal import counts_of, mean_of, place_of, unusable, vessel_name, vessel_signal
@@ -32,6 +33,15 @@ def factor_of(vessel: PreparedVessel, entered: str) -> float:
     if entered == PER_VESSEL:
         return vessel.internal_amount / vessel.aliquot
     return vessel.final / vessel.aliquot
+
+
+def scale_of(vessels: Sequence[PreparedVessel], entered: str) -> float:
+    """What every factor is multiplied by, so that y is the ratio in the first vessel and no ratio times an amount."""
+    usable = [one for one in vessels if one.aliquot > 0.0 and one.internal_amount > 0.0]
+    if entered != PER_VESSEL or not usable:
+        return 1.0
+    first = min(usable, key=lambda one: (level_order(one.level), level_order(one.vessel), one.block))
+    return first.aliquot / first.internal_amount
 
 
 def partners(readings: Sequence[Reading], internal: Sequence[Reading]) -> tuple[Reading, ...] | None:

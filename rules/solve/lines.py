@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 
 from spikeward.rules.solve.bent import solve_blocks, solve_curves, solve_log_responses
+from spikeward.rules.solve.drift_noise import with_drift_noise
 from spikeward.rules.solve.job import Job
 from spikeward.rules.solve.solved import Solved
 from spikeward.rules.solve.straight import solve_straight
@@ -27,6 +28,10 @@ def solve_lines(jobs: Sequence[Job], coverage: float) -> tuple[Solved, ...]:
     -------
     in the order of ``jobs``; the digits of one do not depend on the others
     """
+    return with_drift_noise(jobs, _solved(jobs, coverage), lambda moved: _solved(moved, coverage), coverage)
+
+
+def _solved(jobs: Sequence[Job], coverage: float) -> tuple[Solved, ...]:
     transformed = [transform(job.line, job.corrections) for job in jobs]
     by_model: dict[str, list[int]] = {}
     for place, (job, one) in enumerate(zip(jobs, transformed, strict=True)):

@@ -53,7 +53,7 @@ def scatter_by_pool(line: PreparedLine, pooling: Pooling | None) -> Scatter:
     if line.response not in ("linear", "curve"):
         return Scatter(words="its own scatter, because only the scatter about straight lines is pooled")
     if pooling is None:
-        return Scatter(words="its own scatter, because the batch has no two series whose scatter can be pooled")
+        return Scatter(words="its own scatter, because the batch has no two straight lines whose scatter can be pooled")
     if pooling.pooled.outlying:
         names = [pooling.series[place].sample for place in pooling.pooled.outlying]
         return Scatter(
@@ -85,6 +85,11 @@ def scatter_before(line: PreparedLine, rules: Rulebook) -> Scatter:
         return Scatter(
             problem=f"the noise of {name} is declared in {noise.unit} and its signals are in "
             f"{line.signal_unit or 'no unit'}: declare it in the unit of the signals under precision: noise"
+        )
+    if line.response == "log" and noise.relative:
+        return Scatter(
+            problem=f"the noise of {name} is declared with a relative part, and the noise of a potential does not grow "
+            "with it: leave relative out under precision: noise"
         )
     return Scatter("declared", noise=noise, words="the declared noise")
 

@@ -9,7 +9,13 @@ from dataclasses import replace
 from spikeward.rules.outcomes import Estimate
 from spikeward.rules.prepared import PreparedLine, WayBack
 from spikeward.rules.quantities import UNITS
-from spikeward.rules.solve.common import background_component, reagent_component, recovery_component
+from spikeward.rules.solve.common import (
+    background_component,
+    background_effect_of,
+    drift_components,
+    reagent_component,
+    recovery_component,
+)
 from spikeward.rules.solve.solved import Solved
 from spikeward.rules.solve.verdict import NEGATIVE, NEGATIVE_AS_READ, OUT_OF_RANGE
 from spikeward.rules.solve.vessel_signal import mean_of
@@ -121,7 +127,7 @@ def _subtracted(
     told = f"mean of {len(amounts)} process blanks" if len(amounts) > 1 else "one process blank"
     told = f"{told}, {mean:.3g} {unit_words(back.unit)}, subtracted as an amount{known}"
     note = _joined(solved.blank_note, told, *left_out)
-    shared = [*_background(solved, back, used), *_reagent(solved, back, used)]
+    shared = [*_background(solved, back, used), *_reagent(solved, back, used), *drift_components(solved, back.factor)]
     shared += recovery_component(before.content - mean, back) if (before := solved.in_sample) is not None else []
     estimate, nu = _estimate(solved, back, mean, [*shared, *component], coverage)
     if not is_finite(estimate):
@@ -163,15 +169,22 @@ def _component(
 
 def _background(solved: Solved, back: WayBack, used: Sequence[Solved]) -> list[Component]:
     """The error of the common background in the difference: dC/dB = f e - mean(f_b e_b), e = dC0/dB."""
-    own = back.factor * (solved.background_effect or 0.0) if solved.background is not None else 0.0
+    own = back.factor * background_effect_of(solved) if solved.background is not None else 0.0
     of_blanks = [
-        (_blank_factor(one, solved.prepared) or 0.0) * one.background_effect
-        if one.background is not None and one.background_effect is not None
-        else 0.0
+        (_blank_factor(one, solved.prepared) or 0.0) * background_effect_of(one) if one.background is not None else 0.0
         for one in used
     ]
     background = solved.background or next((one.background for one in used if one.background is not None), None)
-    return background_component(background, own - mean_of(of_blanks, [1] * len(of_blanks)))
+    found = background_component(background, own - mean_of(of_blanks, [1] * len(of_blanks)))
+    for place, (other, effect) in enumerate(solved.other_backgrounds):  # the lines of blanks stand in the same order
+        of_others = [
+            (_blank_factor(one, solved.prepared) or 0.0) * one.other_backgrounds[place][1]
+            if place < len(one.other_backgrounds)
+            else 0.0
+            for one in used
+        ]
+        found += background_component(other, back.factor * effect - mean_of(of_others, [1] * len(of_others)))
+    return found
 
 
 def _reagent(solved: Solved, back: WayBack, used: Sequence[Solved]) -> list[Component]:

@@ -70,6 +70,8 @@ def _declared(amount: Quantity, uncertainty: float | None, line: PreparedLine, m
 def _measured(used: Sequence[tuple[Solved, float]], left_out: Sequence[str], line: PreparedLine) -> Reagent:
     amounts = [one.content.content * factor for one, factor in used if one.content is not None]
     mean, n = mean_of(amounts, [1] * len(amounts)), len(amounts)
+    effects = [factor * (one.background_effect or 0.0) for one, factor in used]
+    through = mean_of(effects, [1] * len(effects))
     fits = [
         Component(factor * one.fit_uncertainty, one.scatter_degrees_of_freedom)
         for one, factor in used
@@ -82,7 +84,9 @@ def _measured(used: Sequence[tuple[Solved, float]], left_out: Sequence[str], lin
     told = f"Reagents bring {_in_words(mean, line)} into every vessel, {source}; it was counted with the additions"
     told = told if u > 0.0 else f"{told}, and {UNKNOWN}"
     note = "; ".join([told, *left_out])
-    return Reagent(mean, u, dof, note=note) if u > 0.0 else Reagent(mean, None, 0, note=note)
+    if u > 0.0:
+        return Reagent(mean, u, dof, note=note, background_effect=through)
+    return Reagent(mean, None, 0, note=note, background_effect=through)
 
 
 def _dof(fits: Sequence[Component]) -> float:

@@ -8,6 +8,7 @@ from spikeward.rules.outcomes import Estimate, Parameter, Point
 from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.records import Reading
 from spikeward.rules.rulebook import Noise
+from spikeward.rules.uncertainty.interval import Component
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,6 +42,7 @@ class Reagent:
     degrees_of_freedom: float
     note: str = ""
     problem: str = ""
+    background_effect: float = 0.0  # change of the amount per unit of the background that was off the reagent blanks
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,19 +70,21 @@ class Solved:
     """One line after the fit. Without a number ``no_number`` says why, and ``content`` and ``in_sample`` are None.
 
     A straight line is fitted with the weights of its points; ``correlation``, ``x_mean`` and ``sxx`` are weighted so,
-    and ``residual_sd`` is that of a vessel of weight 1, as a signal: in signal, at y = signal.
-    ``slope`` is in signal per content, ``intercept`` and ``residual_sd`` in signal, ``x_mean`` in content, ``sxx`` in
-    content squared, ``covariance`` (of intercept and slope) in signal squared per content. They stay where the line
-    could be fitted even if it gives no number. ``g`` is t² u(slope)² / slope² at the coverage asked for.
-    ``relative_scatter`` is the residual scatter over the largest fitted signal. ``parameters`` tell of other models.
-    ``fit_half_widths`` are the lower and upper half of the interval of the fit alone, in content of the test solution,
-    ``fit_uncertainty`` its standard uncertainty; ``background_effect`` is the change of the content per unit of
-    background signal, ``reagent_effect`` per unit of reagent amount. ``degrees_of_freedom`` are those that the points
-    leave, ``scatter_degrees_of_freedom`` those of the scatter, infinite where it was declared; ``chi_squared`` is the
-    sum of squared residuals over declared noise. ``effective_degrees_of_freedom`` belong to ``in_sample``, or to
-    ``content`` where that is None. ``points`` stand in the order of the vessels; an excluded vessel without a measured
-    signal has none. ``background`` is what was subtracted; ``blank`` is in the unit of ``in_sample``, the mean of
-    ``blanks`` process blanks.
+    and ``residual_sd`` is that of a vessel of weight 1, as a signal: in signal, at y = signal. ``slope`` is in signal
+    per content, ``intercept`` and ``residual_sd`` in signal, ``x_mean`` in content, ``sxx`` in content squared,
+    ``covariance`` (of intercept and slope) in signal squared per content. They stay where the line could be fitted even
+    if it gives no number. ``g`` is t² u(slope)² / slope² at the coverage asked for. ``relative_scatter`` is the
+    residual scatter over the largest fitted signal. ``parameters`` tell of other models. ``fit_half_widths`` are the
+    lower and upper half of the interval of the fit alone, in content of the test solution, ``fit_uncertainty`` its
+    standard uncertainty; ``background_effect`` is the change of the content per unit of background signal,
+    ``reagent_effect`` per unit of reagent amount; ``other_backgrounds`` are those of lines that were solved together
+    with this one, each with the change of the content per unit, and ``drift`` is what the scatter of brackets brings
+    into the content of the test solution where its drift was corrected (``drifted``). ``ratio``: signals are ratios to
+    an internal standard. ``degrees_of_freedom`` are those that the points leave, ``scatter_degrees_of_freedom`` those
+    of the scatter, infinite where it was declared; ``chi_squared`` is the sum of squared residuals over declared noise.
+    ``effective_degrees_of_freedom`` belong to ``in_sample``, or to ``content`` where that is None. ``points`` stand in
+    the order of the vessels; an excluded vessel without a measured signal has none. ``background`` is what was
+    subtracted; ``blank`` is in the unit of ``in_sample``, the mean of ``blanks`` process blanks.
     """
 
     prepared: PreparedLine
@@ -115,6 +119,10 @@ class Solved:
     chi_squared: float | None = None
     reagent: Reagent | None = None
     reagent_effect: float | None = None
+    other_backgrounds: tuple[tuple[Background, float], ...] = ()
+    drift: tuple[Component, ...] = ()
+    drifted: bool = False
+    ratio: bool = False
     parameters: tuple[Parameter, ...] = ()
     corrected: tuple[str, ...] = ()
     not_drifted: str = ""  # why the drift was not corrected although the rules ask for it

@@ -15,7 +15,7 @@ from spikeward.rules.solve.solved import OWN, Background, Scatter, Solved
 from spikeward.rules.solve.transform import Transformed, transform
 from spikeward.rules.solve.verdict import NO_NOISE, negative
 from spikeward.rules.uncertainty.fieller import t_quantile
-from spikeward.rules.uncertainty.interval import Component, FitPart
+from spikeward.rules.uncertainty.interval import FitPart
 from spikeward.rules.words import line_words, listed
 
 Place = tuple[str, str, str]  # level, vessel, run
@@ -87,6 +87,8 @@ def _refused(jobs: Sequence[Job], transformed: Sequence[Transformed], rule: Over
     lacking = [name for name in rule.at if name not in names]
     if lacking:
         return f"{listed(lacking)} is missing, which is solved together with {listed(names)}: export every line"
+    if any(row.block for one in transformed for row in one.rows):
+        return f"{listed(names)} overlap and were measured in several runs: give each run a sample name of its own"
     if any(job.line.entered for job in jobs):
         return "lines that overlap are not solved with an internal standard: leave it out of their preparation"
     if any(one.reagent is not None for one in transformed):
@@ -200,17 +202,16 @@ def _of_analyte(
     u, dof = found.standard_uncertainties[place], found.degrees_of_freedom
     half = t_quantile(dof, coverage) * u
     part = FitPart(found.contents[place], u, (half, half), dof)
-    further = _backgrounds([one.background for one in transformed], found.background_effects[place])
+    backgrounds = _backgrounds([one.background for one in transformed], found.background_effects[place])
     drawn = replace(drawn, scatter_degrees_of_freedom=dof)
-    return with_interval(drawn, part, coverage, found.no_uncertainty, further)
+    return with_interval(replace(drawn, other_backgrounds=backgrounds), part, coverage, found.no_uncertainty)
 
 
-def _backgrounds(backgrounds: Sequence[Background | None], effects: Sequence[float]) -> list[Component]:
-    return [
-        Component(abs(effect) * one.standard_uncertainty, one.degrees_of_freedom)
-        for one, effect in zip(backgrounds, effects, strict=True)
-        if one is not None and one.standard_uncertainty is not None and one.degrees_of_freedom > 0
-    ]
+def _backgrounds(
+    backgrounds: Sequence[Background | None], effects: Sequence[float]
+) -> tuple[tuple[Background, float], ...]:
+    """The background of every line with its effect on the content; those of different lines count as independent."""
+    return tuple((one, effect) for one, effect in zip(backgrounds, effects, strict=True) if one is not None)
 
 
 def _by_h_point(
@@ -251,6 +252,6 @@ def _by_h_point(
     if found.standard_uncertainty is None or found.half_widths is None:
         return without_uncertainty(drawn, found.content, coverage, found.no_uncertainty or NO_NOISE)
     part = FitPart(found.content, found.standard_uncertainty, found.half_widths, found.degrees_of_freedom)
-    further = _backgrounds([one.background for one in transformed[:2]], found.background_effects or (0.0, 0.0))
+    backgrounds = _backgrounds([one.background for one in transformed[:2]], found.background_effects or (0.0, 0.0))
     drawn = replace(drawn, scatter_degrees_of_freedom=found.degrees_of_freedom)
-    return with_interval(drawn, part, coverage, found.no_uncertainty, further)
+    return with_interval(replace(drawn, other_backgrounds=backgrounds), part, coverage, found.no_uncertainty)

@@ -20,7 +20,13 @@ from spikeward.rules.rounding import figure
 from spikeward.rules.rulebook import Censored
 from spikeward.rules.solve.corrections import Corrections, corrected
 from spikeward.rules.solve.drift import Drift
-from spikeward.rules.solve.internal_standard import NOT_PAIRED, divisors, factor_of, internal_problem
+from spikeward.rules.solve.internal_standard import (
+    NOT_PAIRED,
+    divisors,
+    factor_of,
+    internal_problem,
+    scale_of,
+)
 from spikeward.rules.solve.solved import Background, Reagent
 from spikeward.rules.solve.vessel_signal import (
     counts_of,
@@ -60,7 +66,8 @@ class Transformed:
     """One line ready for the fit: the points of all vessels that have a signal, and ``rows`` of those that are fitted.
 
     ``background`` and ``reagent`` are what was subtracted. ``corrected`` says what was done and what was not;
-    ``not_drifted`` why the drift was not corrected although the rules ask for it, as the end of a sentence.
+    ``not_drifted`` why the drift was not corrected although the rules ask for it, as the end of a sentence; ``drifted``
+    that it was. ``ratio``: signals are ratios to an internal standard.
     """
 
     points: tuple[Point, ...]
@@ -72,6 +79,8 @@ class Transformed:
     corrected: tuple[str, ...] = ()
     reagent: Reagent | None = None
     not_drifted: str = ""
+    drifted: bool = False
+    ratio: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,6 +93,7 @@ class _Way:
     entered: str
     amount: float  # of reagents in each vessel
     potential: bool  # the response is logarithmic
+    scale: float  # of every factor
 
 
 def weights_of(rows: Sequence[Row]) -> tuple[float, ...]:
@@ -121,6 +131,8 @@ def transform(line: PreparedLine, corrections: Corrections) -> Transformed:
         corrected=corrected(line, exported, background, corrections.reagent, drift, not_drifted),
         reagent=reagent,
         not_drifted=not_drifted,
+        drifted=drift is not None,
+        ratio=way.divided,
     )
 
 
@@ -146,6 +158,7 @@ def _way(
         entered="" if potential else line.entered,
         amount=reagent.amount if reagent is not None else 0.0,
         potential=potential,
+        scale=scale_of(line.vessels, line.entered),
     )
 
 
@@ -294,7 +307,7 @@ def _point_and_row(vessel: PreparedVessel, way: _Way, blocks: Mapping[str, int])
     mean = vessel_signal(readings, scales)
     scale = mean_of(scales, counts)
     signal = mean.mean - way.background * scale
-    factor = 1.0 if way.potential else factor_of(vessel, way.entered)
+    factor = 1.0 if way.potential else factor_of(vessel, way.entered) * way.scale
     # the background is in the sensitivities too: what it takes from them comes back
     tilts = [
         ((reading.signal or 0.0) - way.background) * each * tilt

@@ -308,7 +308,7 @@ def test_a_background_read_once_is_missing_from_the_interval(bench):
     night = bench.Night(bench.rulebook(blanks=BlankRule(background=True)))
     night.read("background", "1", "", 0.01)
     (result,) = solve(bench, night.series(background=0.01), closed=True).results
-    assert "are not in it, nor is the background, which was read once." in result.sentence
+    assert "are not in it, nor is the background, whose scatter is not known." in result.sentence
 
 
 def test_an_exact_line_has_no_uncertainty_of_zero(bench):

@@ -111,8 +111,10 @@ def test_a_published_ratio_of_unequal_mixtures():
         internal=(read(347.0, "1", "S"),),
     )  # fmt: skip
     made = transform(line([unknown, known], "per_vessel"), Corrections())
-    # the response to X against S, F = 0.970, and the content of the unknown, both from y = R n / V0
-    y = {point.level: point.y for point in made.points}
+    # the response to X against S, F = 0.970, and the content of the unknown, both from R n / V0; y is over that of the
+    # unknown, so that it is a ratio
+    y = {point.level: point.y * (10.0 * 0.146) / 10.0 for point in made.points}
+    assert made.points[0].y == made.points[0].signal
     assert y["1"] / 0.0837 == pytest.approx(0.970, abs=5e-4)
     assert y["0"] / (y["1"] / 0.0837) == pytest.approx(0.143, abs=5e-4)
 
