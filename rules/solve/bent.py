@@ -88,6 +88,7 @@ def solve_blocks(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
     names = [sorted({point.block for point in one.points if not point.excluded}) for one in transformed]
 
     shift, per = _column(transformed, lambda row: row.shift), _column(transformed, lambda row: row.per_amount)
+    noisy = _column(transformed, lambda row: row.per_signal)
 
     def fit(background: float = 0.0, amount: float = 0.0) -> BlockFits:
         net, above = y - background * shift, x + amount * per
@@ -96,7 +97,7 @@ def solve_blocks(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
             return fits
         weights, noise = w, np.full(len(jobs), np.nan)
         for _ in range(_ROUNDS):
-            weights, noise = _reweighted(scatters, fits.fitted, shift, weights, _backgrounds(transformed))
+            weights, noise = _reweighted(scatters, fits.fitted, noisy, weights, _backgrounds(transformed))
             fits = fit_blocks(above, net, weights, run, noise, coverage)
         return fits
 
@@ -129,11 +130,11 @@ def _per(job: Job) -> str:
 
 
 def _reweighted(
-    scatters: Sequence[Scatter], fitted: Floats, shift: Floats, w: Floats, background: Floats
+    scatters: Sequence[Scatter], fitted: Floats, noisy: Floats, w: Floats, background: Floats
 ) -> tuple[Floats, Floats]:
-    """Weights and the standard deviation of y at weight 1, from declared or pooled noise; ``shift`` is dy/dS."""
+    """Weights and the standard deviation of y at weight 1, from declared or pooled noise; ``noisy`` is dy/dS."""
     with np.errstate(all="ignore"):
-        noise = _noise_of(scatters, np.where(w > 0.0, fitted / shift, np.nan), background) * shift
+        noise = _noise_of(scatters, np.where(w > 0.0, fitted / noisy, np.nan), background) * noisy
         own = np.isnan(noise).all(axis=0)
         least = np.where(w > 0.0, noise, np.inf).min(axis=0)
         ratio = least / noise
@@ -149,6 +150,7 @@ def solve_curves(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
 
     per = _column(transformed, lambda row: row.per_amount)
     shift = _column(transformed, lambda row: row.shift * row.share)
+    noisy = _column(transformed, lambda row: row.per_signal * row.share)
 
     def fit(background: float = 0.0, amount: float = 0.0) -> CurveFits:
         net, above = signal - background * shift, x + amount * per
@@ -157,7 +159,7 @@ def solve_curves(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
             return fits
         weights = one
         for _ in range(_ROUNDS):
-            weights, noise = _reweighted(scatters, fits.fitted, shift, weights, _backgrounds(transformed))
+            weights, noise = _reweighted(scatters, fits.fitted, noisy, weights, _backgrounds(transformed))
             fits = fit_curves(above, share, net, weights, noise, coverage)
         return fits
 

@@ -100,6 +100,11 @@ def drift_components(solved: Solved, factor: float) -> list[Component]:
     return [replace(one, standard_uncertainty=one.standard_uncertainty * factor) for one in solved.drift]
 
 
+def with_drift(solved: Solved) -> float:
+    """The standard uncertainty of a blank's content by its fit and by the brackets that corrected its drift."""
+    return math.hypot(solved.fit_uncertainty or 0.0, *(one.standard_uncertainty for one in solved.drift))
+
+
 def background_component(background: Background | None, effect: float) -> list[Component]:
     """The uncertainty of the background's mean in the content; none where it was not subtracted or is not known.
 

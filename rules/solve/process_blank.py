@@ -15,6 +15,7 @@ from spikeward.rules.solve.common import (
     drift_components,
     reagent_component,
     recovery_component,
+    with_drift,
 )
 from spikeward.rules.solve.solved import Solved
 from spikeward.rules.solve.verdict import NEGATIVE, NEGATIVE_AS_READ, OUT_OF_RANGE
@@ -147,7 +148,7 @@ def _component(
     """What the blanks bring of their own, the background apart, and how it is known, in words."""
     n = len(amounts)
     fits = [
-        Component(abs(_blank_factor(one, sample) or 0.0) * one.fit_uncertainty, one.scatter_degrees_of_freedom)
+        Component(abs(_blank_factor(one, sample) or 0.0) * with_drift(one), one.scatter_degrees_of_freedom)
         for one in used
         if one.fit_uncertainty is not None
     ]

@@ -14,6 +14,7 @@ from spikeward.rules.prepared import PreparedLine
 from spikeward.rules.quantities import UNITS, Quantity
 from spikeward.rules.rounding import figure
 from spikeward.rules.rulebook import Rulebook
+from spikeward.rules.solve.common import with_drift
 from spikeward.rules.solve.solved import Reagent, Solved
 from spikeward.rules.solve.vessel_signal import mean_of
 from spikeward.rules.uncertainty.interval import Component, effective_degrees_of_freedom
@@ -73,7 +74,7 @@ def _measured(used: Sequence[tuple[Solved, float]], left_out: Sequence[str], lin
     effects = [factor * (one.background_effect or 0.0) for one, factor in used]
     through = mean_of(effects, [1] * len(effects))
     fits = [
-        Component(factor * one.fit_uncertainty, one.scatter_degrees_of_freedom)
+        Component(factor * with_drift(one), one.scatter_degrees_of_freedom)
         for one, factor in used
         if one.fit_uncertainty is not None and one.scatter_degrees_of_freedom > 0
     ]

@@ -64,9 +64,9 @@ def _packed(transformed: Sequence[Transformed]) -> tuple[Floats, Floats, Floats,
     packed = np.zeros((4, max(deepest, 1), len(transformed)))
     for column, one in enumerate(transformed):
         for place, row in enumerate(one.rows):
-            packed[:, place, column] = (row.x, row.y, row.weight, row.shift)
-    x, y, weight, shift = packed
-    return x, y, weight, shift
+            packed[:, place, column] = (row.x, row.y, row.weight, row.per_signal)
+    x, y, weight, per_signal = packed
+    return x, y, weight, per_signal
 
 
 def _by_residuals(transformed: Sequence[Transformed], scatters: Sequence[Scatter]) -> list[_Drawn]:
@@ -97,12 +97,12 @@ def largest_fitted(fits: Fits, x: Floats, w: Floats) -> Floats:
 
 
 def _by_noise(transformed: Sequence[Transformed], scatters: Sequence[Scatter]) -> list[_Drawn]:
-    x, y, _, shift = _packed(transformed)  # the noise is that of the signal as it was read, background in it
+    x, y, _, per_signal = _packed(transformed)  # the noise is that of the signal as it was read, background in it
     noise = [scatter.noise for scatter in scatters]
     floor = np.array([one.floor if one is not None else math.nan for one in noise])
     relative = np.array([one.relative if one is not None else math.nan for one in noise])
     background = np.array([one.background.mean if one.background is not None else 0.0 for one in transformed])
-    found = fit_by_noise(x, y, shift, floor, relative, background)
+    found = fit_by_noise(x, y, per_signal, floor, relative, background)
     drawn = []
     for column, one in enumerate(transformed):
         shares = [found.sd[column].item() / found.noise[place, column].item() for place in range(len(one.rows))]

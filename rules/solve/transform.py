@@ -46,7 +46,7 @@ class Row(NamedTuple):
     ``signal`` is the mean of its readings, corrected; the ratio where there is an internal standard. ``factor`` is
     dy/dsignal. ``weight`` is 1 for the largest of the line. ``block`` counts the runs of the series from 0. ``share``
     is aliquot over final volume. ``shift`` is by how much y falls when the background rises by one, ``per_amount``
-    by how much x rises with the amount in the vessel.
+    by how much x rises with the amount in the vessel, ``per_signal`` by how much y rises with the signal as it was read.
     """
 
     x: float
@@ -59,6 +59,7 @@ class Row(NamedTuple):
     readings: int
     shift: float
     per_amount: float
+    per_signal: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -322,7 +323,10 @@ def _point_and_row(vessel: PreparedVessel, way: _Way, blocks: Mapping[str, int])
         matrix_share=share, excluded=vessel.excluded, factor=factor, block=vessel.block,
     )  # fmt: skip
     block = blocks.get(vessel.block, 0)
-    return point, Row(x, y, factor, signal, 1.0, block, share, mean.readings, shift * factor, 1.0 / vessel.aliquot)
+    row = Row(
+        x, y, factor, signal, 1.0, block, share, mean.readings, shift * factor, 1.0 / vessel.aliquot, scale * factor
+    )
+    return point, row
 
 
 def _weighted(rows: Sequence[Row], how: str) -> tuple[Row, ...]:
