@@ -116,7 +116,6 @@ class Result:
     points: tuple[Point, ...] = ()
     checks: tuple[Check, ...] = ()
     background: float | None = None  # signal subtracted from every reading, in ``background_unit``
-    background_unit: str = ""
     blank: float | None = None  # subtracted process blank, in the unit of the sample's result
     preparation: str = ""  # the way back to the sample in words
     sentence: str = ""
@@ -127,6 +126,7 @@ class Result:
     beside: tuple[Beside, ...] = ()  # what other ways of calculation give, never instead
     corrected: tuple[str, ...] = ()  # what was corrected and what not, a sentence each
     cannot_tell: tuple[str, ...] = ()  # what this design does not show, a sentence each
+    background_unit: str = ""
 
     @property
     def reported(self) -> Estimate | None:

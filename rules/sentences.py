@@ -178,23 +178,27 @@ def _headline(
     waiting_for: Sequence[str],
 ) -> str:
     name = series_name(key)
+    deciding = [result for result in results if result.reported_line]
     if verdict == FAIL:
         word = "DO NOT REPORT" if key.role in ("sample", "duplicate", "spiked_sample") else "FAIL"
-        return f"{word}{'' if final else ' (so far)'}. {name}{_failures(checks, results)}"
+        return f"{word}{'' if final else ' (so far)'}. {name}{_failures(checks, deciding)}"
     if verdict == WAITING:
-        worries = f" {_troubles(checks, results, WARN)}" if so_far == WARN else ""
+        worries = f" {_troubles(checks, deciding, WARN)}" if so_far == WARN else ""
         stands = f"so far {so_far}; " if so_far != WAITING else ""
         return f"WAITING. {name}: {stands}waits for {listed(waiting_for)}.{worries}"
-    worries = f" {_troubles(checks, results, WARN)}" if verdict == WARN else ""
+    worries = f" {_troubles(checks, deciding, WARN)}" if verdict == WARN else ""
     return f"{verdict.upper()}. {name} {_results(results)}{worries}"
 
 
 def _results(results: Sequence[Result]) -> str:
+    beside = [line_words(result.analyte, result.line) for result in results if not result.reported_line]
+    results = [result for result in results if result.reported_line]
+    told = f" Beside it: {listed(beside)}, not reported." if beside else ""
     if len(results) == 1:
-        return results[0].sentence
+        return f"{results[0].sentence}{told}"
     missing = not_shown(results)
     short = "; ".join(short_result(result) for result in results)
-    return f"{short}." + (f" {missing}" if missing else "")
+    return f"{short}." + (f" {missing}" if missing else "") + told
 
 
 def _failures(checks: Sequence[Check], results: Sequence[Result]) -> str:

@@ -23,7 +23,7 @@ from spikeward.rules.solve.process_blank import subtract_process_blank
 from spikeward.rules.solve.reagent_blank import reagent_of
 from spikeward.rules.solve.solved import Solved
 from spikeward.rules.solve.together import members_of, solve_together
-from spikeward.rules.words import line_words
+from spikeward.rules.words import line_words, listed
 
 _LENDING = ("sample", "duplicate", "spiked_sample", "reference", "check")
 _OWN_CHECKS = {"linear_top": linear_top, "precision": precision, "residual": residual, "curvature": curvature}
@@ -64,7 +64,9 @@ def _solved(nights: Sequence[Night], rules: Rulebook, blanks: Sequence[_Blanks],
     """The series of role reagent_blank, or all others."""
     jobs = [
         {
-            series.members.key: [_job(line, night, rules, known) for line in series.lines]
+            series.members.key: [
+                _job(_named_otherwise(line, series.lines, rules), night, rules, known) for line in series.lines
+            ]
             for series in night.series
             if (series.members.key.role == "reagent_blank") == reagent
         }
@@ -79,6 +81,16 @@ def _solved(nights: Sequence[Night], rules: Rulebook, blanks: Sequence[_Blanks],
         }
         for of_night in jobs
     ]
+
+
+def _named_otherwise(line: PreparedLine, every: Sequence[PreparedLine], rules: Rulebook) -> PreparedLine:
+    """The line with a problem where its analyte overlaps with others and no line has a name that the rules give."""
+    names = {line_words(one.analyte, one.line) for one in every}
+    for rule in rules.overlap:
+        if line.analyte in rule.analytes and not names & set(rule.at):
+            told = f"{listed(rule.analytes)} overlap at {listed(rule.at)}, and this series has {listed(sorted(names))}"
+            return replace(line, problems=(*line.problems, f"{told}; write the lines under overlap as exports do"))
+    return line
 
 
 def _apart(jobs: Sequence[Job], rules: Rulebook) -> list[Job]:

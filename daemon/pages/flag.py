@@ -30,7 +30,7 @@ def render_flag(outcome: Outcome, result_digest: str) -> bytes:
         ("final", "yes" if outcome.final else "no"),
         ("sentence", outcome.sentence),
     ]
-    lines += [("result", _result(result)) for result in outcome.results]
+    lines += [("result" if result.reported_line else "not_reported", _result(result)) for result in outcome.results]
     lines += [("missing", what) for what in outcome.waiting_for]
     lines += _reasons("", outcome.checks)
     for result in outcome.results:

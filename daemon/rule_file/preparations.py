@@ -150,6 +150,9 @@ def _check_vessels(each: Values, path: str, known: set[str], walker: Walker, sta
         elif not any(added.values()):
             walker.at(where, "R031", "no level adds any standard", "", "give the volumes of standard")
     if each["spiked"] == "sample":
+        if any(each["aliquot"][key] for key in ("volume", "mass", "levels")):
+            told = "the sample was spiked, so that each level's sample is its aliquot, and an aliquot is declared"
+            walker.at(f"{path}.aliquot", "R031", told, "", "delete aliquot; give the mass under sample")
         return
     aliquots = _of_levels(each["aliquot"], f"{path}.aliquot", walker)
     finals = _of_levels(each["final"], f"{path}.final", walker) if each["final"] else {}

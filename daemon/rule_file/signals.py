@@ -109,6 +109,9 @@ def _check_precision(value: Values, walker: Walker) -> None:
     elif rule["from"] != "declared" and rule["noise"]:
         told = f"a noise is declared, and the precision is {rule['from']}"
         walker.at(f"{path}.noise", "R031", told, "", "say from: declared, or delete noise")
+    if rule["from"] == "declared" and rule["weights"] == "equal":
+        told = "the declared noise gives each point its weight, and weights says equal"
+        walker.at(f"{path}.weights", "R031", told, "", "delete weights")
     _check_places(rule["noise"] or {}, f"{path}.noise", value, walker)
 
 
@@ -130,7 +133,8 @@ def _check_overlap(value: Values, walker: Walker) -> None:
         if len(set(at)) < len(at) or len(set(analytes)) < len(analytes) or not analytes:
             walker.at(path, "R031", "an analyte or line stands there twice, or none does", "", "name each of them once")
         elif (len(analytes), len(at)) != (1, 2) if rule["method"] == "h_point" else len(at) < len(analytes):
-            needed = "one analyte and two lines" if rule["method"] == "h_point" else "as many lines as analytes, or more"
+            h_point = rule["method"] == "h_point"
+            needed = "one analyte and two lines" if h_point else "as many lines as analytes, or more"
             told = f"{rule['method']} takes {needed}; here are {len(analytes)} and {len(at)}"
             walker.at(path, "R031", told, "", "name them, or delete the entry")
 

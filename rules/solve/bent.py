@@ -97,7 +97,10 @@ def solve_blocks(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
             return fits
         weights, noise = w, np.full(len(jobs), np.nan)
         for _ in range(_ROUNDS):
+            before = weights, noise
             weights, noise = _reweighted(scatters, fits.fitted, noisy, weights, _backgrounds(transformed))
+            if all(np.array_equal(*pair, equal_nan=True) for pair in zip(before, (weights, noise), strict=True)):
+                break  # what gives itself again would do so in every further round
             fits = fit_blocks(above, net, weights, run, noise, coverage)
         return fits
 
@@ -113,14 +116,16 @@ def solve_blocks(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
         found.append(
             _Bent(
                 one.content, one.fit_uncertainty, one.low, one.high, one.dof, left, one.residual_sd, one.exact,
-                one.fitted, slopes, _falling(slopes),
+                one.fitted, slopes, _falling(slopes, transformed[column].rows),
             )  # fmt: skip
         )
     return _results(jobs, transformed, found, _effects(transformed, lambda *step: fit(*step).content), coverage)
 
 
-def _falling(slopes: Sequence[Parameter]) -> str:
+def _falling(slopes: Sequence[Parameter], rows: Sequence[Row]) -> str:
     """Why a run does not carry a content, or an empty text."""
+    if all(len({row.x for row in rows if row.block == run}) < 2 for run in {row.block for row in rows}):
+        return "no run holds two different additions, so that the slope of none is known: measure more levels in a run"
     falling = [one.name.removeprefix("slope of ") for one in slopes if one.value <= 0.0]
     return f"the signal does not rise with the additions in {listed(falling)}: look at that run" if falling else ""
 
@@ -157,9 +162,12 @@ def solve_curves(jobs: Sequence[Job], transformed: Sequence[Transformed], covera
         fits = fit_curves(above, share, net, one, np.full(len(jobs), np.nan), coverage)
         if all(scatter.kind == "own" for scatter in scatters):
             return fits
-        weights = one
+        weights, noise = one, np.full(len(jobs), np.nan)
         for _ in range(_ROUNDS):
+            before = weights, noise
             weights, noise = _reweighted(scatters, fits.fitted, noisy, weights, _backgrounds(transformed))
+            if all(np.array_equal(*pair, equal_nan=True) for pair in zip(before, (weights, noise), strict=True)):
+                break  # what gives itself again would do so in every further round
             fits = fit_curves(above, share, net, weights, noise, coverage)
         return fits
 

@@ -46,7 +46,8 @@ class Row(NamedTuple):
     ``signal`` is the mean of its readings, corrected; the ratio where there is an internal standard. ``factor`` is
     dy/dsignal. ``weight`` is 1 for the largest of the line. ``block`` counts the runs of the series from 0. ``share``
     is aliquot over final volume. ``shift`` is by how much y falls when the background rises by one, ``per_amount``
-    by how much x rises with the amount in the vessel, ``per_signal`` by how much y rises with the signal as it was read.
+    by how much x rises with the amount in the vessel, ``per_signal`` by how much y rises with the signal as it was
+    read.
     """
 
     x: float

@@ -1,7 +1,7 @@
 """The printed standard uncertainty against derivatives by every single reading of the night (JCGM 100:2008, 5.1.2).
 
-With a declared noise for each vessel the square of the uncertainty must be the sum of (dC/dS)² s² over all readings that
-enter: of the sample, of the reagent blank, of the brackets and of the background. Whatever is shared counts once.
+With a declared noise for each vessel the square of the uncertainty must be the sum of (dC/dS)² s² over all readings
+that enter: of the sample, of the reagent blank, of the brackets and of the background. Whatever is shared counts once.
 """
 
 from __future__ import annotations
