@@ -82,4 +82,4 @@ def _widened(solved: Solved, effects: Sequence[float], coverage: float) -> Solve
         return solved
     dof = solved.scatter_degrees_of_freedom
     part = FitPart(solved.content.content, solved.fit_uncertainty, solved.fit_half_widths, dof)
-    return with_interval(replace(solved, drift=(Component(u, dof),)), part, coverage, solved.content.reason)
+    return with_interval(replace(solved, drift=(Component(u, dof, of_scatter=True),)), part, coverage, solved.content.reason)

@@ -16,11 +16,13 @@ from spikeward.rules.uncertainty.fieller import t_quantile
 class Component:
     """One standard uncertainty, in the unit of the content that it belongs to, with its degrees of freedom.
 
-    They are infinite where it was declared.
+    They are infinite where it was declared. ``of_scatter``: it was made of the same estimate of scatter as the fit, so
+    that the two know no more of it together than each alone.
     """
 
     standard_uncertainty: float
     degrees_of_freedom: float
+    of_scatter: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -91,7 +93,9 @@ def printed(fit: FitPart, rest: Sequence[Component], unit: str, coverage: float,
     -------
     the estimate and its effective degrees of freedom
     """
-    nu = effective_degrees_of_freedom([Component(fit.standard_uncertainty, fit.degrees_of_freedom), *rest])
+    of_scatter = math.hypot(fit.standard_uncertainty, *(c.standard_uncertainty for c in rest if c.of_scatter))
+    others = [component for component in rest if not component.of_scatter]
+    nu = effective_degrees_of_freedom([Component(of_scatter, fit.degrees_of_freedom), *others])
     t = coverage_factor(nu, coverage)
     u_rest = math.hypot(*(c.standard_uncertainty for c in rest))
     u = math.hypot(fit.standard_uncertainty, u_rest)

@@ -133,3 +133,17 @@ def test_only_lines_are_solved_over_several_runs(bench, response):
     estimate, outcome = content(night, "content")
     assert estimate is None
     assert "several runs" in outcome.results[0].no_number
+
+
+def test_one_estimate_of_scatter_is_one_however_often_it_enters(bench):
+    """The brackets' noise is that of the vessels, which two degrees of freedom tell: no more are left for both."""
+    rules = bench.rulebook(checks={}, brackets={"Cd": Known(bench.quantity("1", "mg/L"))}, drift="correct")
+    night = bench.Night(rules)
+    night.read("bracket", "1", "", 0.400)
+    night.series("07")
+    night.read("bracket", "2", "", 0.396)
+    plain, corrected = (
+        content(replace(night, rules=replace(rules, drift=drift)), "content")[0] for drift in ("check", "correct")
+    )
+    assert corrected.standard_uncertainty > plain.standard_uncertainty
+    assert (plain.effective_degrees_of_freedom, corrected.effective_degrees_of_freedom) == (2, 2)
