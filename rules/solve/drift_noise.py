@@ -60,7 +60,8 @@ def _effect(solved: Solved, visit: Sensitivity, moved: Solved, job: Job) -> floa
     noise = _noise_of(solved, visit, job)
     if noise is None or visit.value is None or solved.content is None or moved.content is None:
         return math.nan
-    return abs(moved.content.content - solved.content.content) / (_STEP * visit.value) * noise
+    step = visit.value * (1.0 + _STEP) - visit.value
+    return abs(moved.content.content - solved.content.content) / step * noise if step > 0.0 else math.nan
 
 
 def _noise_of(solved: Solved, visit: Sensitivity, job: Job) -> float | None:
@@ -82,4 +83,5 @@ def _widened(solved: Solved, effects: Sequence[float], coverage: float) -> Solve
         return solved
     dof = solved.scatter_degrees_of_freedom
     part = FitPart(solved.content.content, solved.fit_uncertainty, solved.fit_half_widths, dof)
-    return with_interval(replace(solved, drift=(Component(u, dof, of_scatter=True),)), part, coverage, solved.content.reason)
+    wider = replace(solved, drift=(Component(u, dof, of_scatter=True),))
+    return with_interval(wider, part, coverage, solved.content.reason)

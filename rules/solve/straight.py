@@ -105,7 +105,8 @@ def _by_noise(transformed: Sequence[Transformed], scatters: Sequence[Scatter]) -
     found = fit_by_noise(x, y, per_signal, floor, relative, background)
     drawn = []
     for column, one in enumerate(transformed):
-        shares = [found.sd[column].item() / found.noise[place, column].item() for place in range(len(one.rows))]
+        noises = [found.noise[place, column].item() for place in range(len(one.rows))]
+        shares = [found.sd[column].item() / each if each > 0.0 else 0.0 for each in noises]  # none: not to be solved
         weights = tuple(share * share for share in shares)
         chi_squared = known(found.chi_square[column].item())
         drawn.append(_Drawn(found.fits.of(column), math.inf, weights, chi_squared, bool(found.settled[column])))
