@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 
+import numpy as np
+
 from spikeward.rules.solve.bent import solve_blocks, solve_curves, solve_log_responses
 from spikeward.rules.solve.drift_noise import with_drift_noise
 from spikeward.rules.solve.job import Job
@@ -40,6 +42,8 @@ def _solved(jobs: Sequence[Job], coverage: float) -> tuple[Solved, ...]:
         by_model.setdefault(model, []).append(place)
     found: dict[int, Solved] = {}
     for model, places in by_model.items():
-        solved = _SOLVERS[model]([jobs[place] for place in places], [transformed[place] for place in places], coverage)
+        alike = [jobs[place] for place in places], [transformed[place] for place in places]
+        with np.errstate(all="ignore"):  # what overflows or has no value is recognised by its result
+            solved = _SOLVERS[model](*alike, coverage)
         found |= dict(zip(places, solved, strict=True))
     return tuple(found[place] for place in range(len(jobs)))

@@ -13,6 +13,7 @@ from spikeward.rules.rulebook import (
     Electrode,
     InternalStandard,
     Known,
+    Noise,
     Overlap,
     Precision,
 )
@@ -170,3 +171,42 @@ def test_potentials_that_go_to_and_fro_fail(bench):
     assert outcome.verdict == FAIL
     check = bench.named(outcome.results[0].checks, "potential_steps")
     assert check.sentence == "The addition of level 2 moves the potential back by 35 mV, against the others."
+
+
+@pytest.mark.parametrize("low", [1e-320, 4.9e-324, 1e-310, 1e308])
+@pytest.mark.parametrize("kind", ["own", "pooled", "declared"])
+def test_a_bracket_at_the_end_of_the_range_stops_nothing(bench, low, kind):
+    """A reading of 1e-320 is above zero and has no room for a step of its own; it divides signals beyond all numbers."""
+    noise = {"Cd": Noise(0.0005, 0.01, "A")} if kind == "declared" else {}
+    for last in (low, 0.3):
+        night = bench.Night(
+            bench.rulebook(
+                brackets={"Cd": Known(bench.quantity("0.3", "mg/L"))}, drift="correct",
+                precision=Precision(kind, noise),
+            )  # fmt: skip
+        )
+        night.read("bracket", "1", "", low)
+        night.series("1").series("2")
+        night.read("bracket", "2", "", last)
+        outcome = bench.outcome_of(evaluate([night.batch(closed=True)], night.rules), "1")
+        number = outcome.results[0].content
+        if last == low and number is not None:
+            assert number.content == pytest.approx(0.3, rel=0.02)
+        else:
+            assert outcome.verdict == FAIL
+
+
+@pytest.mark.filterwarnings("error")
+@pytest.mark.parametrize("response", ["linear", "curve"])
+def test_readings_beyond_all_numbers_warn_nobody(bench, response):
+    """A background of 1e308 that varies, under a series in two runs or on a curve."""
+    rules = bench.rulebook(blanks=BlankRule(background=True))
+    (flasks,) = rules.preparations
+    night = bench.Night(replace(rules, preparations=(replace(flasks, response=response),)))
+    night.read("background", "1", "", 1e308)
+    night.read("background", "2", "", -1e308)
+    for level in range(4):
+        run = "2" if level > 1 and response == "linear" else "1"
+        night.read("sample", "07", str(level), 0.12 + 0.1 * level, block=run)
+    outcome = bench.outcome_of(evaluate([night.batch(closed=True)], night.rules))
+    assert outcome.verdict in (WARN, FAIL)
