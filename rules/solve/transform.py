@@ -8,6 +8,7 @@ of the two, and where it entered decides by what that is multiplied. A logarithm
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import NamedTuple
@@ -305,7 +306,8 @@ def _point_and_row(vessel: PreparedVessel, way: _Way, blocks: Mapping[str, int])
     # an excluded vessel outside the brackets is shown as it was read
     drift = None if way.drift is not None and vessel.excluded and way.drift.why_not(readings) else way.drift
     drifts = [drift.at(reading) if drift is not None else (1.0, 0.0) for reading in readings]
-    scales = [1.0 / (one * relative) for one, (relative, _) in zip(below, drifts, strict=True)]
+    products = [one * relative for one, (relative, _) in zip(below, drifts, strict=True)]
+    scales = [1.0 / each if each > 0.0 else math.inf for each in products]  # too small a signal is told after the fit
     mean = vessel_signal(readings, scales)
     scale = mean_of(scales, counts)
     signal = mean.mean - way.background * scale

@@ -176,12 +176,13 @@ def test_potentials_that_go_to_and_fro_fail(bench):
 @pytest.mark.parametrize("low", [1e-320, 4.9e-324, 1e-310, 1e308])
 @pytest.mark.parametrize("kind", ["own", "pooled", "declared"])
 def test_a_bracket_at_the_end_of_the_range_stops_nothing(bench, low, kind):
-    """A reading of 1e-320 is above zero and has no room for a step of its own; it divides signals beyond all numbers."""
+    """A reading of 1e-320 is above zero and has no room for a step of its own; it lifts signals beyond all numbers."""
     noise = {"Cd": Noise(0.0005, 0.01, "A")} if kind == "declared" else {}
     for last in (low, 0.3):
         night = bench.Night(
             bench.rulebook(
-                brackets={"Cd": Known(bench.quantity("0.3", "mg/L"))}, drift="correct",
+                brackets={"Cd": Known(bench.quantity("0.3", "mg/L"))},
+                drift="correct",
                 precision=Precision(kind, noise),
             )  # fmt: skip
         )
@@ -210,3 +211,19 @@ def test_readings_beyond_all_numbers_warn_nobody(bench, response):
         night.read("sample", "07", str(level), 0.12 + 0.1 * level, block=run)
     outcome = bench.outcome_of(evaluate([night.batch(closed=True)], night.rules))
     assert outcome.verdict in (WARN, FAIL)
+
+
+def test_an_internal_standard_at_the_end_of_the_range_gives_no_number(bench):
+    """4.9e-324 is above zero; times a sensitivity of a third it is not."""
+    rules = bench.rulebook(brackets={"Cd": Known(bench.quantity("0.3", "mg/L"))}, drift="correct")
+    (flasks,) = rules.preparations
+    with_rh = replace(flasks, internal_standard=InternalStandard({"Cd": "Rh"}, "at_constant_content"))
+    night = bench.Night(replace(rules, preparations=(with_rh,)))
+    for level in range(-1, 5):
+        role, name = ("sample", f"{level}") if -1 < level < 4 else ("bracket", "")
+        same = {"solution": f"{role}{level}", "measured_at": f"2030-05-01T00:0{level + 1}:00Z"}
+        night.read(role, "07", name, 0.3 if level < 0 else 0.1, **same)
+        night.read(role, "07", name, 4.9e-324 if role == "sample" else 0.5, analyte="Rh", **same)
+    outcome = bench.outcome_of(evaluate([night.batch(closed=True)], night.rules))
+    assert outcome.verdict == FAIL
+    assert outcome.results[0].content is None
