@@ -14,6 +14,8 @@ import jsonschema
 import pytest
 from processes import Station
 
+from spikeward.daemon.rule_file.load import load_rules
+
 HEAD = "Solution,Element,Line,Run,Signal,Measured\n"
 RULES = r"""station: Made-up bench
 watch: {folder: inbox, settle: 1 s, events: poll}
@@ -153,3 +155,29 @@ def holds_together(path: Path) -> None:
 def _shown(path: Path) -> str:
     text = path.read_text(encoding="utf-8")
     return re.sub(r"<[^>]+>", " ", re.sub(r"(?s)<style.*?</style>", "", text)) if path.suffix == ".html" else text
+
+
+@pytest.mark.parametrize(
+    ("overlap", "told"),
+    [
+        ("{method: h_point, analytes: [Cd], at: [Cd 1]}", "h_point takes one analyte and two lines"),
+        ("{method: h_point, analytes: [Cd], at: [Cd 1, Cd 2, Cd 3]}", "h_point takes one analyte and two lines"),
+        ("{method: generalised, analytes: [Cd], at: []}", "generalised takes as many lines as analytes"),
+        ("{method: generalised, analytes: [], at: [Cd 1]}", "stands there twice, or none does"),
+        ("{method: generalised, analytes: [Cd], at: [Cd 1, Cd 1]}", "stands there twice, or none does"),
+        ("{method: generalised, analytes: [Cd, Zz], at: [Cd 1, Zz 1]}", "no standard holds 'Zz'"),
+        ("{method: h_point, analytes: [Cd], at: [Cd 1, Pb 2]}", "'Pb 2' is no line of Cd"),
+    ],
+)
+def test_an_overlap_that_cannot_be_solved_is_refused_with_its_place(overlap: str, told: str) -> None:
+    rules, problems = load_rules(f"{RULES}overlap: [{overlap}]\n", "rules.yaml")
+    assert rules is None
+    found = [problem for problem in problems if told in problem.found]
+    assert found
+    assert all(problem.path.startswith("overlap[0]") and problem.line > 1 for problem in found)
+
+
+def test_an_overlap_that_goes_together() -> None:
+    for overlap in ("h_point, analytes: [Cd], at: [Cd 1, Cd 2]", "generalised, analytes: [Cd], at: [Cd 1, Cd 2, Cd 3]"):
+        _, problems = load_rules(f"{RULES}overlap: [{{method: {overlap}}}]\n", "rules.yaml")
+        assert [problem for problem in problems if "overlap" in problem.path] == []
