@@ -287,7 +287,9 @@ class Pipeline:
         return summed(self.intake.notices(), FEW) + summed(self._notices(), MANY)
 
     def _notices(self) -> list[tuple[str, str, Notice]]:
-        found = standing_notices(self.solving.present, self.solved.values(), self.decisions, self.records, self.output)
+        found = standing_notices(
+            self.solving.present, self.solved.values(), self.solving.unsolved, self.decisions, self.records, self.output
+        )
         own = [kept_aside(path) for path in self.records.kept]
         own += [self.rules_notice] if self.rules_notice is not None else []
         return found + [(root, "", notice) for notice in own for root in self.intake.roots]

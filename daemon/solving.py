@@ -24,6 +24,12 @@ class Solved:
     outcome: BatchOutcome
 
 
+_UNSOLVED = (
+    "the calculation broke on this batch ({}: {}), which is a defect of this program: nothing of it is published until "
+    "its files or the program change; other batches go on. Keep its files and report it"
+)
+
+
 @dataclass(slots=True)
 class Solving:
     """Holdings under the present rules, and under those of batches that closed earlier.
@@ -35,6 +41,7 @@ class Solving:
     closings: Closings
     decisions: Callable[[str, str], tuple[Decision, ...]]
     earlier: dict[str, Holdings] = field(default_factory=dict)
+    unsolved: dict[BatchKey, str] = field(default_factory=dict)  # on which the calculation broke, with a sentence
     _last: dict[str, dict[BatchKey, Earlier]] = field(default_factory=dict)
     _in_force: dict[str, Memory] = field(default_factory=dict)
 
@@ -60,10 +67,28 @@ class Solving:
         for group in by_rules.values():
             rules = group[0][0]
             last = self._last.setdefault(rules.digest, {})
-            outcomes = {outcome.key: outcome for outcome in evaluate([batch for _, batch in group], rules, last)}
-            solved += [Solved(batch, rules, outcomes[batch.key]) for _, batch in group]
-            last.update((batch.key, Earlier(batch, outcomes[batch.key])) for _, batch in group)
+            outcomes = self._evaluated([batch for _, batch in group], rules, last)
+            good = [batch for _, batch in group if batch.key in outcomes]
+            solved += [Solved(batch, rules, outcomes[batch.key]) for batch in good]
+            last.update((batch.key, Earlier(batch, outcomes[batch.key])) for batch in good)
         return sorted(solved, key=lambda one: one.batch.key)
+
+    def _evaluated(
+        self, batches: list[Batch], rules: Rulebook, last: dict[BatchKey, Earlier]
+    ) -> dict[BatchKey, BatchOutcome]:
+        """The outcomes by batch; a batch on which the calculation breaks stands alone and leaves the others be."""
+        for batch in batches:
+            self.unsolved.pop(batch.key, None)
+        try:
+            return {outcome.key: outcome for outcome in evaluate(batches, rules, last)}
+        except Exception as error:
+            if len(batches) == 1:
+                self.unsolved[batches[0].key] = _UNSOLVED.format(type(error).__name__, error)
+                return {}
+        found: dict[BatchKey, BatchOutcome] = {}
+        for batch in batches:
+            found |= self._evaluated([batch], rules, last)
+        return found
 
     def _assemble(self, keys: list[BatchKey]) -> Iterable[tuple[Holdings, Batch]]:
         left = set(keys)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 
 from spikeward.daemon.closings import Closings
 from spikeward.daemon.decisions import DecisionBook
@@ -14,6 +14,7 @@ from spikeward.daemon.pages.facts import Notice
 from spikeward.daemon.records import Records
 from spikeward.daemon.solving import Solved
 from spikeward.rules.outcomes import CALCULATION_VERSION
+from spikeward.rules.records import BatchKey
 from spikeward.rules.rulebook import Rulebook
 
 Placed = tuple[str, str, Notice]  # root, output folder, notice
@@ -23,7 +24,12 @@ _KEPT = "somebody had edited or replaced this file; the edit was kept aside unde
 
 
 def standing_notices(
-    present: Holdings, solved: Iterable[Solved], decisions: DecisionBook, records: Records, output: Output
+    present: Holdings,
+    solved: Iterable[Solved],
+    unsolved: Mapping[BatchKey, str],
+    decisions: DecisionBook,
+    records: Records,
+    output: Output,
 ) -> list[Placed]:
     """Everything that stands about files, batches and outputs."""
     every = list(solved)
@@ -38,6 +44,7 @@ def standing_notices(
         notes = sorted({note for members in one.batch.members.values() for note in members.notes})
         found += [(key.root, key.folder, Notice("duplicate", key.batch, note)) for note in notes]
     found += [(key.root, key.folder, notice) for key, notice in output.held.items()]
+    found += [(key.root, key.folder, Notice("not solved", key.batch, told)) for key, told in sorted(unsolved.items())]
     return found + _idle_bench(present, every)
 
 

@@ -34,11 +34,6 @@ def electrode_slope(subject: Subject, limits: Limits) -> Check:
     name, electrode = "electrode_slope", subject.solved.prepared.electrode
     if subject.solved.prepared.response != "log" or electrode is None:
         return not_evaluated(name, "the response is no electrode's")
-    if electrode.slope is not None and electrode.uncertainty is None:
-        return not_evaluated(
-            name, "the slope was declared as known, so these vessels do not show it",
-            "Declare its uncertainty, or measure three or more vessels and leave it out",
-        )  # fmt: skip
     efficiency, slope = parameter(subject, EFFICIENCY), parameter(subject, SLOPE)
     if efficiency is None or slope is None:
         return not_evaluated(name, "no slope was found")
@@ -47,11 +42,14 @@ def electrode_slope(subject: Subject, limits: Limits) -> Check:
     freedom = scatter_freedom(subject.solved)
     half = t_quantile(freedom, subject.context.rules.coverage) * u if u > 0.0 and freedom > 0 else 0.0
     spread = f" ± {percent(half)}" if half else ""
+    declared = electrode.slope is not None and electrode.uncertainty is None
     sentence = (
-        f"The slope is {figure(slope.value)} {slope.unit or 'mV per decade'}, "
+        f"The {'declared ' if declared else ''}slope is {figure(slope.value)} {slope.unit or 'mV per decade'}, "
         f"{near_limits(share, limits, 3)}{spread} of what theory says"
     )
     remedy = "Look at the electrode, its filling and the temperature; check its slope in two standards"
+    if declared:
+        remedy = "Correct the declared slope, its sign or the charge; measure the slope in two standards"
     check = graded(name, share, limits, sentence, remedy, show=as_percent)
     outer = span_of(limits, "fail_outside")
     if check.verdict == FAIL and outer is not None and outer[0] - half <= share <= outer[1] + half and half:

@@ -239,8 +239,8 @@ def _electrode_words(job: Job, fit: LogFit, free: LogFit | None) -> tuple[Parame
         Parameter("slope efficiency", 100.0 * fit.slope / theory, "%", percent),
         Parameter("potential at one unit", fit.standard_potential, "mV"),
         *(
-            [Parameter(SLOPE_BY_VESSELS, free.slope, "mV per decade", by_vessels)]
-            if free is not None and by_vessels is not None and by_vessels > 0.0
+            [Parameter(SLOPE_BY_VESSELS, free.slope, "mV per decade", by_vessels or None)]
+            if free is not None and math.isfinite(free.slope) and math.isfinite(free.content)
             else []
         ),
     )

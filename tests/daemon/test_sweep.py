@@ -7,7 +7,9 @@ from pathlib import Path
 
 import pytest
 
+from spikeward.daemon import solving
 from spikeward.daemon.cli import main
+from spikeward.rules.evaluate import evaluate
 
 RULES = r"""
 watch: {folder: inbox, settle: 0 s}
@@ -179,3 +181,25 @@ def test_a_ledger_that_is_gone_is_told(home: Home, capsys: pytest.CaptureFixture
     assert "closings, adopted decisions and the history of revisions are lost" in capsys.readouterr().err
     home.sweep()
     assert "ledger" not in capsys.readouterr().err
+
+
+def test_a_batch_on_which_the_calculation_breaks_leaves_the_others_be(
+    home: Home, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+):
+    """A defect of the program must not stop a night: other batches are published, and the board says which broke."""
+    (home.inbox / "other.csv").write_text(EXPORT.replace("N1_", "N2_"))
+
+    def breaks(batches, rules, earlier=None):
+        if any(batch.key.batch == "N2" for batch in batches):
+            raise ZeroDivisionError("invented")
+        return evaluate(batches, rules, earlier)
+
+    monkeypatch.setattr(solving, "evaluate", breaks)
+    assert home.sweep() == 1
+    assert "N1_07.pass.flag" in home.ours()
+    assert not any(name.startswith("N2_07") for name in home.ours())
+    told = capsys.readouterr()
+    assert "the calculation broke on this batch (ZeroDivisionError: invented)" in told.out + told.err
+    monkeypatch.undo()
+    assert home.sweep() == 0
+    assert {"N1_07.pass.flag", "N2_07.pass.flag"} <= set(home.ours())

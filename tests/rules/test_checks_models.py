@@ -201,10 +201,10 @@ def test_a_slope_that_is_poorly_known_only_warns(bench):
     assert bench.check_of("electrode_slope", electrode(bench, 0.80, u=0.02)).verdict == FAIL
 
 
-def test_a_slope_that_was_declared_is_not_shown(bench):
+def test_a_slope_that_was_declared_is_held_against_theory(bench):
     check = bench.check_of("electrode_slope", electrode(bench, slope=-58.0))
-    assert check.verdict == NOT_EVALUATED
-    assert "the slope was declared as known" in check.sentence
+    assert check.verdict == PASS
+    assert check.sentence.startswith("The declared slope is ")
     assert bench.check_of("electrode_slope", electrode(bench, slope=-58.0, uncertainty=0.3)).verdict == PASS
     nothing = electrode(bench)
     without = replace(nothing, solved=replace(nothing.solved, parameters=()))
@@ -325,3 +325,9 @@ def test_a_wrong_declared_slope_is_noticed(bench):
     assert unasked.verdict == NOT_EVALUATED
     fitted = bench.check_of("declared_slope", electrode_series(bench, None))
     assert fitted.verdict == NOT_EVALUATED
+
+
+def test_an_impossible_declared_slope_fails(bench):
+    """A hundred times theory is a slip."""
+    slip = bench.check_of("electrode_slope", electrode_series(bench, -5850.0))
+    assert slip.verdict == FAIL
