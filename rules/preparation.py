@@ -194,10 +194,7 @@ class _Line:
         beside = internal.of(place, excluded)
         if beside == () and not decision:
             level, vessel, _ = place
-            self.findings.fails(
-                f"level {level}{vessel}: there is no reading of the internal standard {internal.name}; export it with "
-                "the others, or exclude the vessel by a decision"
-            )
+            self.findings.lacks(f"the reading of the internal standard {internal.name} at level {level}{vessel}")
         return PreparedVessel(
             level=place[0],
             vessel=place[1],
